@@ -96,32 +96,32 @@ func (b *Bob) Usable() []Sample {
 // metres and how well that is known. Standard uncertainties; zero only where a
 // quantity does not arise, never for "unknown".
 type Calibration struct {
-	MetresPerPixel  float64 // near the picture's centre, for people and for plots
-	UScale          float64 // relative, of every length
-	ScaleFrom       string  // plain words: where the scale came from
-	VerticalFrom    string  // plain words; empty when nothing gave the vertical and the picture's own upright was taken
-	UVertical       float64 // rad, of the direction of z
-	VerticalKnown   bool    // false: z is merely the picture's upright
-	UClock          float64 // relative, of every duration (50e-6 unless known)
-	DistanceM       float64 // lens to plane of motion; 0 when unknown
-	ReadoutS        float64 // top row to bottom row
-	UReadoutS       float64
-	ExposureS       float64 // as far as it was seen; 0 when not
-	OriginU         float64 // pixel position of x = z = 0
-	OriginV         float64
-	PictureW        int // upright picture, pixels
-	PictureH        int
-	RateFactor      float64
-	LensCorrected   bool
-	TiltCorrected   bool
-	ScaleShares     []Share // what UScale is made of, relative
-	StandDriftRatio float64 // motion of the base over the bob's motion, 0 when not measured
+	MetresPerPixel  float64 `json:"metres_per_pixel"` // near the picture's centre, for people and for plots
+	UScale          float64 `json:"u_scale_rel"`      // relative, of every length
+	ScaleFrom       string  `json:"scale_from"`       // plain words: where the scale came from
+	VerticalFrom    string  `json:"vertical_from"`    // plain words; empty when nothing gave the vertical and the picture's own upright was taken
+	UVertical       float64 `json:"u_vertical_rad"`   // rad, of the direction of z
+	VerticalKnown   bool    `json:"vertical_known"`   // false: z is merely the picture's upright
+	UClock          float64 `json:"u_clock_rel"`      // relative, of every duration (50e-6 unless known)
+	DistanceM       float64 `json:"distance_m"`       // lens to plane of motion; 0 when unknown
+	ReadoutS        float64 `json:"readout_s"`        // top row to bottom row
+	UReadoutS       float64 `json:"u_readout_s"`
+	ExposureS       float64 `json:"exposure_s"`  // as far as it was seen; 0 when not
+	OriginU         float64 `json:"origin_u_px"` // pixel position of x = z = 0
+	OriginV         float64 `json:"origin_v_px"`
+	PictureW        int     `json:"picture_width_px"` // upright picture, pixels
+	PictureH        int     `json:"picture_height_px"`
+	RateFactor      float64 `json:"rate_factor"`
+	LensCorrected   bool    `json:"lens_corrected"`
+	TiltCorrected   bool    `json:"tilt_corrected"`
+	ScaleShares     []Share `json:"scale_shares_rel"`  // what UScale is made of, relative
+	StandDriftRatio float64 `json:"stand_drift_ratio"` // motion of the base over the bob's motion, 0 when not measured
 }
 
 // Share is one contribution to an uncertainty, in the unit of that uncertainty.
 type Share struct {
-	Source string
-	U      float64
+	Source string  `json:"source"`
+	U      float64 `json:"u"`
 }
 
 // Track is what following a clip yields.
