@@ -1,0 +1,491 @@
+package lsq
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+)
+
+// Solve searches for the least squares of pr from start (length N). It returns
+// an error for a Problem that makes no sense, for a start at which the residuals
+// do not exist, and with the Summary so far when ctx ends. A search that does
+// not converge is no error: Summary.Converged and Summary.Reason tell.
+func Solve(ctx context.Context, pr Problem, start []float64, opt Options) (*Summary, error) {
+	if err := check(&pr, start, &opt); err != nil {
+		return nil, err
+	}
+	s, err := newSearch(ctx, &pr, start, opt)
+	if err != nil {
+		return nil, err
+	}
+	err = s.run()
+	if opt.Loss.Kind != Squares && err == nil {
+		err = s.robust()
+	}
+	if err != nil && !errors.Is(err, ctx.Err()) {
+		return nil, err
+	}
+	sum, sumErr := s.summary()
+	if err == nil {
+		err = sumErr
+	}
+	return sum, err
+}
+
+// check looks at the shapes of what came in and fills in the defaults.
+func check(pr *Problem, start []float64, opt *Options) error {
+	switch {
+	case pr.N <= 0 || pr.M <= 0:
+		return fmt.Errorf("lsq: a problem needs parameters and residuals, it has N = %d, M = %d", pr.N, pr.M)
+	case pr.Residuals == nil:
+		return errors.New("lsq: a problem needs a residual function")
+	case len(start) != pr.N:
+		return fmt.Errorf("lsq: the start has %d parameters, the problem %d", len(start), pr.N)
+	}
+	for _, l := range []struct {
+		what string
+		n    int
+	}{{"Names", len(pr.Names)}, {"Lo", len(pr.Lo)}, {"Hi", len(pr.Hi)}, {"Scale", len(pr.Scale)}, {"Hold", len(pr.Hold)}} {
+		if l.n != 0 && l.n != pr.N {
+			return fmt.Errorf("lsq: %s has %d entries for %d parameters", l.what, l.n, pr.N)
+		}
+	}
+	if pr.Names == nil {
+		pr.Names = make([]string, pr.N)
+		for i := range pr.Names {
+			pr.Names[i] = fmt.Sprintf("p%d", i+1)
+		}
+	}
+	if pr.Hold == nil {
+		pr.Hold = make([]bool, pr.N)
+	}
+	fill := func(x []float64, v float64) []float64 {
+		if x != nil {
+			return x
+		}
+		return slices.Repeat([]float64{v}, pr.N)
+	}
+	pr.Lo, pr.Hi = fill(pr.Lo, math.Inf(-1)), fill(pr.Hi, math.Inf(1))
+	pr.Scale = slices.Clone(fill(pr.Scale, 0))
+	pr.least = slices.Clone(pr.Scale)
+	for i, name := range pr.Names {
+		if math.IsNaN(start[i]) || math.IsInf(start[i], 0) {
+			return fmt.Errorf("lsq: the start of %s is %v", name, start[i])
+		}
+		if !pr.Hold[i] && !(pr.Lo[i] < pr.Hi[i]) {
+			return fmt.Errorf("lsq: the bounds of %s leave no room: %v … %v", name, pr.Lo[i], pr.Hi[i])
+		}
+		if !(pr.Scale[i] > 0) || math.IsInf(pr.Scale[i], 0) {
+			pr.Scale[i] = math.Abs(start[i])
+			pr.least[i] = 0.01 * pr.Scale[i]
+			if pr.Scale[i] == 0 {
+				pr.Scale[i], pr.least[i] = 1, 1
+			}
+		}
+	}
+	if len(pr.Prior) > 0 && !opt.SigmaKnown {
+		return errors.New("lsq: priors need residuals in units of their standard uncertainty (Options.SigmaKnown)")
+	}
+	for _, p := range pr.Prior {
+		if p.Parameter < 0 || p.Parameter >= pr.N || !(p.U > 0) || math.IsNaN(p.Value) {
+			return fmt.Errorf("lsq: prior on parameter %d of %d with value %v and uncertainty %v", p.Parameter, pr.N, p.Value, p.U)
+		}
+	}
+	free := 0
+	for _, h := range pr.Hold {
+		if !h {
+			free++
+		}
+	}
+	if rows := pr.M + len(pr.Prior); free > rows {
+		return fmt.Errorf("lsq: %d residuals cannot determine %d free parameters: hold some or give more data", rows, free)
+	}
+	def := func(x *float64, v float64) {
+		if *x <= 0 {
+			*x = v
+		}
+	}
+	def(&opt.TolF, 1e-14)
+	def(&opt.TolP, 1e-12)
+	def(&opt.TolG, 1e-14)
+	def(&opt.Radius, 1)
+	def(&opt.DiffStep, 6.055454452393343e-06)
+	def(&opt.RankTol, 1e-7)
+	if pr.Jacobian != nil && opt.RankTol == 1e-7 {
+		opt.RankTol = 1e-11
+	}
+	if opt.MaxIterations <= 0 {
+		opt.MaxIterations = 500
+	}
+	return nil
+}
+
+// search is the state of one search. Rows are residuals, then priors; columns
+// are the free parameters.
+type search struct {
+	ctx     context.Context
+	pr      *Problem
+	opt     Options
+	free    []int
+	m, n    int
+	p       []float64 // full
+	trial   []float64 // full
+	r, rt   []float64 // raw residuals and priors, at p and at trial
+	jac     []float64 // raw, column-major m×n
+	rows    []float64 // M×N, for the caller's Jacobian
+	work    []float64 // column-major m×n, destroyed by triangle
+	q       []float64 // m
+	weight  []float64 // √ρ' per row; nil for plain squares
+	tri     []float64 // n×n row-major
+	grad    []float64 // half the gradient, n
+	colNorm []float64
+	d       []float64 // Moré's scale
+	box     *box
+	diff    *differ
+	k       float64 // tuning × scale of the loss
+	cost    float64
+	radius  float64
+	evals   int
+	iters   int
+	done    bool
+	why     string
+	lastErr error // of the last rejected trial
+}
+
+func newSearch(ctx context.Context, pr *Problem, start []float64, opt Options) (*search, error) {
+	s := &search{ctx: ctx, pr: pr, opt: opt, k: 1}
+	for j, h := range pr.Hold {
+		if !h {
+			s.free = append(s.free, j)
+		}
+	}
+	s.n, s.m = len(s.free), pr.M+len(pr.Prior)
+	s.p, s.trial = slices.Clone(start), make([]float64, pr.N)
+	for _, j := range s.free {
+		s.p[j] = min(max(s.p[j], pr.Lo[j]), pr.Hi[j])
+	}
+	m, n := s.m, s.n
+	s.r, s.rt, s.q = make([]float64, m), make([]float64, m), make([]float64, m)
+	s.jac, s.work = make([]float64, m*n), make([]float64, m*n)
+	s.tri, s.grad, s.colNorm, s.d = make([]float64, n*n), make([]float64, n), make([]float64, n), make([]float64, n)
+	if pr.Jacobian != nil {
+		s.rows = make([]float64, pr.M*pr.N)
+	} else {
+		s.diff = newDiffer(s)
+	}
+	s.box = newBox(n)
+	if opt.Loss.Kind != Squares {
+		s.weight = make([]float64, m)
+		for i := range s.weight {
+			s.weight[i] = 1
+		}
+	}
+	bad, err := s.residuals(s.p, s.r)
+	if err != nil {
+		return nil, fmt.Errorf("lsq: the residuals cannot be computed at the start: %w", err)
+	}
+	if bad >= 0 {
+		return nil, fmt.Errorf("lsq: residual %d of %d is %v at the start: start elsewhere or mend the data", bad, pr.M, s.r[bad])
+	}
+	return s, nil
+}
+
+// residuals evaluates data and priors; bad is the first row that is not finite,
+// or −1.
+func (s *search) residuals(p, r []float64) (bad int, err error) {
+	s.evals++
+	if err := s.pr.Residuals(p, r[:s.pr.M]); err != nil {
+		return -1, err
+	}
+	for i, pri := range s.pr.Prior {
+		r[s.pr.M+i] = (p[pri.Parameter] - pri.Value) / pri.U
+	}
+	return firstBad(r), nil
+}
+
+func firstBad(r []float64) int {
+	for i, x := range r {
+		if x-x != 0 { // NaN or ±Inf
+			return i
+		}
+	}
+	return -1
+}
+
+// total is the cost: ρ over the data, plain squares over the priors.
+func (s *search) total(r []float64) float64 {
+	m := s.pr.M
+	return s.loss().cost(r[:m], s.k) + Loss{}.cost(r[m:], 1)
+}
+
+// loss is the loss in force: plain squares until a scale is known.
+func (s *search) loss() Loss {
+	if s.weight == nil || s.k == 0 {
+		return Loss{}
+	}
+	return s.opt.Loss
+}
+
+// reweigh sets the rows' weights for the residuals at p.
+func (s *search) reweigh() {
+	if s.weight == nil {
+		return
+	}
+	loss := s.loss()
+	for i, x := range s.r[:s.pr.M] {
+		if loss.Kind == Squares {
+			s.weight[i] = 1
+			continue
+		}
+		x /= s.k
+		_, slope := loss.rho(x * x)
+		s.weight[i] = math.Sqrt(slope)
+	}
+}
+
+// jacobian fills jac at p.
+func (s *search) jacobian() error {
+	m, n := s.m, s.n
+	if s.pr.Jacobian != nil {
+		if err := s.pr.Jacobian(s.p, s.rows); err != nil {
+			return fmt.Errorf("lsq: the Jacobian cannot be computed at %v: %w", s.p, err)
+		}
+		for c, j := range s.free {
+			col := s.jac[c*m : c*m+s.pr.M]
+			for i := range col {
+				col[i] = s.rows[i*s.pr.N+j]
+			}
+			if bad := firstBad(col); bad >= 0 {
+				return fmt.Errorf("lsq: the Jacobian of residual %d by %s is %v", bad, s.pr.Names[j], col[bad])
+			}
+		}
+	} else if err := s.diff.fill(); err != nil {
+		return err
+	}
+	for c := range n {
+		tail := s.jac[c*m+s.pr.M : (c+1)*m]
+		for i, pri := range s.pr.Prior {
+			tail[i] = 0
+			if pri.Parameter == s.free[c] {
+				tail[i] = 1 / pri.U
+			}
+		}
+	}
+	return nil
+}
+
+// factor weights and factors the Jacobian at p: tri, q, grad, colNorm, d.
+func (s *search) factor() {
+	m, n := s.m, s.n
+	copy(s.work, s.jac)
+	copy(s.q, s.r)
+	if s.weight != nil {
+		for i, w := range s.weight {
+			s.q[i] *= w
+		}
+		for c := range n {
+			col := s.work[c*m : (c+1)*m]
+			for i, w := range s.weight {
+				col[i] *= w
+			}
+		}
+	}
+	triangle(s.work, m, n, s.q, s.tri)
+	for c := range n {
+		var g, ss float64
+		for i := 0; i <= c; i++ {
+			g += s.tri[i*n+c] * s.q[i]
+			ss = math.Hypot(ss, s.tri[i*n+c])
+		}
+		s.grad[c], s.colNorm[c] = g, ss
+		s.d[c] = max(s.d[c], ss)
+	}
+}
+
+// run searches with the loss and scale in force until it stops.
+func (s *search) run() error {
+	s.done, s.why, s.radius, s.lastErr = false, "", 0, nil
+	clear(s.d)
+	s.cost = s.total(s.r)
+	if s.n == 0 {
+		s.done, s.why = true, "every parameter is held: nothing to search"
+		return nil
+	}
+	for last := s.iters + s.opt.MaxIterations; ; s.iters++ {
+		if err := s.ctx.Err(); err != nil {
+			s.why = "stopped from outside before it had converged"
+			return err
+		}
+		if s.iters >= last {
+			s.why = fmt.Sprintf("not converged after %d iterations", s.opt.MaxIterations)
+			return nil
+		}
+		s.reweigh()
+		if err := s.jacobian(); err != nil {
+			return err
+		}
+		if s.ctx.Err() != nil {
+			continue // the differences may be incomplete
+		}
+		s.factor()
+		if s.flat() {
+			return nil
+		}
+		if err := s.advance(); err != nil || s.why != "" {
+			return err
+		}
+	}
+}
+
+// flat tells whether the gradient, with what bounds forbid taken out, vanishes.
+func (s *search) flat() bool {
+	norm := 0.0
+	for i, x := range s.r {
+		if s.weight != nil {
+			x *= s.weight[i]
+		}
+		norm = math.Hypot(norm, x)
+	}
+	if norm == 0 {
+		s.done, s.why = true, "the residuals vanish"
+		return true
+	}
+	worst := 0.0
+	for c, j := range s.free {
+		if s.colNorm[c] == 0 || s.blocked(c, j) {
+			continue
+		}
+		worst = max(worst, math.Abs(s.grad[c])/s.colNorm[c]/norm)
+	}
+	if worst <= s.opt.TolG {
+		s.done, s.why = true, "the gradient vanishes: the residuals stand at right angles on every derivative"
+		return true
+	}
+	return false
+}
+
+// blocked tells whether a bound forbids to go downhill along free parameter c.
+func (s *search) blocked(c, j int) bool {
+	return s.p[j] <= s.pr.Lo[j] && s.grad[c] >= 0 || s.p[j] >= s.pr.Hi[j] && s.grad[c] <= 0
+}
+
+// advance makes one accepted step from p, or sets why when the search is over.
+func (s *search) advance() error {
+	n := s.n
+	for c := range n {
+		if s.d[c] == 0 {
+			s.d[c] = 1
+		}
+	}
+	length := s.length(s.p)
+	if s.radius == 0 {
+		s.radius = s.opt.Radius * length
+		if length == 0 {
+			s.radius = s.opt.Radius
+		}
+	}
+	s.box.load(s)
+	for {
+		step, foreseen := s.box.step(s.radius)
+		stepLen := 0.0
+		copy(s.trial, s.p)
+		for c, j := range s.free {
+			s.trial[j] = min(max(s.p[j]+step[c], s.pr.Lo[j]), s.pr.Hi[j])
+			stepLen = math.Hypot(stepLen, s.d[c]*step[c])
+		}
+		if s.iters == 0 && stepLen > 0 {
+			s.radius = min(s.radius, stepLen)
+		}
+		foreseen /= s.cost
+		bad, err := s.residuals(s.trial, s.rt)
+		s.lastErr = err
+		cost := math.Inf(1)
+		if err == nil && bad < 0 {
+			cost = s.total(s.rt)
+		}
+		if e := s.ctx.Err(); e != nil {
+			s.why = "stopped from outside before it had converged"
+			return e
+		}
+		actual := 1 - cost/s.cost
+		ratio := 0.0
+		if foreseen > 0 {
+			ratio = actual / foreseen
+		}
+		if math.IsInf(actual, -1) {
+			s.radius = 0.1 * min(s.radius, stepLen)
+		} else if ratio < 0.25 {
+			s.radius = min(s.radius, stepLen) * shrink(actual, foreseen, ratio)
+		} else if ratio > 0.75 {
+			s.radius = max(s.radius, 2*stepLen)
+		}
+		accepted := actual > 0 && ratio > 1e-4
+		if accepted {
+			s.p, s.trial = s.trial, s.p
+			s.r, s.rt = s.rt, s.r
+			s.cost = cost
+		}
+		switch {
+		case math.Abs(actual) <= s.opt.TolF && foreseen <= s.opt.TolF && ratio <= 2:
+			s.done, s.why = true, "the sum of squares changes no more"
+		case s.radius <= s.opt.TolP*length && math.Abs(foreseen) < 1e-6:
+			s.done, s.why = true, "the parameters change no more"
+		case s.radius <= 1e-16*length || stepLen == 0:
+			s.why = "no shorter step lowers the sum of squares"
+			if s.lastErr != nil {
+				s.why += ", and the last one failed: " + s.lastErr.Error()
+			}
+		}
+		if accepted || s.why != "" {
+			return nil
+		}
+	}
+}
+
+// shrink is how much shorter the trust region gets after a step that did less
+// than a quarter of what was foreseen: the least of the parabola through the
+// cost and its slope at p and the cost at the trial, within 0.1 … 0.5.
+func shrink(actual, foreseen, ratio float64) float64 {
+	if actual >= 0 && ratio > 0 {
+		return 0.5
+	}
+	// cost(t) ≈ 1 + g·t + (−actual − g)·t², where the slope g ≈ −2·foreseen.
+	g := -2 * foreseen
+	return min(max(-g/(2*(-actual-g)), 0.1), 0.5)
+}
+
+// length is the scaled length of the parameters.
+func (s *search) length(p []float64) float64 {
+	sum := 0.0
+	for c, j := range s.free {
+		sum = math.Hypot(sum, s.d[c]*p[j])
+	}
+	return sum
+}
+
+// robust fits again with the loss's scale found from the residuals, until the
+// scale stays. The first fit was made with plain squares when no scale is known.
+func (s *search) robust() error {
+	if s.opt.Loss.Scale > 0 || s.opt.SigmaKnown {
+		return nil
+	}
+	buf := make([]float64, s.pr.M)
+	for range 50 {
+		old := s.k
+		scale := medianAbs(s.r[:s.pr.M], buf) / 0.6745
+		if scale == 0 {
+			s.why += "; more than half of the residuals vanish, so no outlier could be told"
+			return nil
+		}
+		s.k = scale * s.opt.Loss.tuning()
+		if math.Abs(s.k-old) <= 1e-6*s.k {
+			return nil
+		}
+		if err := s.run(); err != nil {
+			return err
+		}
+	}
+	return nil
+}
