@@ -17,6 +17,9 @@ type box struct {
 	full       bool  // svd holds all columns
 	svd        *svd
 	anyBlocked bool
+	bounded    bool    // the last step met a bound
+	lambda     float64 // damping of the last solve
+	undamped   float64 // scaled length of the step without damping
 	blocked    []bool
 }
 
@@ -51,7 +54,7 @@ func (b *box) step(radius float64) (step []float64, foreseen float64) {
 		}
 	}
 	left := radius * radius // what of the radius the parameters put on bounds leave
-	bounded := b.anyBlocked
+	b.bounded = b.anyBlocked
 	for len(b.active) > 0 && left > 0 {
 		b.solve(math.Sqrt(left))
 		hit := false
@@ -78,7 +81,7 @@ func (b *box) step(radius float64) (step []float64, foreseen float64) {
 		if !hit {
 			break
 		}
-		bounded, b.full = true, false
+		b.bounded, b.full = true, false
 		if left <= 0 {
 			for _, c := range b.active {
 				b.s[c] = 0
@@ -86,7 +89,7 @@ func (b *box) step(radius float64) (step []float64, foreseen float64) {
 		}
 	}
 	foreseen = b.gain(b.s)
-	if bounded {
+	if b.bounded {
 		if g := b.gradientStep(radius); g > 10*foreseen || !(foreseen > 0) {
 			return b.cauchy, g
 		}
@@ -132,11 +135,13 @@ func (b *box) solve(radius float64) {
 	}
 	lambda := 0.0
 	length, slope := norm(0)
+	b.undamped = length
 	// Newton on 1/|s| − 1/radius, which rises to its root from the left.
 	for it := 0; it < 50 && length > 1.1*radius && slope > 0; it++ {
 		lambda += length * length / slope * (length - radius) / radius
 		length, slope = norm(lambda)
 	}
+	b.lambda = lambda
 	for a := range k {
 		b.y[a] = 0
 		if d.s[a] > tiny {
@@ -149,6 +154,31 @@ func (b *box) solve(radius float64) {
 			sum += d.v[a*k+i] * b.y[a]
 		}
 		b.s[c] = sum / b.d[c]
+	}
+}
+
+// answer replaces g, a vector Jᵀ·x over all columns, by the damped least-squares
+// answer −(JᵀJ + λD²)⁻¹·g with the damping of the last step. It needs a last
+// step that met no bound.
+func (b *box) answer(g []float64) {
+	n, d := b.n, b.svd
+	tiny := d.s[d.perm[0]] * 1e-15 * float64(n)
+	for a := range n {
+		b.y[a] = 0
+		if d.s[a] <= tiny {
+			continue
+		}
+		for i := range n {
+			b.y[a] -= d.v[a*n+i] * g[i] / b.d[i]
+		}
+		b.y[a] /= sq(d.s[a]) + b.lambda
+	}
+	for i := range n {
+		sum := 0.0
+		for a := range n {
+			sum += d.v[a*n+i] * b.y[a]
+		}
+		g[i] = sum / b.d[i]
 	}
 }
 

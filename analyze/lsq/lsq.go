@@ -55,8 +55,9 @@ type Prior struct {
 type Options struct {
 	MaxIterations int // 0: 500
 	// TolF stops the search when a step is foreseen to lower, and does lower, the
-	// sum of squares by less than this fraction. 0: 1e-14, which leaves
-	// parameters within about 1e-6 of their standard uncertainty.
+	// sum of squares by less than this fraction. 0: 1e-16, which leaves
+	// parameters within about 1e-7 of their standard uncertainty; 1e-10 is enough
+	// for most uses and saves the last few evaluations.
 	TolF float64
 	// TolP stops it when a step is shorter than this fraction of the parameters,
 	// in the scaled norm. 0: 1e-12.

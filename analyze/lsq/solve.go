@@ -6,6 +6,8 @@ import (
 	"fmt"
 	"math"
 	"slices"
+
+	"gonum.org/v1/gonum/floats"
 )
 
 // Solve searches for the least squares of pr from start (length N). It returns
@@ -20,7 +22,7 @@ func Solve(ctx context.Context, pr Problem, start []float64, opt Options) (*Summ
 	if err != nil {
 		return nil, err
 	}
-	err = s.run()
+	err = s.try()
 	if opt.Loss.Kind != Squares && err == nil {
 		err = s.robust()
 	}
@@ -107,7 +109,7 @@ func check(pr *Problem, start []float64, opt *Options) error {
 			*x = v
 		}
 	}
-	def(&opt.TolF, 1e-14)
+	def(&opt.TolF, 1e-16)
 	def(&opt.TolP, 1e-12)
 	def(&opt.TolG, 1e-14)
 	def(&opt.Radius, 1)
@@ -142,20 +144,29 @@ type search struct {
 	grad    []float64 // half the gradient, n
 	colNorm []float64
 	d       []float64 // Moré's scale
+	curve   []float64 // second-order part of a step
 	box     *box
 	diff    *differ
 	k       float64 // tuning × scale of the loss
 	cost    float64
 	radius  float64
+	rank0   int // rank at the start
 	evals   int
 	iters   int
+	damp    damping // in force
 	done    bool
 	why     string
 	lastErr error // of the last rejected trial
 }
 
 func newSearch(ctx context.Context, pr *Problem, start []float64, opt Options) (*search, error) {
-	s := &search{ctx: ctx, pr: pr, opt: opt, k: 1}
+	s := &search{ctx: ctx, pr: pr, opt: opt, k: 1, rank0: -1}
+	if opt.Loss.Kind != Squares {
+		s.k = opt.Loss.tuning() * opt.Loss.Scale // 0 while the scale is not known
+		if opt.Loss.Scale <= 0 && opt.SigmaKnown {
+			s.k = opt.Loss.tuning()
+		}
+	}
 	for j, h := range pr.Hold {
 		if !h {
 			s.free = append(s.free, j)
@@ -170,12 +181,14 @@ func newSearch(ctx context.Context, pr *Problem, start []float64, opt Options) (
 	s.r, s.rt, s.q = make([]float64, m), make([]float64, m), make([]float64, m)
 	s.jac, s.work = make([]float64, m*n), make([]float64, m*n)
 	s.tri, s.grad, s.colNorm, s.d = make([]float64, n*n), make([]float64, n), make([]float64, n), make([]float64, n)
+	s.curve = make([]float64, n)
 	if pr.Jacobian != nil {
 		s.rows = make([]float64, pr.M*pr.N)
 	} else {
 		s.diff = newDiffer(s)
 	}
 	s.box = newBox(n)
+	s.damp = dampings[0]
 	if opt.Loss.Kind != Squares {
 		s.weight = make([]float64, m)
 		for i := range s.weight {
@@ -300,8 +313,75 @@ func (s *search) factor() {
 			ss = math.Hypot(ss, s.tri[i*n+c])
 		}
 		s.grad[c], s.colNorm[c] = g, ss
-		s.d[c] = max(s.d[c], ss)
+		s.d[c] = max(s.damp.memory*s.d[c], ss)
 	}
+}
+
+// damping is one way to bound the steps: the first radius relative to
+// Options.Radius, and how much of a column's greatest length so far goes on
+// bounding its parameter (1: Moré's choice; 0: the present length alone).
+type damping struct{ radius, memory float64 }
+
+var dampings = [...]damping{{1, 0.5}, {1, 0.9}, {0.1, 0.7}, {0.01, 1}}
+
+// try runs from the start. A long early step can throw a parameter to where it
+// has no effect any more, and no gradient leads back: when the rank at the end is
+// lower than it was at the start, or the search did not converge, it is tried
+// again with other dampings, and the best end is kept.
+func (s *search) try() error {
+	type end struct {
+		p, r []float64
+		cost float64
+		done bool
+		why  string
+		damp damping
+	}
+	start := end{p: slices.Clone(s.p), r: slices.Clone(s.r)}
+	var best *end
+	for _, d := range dampings {
+		copy(s.p, start.p)
+		copy(s.r, start.r)
+		s.damp = d
+		if err := s.run(); err != nil {
+			return err
+		}
+		lost := s.n > 0 && s.rank() < s.rank0
+		if lost {
+			s.why += "; on the way a parameter lost the effect that it had at the start"
+		}
+		if best == nil || s.cost < best.cost {
+			best = &end{slices.Clone(s.p), slices.Clone(s.r), s.cost, s.done, s.why, d}
+		}
+		if s.done && !lost {
+			break
+		}
+	}
+	copy(s.p, best.p)
+	copy(s.r, best.r)
+	s.cost, s.done, s.why, s.damp = best.cost, best.done, best.why, best.damp
+	return nil
+}
+
+// rank is that of the last factored Jacobian.
+func (s *search) rank() int {
+	n, d := s.n, s.box.svd
+	for c := range n {
+		norm := s.colNorm[c]
+		if norm == 0 {
+			norm = 1
+		}
+		for i := range n {
+			d.us[c*n+i] = s.tri[i*n+c] / norm
+		}
+	}
+	d.factor(n, n)
+	rank := 0
+	for _, x := range d.s[:n] {
+		if x > s.opt.RankTol*d.s[d.perm[0]] {
+			rank++
+		}
+	}
+	return rank
 }
 
 // run searches with the loss and scale in force until it stops.
@@ -330,6 +410,9 @@ func (s *search) run() error {
 			continue // the differences may be incomplete
 		}
 		s.factor()
+		if s.rank0 < 0 {
+			s.rank0 = s.rank()
+		}
 		if s.flat() {
 			return nil
 		}
@@ -381,9 +464,9 @@ func (s *search) advance() error {
 	}
 	length := s.length(s.p)
 	if s.radius == 0 {
-		s.radius = s.opt.Radius * length
-		if length == 0 {
-			s.radius = s.opt.Radius
+		s.radius = s.opt.Radius * s.damp.radius
+		if length > 0 {
+			s.radius *= length
 		}
 	}
 	s.box.load(s)
@@ -395,10 +478,15 @@ func (s *search) advance() error {
 			s.trial[j] = min(max(s.p[j]+step[c], s.pr.Lo[j]), s.pr.Hi[j])
 			stepLen = math.Hypot(stepLen, s.d[c]*step[c])
 		}
-		if s.iters == 0 && stepLen > 0 {
-			s.radius = min(s.radius, stepLen)
-		}
 		foreseen /= s.cost
+		if foreseen > 1e-4 && !s.box.bounded {
+			if !s.bend(step, stepLen) {
+				clear(s.curve)
+			}
+			for c, j := range s.free {
+				s.trial[j] = min(max(s.p[j]+step[c]+s.curve[c], s.pr.Lo[j]), s.pr.Hi[j])
+			}
+		}
 		bad, err := s.residuals(s.trial, s.rt)
 		s.lastErr = err
 		cost := math.Inf(1)
@@ -414,6 +502,10 @@ func (s *search) advance() error {
 		if foreseen > 0 {
 			ratio = actual / foreseen
 		}
+		const noise = 1e-13 // of a sum of squares, from rounding
+		if foreseen < noise && math.Abs(actual) < noise {
+			ratio = 1 // too small to be seen in the sum: the gradient knows better
+		}
 		if math.IsInf(actual, -1) {
 			s.radius = 0.1 * min(s.radius, stepLen)
 		} else if ratio < 0.25 {
@@ -421,16 +513,16 @@ func (s *search) advance() error {
 		} else if ratio > 0.75 {
 			s.radius = max(s.radius, 2*stepLen)
 		}
-		accepted := actual > 0 && ratio > 1e-4
+		accepted := ratio > 1e-4
 		if accepted {
 			s.p, s.trial = s.trial, s.p
 			s.r, s.rt = s.rt, s.r
 			s.cost = cost
 		}
 		switch {
-		case math.Abs(actual) <= s.opt.TolF && foreseen <= s.opt.TolF && ratio <= 2:
+		case foreseen <= s.opt.TolF && math.Abs(actual) <= max(s.opt.TolF, noise) && ratio <= 2:
 			s.done, s.why = true, "the sum of squares changes no more"
-		case s.radius <= s.opt.TolP*length && math.Abs(foreseen) < 1e-6:
+		case s.radius <= s.opt.TolP*length && (foreseen < 1e-6 || s.box.full && s.box.undamped <= 1e-6*length):
 			s.done, s.why = true, "the parameters change no more"
 		case s.radius <= 1e-16*length || stepLen == 0:
 			s.why = "no shorter step lowers the sum of squares"
@@ -442,6 +534,44 @@ func (s *search) advance() error {
 			return nil
 		}
 	}
+}
+
+// bend finds the geodesic acceleration that makes a long step follow a curved
+// valley (M. K. Transtrum and J. P. Sethna, arXiv:1201.5885, 2012): half the
+// least-squares answer to the second derivative of the residuals along the
+// step. It fills curve and tells whether to add it; not when it is so long that
+// the expansion cannot be trusted.
+func (s *search) bend(step []float64, stepLen float64) bool {
+	const h = 0.1 // of the step; as in the paper
+	for c, j := range s.free {
+		s.trial[j] += (h - 1) * step[c]
+	}
+	if bad, err := s.residuals(s.trial, s.rt); err != nil || bad >= 0 {
+		return false
+	}
+	m, n := s.m, s.n
+	for i := range m {
+		s.rt[i] = (s.rt[i] - s.r[i]) / h
+	}
+	for c := range n {
+		floats.AddScaled(s.rt, -step[c], s.jac[c*m:(c+1)*m])
+	}
+	floats.Scale(2/h, s.rt)
+	if s.weight != nil {
+		for i, w := range s.weight {
+			s.rt[i] *= w * w
+		}
+	}
+	for c := range n {
+		s.curve[c] = floats.Dot(s.jac[c*m:(c+1)*m], s.rt)
+	}
+	s.box.answer(s.curve)
+	length := 0.0
+	for c := range n {
+		s.curve[c] *= 0.5
+		length = math.Hypot(length, s.d[c]*s.curve[c])
+	}
+	return 2*length <= 0.75*stepLen
 }
 
 // shrink is how much shorter the trust region gets after a step that did less
