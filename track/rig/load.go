@@ -1,0 +1,112 @@
+package rig
+
+import (
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+	"reflect"
+)
+
+// maxBytes bounds a rig file; a real one has a few kilobytes.
+const maxBytes = 1 << 20
+
+// Load reads and checks a rig file. The error is one line per problem, each
+// with file, line and key.
+func Load(path string) (*Rig, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		var pe *os.PathError
+		if errors.As(err, &pe) {
+			err = pe.Err
+		}
+		return nil, fmt.Errorf("the rig %s cannot be read: %w", path, err)
+	}
+	defer f.Close()
+	data, err := io.ReadAll(io.LimitReader(f, maxBytes+1))
+	if err != nil {
+		return nil, fmt.Errorf("the rig %s cannot be read: %w", path, errors.Unwrap(err))
+	}
+	r, err := Parse(filepath.Base(path), data)
+	if err != nil {
+		return nil, err
+	}
+	r.Path = path
+	return r, nil
+}
+
+// Parse reads and checks the text of a rig; name stands for the file in errors.
+// The error is a Problems.
+func Parse(name string, data []byte) (*Rig, error) {
+	if len(data) > maxBytes {
+		return nil, Problems{{File: name, Text: "this is larger than 1 MB: it is not a rig"}}
+	}
+	tree, lines, err := readTOML(name, data)
+	if err != nil {
+		return nil, err
+	}
+	d := &decoder{reporter: reporter{file: name}, lines: lines}
+	r := &Rig{Path: name}
+	d.table(tree, reflect.ValueOf(r).Elem(), "", "a rig")
+	if d.err() == nil { // a check of half-read data would blame the wrong thing
+		c := &checker{reporter: &d.reporter, lines: lines, r: r}
+		c.all()
+	}
+	if err := d.err(); err != nil {
+		return nil, err
+	}
+	return r, nil
+}
+
+// ForTracking tells what a rig lacks for following its bobs in a clip; a rig
+// for simulation needs neither bobs nor a scale. Errors name the remedy.
+func (r *Rig) ForTracking() error {
+	rep := &reporter{file: filepath.Base(r.Path)}
+	if len(r.Bobs) == 0 {
+		rep.say(0, "there is no [[bob]]: name at least one thing to follow, with its colour or look")
+	}
+	s := r.Scale
+	switch {
+	case s.Target != "" || (s.LengthM.Set && (len(s.EndsPX) == 2 || s.MarkLook != "")):
+	case s.LengthM.Set:
+		rep.say(0, "[scale] gives a length but not where it is: add ends_px = [[u, v], [u, v]], or mark_look for two marks that are found by themselves")
+	case len(s.EndsPX) == 2 || s.MarkLook != "":
+		rep.say(0, "[scale] says where a length is but not how long it is: add length_mm")
+	default:
+		rep.say(0, "there is no scale: add [scale] with length_mm and ends_px, or with target = the name of a printed target")
+	}
+	return rep.err()
+}
+
+// XYZ turns a place or direction of a rig, [x, z] or [x, y, z], into x, y, z. A
+// missing one is the origin.
+func XYZ(v []float64) [3]float64 {
+	switch len(v) {
+	case 2:
+		return [3]float64{v[0], 0, v[1]}
+	case 3:
+		return [3]float64{v[0], v[1], v[2]}
+	}
+	return [3]float64{}
+}
+
+// FindPart returns the part of that name, or nil.
+func (r *Rig) FindPart(name string) *Part {
+	for i := range r.Parts {
+		if r.Parts[i].Name == name {
+			return &r.Parts[i]
+		}
+	}
+	return nil
+}
+
+// FindMagnet returns the magnet of that name, or nil.
+func (r *Rig) FindMagnet(name string) *Magnet {
+	for i := range r.Magnets {
+		if r.Magnets[i].Name == name {
+			return &r.Magnets[i]
+		}
+	}
+	return nil
+}
