@@ -1,0 +1,144 @@
+package film
+
+import (
+	"cmp"
+	"math"
+	"slices"
+)
+
+// Render draws the frame whose top row's exposure has its middle at t (s) into
+// dst: 3·Width bytes per row, blue, green, red, as a camera gives them, noise
+// and rounding included. It panics if dst is too short. The same scene, t and
+// Seed give the same bytes.
+func (s *Scene) Render(t float64, dst []byte) {
+	st := s.stage()
+	d := st.pool.Get().(*desk)
+	d.render(st, t)
+	st.grain.develop(d.frame, dst, s.Camera.Width, t)
+	st.pool.Put(d)
+}
+
+// Levels is Render without noise and with 1/128 grey level instead of whole
+// ones: dst has Width·Height·3 numbers, blue, green, red.
+func (s *Scene) Levels(t float64, dst []float32) {
+	st := s.stage()
+	d := st.pool.Get().(*desk)
+	d.render(st, t)
+	for i, x := range d.frame {
+		dst[i] = float32(x) / level
+	}
+	st.pool.Put(d)
+}
+
+// render leaves the frame in d.frame.
+func (d *desk) render(st *stage, t float64) {
+	s := st.scene
+	c := &s.Camera
+	if d.frame == nil {
+		d.frame = slices.Clone(st.calm)
+		for i := range s.Bobs {
+			b := &ball{b: &s.Bobs[i], r: s.Bobs[i].DiameterM / 2}
+			d.balls = append(d.balls, b)
+			d.shapes = append(d.shapes, b)
+		}
+		for i := range s.Rods {
+			if !s.Rods[i].Still {
+				d.shapes = append(d.shapes, &rod{r: &s.Rods[i]})
+			}
+		}
+	}
+	for _, b := range d.dirty {
+		for v := b.y0; v < b.y1; v++ {
+			i, j := 3*(v*c.Width+b.x0), 3*(v*c.Width+b.x1)
+			copy(d.frame[i:j], st.calm[i:j])
+		}
+	}
+	d.dirty = d.dirty[:0]
+	d.aim(st, t)
+	slices.SortStableFunc(d.shapes, func(a, b shape) int { return cmp.Compare(b.depth(), a.depth()) })
+	shadowTimes := []float64{t - c.ExposureS/3, t, t + c.ExposureS/3}
+	if c.ExposureS == 0 {
+		shadowTimes = shadowTimes[1:2]
+	}
+	for y := 0; y < c.Height; y += tile {
+		for x := 0; x < c.Width; x += tile {
+			b := block{x, y, min(x+tile, c.Width), min(y+tile, c.Height)}
+			any := d.expose(st, b, st.halo, d.shapes, d.times)
+			d.shades = d.shades[:0]
+			if st.lamp.shadow > 0 {
+				for _, s := range d.balls {
+					if !s.b.NoShadow && st.shades(s, b) {
+						d.shades = append(d.shades, s)
+					}
+				}
+			}
+			if !any && len(d.shades) == 0 {
+				continue
+			}
+			d.finish(st, b, d.shades, shadowTimes, d.frame)
+			d.dirty = append(d.dirty, b)
+		}
+	}
+}
+
+// aim chooses the instants of the exposure and readies the shapes. The midpoint
+// rule over a smear converges once its steps are near the blur's width (its
+// error goes as exp(−2π²σ²/step²)); the instants are spread so that they have an
+// even exposure's variance, which keeps the acceleration term aτ²/24 exact.
+func (d *desk) aim(st *stage, t float64) {
+	e := st.scene.Camera.ExposureS
+	d.times = append(d.times[:0], t)
+	if e > 0 {
+		d.times = append(d.times[:0], t-e/2, t, t+e/2)
+	}
+	for _, s := range d.shapes {
+		s.aim(st, d.times)
+	}
+	if e == 0 {
+		return
+	}
+	smear := 0.0
+	for _, s := range d.shapes {
+		smear = max(smear, s.smear())
+	}
+	n := max(3, int(math.Ceil(smear/(1.1*math.Sqrt(st.sigma*st.sigma+1.0/12)))))
+	d.times = d.times[:0]
+	spread := e / math.Sqrt(float64(n)*float64(n)-1)
+	for k := range n {
+		d.times = append(d.times, t+spread*(float64(k)-float64(n-1)/2))
+	}
+	for _, s := range d.shapes {
+		s.aim(st, d.times)
+	}
+}
+
+// shades tells whether the ball's shadow on the wall may touch the block.
+func (st *stage) shades(s *ball, b block) bool {
+	l := st.lamp
+	if l.world[1] >= 0 {
+		return false // the lamp is behind the wall
+	}
+	for _, k := range [...]int{0, len(s.p.c) - 1} {
+		c := s.p.c[k][1]
+		var p Vec
+		for i := range 3 {
+			p[i] = st.cam.eye[i] + c[0]*st.cam.right[i] + c[1]*st.cam.down[i] + c[2]*st.cam.ahead[i]
+		}
+		q := add(p, scale(l.world, (st.scene.Wall.Y-p[1])/l.world[1]))
+		qc := st.cam.toCamera(q)
+		if !st.cam.ortho && qc[2] <= 0 {
+			continue
+		}
+		u, v := st.cam.lens(st.cam.flatten(qc))
+		// A shadow is longest where the light grazes the wall.
+		r := (s.r+l.soft)/-l.world[1]*1.3*st.cam.f + 0
+		if !st.cam.ortho {
+			r /= qc[2]
+		}
+		r += s.moved + 2 + float64(st.halo)
+		if u+r >= float64(b.x0) && u-r <= float64(b.x1) && v+r >= float64(b.y0) && v-r <= float64(b.y1) {
+			return true
+		}
+	}
+	return false
+}
