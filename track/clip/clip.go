@@ -61,6 +61,8 @@ type Facts struct {
 	pictures []string  // numbered pictures: their files in order
 	pts      []float64 // played seconds, as the container gives them, ascending
 	start    float64   // the stream's own start time, played seconds
+	keys     []float64 // played seconds of the frames that need no other to be decoded, ascending
+	inOrder  bool      // the container lists no presentation times (avi): frames are known by their order alone
 }
 
 // LostFrames is a hole in the clip's times that whole frames would fill.

@@ -99,20 +99,12 @@ func (f *Frame) Patch(dst *Patch, r image.Rectangle) {
 		}
 		return
 	}
-	// One step to the right in the upright picture is du bytes in the stored one.
-	du := -3 // 180
-	switch f.RotationDeg {
-	case 90:
-		du = -f.Stride
-	case 270:
-		du = f.Stride
-	}
-	if du == -3 {
+	if f.RotationDeg == 180 {
 		for y := 0; y < dst.H; y++ {
 			p, out := f.offset(r.Min.X, r.Min.Y+y), dst.BGR[y*row:(y+1)*row]
-			for i := 0; i+2 < len(out); i += 3 {
-				out[i], out[i+1], out[i+2] = f.Pix[p], f.Pix[p+1], f.Pix[p+2]
-				p -= 3
+			in := f.Pix[p+3-row : p+3]
+			for i, k := 0, row-3; i+2 < len(out) && k+2 < len(in) && k >= 0; i, k = i+3, k-3 {
+				out[i], out[i+1], out[i+2] = in[k], in[k+1], in[k+2]
 			}
 		}
 		return
@@ -126,7 +118,8 @@ func (f *Frame) Patch(dst *Patch, r image.Rectangle) {
 	for x := 0; x < dst.W; x++ {
 		p := f.offset(r.Min.X+x, r.Min.Y)
 		for o := 3 * x; o < n; o += row {
-			dst.BGR[o], dst.BGR[o+1], dst.BGR[o+2] = f.Pix[p], f.Pix[p+1], f.Pix[p+2]
+			out, in := dst.BGR[o:o+3:o+3], f.Pix[p:p+3:p+3]
+			out[0], out[1], out[2] = in[0], in[1], in[2]
 			p += dv
 		}
 	}

@@ -90,7 +90,10 @@ func (f *Facts) readContainer(ctx context.Context) error {
 		}
 	}
 	if at < 0 {
-		return fmt.Errorf("clip %s holds no moving pictures (sound only?); give the video itself", f.Path)
+		if out, err := runProbe(ctx, f.absolute, "-show_entries", "stream=codec_type"); err == nil && bytes.Contains(out, []byte(`"audio"`)) {
+			return fmt.Errorf("clip %s holds sound but no moving pictures; give the video itself", f.Path)
+		}
+		return f.noFrames()
 	}
 	s := p.Streams[at]
 	f.Container, f.Codec, f.Profile, f.PixelFormat = p.Format.Name, s.CodecName, s.Profile, s.PixFmt
@@ -147,17 +150,23 @@ func (f *Facts) readContainer(ctx context.Context) error {
 		}
 		size, _ := strconv.ParseFloat(pk.Size, 64)
 		bytesIn += size
-		switch {
-		case pk.PTS != nil:
-			f.pts = append(f.pts, float64(*pk.PTS)*base)
-		case pk.DTS != nil:
-			f.pts = append(f.pts, float64(*pk.DTS)*base)
+		at := pk.PTS
+		if at == nil {
+			at, f.inOrder = pk.DTS, true
+		}
+		if at == nil {
+			continue
+		}
+		f.pts = append(f.pts, float64(*at)*base)
+		if strings.Contains(pk.Flags, "K") {
+			f.keys = append(f.keys, float64(*at)*base)
 		}
 	}
 	if len(f.pts) == 0 {
-		return fmt.Errorf("clip %s holds no frames: recording stopped before the first one, or the copy failed; film or copy it again", f.Path)
+		return f.noFrames()
 	}
 	sort.Float64s(f.pts)
+	sort.Float64s(f.keys)
 	if s.StartPTS != nil {
 		f.start = float64(*s.StartPTS) * base
 	} else {
@@ -169,6 +178,10 @@ func (f *Facts) readContainer(ctx context.Context) error {
 	}
 	f.SHA256, err = hashFiles(ctx, f.absolute)
 	return err
+}
+
+func (f *Facts) noFrames() error {
+	return fmt.Errorf("clip %s holds no frames: the recording stopped before the first one, or the copy failed; film or copy it again", f.Path)
 }
 
 // runProbe runs ffprobe on a file with every door closed but the file itself.

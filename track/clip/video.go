@@ -35,13 +35,15 @@ type videoSource struct {
 	video  *gocv.VideoCapture
 	mat    gocv.Mat
 	frame  Frame
-	last   int // index of the last frame delivered, −1 before the first
-	missed int // frames listed before the last delivered one that never came
-	at     float64
-	broke  string
+	placed int   // index of the last frame decoded, −1 before the first
+	last   int   // index of the last frame delivered, −1 before the first
+	holes  []gap // stretches of listed frames that could not be delivered
 	ended  bool
 	closed bool
 }
+
+// gap is a stretch of frames, from index first to before index end.
+type gap struct{ first, end int }
 
 func openVideo(f *Facts) (Source, error) {
 	if err := quiet(); err != nil {
@@ -56,7 +58,7 @@ func openVideo(f *Facts) (Source, error) {
 	}
 	video.Set(orientationAuto, 0)
 	return &videoSource{
-		facts: f, video: video, mat: gocv.NewMat(), last: -1, at: math.NaN(),
+		facts: f, video: video, mat: gocv.NewMat(), placed: -1, last: -1,
 	}, nil
 }
 
@@ -70,14 +72,44 @@ func (s *videoSource) Next(ctx context.Context) (*Frame, error) {
 	if s.ended {
 		return nil, io.EOF
 	}
-	if !s.video.Read(&s.mat) || s.mat.Empty() {
-		return nil, s.end()
+	// After a break the decoder goes on with pictures patched from wrong ones,
+	// up to the next frame that needs no other: those are not delivered.
+	broken := false
+	for {
+		ok, failed := s.read()
+		if !ok {
+			return nil, s.end()
+		}
+		at := s.place(s.video.Get(gocv.VideoCapturePosMsec) / 1000)
+		if at >= len(s.facts.Times) { // the decoder invents frames that the container does not list
+			return nil, s.end()
+		}
+		broken = broken || failed || at > s.placed+1
+		s.placed = at
+		if !broken || s.isKey(at) {
+			return s.deliver(at)
+		}
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
 	}
-	at := s.place(s.video.Get(gocv.VideoCapturePosMsec) / 1000)
-	if at >= len(s.facts.Times) {
-		s.ended = true // the decoder invents frames that the container does not list
-		return nil, io.EOF
+}
+
+// read decodes the next picture into the Mat. OpenCV says no at a damaged
+// packet just as at the end of the file, so while frames are due it is asked
+// again, a limited number of times; failed tells that it had said no.
+func (s *videoSource) read() (ok, failed bool) {
+	due := len(s.facts.Times) - 1 - s.placed
+	for try := 0; try <= min(due, 1000); try++ {
+		if s.video.Read(&s.mat) && !s.mat.Empty() {
+			return true, try > 0
+		}
 	}
+	return false, true
+}
+
+// deliver hands out the decoded picture as frame at.
+func (s *videoSource) deliver(at int) (*Frame, error) {
 	w, h := s.mat.Cols(), s.mat.Rows()
 	if w != s.facts.StoredW || h != s.facts.StoredH || s.mat.Type() != gocv.MatTypeCV8UC3 {
 		return nil, fmt.Errorf("clip %s: frame %d is %d × %d pixels where the container says %d × %d; export it again with one size", s.facts.Path, at, w, h, s.facts.StoredW, s.facts.StoredH)
@@ -86,7 +118,9 @@ func (s *videoSource) Next(ctx context.Context) (*Frame, error) {
 	if err != nil {
 		return nil, fmt.Errorf("clip %s: frame %d: %v", s.facts.Path, at, err)
 	}
-	s.missed += at - s.last - 1
+	if at > s.last+1 {
+		s.holes = append(s.holes, gap{s.last + 1, at})
+	}
 	s.last = at
 	s.frame = Frame{Index: at, T: s.facts.Times[at], Pix: pix, W: w, H: h, Stride: 3 * w, RotationDeg: s.facts.RotationDeg}
 	return &s.frame, nil
@@ -97,13 +131,13 @@ func (s *videoSource) Next(ctx context.Context) (*Frame, error) {
 // where it tells 0; there, and wherever the time fits no listed one, the next in
 // order is taken.
 func (s *videoSource) place(played float64) int {
-	next := s.last + 1
+	next := s.placed + 1
 	pts := s.facts.pts
-	if next >= len(pts) || played <= 0 {
+	if next >= len(pts) || played <= 0 || s.facts.inOrder {
 		return next
 	}
 	t := played + s.facts.start
-	const near = 1e-3 // OpenCV's times are right to 0.02 ms; frames are 1 ms apart or more
+	const near = 5e-4 // OpenCV's times are right to 0.02 ms
 	if math.Abs(pts[next]-t) < near {
 		return next
 	}
@@ -114,25 +148,52 @@ func (s *videoSource) place(played float64) int {
 	return next
 }
 
-// end notes whether all listed frames came.
+// isKey tells whether the frame needs no other to be decoded.
+func (s *videoSource) isKey(at int) bool {
+	k, t := s.facts.keys, s.facts.pts[at]
+	if len(k) == 0 {
+		return true // the container does not tell
+	}
+	i := sort.SearchFloat64s(k, t)
+	return i < len(k) && k[i] == t
+}
+
+// end notes the frames that are due and will not come.
 func (s *videoSource) end() error {
 	s.ended = true
 	f, n := s.facts, len(s.facts.Times)
-	switch {
-	case s.last < 0:
+	if s.last < 0 {
 		return fmt.Errorf("clip %s: none of its %d frames can be decoded (%s); it is damaged: copy it from the phone again", f.Path, n, f.Codec)
-	case s.last < n-1:
-		s.at = f.Times[s.last]
-		s.broke = fmt.Sprintf("The clip breaks off after frame %d of %d, at %.3f s of %.3f s: the rest cannot be decoded. It was measured as far as it goes; copy it from the phone again.", s.last+1, n, s.at, f.DurationS)
-	case s.missed > 0:
-		s.at = f.Times[s.last]
-		s.broke = fmt.Sprintf("%d of the clip's %d frames cannot be decoded; the others were measured. Copy it from the phone again.", s.missed, n)
+	}
+	if s.last < n-1 {
+		s.holes = append(s.holes, gap{s.last + 1, n})
 	}
 	return io.EOF
 }
 
-func (s *videoSource) Facts() *Facts             { return s.facts }
-func (s *videoSource) Damage() (float64, string) { return s.at, s.broke }
+// Damage tells of the listed frames that did not come.
+func (s *videoSource) Damage() (float64, string) {
+	if len(s.holes) == 0 {
+		return math.NaN(), ""
+	}
+	f, n := s.facts, len(s.facts.Times)
+	first := s.holes[0]
+	at := f.Times[max(first.first-1, 0)]
+	if first.end == n {
+		return at, fmt.Sprintf("The clip breaks off after frame %d of %d, at %.3f s of %.3f s: the rest cannot be decoded. It was measured as far as it goes; copy it from the phone again.", first.first, n, at, f.DurationS)
+	}
+	missing := 0
+	for _, h := range s.holes {
+		missing += h.end - h.first
+	}
+	words := fmt.Sprintf("The clip is damaged after frame %d of %d, at %.3f s: %d frames cannot be decoded", first.first, n, at, missing)
+	if last := s.holes[len(s.holes)-1]; last.end == n {
+		words += fmt.Sprintf(", and it breaks off at %.3f s", f.Times[last.first-1])
+	}
+	return at, words + ". The others were measured; copy it from the phone again."
+}
+
+func (s *videoSource) Facts() *Facts { return s.facts }
 
 func (s *videoSource) Close() error {
 	if s.closed {
