@@ -120,6 +120,7 @@ type Summary struct {
 	Iterations  int
 	Evaluations int // of Residuals, those for differences included
 	prior       []Prior
+	unscale     float64 // Cov over (JᵀWJ)⁻¹
 }
 
 // Combination is a direction in the space of parameters along which the data

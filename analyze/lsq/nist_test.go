@@ -105,14 +105,13 @@ func rational(top, bottom int) func(b []complex128, x []float64) complex128 {
 }
 
 type nistSet struct {
-	name          string
-	starts        [2][]float64
-	p, sd         []float64
-	sumOfSquares  float64
-	y             []float64
-	x             [][]float64
-	certifiedDoF  int
-	logOfResponse bool
+	name         string
+	starts       [2][]float64
+	p, sd        []float64
+	sumOfSquares float64
+	y            []float64
+	x            [][]float64
+	certifiedDoF int
 }
 
 func nistFolder(t testing.TB) string {

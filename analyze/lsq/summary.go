@@ -48,6 +48,7 @@ func (s *search) summary() (*Summary, error) {
 	inv := s.invert(sum)
 	sum.DoF = m - sum.Rank
 	scale := s.scatter(sum)
+	sum.unscale = scale
 	for a, j := range s.free {
 		for b, k := range s.free {
 			sum.Cov[j*full+k] = inv[a*n+b] * scale
