@@ -1,0 +1,307 @@
+package detect
+
+import (
+	"image"
+	"math"
+
+	"lodeswing/track"
+	"lodeswing/track/clip"
+)
+
+const (
+	sectors   = 24   // of the outline, for what is hidden and for neighbouring residuals that agree
+	mostSteps = 12   // of Gauss–Newton; from a good prediction it takes one or two
+	mostPix   = 2400 // beyond, every second, third … pixel of the band is taken
+	leastBlur = 0.3  // px; a pixel's own width is √(1/12) = 0.29
+)
+
+// Fitter fits one bob in one projection of the colours, frame after frame. It
+// remembers what it has learnt of the bob: size, shape, blur and light.
+type Fitter struct {
+	// Weights of blue, green and red in the projection that is fitted.
+	Weights [3]float64
+	Shape   Shape
+	Active  image.Rectangle // where there is picture (black bars left out)
+
+	light  [3]float64 // Fx, Fy, Fz of the last good fit
+	agree  float64    // mean factor by which sectors' residuals exceed white noise's
+	agreeN float64
+	frames int
+
+	px   []pixel
+	ring []float64
+}
+
+// Shape is what is known of a bob's outline: px, with standard uncertainties.
+// R's uncertainty is that of predicting the next frame.
+type Shape struct {
+	R, UR       float64
+	Blur, UBlur float64
+	E1, E2, UE  float64 // ellipse: half the relative difference of the axes, and its diagonal part
+}
+
+// pixel is one pixel of the band around the outline.
+type pixel struct {
+	x, y float64 // from the middle of the gathering, px
+	v    float64 // its value in the projection
+	wall float64 // what the wall would show there, same projection
+	sec  int32
+}
+
+// NewFitter returns a Fitter for a bob of about radius r px that is seen in the
+// projection weights of blue, green and red.
+func NewFitter(weights [3]float64, r, ur float64, active image.Rectangle) *Fitter {
+	return &Fitter{
+		Weights: weights,
+		Shape:   Shape{R: r, UR: ur, Blur: 1, UBlur: 0.4, UE: 0.05},
+		Active:  active, agree: 1,
+	}
+}
+
+// Agreement returns the factor, averaged over frames, by which the variance of
+// the centre exceeds what white residuals would give.
+func (f *Fitter) Agreement() float64 { return f.agree }
+
+// Fit fits the bob near the guess. wall may be nil. Pixels within covers (other
+// bobs) are left out. Free says that blur and ellipse are to be fitted as well.
+func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free bool) Fit {
+	r0, s0 := f.Shape.R, math.Max(f.Shape.Blur, leastBlur)
+	smear := math.Hypot(g.SmearU, g.SmearV)
+	if !(r0 > 1) || math.IsNaN(g.U+g.V+smear) {
+		return Fit{Why: "no usable guess"}
+	}
+	m := model{r: r0, s: s0, e1: f.Shape.E1, e2: f.Shape.E2, cu: g.U, cv: g.V, rowU: g.RowU, rowV: g.RowV}
+	m.mu, m.mv = 1, 0
+	if smear > 0 {
+		m.mu, m.mv = g.SmearU/smear, g.SmearV/smear
+	}
+	m.l = smear
+	copy(m.level[1:4], f.light[:])
+
+	var on [pCount]bool
+	for i := range on {
+		on[i] = i < pBlur
+	}
+	on[pSmear] = g.USmear > 0 && smear > 0.6*s0
+	on[pBlur], on[pE1], on[pE2] = free, free, free
+	if r0 < 6 {
+		on[pFx], on[pFy], on[pFz] = false, false, false
+		m.level[1], m.level[2], m.level[3] = 0, 0, 0
+	}
+	prior := f.priors(g, smear)
+
+	var out Fit
+	reach := math.Min(2.5*g.UPos, 0.4*r0)
+	useWall := f.gather(p, wall, &m, covers, reach)
+	if len(f.px) < 40 {
+		return Fit{Why: "too few pixels in the picture"}
+	}
+	noise := f.startLevels(&m)
+	loose := math.Max(g.UPos, 0.05)
+	var acc sums
+	var inv matrix
+	gathered := [2]float64{m.cu, m.cv}
+	ok := false
+	for step := 0; step < mostSteps; step++ {
+		out.Steps = step + 1
+		acc = sums{}
+		f.pass(&m, &acc, &noise, loose, gathered, &on, false)
+		if acc.n < 30 {
+			return Fit{Why: "hardly any of the outline agrees"}
+		}
+		m.addPriors(&acc, &prior, &on)
+		inv, ok = invert(&acc.a, &on)
+		if !ok {
+			return Fit{Why: "the outline does not determine the centre"}
+		}
+		var d vector
+		for i := range d {
+			for j := range d {
+				d[i] += inv[i][j] * acc.g[j]
+			}
+		}
+		shift := m.apply(&d, r0)
+		noise.update(&acc)
+		loose = math.Max(0.5*shift, 0.03)
+		if math.Hypot(m.cu-gathered[0], m.cv-gathered[1]) > 0.75+reach {
+			f.gather(p, wall, &m, covers, 0.5)
+			gathered = [2]float64{m.cu, m.cv}
+			if len(f.px) < 40 {
+				return Fit{Why: "too few pixels in the picture"}
+			}
+			continue
+		}
+		if shift < 0.04 && step > 0 || shift < 0.02 {
+			break
+		}
+	}
+	out.fill(&m, &inv, &acc, &noise, &on)
+	out.Cut = f.cut(&m)
+	_ = useWall
+	if f.frames < 24 || f.frames%4 == 0 || free {
+		f.assess(&m, &inv, &noise, gathered, &on)
+	}
+	f.frames++
+	out.Cov.AA *= f.agree
+	out.Cov.AB *= f.agree
+	out.Cov.BB *= f.agree
+	out.judge(f, &m)
+	if out.OK {
+		copy(f.light[:], m.level[1:4])
+	}
+	return out
+}
+
+// model is one state of the fit.
+type model struct {
+	cu, cv, r, s, l, e1, e2 float64
+	mu, mv                  float64 // direction of the smear
+	rowU, rowV              float64
+	level                   [7]float64 // F0 Fx Fy Fz B0 Bx By
+}
+
+func (m *model) get() (v vector) {
+	v[pU], v[pV], v[pR], v[pSmear] = m.cu, m.cv, m.r, m.l
+	copy(v[pF0:], m.level[:])
+	v[pBlur], v[pE1], v[pE2] = m.s, m.e1, m.e2
+	return v
+}
+
+// apply takes a step, held within what the local model can vouch for, and
+// returns how far the outline moved at most, px.
+func (m *model) apply(d *vector, r0 float64) float64 {
+	move := math.Hypot(d[pU], d[pV])
+	k := 1.0
+	if lim := 1.5*m.s + 0.15*m.r + 0.5*m.l; move > lim {
+		k = lim / move
+	}
+	if lim := 0.2 * m.r; math.Abs(d[pR])*k > lim {
+		k = lim / math.Abs(d[pR])
+	}
+	m.cu += k * d[pU]
+	m.cv += k * d[pV]
+	m.r = math.Min(math.Max(m.r+k*d[pR], 0.4*r0), 2.5*r0)
+	m.l = math.Max(m.l+k*d[pSmear], 0)
+	for i := range m.level {
+		m.level[i] += d[pF0+i]
+	}
+	m.s = math.Min(math.Max(m.s+k*d[pBlur], math.Max(leastBlur, 0.5*m.s)), 2*m.s)
+	m.e1 = math.Min(math.Max(m.e1+k*d[pE1], -0.5), 0.5)
+	m.e2 = math.Min(math.Max(m.e2+k*d[pE2], -0.5), 0.5)
+	return math.Max(move, math.Max(math.Abs(d[pR]), 0.3*math.Abs(d[pSmear])))
+}
+
+// prior is what is known of each parameter before the frame is looked at.
+type prior struct{ mean, weight vector }
+
+func (f *Fitter) priors(g Guess, smear float64) (p prior) {
+	set := func(i int, mean, u float64) { p.mean[i], p.weight[i] = mean, 1/(u*u) }
+	set(pR, f.Shape.R, math.Max(f.Shape.UR, 1e-3))
+	if g.USmear > 0 {
+		set(pSmear, smear, g.USmear)
+	}
+	// Shading and the wall's slope: no more than the range of a byte.
+	set(pFx, 0, 80)
+	set(pFy, 0, 80)
+	set(pFz, 0, 80)
+	set(pBx, 0, 30)
+	set(pBy, 0, 30)
+	set(pBlur, f.Shape.Blur, math.Max(f.Shape.UBlur, 0.02))
+	set(pE1, f.Shape.E1, math.Max(f.Shape.UE, 1e-3))
+	set(pE2, f.Shape.E2, math.Max(f.Shape.UE, 1e-3))
+	return p
+}
+
+func (m *model) addPriors(acc *sums, p *prior, on *[pCount]bool) {
+	v := m.get()
+	for i, w := range p.weight {
+		if on[i] && w > 0 {
+			acc.a[i][i] += w
+			acc.g[i] += w * (p.mean[i] - v[i])
+		}
+	}
+}
+
+// scatter is the noise of bob and wall, levels squared.
+type scatter struct {
+	bob, wall           float64
+	leastBob, leastWall float64
+}
+
+func (s *scatter) update(acc *sums) {
+	if acc.inN > 25 {
+		s.bob = math.Max(acc.inSum/acc.inN, s.leastBob)
+	}
+	if acc.outN > 25 {
+		s.wall = math.Max(acc.outSum/acc.outN, s.leastWall)
+	}
+}
+
+// sums is what one pass over the pixels adds up.
+type sums struct {
+	a            matrix
+	g            vector
+	chi, n       float64
+	inSum, inN   float64 // residuals² and pixels well inside the outline
+	outSum, outN float64
+	kept, all    [sectors]float64 // information on the outline that agrees, and all of it
+	score        [sectors]vector  // gradient by sector, for assess
+}
+
+// fill writes what the last step found.
+func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]bool) {
+	p := 0.0
+	for _, yes := range on {
+		if yes {
+			p++
+		}
+	}
+	scale := acc.chi / math.Max(acc.n-p, 1)
+	out.U, out.V = m.cu, m.cv
+	out.Cov = track.Cov{AA: inv[pU][pU] * scale, AB: inv[pU][pV] * scale, BB: inv[pV][pV] * scale}
+	out.R, out.UR = m.r, math.Sqrt(inv[pR][pR])
+	out.Smear, out.Blur = m.l, m.s
+	if on[pSmear] {
+		out.USmear = math.Sqrt(inv[pSmear][pSmear])
+	}
+	if on[pBlur] {
+		out.UBlur = math.Sqrt(inv[pBlur][pBlur])
+		out.UE = math.Sqrt(math.Max(inv[pE1][pE1], inv[pE2][pE2]))
+	}
+	out.E1, out.E2 = m.e1, m.e2
+	out.Contrast = m.level[0] - m.level[4]
+	out.Noise = math.Sqrt(math.Max((n.bob+n.wall)/2*scale, 0))
+	out.Pixels = int(acc.n)
+	seen := 0.0
+	for k := range sectors {
+		if acc.all[k] > 0 && acc.kept[k] > 0.5*acc.all[k] {
+			seen++
+		}
+	}
+	out.Visible = seen / sectors
+}
+
+// judge decides whether the fit is to be believed.
+func (out *Fit) judge(f *Fitter, m *model) {
+	switch {
+	case math.IsNaN(out.U + out.V + out.Cov.AA + out.Cov.BB):
+		out.Why = "the fit broke down"
+	case math.Abs(out.Contrast) < 3*out.Noise*math.Sqrt(1/math.Max(m.r, 1)) || math.Abs(out.Contrast) < 4:
+		out.Why = "no contrast between bob and wall"
+	case out.Visible < 0.3:
+		out.Why = "too little of the outline is seen"
+	case out.sigma() > 0.25*m.r+0.5:
+		out.Why = "the centre is not determined"
+	default:
+		out.OK = true
+	}
+}
+
+// cut tells whether the outline reaches the edge of the picture.
+func (f *Fitter) cut(m *model) bool {
+	du := m.r*(1+math.Abs(m.e1)) + m.l/2*math.Abs(m.mu)
+	dv := m.r*(1+math.Abs(m.e1)) + m.l/2*math.Abs(m.mv)
+	a := f.Active
+	return m.cu-du < float64(a.Min.X) || m.cv-dv < float64(a.Min.Y) ||
+		m.cu+du > float64(a.Max.X-1) || m.cv+dv > float64(a.Max.Y-1)
+}
