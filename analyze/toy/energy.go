@@ -1,0 +1,62 @@
+package toy
+
+import "lodeswing/analyze/magnet"
+
+// Energies are a toy's energies in J. Gravity is zero where every centre of mass
+// is at the world's origin, Spring where the springs are relaxed, Magnetic where
+// the magnets are far apart.
+type Energies struct {
+	Kinetic, Gravity, Spring, Magnetic float64
+}
+
+// Total is their sum.
+func (e Energies) Total() float64 { return e.Kinetic + e.Gravity + e.Spring + e.Magnetic }
+
+// Energy returns the energies at a state.
+func (m *Model) Energy(y []float64) Energies {
+	m.prepare()
+	m.kinematics(y)
+	m.massMatrix()
+	var e Energies
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		l, p := b.own.momentum(b.w, b.vo)
+		e.Kinetic += 0.5 * (b.w.Dot(l) + b.vo.Dot(p))
+		e.Gravity += b.mass * m.gravity * b.c.Z
+		if b.joint != ball && (b.rate != 0 || b.cubic != 0) {
+			d, _ := m.Angle(y, k)
+			d -= b.restRad
+			e.Spring += 0.5*b.rate*d*d + 0.25*b.cubic*d*d*d*d
+		}
+	}
+	e.Magnetic = m.magneticEnergy()
+	return e
+}
+
+// magneticEnergy is that of the magnets as kinematics placed them.
+func (m *Model) magneticEnergy() float64 {
+	sum := 0.0
+	for _, p := range m.pairs {
+		a, b := &m.magnets[p.a], &m.magnets[p.b]
+		sum += magnet.DipoleEnergy(a.m, b.m, b.r.Sub(a.r))
+	}
+	return sum
+}
+
+// PartEnergies writes each part's own kinetic energy, weight and spring energy
+// in J to dst; what magnets share between parts is not in it.
+func (m *Model) PartEnergies(y, dst []float64) {
+	m.prepare()
+	m.kinematics(y)
+	m.massMatrix()
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		l, p := b.own.momentum(b.w, b.vo)
+		dst[k] = 0.5*(b.w.Dot(l)+b.vo.Dot(p)) + b.mass*m.gravity*b.c.Z
+		if b.joint != ball {
+			d, _ := m.Angle(y, k)
+			d -= b.restRad
+			dst[k] += 0.5*b.rate*d*d + 0.25*b.cubic*d*d*d*d
+		}
+	}
+}

@@ -1,0 +1,59 @@
+package toy
+
+import (
+	"math"
+
+	"lodeswing/analyze/magnet"
+)
+
+// forces sums what magnets and coils do to the parts, and the rates of the
+// coils' quadratures in dy.
+func (m *Model) forces(t float64, y, dy []float64) {
+	for k := range m.bodies {
+		m.bodies[k].extN, m.bodies[k].extF = vec{}, vec{}
+	}
+	for i := range m.pairs {
+		p := &m.pairs[i]
+		a, b := &m.magnets[p.a], &m.magnets[p.b]
+		_, f, ta, tb := magnet.DipolePair(a.m, b.m, b.r.Sub(a.r))
+		if b.body >= 0 {
+			m.push(b.body, b.r, f, tb)
+		}
+		if a.body >= 0 {
+			m.push(a.body, a.r, f.Scale(-1), ta)
+		}
+	}
+	for i := range m.coils {
+		m.coilForce(&m.coils[i], t, y, dy)
+	}
+}
+
+// push adds the force f at r and the couple n to part k.
+func (m *Model) push(k int, r, f, n vec) {
+	b := &m.bodies[k]
+	b.extF = b.extF.Add(f)
+	b.extN = b.extN.Add(n).Add(r.Cross(f))
+}
+
+// velocity of a point r (world) of part k.
+func (m *Model) velocity(k int, r vec) vec {
+	b := &m.bodies[k]
+	return b.vo.Add(b.w.Cross(r))
+}
+
+func (m *Model) coilForce(c *coilPart, t float64, y, dy []float64) {
+	g := &m.magnets[c.magnet]
+	if c.eddy != 0 {
+		// Drag right over the coil, fading with the distance from its place there.
+		d := g.r.Sub(c.at)
+		over := d.Sub(c.axis.Scale(d.Dot(c.axis)))
+		k := c.eddy / (c.arm * c.arm) * math.Exp(-over.Dot(over)/(c.eddyReach*c.eddyReach))
+		m.push(g.body, g.r, m.velocity(g.body, g.r).Scale(-k), vec{})
+	}
+	if c.pushing && !c.winding {
+		u := g.r.Sub(c.pushFrom).Dot(c.pushDir) / c.width
+		if u > 0 && u < 1 {
+			m.push(g.body, g.r, c.pushDir.Scale(c.pushEnergy*30/c.width*u*u*(1-u)*(1-u)), vec{})
+		}
+	}
+}

@@ -1,0 +1,435 @@
+package toy
+
+import (
+	"context"
+	"fmt"
+	"math"
+
+	"lodeswing/analyze/ode"
+)
+
+// Options sets how a motion is computed. The zero value is useful.
+type Options struct {
+	// Tol is the error allowed per step, relative and in rad and rad/s; default 1e-9.
+	Tol float64
+	// Passes also records each pass through the lowest (standing: highest) point
+	// and each turning point of every part.
+	Passes bool
+	// Undriven leaves the coils' pushes out, as with the battery taken out.
+	Undriven bool
+	// MaxStep in s; default none.
+	MaxStep float64
+}
+
+func (o Options) tol() float64 {
+	if o.Tol > 0 {
+		return o.Tol
+	}
+	return 1e-9
+}
+
+// EventKind says what happened.
+type EventKind uint8
+
+// The kinds of event.
+const (
+	Pass   EventKind = iota // a part goes through the point where it would rest
+	Turn                    // a part turns round
+	Kick                    // a coil has pushed
+	Refuse                  // a coil's magnet passed too slowly to be sensed
+	Stick                   // dry friction stops a joint
+	Slip                    // a joint comes loose again
+)
+
+func (k EventKind) String() string {
+	return [...]string{"pass", "turn", "kick", "refuse", "stick", "slip"}[k]
+}
+
+// Event is one thing that happened in a motion.
+type Event struct {
+	T      float64
+	Kind   EventKind
+	Part   int     // index of the part
+	Coil   int     // index of the coil for Kick and Refuse, else −1
+	Energy float64 // J that a kick gave
+	Rising bool    // Pass: the shown angle grows
+}
+
+// run holds what one motion needs.
+type run struct {
+	m        *Model
+	opt      Options
+	y        []float64
+	onStep   func(s *ode.Solver) error
+	onHit    func(e Event)
+	kinds    []slot
+	wasStuck []bool
+}
+
+// slot says what event function i of the solver is about.
+type slot struct {
+	kind eventSlot
+	k    int
+}
+
+type eventSlot uint8
+
+const (
+	slotCoil eventSlot = iota
+	slotDry
+	slotPass
+	slotTurn
+)
+
+// Run moves the toy from state y at time t0 until t1 and calls onStep after
+// each step of the solver, which the callee may ask for dense output, and onHit
+// for each event; either may be nil. y holds the end state afterwards. It
+// allocates nothing once the model has run before with the same options.
+func (m *Model) Run(ctx context.Context, t0 float64, y []float64, t1 float64, opt Options, onStep func(*ode.Solver) error, onHit func(Event)) error {
+	if len(y) != m.StateLen() {
+		return fmt.Errorf("a state of this toy has %d numbers, not %d", m.StateLen(), len(y))
+	}
+	if m.dirty {
+		if err := m.refresh(); err != nil {
+			return err
+		}
+	}
+	tol := opt.tol()
+	m.solver = ode.New(m.StateLen(), m.derive, ode.Options{RelTol: tol, AbsTol: tol, MaxStep: opt.MaxStep})
+	r := run{m: m, opt: opt, y: y, onStep: onStep, onHit: onHit, wasStuck: make([]bool, len(m.bodies))}
+	return r.move(ctx, t0, t1)
+}
+
+func (r *run) move(ctx context.Context, t0, t1 float64) error {
+	m := r.m
+	defer func() { m.free = true }()
+	r.listen()
+	for i := range m.coils {
+		m.coils[i].pushing = false
+	}
+	m.nStuck = 0
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		m.stuck[k], m.sign[k] = false, 0
+		if b.dry != 0 && b.joint != ball {
+			m.sign[k] = sign(r.y[m.nq+b.v])
+		}
+	}
+	m.free = false
+	if err := r.settle(t0); err != nil {
+		return err
+	}
+	s := m.solver
+	s.Reset(t0, r.y)
+	for n := 0; s.Time() != t1; n++ {
+		if n%64 == 0 {
+			if err := ctx.Err(); err != nil {
+				copy(r.y, s.State())
+				return err
+			}
+		}
+		var hits []ode.Hit
+		var err error
+		if len(m.events) == 0 {
+			err = s.Step(t1)
+		} else {
+			hits, err = s.Advance(t1, m.events)
+		}
+		if err != nil {
+			copy(r.y, s.State())
+			return fmt.Errorf("the motion of %q could not be computed further: %w", m.Name, err)
+		}
+		if r.onStep != nil {
+			if err := r.onStep(s); err != nil {
+				return err
+			}
+		}
+		if len(hits) > 0 {
+			if err := r.handle(hits); err != nil {
+				return err
+			}
+		}
+	}
+	copy(r.y, s.State())
+	return nil
+}
+
+func sign(x float64) float64 {
+	switch {
+	case x > 0:
+		return 1
+	case x < 0:
+		return -1
+	}
+	return 0
+}
+
+// listen sets up the event functions.
+func (r *run) listen() {
+	m := r.m
+	m.events = m.events[:0]
+	r.kinds = r.kinds[:0]
+	add := func(s eventSlot, k int, e ode.Event) {
+		m.events = append(m.events, e)
+		r.kinds = append(r.kinds, slot{s, k})
+	}
+	for i := range m.coils {
+		c := &m.coils[i]
+		if r.opt.Undriven || c.kick == 0 {
+			continue
+		}
+		add(slotCoil, i, ode.Event{Terminal: true, G: func(_ float64, y []float64) float64 {
+			m.kinematics(y)
+			if c.pushing {
+				u := m.magnets[c.magnet].r.Sub(c.pushFrom).Dot(c.pushDir)
+				return u * (c.width - u)
+			}
+			return m.coilPass(c)
+		}})
+	}
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		if b.dry != 0 && b.joint != ball {
+			dy := make([]float64, m.StateLen())
+			add(slotDry, k, ode.Event{Terminal: true, G: func(t float64, y []float64) float64 {
+				if !m.stuck[k] {
+					return y[m.nq+b.v]
+				}
+				m.derive(t, y, dy)
+				h := m.hold(k)
+				return h*h - b.dry*b.dry
+			}})
+		}
+		if !r.opt.Passes {
+			continue
+		}
+		if b.joint == ball {
+			rate := func(_ float64, y []float64) float64 { // of the polar angle's cosine
+				_, _, polarRate, _, _ := m.Ball(y, k)
+				return polarRate
+			}
+			add(slotPass, k, ode.Event{G: rate, Direction: ode.Rising})
+			add(slotTurn, k, ode.Event{G: rate, Direction: ode.Falling})
+			continue
+		}
+		rest := 0.0
+		if b.stands {
+			rest = math.Pi
+		}
+		add(slotPass, k, ode.Event{G: func(_ float64, y []float64) float64 { return y[b.q] - rest }})
+		add(slotTurn, k, ode.Event{G: func(_ float64, y []float64) float64 { return y[m.nq+b.v] }})
+	}
+}
+
+// handle deals with the hits of one step, the last of which may have ended it.
+func (r *run) handle(hits []ode.Hit) error {
+	m, s := r.m, r.m.solver
+	reset := false
+	for _, h := range hits {
+		w := r.kinds[h.Event]
+		switch w.kind {
+		case slotPass:
+			rising := h.Rising != m.bodies[w.k].stands
+			r.tell(Event{T: h.T, Kind: Pass, Part: w.k, Coil: -1, Rising: rising})
+		case slotTurn:
+			r.tell(Event{T: h.T, Kind: Turn, Part: w.k, Coil: -1})
+		case slotCoil:
+			if !reset {
+				copy(r.y, s.State())
+			}
+			reset = true
+			r.coilEvent(h, w.k)
+		case slotDry:
+			if !reset {
+				copy(r.y, s.State())
+			}
+			reset = true
+			r.dryEvent(h, w.k)
+		}
+	}
+	if !reset {
+		return nil
+	}
+	if err := r.settle(s.Time()); err != nil {
+		return err
+	}
+	s.Reset(s.Time(), r.y)
+	return nil
+}
+
+func (r *run) tell(e Event) {
+	if r.onHit != nil {
+		r.onHit(e)
+	}
+}
+
+// coilEvent begins or ends a push.
+func (r *run) coilEvent(h ode.Hit, i int) {
+	m := r.m
+	c := &m.coils[i]
+	g := &m.magnets[c.magnet]
+	m.kinematics(r.y)
+	if c.pushing {
+		u := g.r.Sub(c.pushFrom).Dot(c.pushDir)
+		c.pushing = false
+		given := 0.0
+		if u > c.width/2 {
+			given = c.pushEnergy
+		}
+		r.tell(Event{T: h.T, Kind: Kick, Part: g.body, Coil: i, Energy: given})
+		return
+	}
+	if !h.Rising {
+		return // farthest from the coil
+	}
+	v := m.velocity(g.body, g.r)
+	speed := v.Norm()
+	if speed <= c.sensed*c.arm || speed < 1e-9*c.arm {
+		r.tell(Event{T: h.T, Kind: Refuse, Part: g.body, Coil: i})
+		return
+	}
+	e := c.kick * m.aside(c)
+	if c.width > 0 {
+		c.pushing, c.pushFrom, c.pushDir, c.pushEnergy = true, g.r, v.Scale(1/speed), e
+		return
+	}
+	m.massMatrix()
+	if m.impulse(c, e, r.y) {
+		r.tell(Event{T: h.T, Kind: Kick, Part: g.body, Coil: i, Energy: e})
+	}
+}
+
+// dryEvent stops a joint at its turning point, or lets go of one that is held
+// with more than dry friction can; settle decides which way it goes.
+func (r *run) dryEvent(h ode.Hit, k int) {
+	m := r.m
+	b := &m.bodies[k]
+	if m.stuck[k] {
+		m.stuck[k] = false
+		m.nStuck--
+		r.tell(Event{T: h.T, Kind: Slip, Part: k, Coil: -1})
+	}
+	r.y[m.nq+b.v] = 0
+	m.sign[k] = 0
+}
+
+// settle decides for every joint with dry friction that does not move whether
+// it is held, and else which way it starts: all that stand still are held
+// first, then the one most overloaded is let go, until none is.
+func (r *run) settle(t float64) error {
+	m := r.m
+	dy := m.scratch
+	held := false
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		if b.dry == 0 || b.joint == ball {
+			continue
+		}
+		v := r.y[m.nq+b.v]
+		switch {
+		case v != 0:
+			if m.stuck[k] { // a blow set it moving
+				m.stuck[k] = false
+				m.nStuck--
+			}
+			m.sign[k] = sign(v)
+		case !m.stuck[k]:
+			m.stuck[k], m.sign[k] = true, 0
+			m.nStuck++
+			held = true
+		}
+	}
+	if !held {
+		return nil
+	}
+	for {
+		m.derive(t, r.y, dy)
+		worst, by := -1, 0.0
+		for k := range m.bodies {
+			if !m.stuck[k] {
+				continue
+			}
+			h := m.hold(k)
+			if over := math.Abs(h) - m.bodies[k].dry*(1+1e-9); over > by {
+				worst, by = k, over
+				m.sign[k] = sign(h)
+			}
+		}
+		if worst < 0 {
+			break
+		}
+		m.stuck[worst] = false
+		m.nStuck--
+		// The sign was set above; those of others still held go back to zero.
+		for k := range m.bodies {
+			if m.stuck[k] {
+				m.sign[k] = 0
+			}
+		}
+	}
+	for k := range m.bodies {
+		if m.stuck[k] && !r.wasStuck[k] {
+			r.tell(Event{T: t, Kind: Stick, Part: k, Coil: -1})
+		}
+		r.wasStuck[k] = m.stuck[k]
+	}
+	return nil
+}
+
+// Motion is a computed motion.
+type Motion struct {
+	T0, T1 float64
+	Events []Event
+	path   *ode.Path
+	last   []float64
+}
+
+// At writes the state at time t to dst. Outside of T0 to T1 the nearer end stands.
+func (o *Motion) At(t float64, dst []float64) {
+	if o.path.Len() == 0 || t >= o.T1 {
+		copy(dst, o.last)
+		return
+	}
+	o.path.At(t, dst)
+}
+
+// Simulate moves the toy from state, at time 0, until the given time in s. When
+// ctx ends before that, it returns the motion so far together with ctx's error.
+func (m *Model) Simulate(ctx context.Context, state []float64, until float64, opt Options) (*Motion, error) {
+	o := &Motion{path: ode.NewPath(m.StateLen()), last: append([]float64(nil), state...)}
+	err := m.Run(ctx, 0, o.last, until, opt, func(s *ode.Solver) error {
+		o.path.Add(s)
+		return nil
+	}, func(e Event) { o.Events = append(o.Events, e) })
+	if m.solver != nil {
+		o.T1 = m.solver.Time()
+	}
+	return o, err
+}
+
+// Sample moves the toy from state at times[0] and calls visit with the state at
+// each of the times, which must rise. It keeps nothing, so that long motions
+// cost no memory; the slice that visit gets is valid only during the call.
+func (m *Model) Sample(ctx context.Context, state []float64, times []float64, opt Options, visit func(i int, y []float64)) error {
+	if len(times) == 0 {
+		return nil
+	}
+	y := append([]float64(nil), state...)
+	at := make([]float64, len(y))
+	visit(0, y)
+	i := 1
+	return m.Run(ctx, times[0], y, times[len(times)-1], opt, func(s *ode.Solver) error {
+		for ; i < len(times) && times[i] <= s.Time(); i++ {
+			s.At(times[i], at)
+			visit(i, at)
+		}
+		return nil
+	}, nil)
+}
+
+// Derive writes the rate of the state y to dy, with dry friction along the
+// speeds and no coil pushing.
+func (m *Model) Derive(y, dy []float64) {
+	m.prepare()
+	m.derive(0, y, dy)
+}

@@ -1,0 +1,142 @@
+package toy
+
+import (
+	"context"
+	"math"
+	"testing"
+
+	"lodeswing/track/rig"
+)
+
+// pendulum is a point of mass 0.1 kg at 0.25 m, without friction.
+func pendulum() *rig.Rig {
+	return &rig.Rig{
+		Name:    "pendulum",
+		Gravity: number(9.81),
+		Parts: []rig.Part{{
+			Name: "arm", Joint: "hinge", PivotM: []float64{0, 0}, CentreM: []float64{0, -0.25}, MassKg: number(0.1),
+		}},
+		Bobs: []rig.Bob{{Name: "bob", Part: "arm", AtM: []float64{0, -0.25}}},
+	}
+}
+
+func mustNew(t testing.TB, r *rig.Rig) *Model {
+	t.Helper()
+	m, err := New(r)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return m
+}
+
+func simulate(t testing.TB, m *Model, y []float64, until float64, opt Options) *Motion {
+	t.Helper()
+	o, err := m.Simulate(context.Background(), y, until, opt)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return o
+}
+
+// Abramowitz & Stegun, "Handbook of Mathematical Functions", table 17.2: K(α)
+// over π/2 at modular angles α = 15°, 30°, 45°, which are half the amplitude.
+func TestPeriodOfLargeSwings(t *testing.T) {
+	m := mustNew(t, pendulum())
+	t0 := 2 * math.Pi * math.Sqrt(0.25/9.81)
+	for _, c := range []struct{ amplitude, ratio float64 }{
+		{30, 1.0174088}, {60, 1.0731820}, {90, 1.1803406},
+	} {
+		y := m.Rest()
+		m.SetAngle(y, 0, c.amplitude*math.Pi/180, 0)
+		o := simulate(t, m, y, 21*t0*c.ratio, Options{Tol: 1e-12, Passes: true})
+		var passes []float64
+		for _, e := range o.Events {
+			if e.Kind == Pass && e.Rising {
+				passes = append(passes, e.T)
+			}
+		}
+		got := (passes[20] - passes[0]) / 20 / t0
+		if math.Abs(got-c.ratio) > 6e-8 { // half a unit of the table's last place
+			t.Errorf("amplitude %g°: T/T0 = %.9f, table %.7f", c.amplitude, got, c.ratio)
+		}
+	}
+}
+
+// A kick of given energy adds just that to the energy, as a blow and as a push
+// of some width.
+func TestKickAddsItsEnergy(t *testing.T) {
+	for _, width := range []float64{0, 0.01} {
+		r := pendulum()
+		r.Magnets = []rig.Magnet{{Name: "foot", Part: "arm", AtM: []float64{0, -0.27}, Axis: []float64{0, -1}, Moment: number(0.5)}}
+		r.Coils = []rig.Coil{{AtM: []float64{0, -0.29}, KickJ: number(1e-3), SensedRadS: number(0.1)}}
+		if width > 0 {
+			r.Coils[0].WidthM = number(width)
+		}
+		m := mustNew(t, r)
+		y := m.Rest()
+		m.SetAngle(y, 0, 0.3, 0)
+		e0 := m.Energy(y).Total()
+		o := simulate(t, m, y, 3.2, Options{Tol: 1e-11})
+		kicks := 0
+		for _, e := range o.Events {
+			if e.Kind == Kick {
+				kicks++
+			}
+		}
+		o.At(3.2, y)
+		if got, want := m.Energy(y).Total()-e0, 1e-3*float64(kicks); kicks != 7 && kicks != 6 || math.Abs(got-want) > 1e-10 {
+			t.Errorf("width %g m: %d kicks added %.9g J, not %.9g J", width, kicks, got, want)
+		}
+	}
+}
+
+// Dry friction takes 2τ/k of amplitude per half swing of a linear oscillator
+// and parks it inside ±τ/k (J. P. Den Hartog, "Mechanical Vibrations", 4th ed.
+// 1956; from memory).
+func TestDryFriction(t *testing.T) {
+	r := pendulum()
+	r.Gravity = number(0)
+	r.Parts[0].Spring = rig.Spring{Rate: number(0.2)}
+	r.Parts[0].Friction.Dry = number(0.004)
+	m := mustNew(t, r)
+	y := m.Rest()
+	m.SetAngle(y, 0, 0.33, 0)
+	o := simulate(t, m, y, 10, Options{Tol: 1e-11, Passes: true})
+	half := math.Pi * math.Sqrt(0.1*0.25*0.25/0.2)
+	want := 0.33
+	for i := 1; ; i++ {
+		want = -want + math.Copysign(0.04, want)
+		o.At(float64(i)*half, y)
+		got, _ := m.Angle(y, 0)
+		if math.Abs(got-want) > 1e-9 {
+			t.Errorf("half swing %d: %.10f, want %.10f", i, got, want)
+		}
+		if math.Abs(want) < 0.02 {
+			break
+		}
+	}
+	o.At(10, y)
+	if got, rate := m.Angle(y, 0); math.Abs(got-want) > 1e-9 || rate != 0 {
+		t.Errorf("parked at %.10f with rate %g, want %.10f", got, rate, want)
+	}
+	if last := o.Events[len(o.Events)-1]; last.Kind != Stick {
+		t.Errorf("the last event is a %v, not the stick", last.Kind)
+	}
+}
+
+func BenchmarkLantern(b *testing.B) {
+	r := pendulum()
+	r.Magnets = []rig.Magnet{
+		{Name: "bob magnet", Part: "arm", AtM: []float64{0, -0.28}, Axis: []float64{0, -1}, Moment: number(1.12)},
+		{Name: "base magnet", Part: "base", AtM: []float64{0, -0.31}, Axis: []float64{0, 1}, Moment: number(1.12)},
+	}
+	m := mustNew(b, r)
+	for b.Loop() {
+		y := m.Rest()
+		m.SetAngle(y, 0, 0.75, 0)
+		if err := m.Run(context.Background(), 0, y, 20, Options{Tol: 1e-8}, nil, nil); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.ReportMetric(20*float64(b.N)/b.Elapsed().Seconds(), "s/s")
+}
