@@ -250,4 +250,10 @@ type Film struct {
 	Clutter      bool      `rig:"clutter"`
 	Glossy       bool      `rig:"glossy"`
 	Sharpening   Value     `rig:"sharpening,u=0,nonneg"` // a phone's halo, 0 none … 1 strong
+	Blur         Value     `rig:"blur_px,u=0,nonneg"`    // the lens's Gaussian blur, px; default 0.8
+	Shadow       Value     `rig:"shadow,u=0,nonneg"`     // 0 none … 1: share of the light that a bob's shadow takes away
+	Uneven       Value     `rig:"uneven,u=0,nonneg"`     // grey levels by which the wall's brightness varies over the picture
+	RollRad      Value     `rig:"roll_deg,u=0"`          // the phone is held this far from level; the content turns clockwise
+	TurnedRad    Value     `rig:"turned_deg,u=0"`        // rotation flag: 90, 180 or 270 for a clip stored turned
+	HEVC         bool      `rig:"hevc"`
 }

@@ -403,6 +403,7 @@ func TestFindNamesTheNearest(t *testing.T) {
 func TestEveryKeyHasItsUnit(t *testing.T) {
 	plain := map[string]bool{
 		"rate_factor": true, "recoil": true, "turns": true, "noise": true, "texture": true, "seed": true, "sharpening": true,
+		"shadow": true, "uneven": true,
 		"viscous": true, "drag": true, "dry": true,
 	}
 	r := parse(t, whole())
