@@ -116,6 +116,32 @@ type Calibration struct {
 	TiltCorrected   bool    `json:"tilt_corrected"`
 	ScaleShares     []Share `json:"scale_shares_rel"`  // what UScale is made of, relative
 	StandDriftRatio float64 `json:"stand_drift_ratio"` // motion of the base over the bob's motion, 0 when not measured
+	Lens            Pinhole `json:"pinhole"`           // what track/camera needs to project again
+}
+
+// Pinhole is a camera as track/camera solved it: a pinhole with radial
+// distortion, x_d = x(1 + K1·r² + K2·r⁴) in focal lengths from the picture's
+// middle. Turn holds the camera's axes (right, down, ahead) as rows in world
+// axes, Eye the lens's place in metres. The plane of motion is y = 0, or, seen
+// from above, z = PlaneZ.
+type Pinhole struct {
+	FocalPX   float64    `json:"focal_px"`
+	K1        float64    `json:"k1"`
+	K2        float64    `json:"k2"`
+	Turn      [9]float64 `json:"turn"`
+	Eye       [3]float64 `json:"eye_m"`
+	FromAbove bool       `json:"from_above"`
+	PlaneZ    float64    `json:"plane_z_m"`
+	Assumed   bool       `json:"assumed"` // nothing told the distance: FocalPX is that of a usual phone
+	Unsure    []Unsure   `json:"unsure,omitempty"`
+}
+
+// Unsure is one independent source of uncertainty of a Pinhole. By is what one
+// standard uncertainty of it changes: ln FocalPX, K1, K2, a turn about the
+// camera's own right, down and ahead (rad), Eye (m).
+type Unsure struct {
+	Source string     `json:"source"`
+	By     [9]float64 `json:"by"`
 }
 
 // Share is one contribution to an uncertainty, in the unit of that uncertainty.
