@@ -37,6 +37,9 @@ func (d *desk) render(st *stage, t float64) {
 	if d.frame == nil {
 		d.frame = slices.Clone(st.calm)
 		for i := range s.Bobs {
+			if s.Bobs[i].Still {
+				continue
+			}
 			b := &ball{b: &s.Bobs[i], r: s.Bobs[i].DiameterM / 2}
 			d.balls = append(d.balls, b)
 			d.shapes = append(d.shapes, b)
@@ -101,7 +104,7 @@ func (d *desk) aim(st *stage, t float64) {
 	for _, s := range d.shapes {
 		smear = max(smear, s.smear())
 	}
-	n := max(3, int(math.Ceil(smear/(1.1*math.Sqrt(st.sigma*st.sigma+1.0/12)))))
+	n := max(3, int(math.Ceil(smear/(1.5*math.Sqrt(st.sigma*st.sigma+1.0/12)))))
 	d.times = d.times[:0]
 	spread := e / math.Sqrt(float64(n)*float64(n)-1)
 	for k := range n {
@@ -110,35 +113,4 @@ func (d *desk) aim(st *stage, t float64) {
 	for _, s := range d.shapes {
 		s.aim(st, d.times)
 	}
-}
-
-// shades tells whether the ball's shadow on the wall may touch the block.
-func (st *stage) shades(s *ball, b block) bool {
-	l := st.lamp
-	if l.world[1] >= 0 {
-		return false // the lamp is behind the wall
-	}
-	for _, k := range [...]int{0, len(s.p.c) - 1} {
-		c := s.p.c[k][1]
-		var p Vec
-		for i := range 3 {
-			p[i] = st.cam.eye[i] + c[0]*st.cam.right[i] + c[1]*st.cam.down[i] + c[2]*st.cam.ahead[i]
-		}
-		q := add(p, scale(l.world, (st.scene.Wall.Y-p[1])/l.world[1]))
-		qc := st.cam.toCamera(q)
-		if !st.cam.ortho && qc[2] <= 0 {
-			continue
-		}
-		u, v := st.cam.lens(st.cam.flatten(qc))
-		// A shadow is longest where the light grazes the wall.
-		r := (s.r+l.soft)/-l.world[1]*1.3*st.cam.f + 0
-		if !st.cam.ortho {
-			r /= qc[2]
-		}
-		r += s.moved + 2 + float64(st.halo)
-		if u+r >= float64(b.x0) && u-r <= float64(b.x1) && v+r >= float64(b.y0) && v-r <= float64(b.y1) {
-			return true
-		}
-	}
-	return false
 }

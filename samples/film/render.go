@@ -8,7 +8,7 @@ import (
 )
 
 const (
-	tile  = 32 // px, side of the squares that are rendered apart
+	tile  = 48 // px, side of the squares that are rendered apart
 	rim   = 4  // px of backdrop kept outside the picture, for the halo
 	level = 128.0
 )
@@ -141,6 +141,11 @@ func (st *stage) drawBack() {
 			fixed = append(fixed, &rod{r: &s.Rods[i]})
 		}
 	}
+	for i := range s.Bobs {
+		if s.Bobs[i].Still {
+			fixed = append(fixed, &ball{b: &s.Bobs[i], r: s.Bobs[i].DiameterM / 2})
+		}
+	}
 	for _, f := range fixed {
 		f.aim(st, []float64{0})
 	}
@@ -202,14 +207,17 @@ type desk struct {
 	frame  []uint16
 	dirty  []block
 
-	line   line
-	sum    [][4]float32 // fine samples of a block, summed over sub-exposures
-	spans  [][2]int
-	side   [][4]float32 // blurred along the rows
-	sides  [][2]int
-	out    [][4]float32 // blurred both ways: pixels of the block and its margin
-	lit    [][3]float32
-	margin int
+	line             line
+	sum              [][4]float32 // fine samples of a block, summed over sub-exposures
+	spans            [][2]int
+	side             [][4]float32 // blurred along the rows
+	sides            [][2]int
+	out              [][4]float32 // blurred both ways: pixels of the block and its margin
+	lit              [][3]float32
+	across, smoothed [][3]float32
+	shade            []float32 // what shadows leave of the wall's light, every 4th pixel
+	cast             []Vec     // the balls' centres, by ball, shadow time and one of three delays
+	margin           int
 }
 
 func (d *desk) eachPixel(b block, f func(u, v int, p *[4]float32)) {
@@ -267,12 +275,11 @@ func (d *desk) expose(st *stage, b block, margin int, shapes []shape, times []fl
 	l := &d.line
 	l.px = resize(l.px, fw)
 	l.xs, l.ys = resize(l.xs, fw), resize(l.ys, fw)
-	l.u0, l.du = u0, step
+	l.u0, l.du, l.cam = u0, step, st.cam
 	share := float32(1 / float64(len(times)))
 	any := false
 	for j := range fh {
-		l.v = v0 + float64(j)*step
-		st.cam.row(u0, step, l.v, l.xs, l.ys)
+		l.begin(v0 + float64(j)*step)
 		delay := st.rowTime(l.v)
 		row := d.sum[j*fw : (j+1)*fw]
 		lo, hi := fw, 0
@@ -377,6 +384,9 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 	w := b.x1 - b.x0 + 2*m
 	h := b.y1 - b.y0 + 2*m
 	d.lit = resize(d.lit, w*h)
+	if len(shades) > 0 {
+		d.castShadows(st, b, w, h, shades, times)
+	}
 	for j := range h {
 		v := min(max(b.y0-m+j, -rim), c.Height+rim-1)
 		for i := range w {
@@ -385,63 +395,65 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 			q := &st.back[(v+rim)*st.backW+u+rim]
 			k := 1 - p[3]
 			if len(shades) > 0 && k > 0 {
-				k *= st.shadow(u, v, shades, times)
+				k *= d.shadowAt(w, i, j)
 			}
 			g := st.vignette(u, v)
 			d.lit[j*w+i] = [3]float32{(p[0] + k*q[0]) * g, (p[1] + k*q[1]) * g, (p[2] + k*q[2]) * g}
 		}
 	}
 	amount := float32(st.scene.Sharpening)
+	if amount > 0 {
+		d.smooth(st, w, h)
+	}
 	for v := b.y0; v < b.y1; v++ {
-		for u := b.x0; u < b.x1; u++ {
-			i := (v-b.y0+m)*w + u - b.x0 + m
-			p := d.lit[i]
+		i := (v-b.y0+m)*w + m
+		to := dst[3*(v*c.Width+b.x0) : 3*(v*c.Width+b.x1)]
+		for u := range b.x1 - b.x0 {
+			p := d.lit[i+u]
 			if amount > 0 {
-				var s [3]float32
-				for y := -m; y <= m; y++ {
-					ty := st.soft[y+m]
-					for x := -m; x <= m; x++ {
-						t := ty * st.soft[x+m]
-						q := &d.lit[i+y*w+x]
-						s[0] += t * q[0]
-						s[1] += t * q[1]
-						s[2] += t * q[2]
-					}
-				}
-				for e := range p {
-					p[e] += amount * (p[e] - s[e])
-				}
+				q := &d.smoothed[i+u]
+				p[0] += amount * (p[0] - q[0])
+				p[1] += amount * (p[1] - q[1])
+				p[2] += amount * (p[2] - q[2])
 			}
-			to := dst[3*(v*c.Width+u):]
-			for e := range 3 { // blue, green, red
-				to[2-e] = uint16(min(max(p[e], 0), 255)*level + 0.5)
-			}
+			to[3*u] = fixed(p[2]) // blue, green, red
+			to[3*u+1] = fixed(p[1])
+			to[3*u+2] = fixed(p[0])
 		}
 	}
 }
 
-// shadow is the part of the wall's light that is left at pixel (u, v).
-func (st *stage) shadow(u, v int, shades []*ball, times []float64) float32 {
-	x, y := st.cam.undistort(float64(u), float64(v))
-	o, dir := st.cam.ray(x, y)
-	// Back to world axes, to the wall's plane.
-	from, to := st.cam.eye, Vec{}
-	for i := range 3 {
-		from[i] += o[0]*st.cam.right[i] + o[1]*st.cam.down[i] + o[2]*st.cam.ahead[i]
-		to[i] = dir[0]*st.cam.right[i] + dir[1]*st.cam.down[i] + dir[2]*st.cam.ahead[i]
-	}
-	if to[1] <= 0 {
-		return 1
-	}
-	q := add(from, scale(to, (st.scene.Wall.Y-from[1])/to[1]))
-	delay := st.rowTime(float64(v))
-	left := 1.0
-	for _, s := range shades {
-		dark := 0.0
-		for _, t := range times {
-			dark += st.lamp.shade(s.b.At(t+delay), q, s.r)
+func fixed(x float32) uint16 { return uint16(min(max(x, 0), 255)*level + 0.5) }
+
+// smooth convolves d.lit, w × h, with the sharpening's kernel into d.smoothed;
+// the outermost st.halo pixels are left undefined.
+func (d *desk) smooth(st *stage, w, h int) {
+	m := st.halo
+	d.across = resize(d.across, w*h)
+	d.smoothed = resize(d.smoothed, w*h)
+	for j := range h {
+		row := d.lit[j*w : (j+1)*w]
+		for i := m; i < w-m; i++ {
+			var s [3]float32
+			for k, t := range st.soft {
+				q := &row[i+k-m]
+				s[0] += t * q[0]
+				s[1] += t * q[1]
+				s[2] += t * q[2]
+			}
+			d.across[j*w+i] = s
 		}
-		left *= 1 - st.lamp.shadow*dark/float64(len(times))
 	}
-	return float32(left)
+	for j := m; j < h-m; j++ {
+		to := d.smoothed[j*w : (j+1)*w]
+		clear(to)
+		for k, t := range st.soft {
+			row := d.across[(j+k-m)*w : (j+k-m+1)*w]
+			for i := m; i < w-m; i++ {
+				to[i][0] += t * row[i][0]
+				to[i][1] += t * row[i][1]
+				to[i][2] += t * row[i][2]
+			}
+		}
+	}
 }

@@ -60,7 +60,11 @@ type Wall struct {
 	Texture  float64 // grey levels r.m.s. of a fixed pattern
 	GrainPX  float64 // the pattern's correlation length, px (standard deviation of its smoothing); 0: 1.5
 	Vignette float64 // part of the light lost in the corners, 0 … 1
-	Y        float64 // m; depth of the wall, for shadows
+	// Where shadows fall: on the upright wall at depth Y (m) or, with Table, on the
+	// level table top at height Z (m).
+	Y     float64
+	Table bool
+	Z     float64
 }
 
 // Light is one distant lamp and light from everywhere.
@@ -84,6 +88,7 @@ type Bob struct {
 	Gloss     float64             // 0 matt … 1 a polished ball with a bright highlight
 	NoShadow  bool
 	Unmarked  bool // drawn, but not in the truth
+	Still     bool // drawn once, behind everything that moves; casts no shadow, not in the truth
 }
 
 // Rod is a round bar between two points; it is shaded, not followed.
@@ -184,7 +189,7 @@ func (s *Scene) Truth(t float64) []Point {
 	var out []Point
 	for i := range s.Bobs {
 		b := &s.Bobs[i]
-		if b.Unmarked {
+		if b.Unmarked || b.Still {
 			continue
 		}
 		p := Point{Name: b.Name}
@@ -241,7 +246,7 @@ func (st *stage) shown(i int, p Point) float64 {
 		hidden := false
 		for j := range st.scene.Bobs {
 			o := &st.scene.Bobs[j]
-			if j == i {
+			if j == i || o.Still {
 				continue
 			}
 			oc := st.cam.toCamera(o.At(p.T))

@@ -6,20 +6,46 @@ import "math"
 // multiplied by opacity, and opacity. Only [lo, hi) has been touched.
 type line struct {
 	px     [][4]float32
-	xs, ys []float64 // flat coordinates of the samples
-	u0, du float64   // px of the first sample and the step
-	v      float64   // px
+	u0, du float64 // px of the first sample and the step
+	v      float64 // px
 	lo, hi int
+	cam    *view
+	// xs and ys are the samples' flat coordinates, computed for [from, to) only.
+	xs, ys   []float64
+	from, to int
 }
 
-// cells gives the samples within [ua, ub] px.
+// begin readies l for the row at v px.
+func (l *line) begin(v float64) { l.v, l.from, l.to = v, 0, 0 }
+
+// cells gives the samples within [ua, ub] px and sees to their coordinates.
 func (l *line) cells(ua, ub float64) (i, j int) {
 	i = max(0, int(math.Ceil((ua-l.u0)/l.du)))
 	j = min(len(l.px), int(math.Floor((ub-l.u0)/l.du))+1)
-	if i < j {
-		l.lo, l.hi = min(l.lo, i), max(l.hi, j)
+	if i >= j {
+		return i, i
+	}
+	l.lo, l.hi = min(l.lo, i), max(l.hi, j)
+	if l.from >= l.to {
+		l.from, l.to = i, i
+	}
+	if i < l.from {
+		l.cam.row(l.u0+float64(i)*l.du, l.du, l.v, l.xs[i:l.from], l.ys[i:l.from])
+		l.from = i
+	}
+	if j > l.to {
+		l.cam.row(l.u0+float64(l.to)*l.du, l.du, l.v, l.xs[l.to:j], l.ys[l.to:j])
+		l.to = j
 	}
 	return i, j
+}
+
+// cell is a sample's side in flat coordinates, near sample i.
+func (l *line) cell(i, j int) float64 {
+	if j-i > 1 {
+		return l.xs[i+1] - l.xs[i]
+	}
+	return l.du / l.cam.f
 }
 
 func (l *line) over(i int, c float32, r, g, b float32) {
@@ -164,10 +190,7 @@ func (s *ball) draw(k int, delay float64, l *line) {
 		s.drawDisc(c, l, i, j)
 		return
 	}
-	cell := l.du / s.cam.f // a sample's side in flat coordinates
-	if len(l.xs) > 1 {
-		cell = l.xs[1] - l.xs[0]
-	}
+	cell := l.cell(i, j)
 	cc := dot(c, c)
 	step := cell * 1.5 // widest edge zone in metres, off axis included
 	if !s.cam.ortho {
@@ -227,10 +250,7 @@ func (s *ball) drawDisc(c Vec, l *line, i, j int) {
 	n := s.normal
 	cn := dot(c, n)
 	r, g, b := float32(s.diff[0]), float32(s.diff[1]), float32(s.diff[2])
-	cell := l.du / s.cam.f
-	if len(l.xs) > 1 {
-		cell = l.xs[1] - l.xs[0]
-	}
+	cell := l.cell(i, j)
 	for ; i < j; i++ {
 		x, y := l.xs[i], l.ys[i]
 		var p, px, py Vec // the point of the disc's plane and its change with x, y
@@ -301,7 +321,7 @@ func (s *rod) aim(st *stage, times []float64) {
 			if !s.cam.ortho {
 				w /= max(min(a[2], b[2], m[2]), 1e-3)
 			}
-			s.half = max(s.half, w*1.3+bow+1.5)
+			s.half = max(s.half, w*1.1+bow+0.8)
 			s.u0, s.u1 = min(s.u0, ua, ub), max(s.u1, ua, ub)
 			s.v0, s.v1 = min(s.v0, va, vb), max(s.v1, va, vb)
 			s.ends = append(s.ends, [2][2]float64{{ua, va}, {ub, vb}})
@@ -367,25 +387,20 @@ func (s *rod) draw(k int, delay float64, l *line) {
 	ua, va := s.cam.lens(xa, ya)
 	ub, vb := s.cam.lens(xb, yb)
 	// The bar's stretch of this row, in pixels.
-	lo, hi := min(ua, ub), max(ua, ub)
 	if l.v < min(va, vb)-s.half || l.v > max(va, vb)+s.half {
 		return
 	}
-	if math.Abs(vb-va) > 1e-9 {
-		t0, t1 := (l.v-s.half-va)/(vb-va), (l.v+s.half-va)/(vb-va)
-		t0, t1 = min(max(min(t0, t1), 0), 1), min(max(max(t0, t1), 0), 1)
-		p0, p1 := ua+t0*(ub-ua), ua+t1*(ub-ua)
-		lo, hi = min(p0, p1), max(p0, p1)
+	lo, hi := min(ua, ub), max(ua, ub)
+	if steep := math.Abs(vb-va) / math.Hypot(ub-ua, vb-va); steep > 1e-3 {
+		at := ua + (l.v-va)*(ub-ua)/(vb-va)
+		lo, hi = max(lo, at-s.half/steep+s.half), min(hi, at+s.half/steep-s.half)
 	}
 	i, j := l.cells(lo-s.half, hi+s.half)
 	wa, wb := s.r.DiameterM/2, s.r.DiameterM/2
 	if !s.cam.ortho {
 		wa, wb = wa/a[2], wb/b[2]
 	}
-	cell := l.du / s.cam.f
-	if len(l.xs) > 1 {
-		cell = l.xs[1] - l.xs[0]
-	}
+	cell := l.cell(i, j)
 	dx, dy := xb-xa, yb-ya
 	q := dx*dx + dy*dy
 	if q == 0 {
@@ -396,13 +411,14 @@ func (s *rod) draw(k int, delay float64, l *line) {
 		x, y := l.xs[i]-xa, l.ys[i]-ya
 		t := min(max((x*dx+y*dy)/q, 0), 1)
 		w := wa + t*(wb-wa)
-		d := math.Hypot(x-t*dx, y-t*dy)
+		x, y = x-t*dx, y-t*dy
+		d := math.Sqrt(x*x + y*y)
 		// The part of the sample's width that lies within [−w, w].
 		cover := (min(d+cell/2, w) - max(d-cell/2, -w)) / cell
 		if cover <= 0 {
 			continue
 		}
-		across := (dx*y - dy*x) * inv / w
+		across := (dx*y - dy*x) * inv / w // what lies along the bar drops out
 		c := &s.shade[min(max(int(across*32+32.5), 0), 64)]
 		l.over(i, float32(min(cover, 1)), float32(c[0]), float32(c[1]), float32(c[2]))
 	}
@@ -452,7 +468,7 @@ func (s *plate) smear() float64                { return 0 }
 
 func (s *plate) draw(_ int, _ float64, l *line) {
 	i, j := l.cells(s.u0, s.u1)
-	cell := l.du / s.cam.f
+	cell := l.cell(i, j)
 	r, g, b := float32(s.c[0]), float32(s.c[1]), float32(s.c[2])
 	for ; i < j; i++ {
 		x, y := l.xs[i], l.ys[i]
@@ -524,7 +540,7 @@ func (s *picture) look(x, y float64) (RGB, float64) {
 // draw samples 3 × 3 points of a cell, and 8 × 8 where those differ.
 func (s *picture) draw(_ int, _ float64, l *line) {
 	i, j := l.cells(s.u0, s.u1)
-	cell := l.du / s.cam.f
+	cell := l.cell(i, j)
 	for ; i < j; i++ {
 		var sum RGB
 		var full float64
