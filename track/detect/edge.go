@@ -77,3 +77,29 @@ func nodesFor(l, s float64) int {
 	n := int(math.Ceil(0.75*l/s)) + 1
 	return min(max(n, 2), maxNodes)
 }
+
+// edgeSmeared averages Φ(z + a·t) over t from −1/2 to 1/2: an edge that moved
+// by a blurs during the exposure. It returns the average, its derivative by z,
+// and its derivative by a, which is also the average of t·φ(z + a·t).
+func edgeSmeared(z, a float64) (mean, dz, da float64) {
+	if a < 0 {
+		mean, dz, da = edgeSmeared(z, -a)
+		return mean, dz, -da
+	}
+	if a < 0.3 {
+		// Taylor: φ' = −zφ, φ'' = (z²−1)φ, φ''' = (3z−z³)φ.
+		c, p := edge(z)
+		a2 := a * a * (1.0 / 24)
+		z2 := z * z
+		return c - a2*z*p, p + a2*(z2-1)*p, -a * (1.0 / 12) * z * p
+	}
+	c1, p1 := edge(z + a/2)
+	c0, p0 := edge(z - a/2)
+	// ∫Φ = zΦ + φ
+	g := (z+a/2)*c1 + p1 - (z-a/2)*c0 - p0
+	ia := 1 / a
+	mean = g * ia
+	dz = (c1 - c0) * ia
+	da = (0.5*(c1+c0) - mean) * ia
+	return mean, dz, da
+}

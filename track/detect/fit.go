@@ -29,6 +29,7 @@ type Fitter struct {
 	frames int
 
 	px   []pixel
+	sec  [sectors]sectorSums
 	ring []float64
 }
 
@@ -42,9 +43,9 @@ type Shape struct {
 
 // pixel is one pixel of the band around the outline.
 type pixel struct {
-	x, y float64 // from the middle of the gathering, px
-	v    float64 // its value in the projection
-	wall float64 // what the wall would show there, same projection
+	x, y float32 // from the middle of the gathering, px
+	v    float32 // its value in the projection
+	wall float32 // what the wall would show there, same projection
 	sec  int32
 }
 
@@ -105,7 +106,11 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	for step := 0; step < mostSteps; step++ {
 		out.Steps = step + 1
 		acc = sums{}
-		f.pass(&m, &acc, &noise, loose, gathered, &on, false)
+		if m.quick(&on) {
+			f.passQuick(&m, &acc, &noise, loose, gathered)
+		} else {
+			f.pass(&m, &acc, &noise, loose, gathered, &on)
+		}
 		if acc.n < 30 {
 			return Fit{Why: "hardly any of the outline agrees"}
 		}
@@ -138,9 +143,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	out.fill(&m, &inv, &acc, &noise, &on)
 	out.Cut = f.cut(&m)
 	_ = useWall
-	if f.frames < 24 || f.frames%4 == 0 || free {
-		f.assess(&m, &inv, &noise, gathered, &on)
-	}
+	f.assess(&inv, &acc, &on)
 	f.frames++
 	out.Cov.AA *= f.agree
 	out.Cov.AB *= f.agree

@@ -16,7 +16,7 @@ type tally struct {
 	nees             float64 // sum of eᵀC⁻¹e
 	bad              int
 	seen             float64
-	uu               float64
+	uu, agree        float64
 }
 
 func (t *tally) add(f Fit, u, v float64) {

@@ -6,6 +6,9 @@ import (
 	"lodeswing/track/clip"
 )
 
+// notSeen marks a pixel behind which the wall was never seen.
+const notSeen = float32(math.MaxFloat32)
+
 // gather collects the pixels of the band around the model's outline. reach is
 // by how much the outline may still move, px. It tells whether the wall's own
 // picture is used.
@@ -58,15 +61,15 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 			}
 			o := 3 * (u - p.Rect.Min.X)
 			px := pixel{
-				x: float64(u) - m.cu, y: y,
-				v: w0*float64(row[o]) + w1*float64(row[o+1]) + w2*float64(row[o+2]),
+				x: float32(float64(u) - m.cu), y: float32(y),
+				v: float32(w0*float64(row[o]) + w1*float64(row[o+1]) + w2*float64(row[o+2])),
 			}
 			if wall != nil {
 				if b, g, r, ok := wall.at(u, v); ok {
-					px.wall = w0*b + w1*g + w2*r
+					px.wall = float32(w0*b + w1*g + w2*r)
 					known++
 				} else {
-					px.wall = math.NaN()
+					px.wall = notSeen
 				}
 			}
 			px.sec = sector(px.x, px.y)
@@ -89,8 +92,8 @@ func (f *Fitter) chooseWall(m *model, known int) bool {
 		f.ring = f.ring[:0]
 		for i := range f.px {
 			q := &f.px[i]
-			if q.x*q.x+q.y*q.y > r1*r1 && !math.IsNaN(q.wall) {
-				f.ring = append(f.ring, q.v)
+			if float64(q.x*q.x+q.y*q.y) > r1*r1 && q.wall != notSeen {
+				f.ring = append(f.ring, float64(q.v))
 			}
 		}
 		n := len(f.ring)
@@ -98,8 +101,8 @@ func (f *Fitter) chooseWall(m *model, known int) bool {
 		f.ring = f.ring[:0]
 		for i := range f.px {
 			q := &f.px[i]
-			if q.x*q.x+q.y*q.y > r1*r1 && !math.IsNaN(q.wall) {
-				f.ring = append(f.ring, q.v-q.wall)
+			if float64(q.x*q.x+q.y*q.y) > r1*r1 && q.wall != notSeen {
+				f.ring = append(f.ring, float64(q.v-q.wall))
 			}
 		}
 		use = n > 20 && f.spread() < 0.93*plain
@@ -112,7 +115,7 @@ func (f *Fitter) chooseWall(m *model, known int) bool {
 	}
 	kept := f.px[:0]
 	for _, q := range f.px {
-		if !math.IsNaN(q.wall) {
+		if q.wall != notSeen {
 			kept = append(kept, q)
 		}
 	}
@@ -141,8 +144,15 @@ func covered(u, v float64, covers []Disc) bool {
 
 // sector numbers the direction of (x, y) without trigonometry: the diamond
 // angle runs evenly enough.
-func sector(x, y float64) int32 {
-	a := x / (math.Abs(x) + math.Abs(y) + 1e-12)
+func sector(x, y float32) int32 {
+	ax, ay := x, y
+	if ax < 0 {
+		ax = -ax
+	}
+	if ay < 0 {
+		ay = -ay
+	}
+	a := x / (ax + ay + 1e-12)
 	if y < 0 {
 		a = 3 + a
 	} else {
@@ -171,11 +181,11 @@ func (f *Fitter) startLevels(m *model) scatter {
 		}
 		for i := range f.px {
 			q := &f.px[i]
-			d2 := q.x*q.x + q.y*q.y
+			d2 := float64(q.x*q.x + q.y*q.y)
 			if inside && d2 < lim*lim {
-				f.ring = append(f.ring, q.v)
+				f.ring = append(f.ring, float64(q.v))
 			} else if !inside && d2 > lim*lim {
-				f.ring = append(f.ring, q.v-q.wall)
+				f.ring = append(f.ring, float64(q.v-q.wall))
 			}
 		}
 		level = median(f.ring)
@@ -199,7 +209,7 @@ func quantum(w [3]float64) float64 {
 }
 
 // pass goes once over the pixels: residuals, weights, normal equations.
-func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [2]float64, on *[pCount]bool, scores bool) {
+func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [2]float64, on *[pCount]bool) {
 	n := pBlur
 	if on[pBlur] || on[pE1] {
 		n = pCount
@@ -212,13 +222,14 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 	ax, ay := 1.0, 1.0-m.rowV
 	shear := -m.rowU
 	m11, m12, m22 := 1-m.e1, -m.e2, 1+m.e1
+	edgeR := m.r - 0.5*m.s*m.s*ir
 	far := m.r + edgeSpan*m.s
 	soft := 2 * m.s * ir // nz is rounded off over the edge's blur
 	soft *= soft
 	var j vector
 	for i := range f.px {
 		q := &f.px[i]
-		x, y := q.x-du, q.y-dv
+		x, y := float64(q.x)-du, float64(q.y)-dv
 		x, y = ax*x+shear*y, ay*y
 		var alpha, aU, aV, aR, aL, aS, aE1, aE2, px, py float64
 		for k, t := range gx {
@@ -229,7 +240,7 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 				continue
 			}
 			rho := math.Sqrt(r2)
-			z := (m.r - rho) * is
+			z := (edgeR - rho) * is
 			cdf, pdf := edge(z)
 			cdf *= gw[k]
 			alpha += cdf
@@ -263,8 +274,8 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		}
 		xb, yb := x*ir, y*ir
 		bob := m.level[0]*alpha + m.level[1]*px + m.level[2]*py + m.level[3]*nz
-		back := q.wall + m.level[4] + m.level[5]*xb + m.level[6]*yb
-		res := q.v - bob - beta*back
+		back := float64(q.wall) + m.level[4] + m.level[5]*xb + m.level[6]*yb
+		res := float64(q.v) - bob - beta*back
 		front := bob
 		if alpha > 0.05 {
 			front /= alpha
@@ -276,15 +287,7 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		variance := noise.bob*alpha + noise.wall*beta
 		steep := step * aR * loose
 		t := res * res / (variance + steep*steep)
-		w := 1.0
-		if t > 9 {
-			if t > 36 {
-				w = 0
-			} else {
-				w = (36 - t) * (1.0 / 27)
-				w *= w
-			}
-		}
+		w := weigh(t)
 		info := step * step * aR * aR / variance
 		acc.all[q.sec] += info
 		if w == 0 {
@@ -319,18 +322,14 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 			j[pE2] = step * aE2
 		}
 		wr := w * res
-		if scores {
-			sc := &acc.score[q.sec]
-			for a := 0; a < n; a++ {
-				sc[a] += wr * j[a]
-			}
-		}
+		score := &acc.score[q.sec]
 		for a := 0; a < n; a++ {
 			ja := j[a]
 			if ja == 0 {
 				continue
 			}
 			acc.g[a] += wr * ja
+			score[a] += wr * ja
 			ja *= w
 			row := &acc.a[a]
 			for b := a; b < n; b++ {
@@ -343,38 +342,48 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 // assess compares the scatter of the sectors' pulls on the centre with what
 // white residuals would give, and remembers the ratio: the clustered sandwich
 // of Liang & Zeger (Biometrika 73, 1986, 13–22), averaged over frames because
-// one frame's has too few clusters.
-func (f *Fitter) assess(m *model, inv *matrix, noise *scatter, from [2]float64, on *[pCount]bool) {
-	var acc sums
-	f.pass(m, &acc, noise, 0.03, from, on, true)
-	var meat, used float64
-	free := 0.0
+// one frame has too few clusters.
+func (f *Fitter) assess(inv *matrix, acc *sums, on *[pCount]bool) {
+	var pulls [sectors][2]float64
+	var mean [2]float64
+	used, free := 0.0, 0.0
 	for _, yes := range on {
 		if yes {
 			free++
 		}
 	}
 	for k := range sectors {
-		var a, b float64
+		if acc.all[k] == 0 {
+			continue
+		}
+		used++
 		for i := range pCount {
-			a += inv[pU][i] * acc.score[k][i]
-			b += inv[pV][i] * acc.score[k][i]
+			pulls[k][0] += inv[pU][i] * acc.score[k][i]
+			pulls[k][1] += inv[pV][i] * acc.score[k][i]
 		}
-		if acc.all[k] > 0 {
-			used++
-			meat += a*a + b*b
-		}
+		mean[0] += pulls[k][0]
+		mean[1] += pulls[k][1]
 	}
 	if used < 10 {
 		return
 	}
+	// The last step is still in these residuals; each sector has its share of it.
+	mean[0] /= used
+	mean[1] /= used
+	meat := 0.0
+	for k := range sectors {
+		if acc.all[k] > 0 {
+			a, b := pulls[k][0]-mean[0], pulls[k][1]-mean[1]
+			meat += a*a + b*b
+		}
+	}
 	scale := acc.chi / math.Max(acc.n-free, 1)
 	white := (inv[pU][pU] + inv[pV][pV]) * scale
-	// The fit itself zeroes the sum of the pulls and their first harmonics.
-	ratio := meat / white * used / (used - 4)
-	f.agreeN = math.Min(f.agreeN+1, 40)
-	f.agree += (math.Min(ratio, 50) - f.agree) / f.agreeN
-	if f.agreeN == 1 {
-		f.agree = ratio
+	ratio := meat / white * used / (used - 1)
+	// One wild frame must not spoil the average.
+	if f.agreeN >= 3 {
+		ratio = math.Min(ratio, 4*f.agree)
 	}
+	f.agreeN = math.Min(f.agreeN+1, 40)
+	f.agree += (ratio - f.agree) / f.agreeN
 }

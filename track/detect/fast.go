@@ -1,0 +1,215 @@
+package detect
+
+import "math"
+
+// The everyday pass. An outline that is little smeared is, seen from any one
+// sector, a straight edge that can only move along its normal; so each pixel
+// adds to a small set of local sums (the edge, its smear, the bob's level, its
+// shading towards the camera, the wall's level), and the sums of a sector are
+// turned into those of the whole fit with the sector's direction. Residuals are
+// those of the full model; only their derivatives are taken at the sector's
+// middle, which costs under 1 % in efficiency and no bias.
+
+// local parameters of a sector
+const (
+	lEdge = iota
+	lSmear
+	lBob
+	lFront
+	lWall
+	lCount
+)
+
+type sectorSums struct {
+	a         [lCount][lCount]float64 // upper triangle
+	g         [lCount]float64
+	kept, all float64
+}
+
+// directions of the sectors' middles, by the diamond angle that sector uses.
+var directions = func() (d [sectors][2]float64) {
+	for k := range d {
+		a := (float64(k) + 0.5) / (sectors / 4)
+		var x, y float64
+		if a < 2 {
+			x = 1 - a
+			y = 1 - math.Abs(x)
+		} else {
+			x = a - 3
+			y = -(1 - math.Abs(x))
+		}
+		h := math.Hypot(x, y)
+		d[k] = [2]float64{x / h, y / h}
+	}
+	return d
+}()
+
+const flat = 3.3 // blurs from the outline beyond which a pixel shows bob or wall alone
+
+// quick tells whether the everyday pass is good for this model: a smear that is
+// short against the radius, blur and ellipse held.
+func (m *model) quick(on *[pCount]bool) bool {
+	return !on[pBlur] && !on[pE1] && m.l <= 0.4*m.r
+}
+
+// passQuick does what pass does, for models that are quick.
+func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, from [2]float64) {
+	sec := &f.sec
+	*sec = [sectors]sectorSums{}
+	du, dv := m.cu-from[0], m.cv-from[1]
+	is, ir := 1/m.s, 1/m.r
+	edgeR := m.r - m.s*m.s*0.5*ir
+	m11, m12, m22 := 1-m.e1, -m.e2, 1+m.e1
+	ay, shear := 1-m.rowV, -m.rowU
+	soft := 2 * m.s * ir
+	soft *= soft
+	f0, fx, fy, fz := m.level[0], m.level[1]*ir, m.level[2]*ir, m.level[3]
+	b0, bx, by := m.level[4], m.level[5]*ir, m.level[6]*ir
+	ibob, iwall := 1/noise.bob, 1/noise.wall
+	zin, zout := flat+0.5*m.l*is, -flat-0.5*m.l*is
+	smeared := m.l > 0.02*m.s
+	var inSum, inN, outSum, outN, chi, n float64
+	for i := range f.px {
+		q := &f.px[i]
+		x, y := float64(q.x)-du, float64(q.y)-dv
+		x, y = x+shear*y, ay*y
+		xp, yp := m11*x+m12*y, m12*x+m22*y
+		r2 := xp*xp + yp*yp
+		rho := math.Sqrt(r2)
+		z := (edgeR - rho) * is
+		s := &sec[q.sec]
+		if z > zin {
+			c := 1 - r2*ir*ir
+			nz := math.Sqrt(0.5 * (c + math.Sqrt(c*c+soft)))
+			res := float64(q.v) - f0 - fx*x - fy*y - fz*nz
+			w := weigh(res * res * ibob)
+			if w == 0 {
+				continue
+			}
+			inSum += w * res * res
+			inN += w
+			w *= ibob
+			chi += w * res * res
+			wn := w * nz
+			s.a[lBob][lBob] += w
+			s.a[lBob][lFront] += wn
+			s.a[lFront][lFront] += wn * nz
+			s.g[lBob] += w * res
+			s.g[lFront] += wn * res
+			continue
+		}
+		back := float64(q.wall) + b0 + bx*x + by*y
+		if z < zout {
+			res := float64(q.v) - back
+			w := weigh(res * res * iwall)
+			outSum += w * res * res
+			outN += w
+			w *= iwall
+			chi += w * res * res
+			s.a[lWall][lWall] += w
+			s.g[lWall] += w * res
+			continue
+		}
+		irho := 1 / rho
+		nx, ny := (m11*xp+m12*yp)*irho, (m12*xp+m22*yp)*irho
+		var alpha, aR, aL float64
+		xm, ym := x, y // middle of the part of the smear that covers this pixel
+		if smeared {
+			nm := nx*m.mu + ny*m.mv
+			a := m.l * nm * is
+			// The way across the smear bends the edge away by its sagitta.
+			zc := z - m.l*m.l*(1-nm*nm)*irho*is*(1.0/24)
+			var aA float64
+			alpha, aR, aA = edgeSmeared(zc, a)
+			aR *= is
+			aL = aA*nm*is - aR*m.l*(1-nm*nm)*irho*(1.0/12)
+			k := -0.5 * m.l * (1 - alpha) * min(max(a*(1.0/3), -1), 1)
+			xm += k * m.mu
+			ym += k * m.mv
+		} else {
+			alpha, aR = edge(z)
+			aR *= is
+		}
+		c := 1 - (xm*xm+ym*ym)*ir*ir
+		nz := math.Sqrt(0.5 * (c + math.Sqrt(c*c+soft)))
+		front := f0 + fx*xm + fy*ym + fz*nz
+		step := front - back
+		res := float64(q.v) - back - alpha*step
+		beta := 1 - alpha
+		variance := noise.bob*alpha + noise.wall*beta
+		edgeJ := step * aR
+		steep := edgeJ * loose
+		w := weigh(res * res / (variance + steep*steep))
+		iv := 1 / variance
+		info := edgeJ * edgeJ * iv
+		s.all += info
+		if w == 0 {
+			continue
+		}
+		s.kept += w * info
+		n += w
+		w *= iv
+		chi += w * res * res
+		smearJ := step * aL
+		az := alpha * nz
+		we, wl, wa, wz, wb := w*edgeJ, w*smearJ, w*alpha, w*az, w*beta
+		s.a[lEdge][lEdge] += we * edgeJ
+		s.a[lEdge][lSmear] += we * smearJ
+		s.a[lEdge][lBob] += we * alpha
+		s.a[lEdge][lFront] += we * az
+		s.a[lEdge][lWall] += we * beta
+		s.a[lSmear][lSmear] += wl * smearJ
+		s.a[lSmear][lBob] += wl * alpha
+		s.a[lSmear][lFront] += wl * az
+		s.a[lSmear][lWall] += wl * beta
+		s.a[lBob][lBob] += wa * alpha
+		s.a[lBob][lFront] += wa * az
+		s.a[lBob][lWall] += wa * beta
+		s.a[lFront][lFront] += wz * az
+		s.a[lFront][lWall] += wz * beta
+		s.a[lWall][lWall] += wb * beta
+		s.g[lEdge] += we * res
+		s.g[lSmear] += wl * res
+		s.g[lBob] += wa * res
+		s.g[lFront] += wz * res
+		s.g[lWall] += wb * res
+	}
+	acc.inSum, acc.inN, acc.outSum, acc.outN = inSum, inN, outSum, outN
+	acc.chi, acc.n = chi, n+inN+outN
+	f.spreadSectors(m, acc)
+}
+
+// spreadSectors turns the sectors' sums into those of the whole fit.
+func (f *Fitter) spreadSectors(m *model, acc *sums) {
+	where := [pBlur]int{pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lBob, pFy: lBob, pFz: lFront, pB0: lWall, pBx: lWall, pBy: lWall}
+	kb, kw := 1-1.5*m.s/m.r, 1+1.5*m.s/m.r
+	for k := range f.sec {
+		s := &f.sec[k]
+		acc.all[k], acc.kept[k] = s.all, s.kept
+		c, d := directions[k][0], directions[k][1]
+		mult := [pBlur]float64{c, d, 1, 1, 1, kb * c, kb * d, 1, 1, kw * c, kw * d}
+		for i := range pBlur {
+			li := where[i]
+			gi := mult[i] * s.g[li]
+			acc.g[i] += gi
+			acc.score[k][i] = gi
+			for j := i; j < pBlur; j++ {
+				acc.a[i][j] += mult[i] * mult[j] * s.a[li][where[j]]
+			}
+		}
+	}
+}
+
+// weigh is the weight of a residual whose square over its variance is t: full
+// to three standard deviations, none beyond six (Hampel's three-part idea with
+// a smooth descent).
+func weigh(t float64) float64 {
+	if t <= 9 {
+		return 1
+	}
+	if !(t < 36) {
+		return 0
+	}
+	w := (36 - t) * (1.0 / 27)
+	return w * w
+}
