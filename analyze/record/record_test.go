@@ -33,6 +33,10 @@ func fillAll(v reflect.Value, rng *rand.Rand) {
 			fillAll(s.Index(i), rng)
 		}
 		v.Set(s)
+	case reflect.Array:
+		for i := range v.Len() {
+			fillAll(v.Index(i), rng)
+		}
 	case reflect.Float64:
 		v.SetFloat(rng.NormFloat64() * math.Pow(10, float64(rng.IntN(12)-6)))
 	case reflect.String:
@@ -134,7 +138,7 @@ func plain(v reflect.Value) string {
 				b.WriteString(v.Type().Field(i).Name + ":")
 				walk(v.Field(i))
 			}
-		case reflect.Slice:
+		case reflect.Slice, reflect.Array:
 			b.WriteString("[")
 			for i := range v.Len() {
 				walk(v.Index(i))
@@ -321,5 +325,33 @@ func TestAnAngleTableIsReadOrRefusedInPlainWords(t *testing.T) {
 		if _, err := ReadAngles(strings.NewReader(text), "swing.csv", "arm"); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("%q: error %v, want one with %q", text, err, want)
 		}
+	}
+}
+
+func TestFactsAreLinesForPeople(t *testing.T) {
+	type facts struct {
+		Codec string            `json:"codec"`
+		Rate  float64           `json:"true_rate_per_s"`
+		Turn  int               `json:"rotation_deg"`
+		W     int               `json:"width_px"`
+		Empty string            `json:"empty"`
+		Tags  map[string]string `json:"tags"`
+		Words []string          `json:"warnings"`
+		Lost  []struct{ T float64 }
+		NaN   float64 `json:"unknown_s"`
+	}
+	c := Clip{Facts: &facts{"h264", 59.94005994, 90, 1080, "", map[string]string{"maker": "x"}, []string{"a", "b"}, []struct{ T float64 }{{1}, {2}}, math.NaN()}}
+	got := map[string]string{}
+	for _, f := range c.List() {
+		got[f.Name] = f.Value
+	}
+	want := map[string]string{
+		"codec": "h264", "true rate": "59.94006/s", "rotation": "90°", "width": "1080 px", "tags: maker": "x", "warnings": "a; b", "Lost": "2 entries",
+	}
+	if !reflect.DeepEqual(got, want) {
+		t.Errorf("got %v, want %v", got, want)
+	}
+	if (&Clip{}).List() != nil {
+		t.Error("no facts gave lines")
 	}
 }
