@@ -1,9 +1,6 @@
 package clip
 
-import (
-	"fmt"
-	"image"
-)
+import "image"
 
 // Frame is one picture of a clip as it is stored: three bytes blue, green, red
 // per pixel, row by row, Stride bytes from one row to the next. RotationDeg is
@@ -34,18 +31,6 @@ func (f *Frame) Size() (w, h int) {
 func (f *Frame) Bounds() image.Rectangle {
 	w, h := f.Size()
 	return image.Rect(0, 0, w, h)
-}
-
-// check says what is wrong with a frame's own numbers; a frame that passes can
-// be indexed anywhere inside Bounds.
-func (f *Frame) check() error {
-	switch {
-	case f.W <= 0 || f.H <= 0:
-		return fmt.Errorf("frame %d has no pixels (%d × %d)", f.Index, f.W, f.H)
-	case f.Stride < 3*f.W || len(f.Pix) < f.Stride*(f.H-1)+3*f.W:
-		return fmt.Errorf("frame %d holds %d bytes, too few for %d × %d pixels in rows of %d bytes", f.Index, len(f.Pix), f.W, f.H, f.Stride)
-	}
-	return nil
 }
 
 // BGR returns the pixel at (u, v) of the upright picture. It panics outside
