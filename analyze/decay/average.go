@@ -1,0 +1,240 @@
+package decay
+
+import (
+	"math"
+	"slices"
+
+	"lodeswing/analyze/finding"
+)
+
+// quantity is a number that follows from a fitted model; NaN where it does not exist.
+type quantity func(m model, p []float64) float64
+
+// averaged is a quantity over all laws, by their weights.
+type averaged struct {
+	value  float64
+	random float64         // standard uncertainty from the noise
+	spread float64         // from not knowing the law
+	shared []finding.Share // from what is common to all samples
+	u      float64
+}
+
+// average computes q for every law that has weight and its mean over them.
+func (an *analysis) average(q quantity) averaged {
+	return an.averageOver(q, func(law) bool { return true })
+}
+
+// averageOver is average over the laws that ok lets through.
+func (an *analysis) averageOver(q quantity, ok func(law) bool) averaged {
+	type one struct{ w, v, variance float64 }
+	var all []one
+	total := 0.0
+	common := make([]float64, len(an.shared))
+	for k, f := range an.fits {
+		w := an.weights[k]
+		if w < 1e-4 || !ok(f.m.law) {
+			continue
+		}
+		v := q(f.m, f.p)
+		if math.IsNaN(v) {
+			continue
+		}
+		g := gradient(q, f)
+		all = append(all, one{w, v, quadratic(g, an.cov[k])})
+		total += w
+		for s := range an.shared {
+			common[s] += w * dot(g, an.gain(k, s))
+		}
+	}
+	a := averaged{value: math.NaN()}
+	if total == 0 {
+		return a
+	}
+	a.value = 0
+	for _, o := range all {
+		a.value += o.w * o.v / total
+	}
+	var vr, vs float64
+	for _, o := range all {
+		vr += o.w * o.variance / total
+		vs += o.w * (o.v - a.value) * (o.v - a.value) / total
+	}
+	a.random, a.spread = math.Sqrt(vr), math.Sqrt(vs)
+	sum := vr + vs
+	for s, c := range common {
+		c /= total
+		sum += c * c
+		a.addShare(an.shared[s].Source, math.Abs(c))
+	}
+	a.u = math.Sqrt(sum)
+	return a
+}
+
+// addShare adds an independent share, merged with one of the same name.
+func (a *averaged) addShare(source string, u float64) {
+	for i := range a.shared {
+		if a.shared[i].Source == source {
+			a.shared[i].U = math.Hypot(a.shared[i].U, u)
+			return
+		}
+	}
+	a.shared = append(a.shared, finding.Share{Source: source, U: u})
+}
+
+// with adds one more independent share to the uncertainty.
+func (a averaged) with(source string, u float64) averaged {
+	if u == 0 || math.IsNaN(u) {
+		return a
+	}
+	a.shared = slices.Clone(a.shared)
+	a.addShare(source, math.Abs(u))
+	a.u = math.Hypot(a.u, u)
+	return a
+}
+
+// through carries the average through a smooth function of it.
+func (a averaged) through(f func(float64) float64) averaged {
+	h := math.Max(1e-6*math.Abs(a.value), 1e-3*a.u)
+	slope := math.Abs((f(a.value+h) - f(a.value-h)) / (2 * h))
+	b := averaged{value: f(a.value), random: a.random * slope, spread: a.spread * slope, u: a.u * slope}
+	for _, s := range a.shared {
+		b.shared = append(b.shared, finding.Share{Source: s.Source, U: s.U * slope})
+	}
+	return b
+}
+
+// finding makes a finding of an average.
+func (a averaged) finding(key, subject, name, unit, method string) finding.Finding {
+	f := finding.Normal(key, subject, name, a.value, a.u, unit, method)
+	f.Budget = append(f.Budget, finding.Share{Source: "the pictures' noise", U: a.random})
+	if a.spread > 0.01*a.u {
+		f.Budget = append(f.Budget, finding.Share{Source: "which friction it is", U: a.spread})
+	}
+	for _, s := range a.shared {
+		if s.U > 1e-3*a.u {
+			f.Budget = append(f.Budget, s)
+		}
+	}
+	return f
+}
+
+// gradient is ∂q/∂p by central differences of a tenth of each parameter's
+// standard uncertainty for unit noise.
+func gradient(q quantity, f *fitted) []float64 {
+	n := f.m.size()
+	g := make([]float64, n)
+	p := slices.Clone(f.p)
+	for j := range n {
+		h := 0.1 * math.Sqrt(f.cov[j*n+j])
+		if !(h > 0) {
+			continue
+		}
+		p[j] = f.p[j] + h
+		up := q(f.m, p)
+		p[j] = f.p[j] - h
+		down := q(f.m, p)
+		p[j] = f.p[j]
+		if d := (up - down) / (2 * h); !math.IsNaN(d) {
+			g[j] = d
+		}
+	}
+	return g
+}
+
+// gain is by how much one standard uncertainty of shared cause s moves the
+// parameters of law k: (JᵀJ)⁻¹Jᵀ·(D/u).
+func (an *analysis) gain(k, s int) []float64 {
+	if an.gains == nil {
+		an.gains = map[[2]int][]float64{}
+	}
+	if g := an.gains[[2]int{k, s}]; g != nil {
+		return g
+	}
+	f := an.fits[k]
+	n := f.m.size()
+	jtd := make([]float64, n)
+	for i, d := range an.shared[s].D {
+		x := d / an.data.u[i]
+		for j := range n {
+			jtd[j] += f.jac[i*n+j] * x
+		}
+	}
+	g := make([]float64, n)
+	for i := range n {
+		for j := range n {
+			g[i] += f.cov[i*n+j] * jtd[j]
+		}
+	}
+	an.gains[[2]int{k, s}] = g
+	return g
+}
+
+func dot(a, b []float64) float64 {
+	s := 0.0
+	for i := range a {
+		s += a[i] * b[i]
+	}
+	return s
+}
+
+// quadratic is gᵀCg.
+func quadratic(g, c []float64) float64 {
+	n := len(g)
+	s := 0.0
+	for i := range n {
+		for j := range n {
+			s += g[i] * c[i*n+j] * g[j]
+		}
+	}
+	return math.Max(0, s)
+}
+
+// The quantities.
+
+func periodZero(_ model, p []float64) float64 { return 2 * math.Pi / math.Sqrt(p[atK]) }
+
+func periodAt(a float64) quantity {
+	return func(m model, p []float64) float64 {
+		o, err := m.orbitAt(p, a)
+		if err != nil {
+			return math.NaN()
+		}
+		return o.period
+	}
+}
+
+func zetaAt(a float64) quantity {
+	return func(m model, p []float64) float64 {
+		o, err := m.orbitAt(p, a)
+		if err != nil {
+			return math.NaN()
+		}
+		return m.zeta(p, o)
+	}
+}
+
+func frictionOf(l law) quantity {
+	return func(m model, p []float64) float64 { return m.friction(p, l) }
+}
+
+// upper95 is the 95 % quantile of a normal distribution cut off below zero, for
+// an upper limit on what cannot be negative.
+func upper95(value, u float64) float64 {
+	if !(u > 0) {
+		return value
+	}
+	below := normalCDF(-value / u)
+	target := below + 0.95*(1-below)
+	lo, hi := 0.0, math.Max(0, value)+10*u
+	for range 80 {
+		mid := (lo + hi) / 2
+		if normalCDF((mid-value)/u) < target {
+			lo = mid
+		} else {
+			hi = mid
+		}
+	}
+	return hi
+}
+
+func normalCDF(x float64) float64 { return 0.5 * math.Erfc(-x/math.Sqrt2) }

@@ -1,0 +1,354 @@
+// Package decay reads a free decay: how a swing dies, and with which period.
+//
+// What comes in: the angle series of one part (package series) and what is
+// known of the part (from the rig). What goes out: findings (period, damping
+// ratio, Q, logarithmic decrement, friction law, gravity check), a summary of
+// the fits, and curves for the figures. Units: seconds, radians; frictions per
+// unit inertia (viscous s⁻¹, drag rad⁻¹, dry rad s⁻²).
+//
+// The equation of motion δ̈ = −k·f(δ) − c₁δ̇ − c₂|δ̇|δ̇ − τ₀ sgn δ̇ is integrated
+// and fitted to the angle samples themselves by weighted nonlinear least
+// squares, for all seven mixtures of the three frictions. f is sin δ for a
+// pendulum, δ for a spring, with more terms where the data want them. The
+// mixtures are weighed by the Bayesian information criterion (G. Schwarz, Annals
+// of Statistics 6, 1978); numbers such as the damping ratio are means over the
+// mixtures with these weights (Burnham & Anderson, "Model Selection and
+// Multimodel Inference", 2002), so that they do not hang on the law chosen.
+package decay
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+
+	"lodeswing/analyze/finding"
+	"lodeswing/analyze/series"
+)
+
+// Restoring says what pulls a part back to its rest.
+type Restoring uint8
+
+// What pulls a part back.
+const (
+	Gravity Restoring = iota // a pendulum: torque ∝ sin δ
+	Spring                   // a spring: torque ∝ δ, perhaps with a cubic term
+	Magnets                  // magnets act too: a smooth law fitted to the data
+)
+
+// Options says what is known beforehand. The zero value suits a free pendulum
+// of which nothing is known.
+type Options struct {
+	Restoring Restoring
+	// NoDecay, when set, says why this part cannot show a free decay (plain
+	// words); the result is then that statement.
+	NoDecay string
+	// FromS and ToS, where Told, are the stretch to use.
+	Told       bool
+	FromS, ToS float64
+	// AmplitudeRad is the amplitude at which damping is stated; 0: where it is
+	// known best.
+	AmplitudeRad float64
+	Gravity      GravityInfo
+}
+
+// Result is what a free decay tells. When no free decay was found, Findings
+// holds one that says so, and Found is false.
+type Result struct {
+	Part, Bob  string
+	Found      bool
+	FromS, ToS float64 // the stretch used
+	Samples    int
+	Swings     float64 // full swings in it
+	// AmplitudeStart and AmplitudeEnd are the envelope's ends, rad; Amplitude is
+	// that at which damping is stated.
+	AmplitudeStart, AmplitudeEnd, Amplitude float64
+	Law                                     string // of the largest weight
+	Decided                                 bool   // whether that law may be called the law
+	Laws                                    []LawFit
+	Findings                                []finding.Finding
+	Fits                                    []finding.Fit
+	Curves                                  []finding.Curve
+	// The fitted motion at the samples used: s, rad (as measured, not from rest), rad/s.
+	ModelT, ModelAngle, ModelRate []float64
+	Cautions                      []string
+}
+
+// LawFit is one law's fit, per unit inertia; frictions that the law lacks are 0.
+type LawFit struct {
+	Law                string
+	BIC, Weight        float64
+	ChiSquare          float64 // over the noise as measured
+	Omega2, UOmega2    float64 // ω₀², s⁻²
+	Viscous, UViscous  float64 // s⁻¹
+	Drag, UDrag        float64 // rad⁻¹
+	Dry, UDry          float64 // rad s⁻²
+	ZetaAtAmplitude, U float64
+}
+
+// analysis is one call of Analyze.
+type analysis struct {
+	ctx      context.Context
+	angle    *series.Angle
+	opt      Options
+	backDone bool
+	skip     []bool // outliers
+
+	st       stretch
+	data     *samples
+	shared   []series.Shared // cut to data
+	shape    model           // the shape that was chosen; its law is unset
+	fits     []*fitted       // one per law
+	cov      [][]float64
+	weights  []float64
+	bics     []float64
+	noise    noise
+	gains    map[[2]int][]float64
+	turns    []turn
+	period   float64 // of small swings, s
+	ampStart float64
+	ampEnd   float64
+	swings   float64
+	most     float64 // the largest amplitude worth looking at
+	outliers int
+	cautions []string
+}
+
+// Analyze reads the free decay of one part from its angle series. It returns an
+// error for a series that cannot be used at all and when ctx ends; a series
+// without a free decay is a Result that says so.
+func Analyze(ctx context.Context, a series.Angle, opt Options) (*Result, error) {
+	if a.Problem != "" {
+		return nil, fmt.Errorf("decay: %s", a.Problem)
+	}
+	if len(a.T) < 30 || len(a.T) != len(a.Angle) || len(a.T) != len(a.UAngle) || len(a.T) != len(a.Rate) || len(a.T) != len(a.URate) {
+		return nil, fmt.Errorf("decay: the angle series of %q has %d samples; at least 30 are needed, each with uncertainty and rate", a.Part, len(a.T))
+	}
+	for i := range a.T {
+		if !(a.UAngle[i] > 0) || math.IsNaN(a.Angle[i]) {
+			return nil, fmt.Errorf("decay: sample %d of %q at %g s has angle %v ± %v; every sample needs an uncertainty above zero", i+1, a.Part, a.T[i], a.Angle[i], a.UAngle[i])
+		}
+	}
+	res := &Result{Part: a.Part, Bob: a.Bob}
+	if opt.NoDecay != "" {
+		res.none("Not looked for: " + opt.NoDecay)
+		return res, nil
+	}
+	an := &analysis{ctx: ctx, angle: &a, opt: opt, skip: make([]bool, len(a.T))}
+	from, to := math.NaN(), math.NaN()
+	if opt.Told {
+		from, to = opt.FromS, opt.ToS
+		if !(to > from) {
+			to = math.Inf(1)
+		}
+	}
+	st, err := findStretch(&a, from, to)
+	if err != nil {
+		res.none(err.Error())
+		return res, nil
+	}
+	an.st = st
+	err = an.work()
+	if e := ctx.Err(); e != nil {
+		return nil, e
+	}
+	var no notFollowed
+	if errors.As(err, &no) {
+		res.none(no.Error())
+		return res, nil
+	}
+	if err != nil {
+		return nil, err
+	}
+	an.report(res)
+	return res, nil
+}
+
+// notFollowed says that the motion is no free decay of the model's kind.
+type notFollowed struct{ why string }
+
+func (n notFollowed) Error() string { return n.why }
+
+// none makes the result that says why there is no free decay.
+func (r *Result) none(why string) {
+	r.Findings = append(r.Findings, finding.Finding{
+		Key: "decay.free_decay", Subject: r.Part, Name: "Free decay", Kind: finding.Undecided, Unit: "1",
+		Text:   sentence(why),
+		Method: "search for a row of half swings, each no larger than the one before and about as long",
+	})
+}
+
+// samples are the stretch's samples without outliers.
+func (an *analysis) samples(from, to int) *samples {
+	a := an.angle
+	s := &samples{tRef: a.T[from]}
+	for i := from; i < to; i++ {
+		if !an.skip[i] {
+			s.t, s.y, s.u = append(s.t, a.T[i]), append(s.y, a.Angle[i]), append(s.u, a.UAngle[i])
+		}
+	}
+	return s
+}
+
+// samplesPer is about how many samples there are in a time.
+func (an *analysis) samplesPer(seconds float64) int {
+	t := an.angle.T
+	return 1 + int(seconds/(t[len(t)-1]-t[0])*float64(len(t)))
+}
+
+// fitFirst fits m with all three frictions to s, from the fit before it or from
+// the turning points.
+func (an *analysis) fitFirst(s *samples, m model, st *stretch, before *fitted) (*fitted, error) {
+	m.law = viscous | drag | dry
+	amp := st.swings[len(st.swings)/2].span / 2
+	if before != nil {
+		mv := newMover(before.m, false)
+		if err := mv.run(before.p, before.tRef, []float64{s.tRef}, make([]float64, 1), nil, nil); err == nil {
+			start := restart(before, m, amp)
+			start[atAngle], start[atRate] = mv.last[0], mv.last[1]
+			return s.fit(an.ctx, m, start, true)
+		}
+	}
+	simple := model{sine: m.sine, law: viscous}
+	rate := an.angle.Rate[st.from]
+	if math.IsNaN(rate) {
+		rate = 0
+	}
+	f, err := s.climb(an.ctx, simple, s.guess(simple, st.swings, an.angle.Angle[st.from], rate))
+	if err != nil {
+		return nil, err
+	}
+	return s.fit(an.ctx, m, restart(f, m, amp), true)
+}
+
+// shapes are the restoring laws that are weighed, the simplest first.
+func (o Options) shapes() []model {
+	switch o.Restoring {
+	case Spring:
+		return []model{{}, {powers: []int{3}}, {powers: []int{3, 5}}}
+	case Magnets:
+		return []model{{}, {powers: []int{3}}, {powers: []int{3, 5}}, {powers: []int{2, 3}}, {powers: []int{2, 3, 4, 5}}}
+	}
+	return []model{{sine: true}, {sine: true, powers: []int{3}}}
+}
+
+// work finds the stretch's true ends, the shape, the noise, and fits all laws.
+func (an *analysis) work() error {
+	shapes := an.opt.shapes()
+	look := shapes[0]
+	if an.opt.Restoring != Gravity {
+		look = shapes[len(shapes)-1]
+	}
+	f, err := an.refine(&an.st, look)
+	if err != nil {
+		return err
+	}
+	an.outliersOf(f)
+	an.data = an.samples(an.st.from, an.st.to)
+	if len(an.data.t) < 30 {
+		return notFollowed{fmt.Sprintf("only %d samples hold a free decay; at least 30 are needed", len(an.data.t))}
+	}
+	freq := math.Sqrt(f.p[atK]) / (2 * math.Pi)
+	amp := an.midAmplitude()
+
+	// The shape, with all three frictions.
+	var tried []*fitted
+	for _, m := range shapes {
+		m.law = viscous | drag | dry
+		g, err := an.data.fit(an.ctx, m, restart(f, m, amp), false)
+		if err != nil {
+			if e := an.ctx.Err(); e != nil {
+				return e
+			}
+			continue
+		}
+		tried = append(tried, g)
+	}
+	if len(tried) == 0 {
+		return notFollowed{"the motion does not follow a damped swing about one rest"}
+	}
+	richest := tried[len(tried)-1]
+	an.noise = measureNoise(an.data.t, richest, freq)
+	best := tried[0]
+	for _, g := range tried[1:] {
+		if an.bic(g) < an.bic(best) {
+			best = g
+		}
+	}
+	an.shape = best.m
+	an.shape.law = 0
+	an.noise = measureNoise(an.data.t, best, freq)
+
+	for _, l := range laws {
+		m := an.shape
+		m.law = l
+		g := best
+		if l != best.m.law {
+			if g, err = an.data.fit(an.ctx, m, restart(best, m, amp), false); err != nil {
+				return err
+			}
+		}
+		an.fits = append(an.fits, g)
+		an.cov = append(an.cov, an.noise.covariance(g))
+		an.bics = append(an.bics, an.bic(g))
+	}
+	an.weights = bicWeights(an.bics)
+	for _, s := range an.angle.Shared {
+		cut := series.Shared{Source: s.Source}
+		for i := an.st.from; i < an.st.to; i++ {
+			if !an.skip[i] {
+				cut.D = append(cut.D, s.D[i])
+			}
+		}
+		an.shared = append(an.shared, cut)
+	}
+	return nil
+}
+
+// bic is χ² over the noise as it is, plus the price of the parameters: the
+// criterion for normal errors whose variance is known from the richest model.
+func (an *analysis) bic(f *fitted) float64 {
+	return f.chi2/(an.noise.sigma2*an.noise.swing) + float64(f.m.size())*math.Log(an.noise.effective)
+}
+
+func bicWeights(bics []float64) []float64 {
+	least := math.Inf(1)
+	for _, b := range bics {
+		least = math.Min(least, b)
+	}
+	sum := 0.0
+	w := make([]float64, len(bics))
+	for i, b := range bics {
+		w[i] = math.Exp(-(b - least) / 2)
+		sum += w[i]
+	}
+	for i := range w {
+		w[i] /= sum
+	}
+	return w
+}
+
+// outliersOf marks samples that lie beyond six robust standard deviations of
+// the fit: they were followed wrongly.
+func (an *analysis) outliersOf(f *fitted) {
+	level := medianAbs(f.resid) / 0.6744897501960817
+	if level == 0 {
+		return
+	}
+	k := 0
+	for i := an.st.from; i < an.st.to; i++ {
+		if an.skip[i] {
+			continue
+		}
+		if math.Abs(f.resid[k]) > 6*level {
+			an.skip[i] = true
+			an.outliers++
+		}
+		k++
+	}
+}
+
+// midAmplitude is an amplitude in the middle of the decay.
+func (an *analysis) midAmplitude() float64 {
+	return an.st.swings[len(an.st.swings)/2].span / 2
+}

@@ -1,0 +1,196 @@
+package decay
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"slices"
+
+	"lodeswing/analyze/lsq"
+)
+
+// samples is the stretch that is fitted: angles with their random uncertainty.
+type samples struct {
+	t, y, u []float64
+	tRef    float64 // where the model's start state stands
+}
+
+// head is the first n samples.
+func (s *samples) head(n int) *samples {
+	return &samples{t: s.t[:n], y: s.y[:n], u: s.u[:n], tRef: s.tRef}
+}
+
+// fitted is one model fitted to samples.
+type fitted struct {
+	m     model
+	p     []float64
+	tRef  float64
+	resid []float64 // (angle − model)/u
+	jac   []float64 // ∂resid/∂p with the sign of the model: +∂model/∂p / u, row-major
+	chi2  float64
+	cov   []float64 // for residuals of unit variance, row-major; frictions' bounds taken as not there
+	sum   *lsq.Summary
+}
+
+// fit fits m to s from start by weighted nonlinear least squares. Frictions are
+// kept from being negative.
+func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool) (*fitted, error) {
+	n, size := len(s.t), m.size()
+	plain, grad := newMover(m, false), newMover(m, true)
+	out := make([]float64, n)
+	pr := lsq.Problem{
+		N: size, M: n, Names: m.names(),
+		Lo: slices.Repeat([]float64{math.Inf(-1)}, size), Hi: slices.Repeat([]float64{math.Inf(1)}, size),
+		Scale: m.scales(start),
+		Residuals: func(p, r []float64) error {
+			if err := plain.run(p, s.tRef, s.t, out, nil, nil); err != nil {
+				return err
+			}
+			for i := range r {
+				r[i] = (out[i] - s.y[i]) / s.u[i]
+			}
+			return nil
+		},
+		Jacobian: func(p, j []float64) error {
+			if err := grad.run(p, s.tRef, s.t, out, j, nil); err != nil {
+				return err
+			}
+			for i := range n {
+				for c := range size {
+					j[i*size+c] /= s.u[i]
+				}
+			}
+			return nil
+		},
+	}
+	pr.Lo[atK] = 1e-12
+	for _, l := range frictions {
+		if m.law&l != 0 {
+			pr.Lo[m.frictionAt(l)] = 0
+		}
+	}
+	opt := lsq.Options{SigmaKnown: true, TolF: 1e-10, TolP: 1e-10, MaxIterations: 60}
+	if coarse {
+		opt.TolF, opt.MaxIterations = 1e-4, 25
+	}
+	sum, err := lsq.Solve(ctx, pr, start, opt)
+	if err != nil {
+		return nil, fmt.Errorf("decay: the fit of %s friction failed: %w", m.law, err)
+	}
+	f := &fitted{m: m, p: sum.P, tRef: s.tRef, resid: make([]float64, n), jac: sum.Jacobian, chi2: sum.ChiSquare, cov: sum.Cov, sum: sum}
+	for i, r := range sum.Residuals {
+		f.resid[i] = -r
+	}
+	return f, nil
+}
+
+// scales are the sizes of typical changes, for the search.
+func (m model) scales(p []float64) []float64 {
+	w := math.Sqrt(math.Max(p[atK], 1e-12))
+	a := math.Max(math.Hypot(p[atAngle], p[atRate]/w), 1e-6)
+	s := make([]float64, m.size())
+	s[atAngle], s[atRate], s[atRest], s[atK] = a, a*w, a, w*w
+	for i := range m.powers {
+		s[atShape+i] = 0.1 / ipow(a, m.powers[i]-1)
+	}
+	for i, l := range frictions {
+		if m.law&l != 0 {
+			s[m.frictionAt(l)] = []float64{0.01 * w, 0.01 / a, 0.01 * w * w * a}[i]
+		}
+	}
+	return s
+}
+
+// restart turns the parameters of one model into a start for another: what both
+// have is kept, and frictions that only one has are exchanged so that the loss
+// at amplitude a stays.
+func restart(from *fitted, to model, a float64) []float64 {
+	p := make([]float64, to.size())
+	copy(p, from.p[:atShape])
+	for i, e := range to.powers {
+		if k := slices.Index(from.m.powers, e); k >= 0 {
+			p[atShape+i] = from.p[atShape+k]
+		}
+	}
+	o, err := from.m.orbitAt(from.p, a)
+	if err != nil {
+		return p
+	}
+	lost, kept := 0.0, 0.0
+	for i, l := range frictions {
+		x := from.m.friction(from.p, l) * o.loss[i]
+		lost += x
+		if to.law&l != 0 {
+			kept += x
+			p[to.frictionAt(l)] = from.m.friction(from.p, l)
+		}
+	}
+	if rest := lost - kept; rest > 0 {
+		k := float64(to.law.count())
+		for i, l := range frictions {
+			if to.law&l != 0 {
+				p[to.frictionAt(l)] += rest / k / o.loss[i]
+			}
+		}
+	}
+	return p
+}
+
+// guess is a start for a model with viscous friction alone, from the turning
+// points of the stretch and the smoothed state at its first sample.
+func (s *samples) guess(m model, swings []swing, angle0, rate0 float64) []float64 {
+	p := make([]float64, m.size())
+	var rest, weight, t0 float64
+	for _, w := range swings {
+		rest += w.middle * w.span
+		weight += w.span
+	}
+	rest /= weight
+	for _, w := range swings {
+		half := w.duration
+		if m.sine {
+			if o, err := m.orbitAt([]float64{0, 0, 0, 1, 0}, w.span/2); err == nil {
+				half *= 2 * math.Pi / o.period
+			}
+		}
+		t0 += 2 * half * w.span / weight
+	}
+	first, last := swings[0], swings[len(swings)-1]
+	p[atAngle], p[atRate], p[atRest], p[atK] = angle0-rest, rate0, rest, 4*math.Pi*math.Pi/(t0*t0)
+	p[m.frictionAt(viscous)] = 1e-3 / t0
+	if dt := last.at - first.at; dt > 0 && last.span > 0 {
+		p[m.frictionAt(viscous)] = math.Max(1e-3/t0, 2*math.Log(first.span/last.span)/dt)
+	}
+	return p
+}
+
+// climb fits m to longer and longer beginnings of s, so that the phase is never
+// lost, and then, coarsely, to the whole.
+func (s *samples) climb(ctx context.Context, m model, start []float64) (*fitted, error) {
+	period := 2 * math.Pi / math.Sqrt(start[atK])
+	span := s.t[len(s.t)-1] - s.t[0]
+	for reach := 4 * period; reach < span; reach *= 2.2 {
+		n := 0
+		for n < len(s.t) && s.t[n] <= s.t[0]+reach {
+			n++
+		}
+		if n < 3*m.size() {
+			continue
+		}
+		f, err := s.head(n).fit(ctx, m, start, true)
+		if err != nil {
+			return nil, err
+		}
+		start = f.p
+	}
+	return s.fit(ctx, m, start, true)
+}
+
+func medianAbs(x []float64) float64 {
+	y := make([]float64, len(x))
+	for i, v := range x {
+		y[i] = math.Abs(v)
+	}
+	slices.Sort(y)
+	return y[len(y)/2]
+}

@@ -1,0 +1,614 @@
+package series
+
+import (
+	"fmt"
+	"math"
+
+	"lodeswing/track"
+	"lodeswing/track/rig"
+)
+
+// Defaults where the rig gives no uncertainty of a place.
+const (
+	uPlaceM  = 0.5e-3 // of each coordinate of pivot_mm and at_mm, as of the rig's magnets
+	uOriginP = 1.0    // px, of scale.origin_px
+	uUpright = 0.0175 // rad (1°), of a picture's own upright taken for the vertical
+)
+
+// builder makes angles bob by bob; a part on another part needs its parent's.
+type builder struct {
+	tr    *track.Track
+	rig   *rig.Rig
+	done  map[string]*Angle // by bob
+	depth int
+}
+
+// order is the bobs in the track's order.
+func (b *builder) order() []*track.Bob {
+	out := make([]*track.Bob, len(b.tr.Bobs))
+	for i := range b.tr.Bobs {
+		out[i] = &b.tr.Bobs[i]
+	}
+	return out
+}
+
+// rigBob returns the rig's entry of that name, or nil.
+func (b *builder) rigBob(name string) *rig.Bob {
+	for i := range b.rig.Bobs {
+		if b.rig.Bobs[i].Name == name {
+			return &b.rig.Bobs[i]
+		}
+	}
+	return nil
+}
+
+// partOf returns the part that a bob sits on; nil with a problem when there is none.
+func (b *builder) partOf(bob *track.Bob) (*rig.Part, string) {
+	if len(b.rig.Parts) == 0 {
+		return &rig.Part{Name: bob.Name, Joint: "hinge"}, ""
+	}
+	name := bob.Part
+	if rb := b.rigBob(bob.Name); name == "" && rb != nil {
+		name = rb.Part
+	}
+	if name == "" && len(b.rig.Parts) == 1 {
+		return &b.rig.Parts[0], ""
+	}
+	for i := range b.rig.Parts {
+		if b.rig.Parts[i].Name == name {
+			return &b.rig.Parts[i], ""
+		}
+	}
+	if name == "" {
+		return nil, fmt.Sprintf("the bob %q names no part; give it part = \"...\" in the rig", bob.Name)
+	}
+	return nil, fmt.Sprintf("the bob %q sits on the part %q, which the rig does not describe", bob.Name, name)
+}
+
+// bobsOn lists the track's bobs on a part.
+func (b *builder) bobsOn(part string) []*track.Bob {
+	var out []*track.Bob
+	for i := range b.tr.Bobs {
+		if p, _ := b.partOf(&b.tr.Bobs[i]); p != nil && p.Name == part {
+			out = append(out, &b.tr.Bobs[i])
+		}
+	}
+	return out
+}
+
+// angle makes the Angle of one bob; nil when another bob already tells its part.
+func (b *builder) angle(bob *track.Bob) *Angle {
+	if a := b.done[bob.Name]; a != nil {
+		return a
+	}
+	part, problem := b.partOf(bob)
+	a := &Angle{Bob: bob.Name, Joint: "hinge", UClock: b.tr.Cal.UClock}
+	if part == nil {
+		a.Problem = problem
+		return a
+	}
+	a.Part = part.Name
+	if part.Joint != "" {
+		a.Joint = part.Joint
+	}
+	if b.depth++; b.depth > len(b.rig.Parts)+1 {
+		a.Problem = fmt.Sprintf("the part %q sits on itself, by way of other parts", part.Name)
+		b.depth--
+		return a
+	}
+	defer func() { b.depth-- }()
+	usable := bob.Usable()
+	if len(usable) < minSamples {
+		a.Problem = fmt.Sprintf("the bob %q was seen whole in %d frames only; at least %d are needed", bob.Name, len(usable), minSamples)
+		return a
+	}
+	a.Gaps = bobGaps(bob)
+	switch {
+	case part.On != "" && part.On != "base":
+		if on := b.bobsOn(part.Name); len(on) >= 2 {
+			if bob != on[0] {
+				return nil
+			}
+			b.byLine(a, part, on[0], on[1])
+		} else {
+			b.onPart(a, part, bob, usable)
+		}
+	default:
+		b.byPivot(a, part, bob, usable)
+	}
+	if a.Problem == "" {
+		b.finish(a, part, bob)
+	}
+	b.done[bob.Name] = a
+	return a
+}
+
+// frameOf is how directions on a part become its angle: ang = sign·(dir − zero),
+// where dir is counted from hanging (or standing) towards +x.
+type frameOf struct {
+	upright bool
+	zero    float64 // the bob's own direction in the part, rad
+	centre  float64 // the centre of mass's direction in the part, rad
+}
+
+func newFrame(part *rig.Part, rb *rig.Bob) frameOf {
+	f := frameOf{upright: part.Upright && part.Joint != "pin"}
+	if rb != nil && len(rb.AtM) >= 2 {
+		f.zero = f.direction(rb.AtM)
+	}
+	if part.Joint != "pin" && len(part.CentreM) >= 2 {
+		f.centre = f.direction(part.CentreM)
+	}
+	return f
+}
+
+// direction is the angle of a place given in a part's own axes. A standing part
+// may be given as it stands or hanging, turned by π.
+func (f frameOf) direction(at []float64) float64 {
+	x, z := at[0], at[len(at)-1]
+	if x == 0 && z == 0 {
+		return 0
+	}
+	if f.upright {
+		if z < 0 {
+			x, z = -x, -z
+		}
+		return math.Atan2(x, z)
+	}
+	return math.Atan2(x, -z)
+}
+
+// turn is the part's angle for a bob at (dx, dz) from the pivot, and the unit
+// vector along which the bob moves when the angle grows.
+func (f frameOf) turn(dx, dz float64) (angle, tx, tz float64) {
+	r := math.Hypot(dx, dz)
+	if f.upright {
+		return math.Atan2(dx, dz) - f.zero + f.centre, dz / r, -dx / r
+	}
+	return math.Atan2(dx, -dz) - f.zero + f.centre, -dz / r, dx / r
+}
+
+// byPivot measures a part on the base: direction from a fixed pivot to the bob.
+func (b *builder) byPivot(a *Angle, part *rig.Part, bob *track.Bob, usable []track.Sample) {
+	rb := b.rigBob(bob.Name)
+	c, from, cautions, err := b.pivot(part, rb, usable)
+	if err != nil {
+		a.Problem = fmt.Sprintf("the pivot of %q is not known: %v. Give scale.origin_px and the part's pivot_mm, or the bob's at_mm, or film a larger swing", part.Name, err)
+		return
+	}
+	a.Cautions = append(a.Cautions, cautions...)
+	uScale := b.tr.Cal.UScale
+	a.Pivot = Pivot{
+		X: c.x, Z: c.z, UX: math.Sqrt(c.cov[0]), UZ: math.Sqrt(c.cov[4]), CovXZ: c.cov[1],
+		R: c.r, UR: math.Hypot(math.Sqrt(c.cov[8]), c.r*uScale), From: from, ScatterR: c.scatter,
+	}
+	f := newFrame(part, rb)
+	n := len(usable)
+	tx, tz, inv := make([]float64, n), make([]float64, n), make([]float64, n)
+	for i, s := range usable {
+		dx, dz := s.X-c.x, s.Z-c.z
+		r := math.Hypot(dx, dz)
+		if r == 0 {
+			a.Problem = fmt.Sprintf("the bob %q was seen on its own pivot; the pivot cannot be right", bob.Name)
+			return
+		}
+		var ang float64
+		ang, tx[i], tz[i] = f.turn(dx, dz)
+		inv[i] = 1 / r
+		v := tx[i]*tx[i]*s.Plane.AA + 2*tx[i]*tz[i]*s.Plane.AB + tz[i]*tz[i]*s.Plane.BB
+		a.add(s.T, ang, math.Sqrt(v)/r)
+	}
+	// The pivot's covariance as two independent shifts (Cholesky).
+	l11 := a.Pivot.UX
+	if l11 > 0 {
+		l21 := a.Pivot.CovXZ / l11
+		l22 := math.Sqrt(math.Max(0, a.Pivot.UZ*a.Pivot.UZ-l21*l21))
+		d1, d2 := make([]float64, n), make([]float64, n)
+		for i := range d1 {
+			d1[i] = -(tx[i]*l11 + tz[i]*l21) * inv[i]
+			d2[i] = -tz[i] * l22 * inv[i]
+		}
+		a.Shared = append(a.Shared, Shared{"pivot", d1}, Shared{"pivot", d2})
+	}
+	if part.Joint == "ball" {
+		a.Cautions = append(a.Cautions, "A ball joint swings in space; the angle is that of its picture in the plane of motion.")
+		if a.Pivot.ScatterR > 0.01*a.Pivot.R {
+			a.Cautions = append(a.Cautions, "The bob leaves the plane of motion: its distance from the pivot, as pictured, varies by more than 1 %.")
+		}
+	}
+}
+
+// pivot finds a base part's pivot by circle fit, with what the rig says where
+// the two agree.
+func (b *builder) pivot(part *rig.Part, rb *rig.Bob, usable []track.Sample) (circle, string, []string, error) {
+	var pr prior
+	cal := &b.tr.Cal
+	if len(b.rig.Scale.OriginPX) == 2 && !part.PivotFromTrack && len(part.PivotM) >= 2 {
+		pr.x, pr.z = part.PivotM[0], part.PivotM[len(part.PivotM)-1]
+		d := math.Hypot(pr.x, pr.z)
+		u := math.Hypot(uPlaceM, math.Hypot(uOriginP*cal.MetresPerPixel, cal.UScale*d))
+		pr.ux, pr.uz = u, u
+	}
+	if rb != nil && len(rb.AtM) >= 2 {
+		pr.r = math.Hypot(rb.AtM[0], rb.AtM[len(rb.AtM)-1])
+		if pr.r > 0 {
+			pr.ur = math.Hypot(uPlaceM, cal.UScale*pr.r)
+		}
+	}
+	ball := part.Joint == "ball"
+	if ball && pr.ux > 0 {
+		// A ball joint's bob fills a disc of the picture: no circle to fit.
+		c := circle{x: pr.x, z: pr.z}
+		c.cov[0], c.cov[4] = pr.ux*pr.ux, pr.uz*pr.uz
+		for _, s := range usable {
+			c.r = math.Max(c.r, math.Hypot(s.X-c.x, s.Z-c.z))
+		}
+		c.cov[8] = pr.ux * pr.ux
+		for _, s := range usable {
+			c.scatter += math.Pow(math.Hypot(s.X-c.x, s.Z-c.z)-c.r, 2) / float64(len(usable))
+		}
+		c.scatter = math.Sqrt(c.scatter)
+		return c, "the rig's pivot", nil, nil
+	}
+	free, err := fitCircle(usable, prior{})
+	if err == nil && math.Sqrt(free.cov[8]) > 0.3*free.r {
+		err = errShortArc
+	}
+	if pr.ux == 0 && pr.ur == 0 {
+		return free, "circle through the track", b.circleCautions(free, err, ball), err
+	}
+	both, bothErr := fitCircle(usable, pr)
+	if bothErr != nil {
+		return free, "circle through the track", b.circleCautions(free, err, ball), err
+	}
+	if err == nil {
+		if c := disagree(free, pr); c != "" {
+			return free, "circle through the track", append(b.circleCautions(free, nil, ball), c), nil
+		}
+	}
+	from := "circle through the track, with the rig's dimensions"
+	if err != nil || math.Sqrt(free.cov[8]) > 3*math.Sqrt(both.cov[8]) {
+		from = "the rig's dimensions, and the arc of the track as far as it bends"
+	}
+	return both, from, b.circleCautions(both, nil, ball), nil
+}
+
+func (b *builder) circleCautions(c circle, err error, ball bool) []string {
+	if err != nil || ball {
+		return nil
+	}
+	if c.scatter > 0.015*c.r {
+		return []string{fmt.Sprintf("The bob's distance from its pivot varies by %.1f %% (r.m.s.): the camera moved, the bob left its plane, or it is not on a hinge.", 100*c.scatter/c.r)}
+	}
+	return nil
+}
+
+// disagree says in plain words that rig and track do not fit together; empty
+// when they do, within four standard uncertainties.
+func disagree(free circle, pr prior) string {
+	if pr.ur > 0 {
+		u := math.Hypot(pr.ur, math.Sqrt(free.cov[8]))
+		if math.Abs(free.r-pr.r) > 4*u {
+			return fmt.Sprintf("The rig puts the bob %.1f mm from its pivot, the track %.1f ± %.1f mm; the track's circle was used. Check the scale and at_mm.",
+				1e3*pr.r, 1e3*free.r, 1e3*math.Sqrt(free.cov[8]))
+		}
+	}
+	if pr.ux > 0 {
+		dx, dz := free.x-pr.x, free.z-pr.z
+		if math.Abs(dx) > 4*math.Hypot(pr.ux, math.Sqrt(free.cov[0])) || math.Abs(dz) > 4*math.Hypot(pr.uz, math.Sqrt(free.cov[4])) {
+			return fmt.Sprintf("The track turns about a point %.1f mm to the right of and %.1f mm above the rig's pivot; the track's circle was used. Check scale.origin_px and pivot_mm.",
+				1e3*dx, 1e3*dz)
+		}
+	}
+	return ""
+}
+
+// add appends one sample.
+func (a *Angle) add(t, angle, u float64) {
+	a.T, a.Angle, a.UAngle = append(a.T, t), append(a.Angle, angle), append(a.UAngle, u)
+}
+
+// onPart measures a part that sits on another part, whose pivot therefore moves.
+func (b *builder) onPart(a *Angle, part *rig.Part, bob *track.Bob, usable []track.Sample) {
+	rb := b.rigBob(bob.Name)
+	var parent *Angle
+	var parentRig *rig.Part
+	for i := range b.rig.Parts {
+		if b.rig.Parts[i].Name == part.On {
+			parentRig = &b.rig.Parts[i]
+		}
+	}
+	if parentRig == nil {
+		a.Problem = fmt.Sprintf("the part %q sits on %q, which the rig does not describe", part.Name, part.On)
+		return
+	}
+	for _, pb := range b.bobsOn(part.On) {
+		if pa := b.angle(pb); pa != nil && pa.Problem == "" && !pa.Pivot.Moves {
+			parent = pa
+			break
+		}
+	}
+	if parent == nil || len(part.PivotM) < 2 {
+		a.Problem = fmt.Sprintf("the pivot of %q moves with %q: that part needs a bob of its own that was followed, and %q its pivot_mm; or put a second bob on %q", part.Name, part.On, part.Name, part.Name)
+		return
+	}
+	pf := newFrame(parentRig, b.rigBob(parent.Bob))
+	px, pz := part.PivotM[0], part.PivotM[len(part.PivotM)-1]
+	if pf.upright && pz < 0 {
+		px, pz = -px, -pz
+	}
+	f := newFrame(part, rb)
+	at := map[float64]int{}
+	for i, t := range parent.T {
+		at[t] = i
+	}
+	n := 0
+	a.Pivot = Pivot{From: "the rig's pivot_mm on " + part.On, Moves: true}
+	shared := make([][]float64, len(parent.Shared)+2)
+	var lost int
+	for _, s := range usable {
+		k, ok := at[s.T]
+		if !ok {
+			// Rows are read at their own times when the shutter rolls: take the parent
+			// at the nearest sample, moved on by its rate.
+			if k, ok = nearest(parent.T, s.T); !ok {
+				lost++
+				continue
+			}
+		}
+		q := parent.Angle[k] - pf.centre
+		if dt := s.T - parent.T[k]; dt != 0 && !math.IsNaN(parent.Rate[k]) {
+			q += parent.Rate[k] * dt
+		}
+		if pf.upright {
+			q = -q
+		}
+		sin, cos := math.Sincos(q)
+		ox, oz := px*cos-pz*sin, px*sin+pz*cos
+		x, z := parent.Pivot.X+ox, parent.Pivot.Z+oz
+		dx, dz := s.X-x, s.Z-z
+		r := math.Hypot(dx, dz)
+		if r == 0 {
+			lost++
+			continue
+		}
+		ang, tx, tz := f.turn(dx, dz)
+		// The pivot moves by (−oz, ox)·dq.
+		lever := -(tx*-oz + tz*ox) / r
+		if pf.upright {
+			lever = -lever
+		}
+		v := tx*tx*s.Plane.AA + 2*tx*tz*s.Plane.AB + tz*tz*s.Plane.BB
+		a.add(s.T, ang, math.Hypot(math.Sqrt(v)/r, lever*parent.UAngle[k]))
+		for j, sh := range parent.Shared {
+			shared[j] = append(shared[j], lever*sh.D[k])
+		}
+		shared[len(parent.Shared)] = append(shared[len(parent.Shared)], -(tx*cos+tz*sin)/r*uPlaceM)
+		shared[len(parent.Shared)+1] = append(shared[len(parent.Shared)+1], -(-tx*sin+tz*cos)/r*uPlaceM)
+		a.Pivot.X += x
+		a.Pivot.Z += z
+		a.Pivot.R += r
+		n++
+	}
+	if n < minSamples {
+		a.Problem = fmt.Sprintf("the bobs %q and %q were seen together in %d frames only", bob.Name, parent.Bob, n)
+		return
+	}
+	if lost > 0 {
+		a.Gaps = append(a.Gaps, lostFrames(a.T, a.Gaps)...)
+		a.Cautions = append(a.Cautions, fmt.Sprintf("%d frames were left out because %q, which carries the pivot, was not seen in them.", lost, parent.Bob))
+	}
+	a.Pivot.X, a.Pivot.Z, a.Pivot.R = a.Pivot.X/float64(n), a.Pivot.Z/float64(n), a.Pivot.R/float64(n)
+	a.Pivot.UR = math.Hypot(uPlaceM, a.Pivot.R*b.tr.Cal.UScale)
+	for j, sh := range parent.Shared {
+		a.Shared = append(a.Shared, Shared{sh.Source + " of " + part.On, shared[j]})
+	}
+	for j := len(parent.Shared); j < len(shared); j++ {
+		a.Shared = append(a.Shared, Shared{"pivot", shared[j]})
+	}
+}
+
+// nearest finds the sample of a sorted series within half a step of t.
+func nearest(ts []float64, t float64) (int, bool) {
+	best, d := -1, 0.6*medianStep(ts)
+	for lo, hi := 0, len(ts); lo < hi; {
+		mid := (lo + hi) / 2
+		if e := math.Abs(ts[mid] - t); e < d {
+			best, d = mid, e
+		}
+		if ts[mid] < t {
+			lo = mid + 1
+		} else {
+			hi = mid
+		}
+	}
+	return best, best >= 0
+}
+
+// byLine measures a part by the line between two of its bobs, which needs no pivot.
+func (b *builder) byLine(a *Angle, part *rig.Part, first, second *track.Bob) {
+	r1, r2 := b.rigBob(first.Name), b.rigBob(second.Name)
+	if r1 == nil || r2 == nil || len(r1.AtM) < 2 || len(r2.AtM) < 2 {
+		a.Problem = fmt.Sprintf("the bobs %q and %q on %q need at_mm, so that the line between them tells its angle", first.Name, second.Name, part.Name)
+		return
+	}
+	f := newFrame(part, nil)
+	dx, dz := r2.AtM[0]-r1.AtM[0], r2.AtM[len(r2.AtM)-1]-r1.AtM[len(r1.AtM)-1]
+	length := math.Hypot(dx, dz)
+	if length == 0 {
+		a.Problem = fmt.Sprintf("the bobs %q and %q are given the same place on %q", first.Name, second.Name, part.Name)
+		return
+	}
+	if f.upright {
+		f.zero = math.Atan2(dx, dz)
+	} else {
+		f.zero = math.Atan2(dx, -dz)
+	}
+	n := min(len(first.Samples), len(second.Samples))
+	for i := range n {
+		s1, s2 := first.Samples[i], second.Samples[i]
+		if !s1.State.Usable() || !s2.State.Usable() {
+			continue
+		}
+		ex, ez := s2.X-s1.X, s2.Z-s1.Z
+		r := math.Hypot(ex, ez)
+		if r == 0 {
+			continue
+		}
+		ang, tx, tz := f.turn(ex, ez)
+		c := track.Cov{AA: s1.Plane.AA + s2.Plane.AA, AB: s1.Plane.AB + s2.Plane.AB, BB: s1.Plane.BB + s2.Plane.BB}
+		v := tx*tx*c.AA + 2*tx*tz*c.AB + tz*tz*c.BB
+		a.add((s1.T+s2.T)/2, ang, math.Sqrt(v)/r)
+		a.Pivot.R += r
+	}
+	if len(a.T) < minSamples {
+		a.Problem = fmt.Sprintf("the bobs %q and %q were seen together in %d frames only", first.Name, second.Name, len(a.T))
+		return
+	}
+	a.Gaps = lostFrames(a.T, nil)
+	a.Pivot = Pivot{R: a.Pivot.R / float64(len(a.T)), From: fmt.Sprintf("the line from %s to %s; no pivot was needed", first.Name, second.Name), Moves: true}
+	a.Pivot.UR = a.Pivot.R * b.tr.Cal.UScale
+	d := make([]float64, len(a.T))
+	for i := range d {
+		d[i] = uPlaceM * math.Sqrt2 / length
+	}
+	a.Shared = append(a.Shared, Shared{"the bobs' places on the part", d})
+}
+
+// finish unwraps, adds what all joints share and computes the rates.
+func (b *builder) finish(a *Angle, part *rig.Part, bob *track.Bob) {
+	for i, u := range a.UAngle {
+		if !(u > 0) {
+			a.UAngle[i] = 0
+		}
+	}
+	a.unwrap()
+	if hasZero(a.UAngle) {
+		s := scatter(a.T, a.Angle)
+		for i := range a.UAngle {
+			a.UAngle[i] = s
+		}
+		a.Cautions = append(a.Cautions, "The track gives no uncertainty for some samples; the angle's was taken from its scatter.")
+	}
+	a.rates()
+	if a.NoiseRatio > 2 {
+		a.Cautions = append(a.Cautions, fmt.Sprintf("The angle scatters %.1f times as much as the picture's noise lets expect.", a.NoiseRatio))
+	}
+	cal := &b.tr.Cal
+	n := len(a.T)
+	constant := func(source string, u float64) {
+		d := make([]float64, n)
+		for i := range d {
+			d[i] = u
+		}
+		a.Shared = append(a.Shared, Shared{source, d})
+	}
+	a.VerticalFrom = cal.VerticalFrom
+	switch {
+	case cal.VerticalKnown:
+		if cal.UVertical > 0 {
+			constant("vertical", cal.UVertical)
+		}
+	case b.rig.Camera.Vertical == "rest" && b.restIsVertical(a, part):
+	default:
+		u := cal.UVertical
+		if u == 0 {
+			u = uUpright
+		}
+		constant("vertical", u)
+		a.VerticalFrom = ""
+	}
+	if rb := b.rigBob(bob.Name); rb != nil && len(rb.AtM) >= 2 && rb.AtM[0] != 0 && a.Pivot.R > 0 && !a.Pivot.Moves {
+		constant("the bob's place on the part", uPlaceM/a.Pivot.R)
+	}
+	if cal.UReadoutS > 0 && cal.PictureH > 0 {
+		rows := map[float64]float64{}
+		for _, s := range bob.Samples {
+			rows[s.T] = s.V
+		}
+		d := make([]float64, n)
+		any := false
+		for i, t := range a.T {
+			if v, ok := rows[t]; ok && !math.IsNaN(a.Rate[i]) && !math.IsNaN(v) {
+				d[i] = a.Rate[i] * cal.UReadoutS * (v/float64(cal.PictureH) - 0.5)
+				any = true
+			}
+		}
+		if any {
+			a.Shared = append(a.Shared, Shared{"rolling shutter", d})
+		}
+	}
+}
+
+func hasZero(x []float64) bool {
+	for _, v := range x {
+		if v == 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// unwrap takes out the jumps of 2π. Across a gap the rate before it foretells
+// the turns; where the gap is too long for that, a caution says so.
+func (a *Angle) unwrap() {
+	const turn = 2 * math.Pi
+	step := medianStep(a.T)
+	rate := 0.0
+	for i := 1; i < len(a.Angle); i++ {
+		dt := a.T[i] - a.T[i-1]
+		want := a.Angle[i-1]
+		if dt > 1.5*step {
+			want += rate * dt
+			if math.Abs(rate)*dt > math.Pi/2 {
+				a.Cautions = append(a.Cautions, fmt.Sprintf("The full turns made in the gap at %.2f s are a guess from the rate before it.", a.T[i-1]))
+			}
+		}
+		shift := turn * math.Round((want-a.Angle[i])/turn)
+		if shift != 0 {
+			for j := i; j < len(a.Angle); j++ {
+				a.Angle[j] += shift
+			}
+		}
+		// The rate over the last few samples, for the next gap.
+		if j := max(0, i-3); a.T[i] > a.T[j] && dt <= 1.5*step {
+			rate = (a.Angle[i] - a.Angle[j]) / (a.T[i] - a.T[j])
+		}
+	}
+}
+
+// bobGaps lists the stretches in which a bob has no usable sample.
+func bobGaps(bob *track.Bob) []Gap {
+	var gaps []Gap
+	s := bob.Samples
+	var times []float64
+	for i := 0; i < len(s); {
+		if s[i].State.Usable() {
+			times = append(times, s[i].T)
+			i++
+			continue
+		}
+		j, edge := i, 0
+		for j < len(s) && !s[j].State.Usable() {
+			if s[j].State == track.AtEdge {
+				edge++
+			}
+			j++
+		}
+		g := Gap{Frames: j - i, FromS: s[i].T, ToS: s[j-1].T, Why: "not found"}
+		if edge > (j-i)/2 {
+			g.Why = "at the picture's edge"
+		}
+		if i > 0 {
+			g.FromS = s[i-1].T
+		}
+		if j < len(s) {
+			g.ToS = s[j].T
+		}
+		gaps = append(gaps, g)
+		i = j
+	}
+	gaps = append(gaps, lostFrames(times, gaps)...)
+	sortGaps(gaps)
+	return gaps
+}
