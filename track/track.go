@@ -137,7 +137,7 @@ type Pinhole struct {
 }
 
 // Unsure is one independent source of uncertainty of a Pinhole. By is what one
-// standard uncertainty of it changes: ln FocalPX, K1, K2, a turn about the
+// standard uncertainty of it changes: FocalPX (relative), K1, K2, a turn about the
 // camera's own right, down and ahead (rad), Eye (m).
 type Unsure struct {
 	Source string     `json:"source"`
