@@ -33,7 +33,7 @@ func (m *Model) kinematics(y []float64) {
 			m.setDof(b.v+2, b.p, vec{X: r.xz, Y: r.yz, Z: r.zz})
 		} else {
 			angle := y[b.q]
-			var turn mat
+			var turn rotation
 			switch {
 			case b.flat:
 				turn = aboutZ(angle)

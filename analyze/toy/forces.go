@@ -9,6 +9,14 @@ import (
 // forces sums what magnets and coils do to the parts, and the rates of the
 // coils' quadratures in dy.
 func (m *Model) forces(t float64, y, dy []float64) {
+	m.magnetForces()
+	for i := range m.coils {
+		m.coilForce(&m.coils[i], t, y, dy)
+	}
+}
+
+// magnetForces begins the sums with what the magnets do.
+func (m *Model) magnetForces() {
 	for k := range m.bodies {
 		m.bodies[k].extN, m.bodies[k].extF = vec{}, vec{}
 	}
@@ -22,9 +30,6 @@ func (m *Model) forces(t float64, y, dy []float64) {
 		if a.body >= 0 {
 			m.push(a.body, a.r, f.Scale(-1), ta)
 		}
-	}
-	for i := range m.coils {
-		m.coilForce(&m.coils[i], t, y, dy)
 	}
 }
 

@@ -187,7 +187,7 @@ func (m *Model) Clone() *Model {
 	c.bodies = append([]body(nil), m.bodies...)
 	c.magnets = append([]magnetPart(nil), m.magnets...)
 	c.coils = append([]coilPart(nil), m.coils...)
-	c.solver, c.events, c.params = nil, nil, nil
+	c.solver, c.events, c.params, c.tangentWork = nil, nil, nil, nil
 	c.workSpace()
 	c.listParams()
 	return &c

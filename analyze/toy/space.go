@@ -6,12 +6,12 @@ import (
 	"lodeswing/analyze/magnet"
 )
 
-// mat is a rotation, row by row.
-type mat struct{ xx, xy, xz, yx, yy, yz, zx, zy, zz float64 }
+// rotation is a rotation, row by row.
+type rotation struct{ xx, xy, xz, yx, yy, yz, zx, zy, zz float64 }
 
-var identity = mat{xx: 1, yy: 1, zz: 1}
+var identity = rotation{xx: 1, yy: 1, zz: 1}
 
-func (a *mat) mul(v vec) vec {
+func (a *rotation) mul(v vec) vec {
 	return vec{
 		X: a.xx*v.X + a.xy*v.Y + a.xz*v.Z,
 		Y: a.yx*v.X + a.yy*v.Y + a.yz*v.Z,
@@ -20,7 +20,7 @@ func (a *mat) mul(v vec) vec {
 }
 
 // mulT applies the inverse rotation.
-func (a *mat) mulT(v vec) vec {
+func (a *rotation) mulT(v vec) vec {
 	return vec{
 		X: a.xx*v.X + a.yx*v.Y + a.zx*v.Z,
 		Y: a.xy*v.X + a.yy*v.Y + a.zy*v.Z,
@@ -28,8 +28,8 @@ func (a *mat) mulT(v vec) vec {
 	}
 }
 
-func (a *mat) times(b *mat) mat {
-	return mat{
+func (a *rotation) times(b *rotation) rotation {
+	return rotation{
 		xx: a.xx*b.xx + a.xy*b.yx + a.xz*b.zx, xy: a.xx*b.xy + a.xy*b.yy + a.xz*b.zy, xz: a.xx*b.xz + a.xy*b.yz + a.xz*b.zz,
 		yx: a.yx*b.xx + a.yy*b.yx + a.yz*b.zx, yy: a.yx*b.xy + a.yy*b.yy + a.yz*b.zy, yz: a.yx*b.xz + a.yy*b.yz + a.yz*b.zz,
 		zx: a.zx*b.xx + a.zy*b.yx + a.zz*b.zx, zy: a.zx*b.xy + a.zy*b.yy + a.zz*b.zy, zz: a.zx*b.xz + a.zy*b.yz + a.zz*b.zz,
@@ -37,20 +37,20 @@ func (a *mat) times(b *mat) mat {
 }
 
 // aboutY is the turn by φ about +y, aboutZ that about +z.
-func aboutY(phi float64) mat {
+func aboutY(phi float64) rotation {
 	s, c := math.Sincos(phi)
-	return mat{xx: c, xz: s, yy: 1, zx: -s, zz: c}
+	return rotation{xx: c, xz: s, yy: 1, zx: -s, zz: c}
 }
 
-func aboutZ(phi float64) mat {
+func aboutZ(phi float64) rotation {
 	s, c := math.Sincos(phi)
-	return mat{xx: c, xy: -s, yx: s, yy: c, zz: 1}
+	return rotation{xx: c, xy: -s, yx: s, yy: c, zz: 1}
 }
 
 // fromQuaternion is the rotation of w + xi + yj + zk, which need not be a unit.
-func fromQuaternion(w, x, y, z float64) mat {
+func fromQuaternion(w, x, y, z float64) rotation {
 	k := 2 / (w*w + x*x + y*y + z*z)
-	return mat{
+	return rotation{
 		xx: 1 - k*(y*y+z*z), xy: k * (x*y - w*z), xz: k * (x*z + w*y),
 		yx: k * (x*y + w*z), yy: 1 - k*(x*x+z*z), yz: k * (y*z - w*x),
 		zx: k * (x*z - w*y), zy: k * (y*z + w*x), zz: 1 - k*(x*x+y*y),
@@ -78,7 +78,7 @@ func (a *sym) add(b *sym) {
 }
 
 // turned is R a Rᵀ.
-func (a *sym) turned(r *mat) sym {
+func (a *sym) turned(r *rotation) sym {
 	x := a.mul(vec{X: r.xx, Y: r.xy, Z: r.xz})
 	y := a.mul(vec{X: r.yx, Y: r.yy, Z: r.yz})
 	z := a.mul(vec{X: r.zx, Y: r.zy, Z: r.zz})

@@ -59,10 +59,10 @@ type body struct {
 	comInertia sym // about the centre of mass, own axes; follows from the above
 
 	// work space, refreshed by kinematics
-	rot    mat // own axes -> world
-	p, c   vec // pivot and centre of mass in the world
-	w, vo  vec // angular velocity, and velocity of the body's point at the world's origin
-	aw, ao vec // their rates when all joint accelerations are zero
+	rot    rotation // own axes -> world
+	p, c   vec      // pivot and centre of mass in the world
+	w, vo  vec      // angular velocity, and velocity of the body's point at the world's origin
+	aw, ao vec      // their rates when all joint accelerations are zero
 	own    composite
 	comp   composite // with all that it carries
 	fn, ff vec       // torque about the origin and force that its motion needs
@@ -134,19 +134,19 @@ type Model struct {
 	dirty  bool
 	trees  []tree
 
-	sA, sB  []vec // motion vectors of the degrees of freedom, world, about the origin
-	dofOf   []int // body of each degree of freedom
-	mass    []float64
-	chol    []float64
-	rhs     []float64
-	acc     []float64
-	sign    []float64 // direction that dry friction resists, per body
-	scratch []float64
-	stuck   []bool // held by dry friction, per body
-	free    bool   // no event decides signs: take them from the speeds
-	nStuck  int
-	solver  *ode.Solver
-	events  []ode.Event
+	sA, sB               []vec // motion vectors of the degrees of freedom, world, about the origin
+	dofOf                []int // body of each degree of freedom
+	mass                 []float64
+	chol                 []float64
+	rhs                  []float64
+	acc                  []float64
+	sign                 []float64 // direction that dry friction resists, per body
+	scratch, tangentWork []float64
+	stuck                []bool // held by dry friction, per body
+	free                 bool   // no event decides signs: take them from the speeds
+	nStuck               int
+	solver               *ode.Solver
+	events               []ode.Event
 }
 
 // pair is two magnets that act on each other and can move against each other.
