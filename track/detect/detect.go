@@ -33,8 +33,10 @@ type Guess struct {
 	// USmear is the standard uncertainty of the smear's length, px; 0 holds the
 	// length, and a length that is free needs a direction.
 	USmear float64
-	// RowU and RowV are the expected way while one row is read, px (rolling shutter).
-	RowU, RowV float64
+	// Skew is how a rolling shutter distorts the outline: row 0 is how far the bob
+	// moves along u while the sensor goes on by one pixel along u and along v, row
+	// 1 the same along v. px/px; zero for a global shutter.
+	Skew [2][2]float64
 }
 
 // Disc is a round thing of radius R around (U, V), px. It stands for another

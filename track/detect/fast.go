@@ -60,7 +60,7 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 	is, ir := 1/m.s, 1/m.r
 	edgeR := m.r - m.s*m.s*0.5*ir
 	m11, m12, m22 := 1-m.e1, -m.e2, 1+m.e1
-	ay, shear := 1-m.rowV, -m.rowU
+	k11, k12, k21, k22 := 1-m.skew[0][0], -m.skew[0][1], -m.skew[1][0], 1-m.skew[1][1]
 	soft := 2 * m.s * ir
 	soft *= soft
 	f0, fx, fy, fz := m.level[0], m.level[1]*ir, m.level[2]*ir, m.level[3]
@@ -72,7 +72,7 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 	for i := range f.px {
 		q := &f.px[i]
 		x, y := float64(q.x)-du, float64(q.y)-dv
-		x, y = x+shear*y, ay*y
+		x, y = k11*x+k12*y, k21*x+k22*y
 		xp, yp := m11*x+m12*y, m12*x+m22*y
 		r2 := xp*xp + yp*yp
 		rho := math.Sqrt(r2)

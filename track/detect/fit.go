@@ -71,7 +71,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	if !(r0 > 1) || math.IsNaN(g.U+g.V+smear) {
 		return Fit{Why: "no usable guess"}
 	}
-	m := model{r: r0, s: s0, e1: f.Shape.E1, e2: f.Shape.E2, cu: g.U, cv: g.V, rowU: g.RowU, rowV: g.RowV}
+	m := model{r: r0, s: s0, e1: f.Shape.E1, e2: f.Shape.E2, cu: g.U, cv: g.V, skew: g.Skew}
 	m.mu, m.mv = 1, 0
 	if smear > 0 {
 		m.mu, m.mv = g.SmearU/smear, g.SmearV/smear
@@ -159,7 +159,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 type model struct {
 	cu, cv, r, s, l, e1, e2 float64
 	mu, mv                  float64 // direction of the smear
-	rowU, rowV              float64
+	skew                    [2][2]float64
 	level                   [7]float64 // F0 Fx Fy Fz B0 Bx By
 }
 
@@ -275,9 +275,12 @@ func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]b
 	out.Contrast = m.level[0] - m.level[4]
 	out.Noise = math.Sqrt(math.Max((n.bob+n.wall)/2*scale, 0))
 	out.Pixels = int(acc.n)
-	seen := 0.0
+	seen, most := 0.0, 0.0
 	for k := range sectors {
-		if acc.all[k] > 0 && acc.kept[k] > 0.5*acc.all[k] {
+		most = math.Max(most, acc.all[k])
+	}
+	for k := range sectors {
+		if acc.all[k] > 0.1*most && acc.kept[k] > 0.5*acc.all[k] {
 			seen++
 		}
 	}

@@ -218,9 +218,8 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 	nodes := nodesFor(m.l, m.s)
 	gx, gw := gauss[nodes].x, gauss[nodes].w
 	is, ir := 1/m.s, 1/m.r
-	// Rolling shutter: a row below the centre is read later.
-	ax, ay := 1.0, 1.0-m.rowV
-	shear := -m.rowU
+	// Rolling shutter: what is read later has moved on.
+	k11, k12, k21, k22 := 1-m.skew[0][0], -m.skew[0][1], -m.skew[1][0], 1-m.skew[1][1]
 	m11, m12, m22 := 1-m.e1, -m.e2, 1+m.e1
 	edgeR := m.r - 0.5*m.s*m.s*ir
 	far := m.r + edgeSpan*m.s
@@ -230,7 +229,7 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 	for i := range f.px {
 		q := &f.px[i]
 		x, y := float64(q.x)-du, float64(q.y)-dv
-		x, y = ax*x+shear*y, ay*y
+		x, y = k11*x+k12*y, k21*x+k22*y
 		var alpha, aU, aV, aR, aL, aS, aE1, aE2, px, py float64
 		for k, t := range gx {
 			xk, yk := x-t*m.l*m.mu, y-t*m.l*m.mv

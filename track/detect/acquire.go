@@ -1,0 +1,149 @@
+package detect
+
+import (
+	"image"
+	"math"
+
+	"lodeswing/track/clip"
+)
+
+// Acquire fits a candidate for the first time: it chooses the projection of the
+// colours in which bob and wall differ most over their noise, and closes in
+// from a coarse blur to the edge's own. subsampled says that the clip stores
+// colour at half resolution (4:2:0 and the like), whose edges are soft and may
+// be shifted: then the luma is used unless it shows almost nothing. Blur and
+// ellipse are left uncertain, since the bob may be moving.
+func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled bool) (*Fitter, Fit) {
+	w, ok := projection(p, c, subsampled)
+	if !ok {
+		return nil, Fit{Why: "bob and wall do not differ"}
+	}
+	f := NewFitter(w, c.R, 0.12*c.R+1, active)
+	g := Guess{U: c.U, V: c.V, UPos: 0.1*c.R + 1}
+	coarse := math.Min(2.5, 0.25*c.R)
+	f.Shape.Blur, f.Shape.UBlur = coarse, 0.1
+	r := f.Fit(p, nil, g, nil, false)
+	if !r.OK {
+		return nil, r
+	}
+	f.Shape.R, f.Shape.UR = r.R, 0.06*r.R+0.3
+	f.Shape.UBlur, f.Shape.UE = coarse, 0.1
+	for range 2 {
+		g = Guess{U: r.U, V: r.V, UPos: 0.3}
+		r = f.Fit(p, nil, g, nil, true)
+		if !r.OK {
+			return nil, r
+		}
+		f.Shape.R, f.Shape.UR = r.R, 0.03*r.R+0.1
+		f.Shape.Blur, f.Shape.UBlur = r.Blur, 0.5*r.Blur
+		f.Shape.E1, f.Shape.E2, f.Shape.UE = r.E1, r.E2, 0.05
+	}
+	f.agree, f.agreeN, f.frames = 1, 0, 0
+	return f, r
+}
+
+// projection returns weights of blue, green and red in whose sum bob and wall
+// differ most over the noise (Fisher's linear discriminant), scaled so that the
+// weights' sizes add up to one.
+func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok bool) {
+	var in, out [3]float64
+	var nIn, nOut float64
+	var noise [3][3]float64
+	var nNoise float64
+	row := 3 * p.W
+	for y := range p.H {
+		for x := range p.W {
+			d := math.Hypot(float64(x+p.Rect.Min.X)-c.U, float64(y+p.Rect.Min.Y)-c.V)
+			o := y*row + 3*x
+			inside := d < 0.8*c.R
+			outside := d > 1.15*c.R+1 && d < 1.6*c.R+4
+			if !inside && !outside {
+				continue
+			}
+			sum, n := &out, &nOut
+			if inside {
+				sum, n = &in, &nIn
+			}
+			for k := range 3 {
+				sum[k] += float64(p.BGR[o+k])
+			}
+			*n++
+			// Differences of next neighbours hold the noise and little else.
+			if x+1 < p.W && y+1 < p.H {
+				var e [3]float64
+				for k := range 3 {
+					e[k] = (float64(p.BGR[o+k]) - float64(p.BGR[o+3+k])) / math.Sqrt2
+				}
+				for i := range 3 {
+					for j := range 3 {
+						noise[i][j] += e[i] * e[j]
+					}
+				}
+				nNoise++
+			}
+		}
+	}
+	if nIn < 5 || nOut < 5 || nNoise < 5 {
+		return w, false
+	}
+	var diff [3]float64
+	size := 0.0
+	for k := range 3 {
+		diff[k] = in[k]/nIn - out[k]/nOut
+		size += math.Abs(diff[k])
+	}
+	if size < 3 {
+		return w, false
+	}
+	luma := [3]float64{lumaB, lumaG, lumaR}
+	if subsampled {
+		dy := 0.0
+		for k := range 3 {
+			dy += luma[k] * diff[k]
+		}
+		// Chroma's edges are about twice as soft and its samples a quarter as many:
+		// it must differ several times as much to tell more.
+		chroma := 0.0
+		for k := range 3 {
+			chroma = math.Max(chroma, math.Abs(diff[k]-dy))
+		}
+		if math.Abs(dy) > 12 || math.Abs(dy) > 0.25*chroma {
+			return luma, true
+		}
+		for k := range 3 {
+			w[k] = diff[k] - dy
+		}
+		mean := (w[0] + w[1] + w[2]) / 3
+		for k := range 3 {
+			w[k] -= mean // no luma of a grey in it
+		}
+		return unit(w), true
+	}
+	var a [3][4]float64
+	trace := (noise[0][0] + noise[1][1] + noise[2][2]) / nNoise / 3
+	for i := range 3 {
+		for j := range 3 {
+			a[i][j] = noise[i][j] / nNoise
+		}
+		// Noise that is the same in all channels must not send the weights to
+		// infinity, nor a channel without any be trusted alone.
+		a[i][i] += 0.1*trace + 0.3
+		a[i][3] = diff[i]
+	}
+	w, ok = solve3(a)
+	if !ok {
+		return luma, true
+	}
+	return unit(w), true
+}
+
+func unit(w [3]float64) [3]float64 {
+	s := math.Abs(w[0]) + math.Abs(w[1]) + math.Abs(w[2])
+	if !(s > 0) {
+		return [3]float64{lumaB, lumaG, lumaR}
+	}
+	for k := range w {
+		w[k] /= s
+	}
+	return w
+}

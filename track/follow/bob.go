@@ -1,0 +1,376 @@
+package follow
+
+import (
+	"image"
+	"math"
+
+	"lodeswing/track"
+	"lodeswing/track/clip"
+	"lodeswing/track/detect"
+	"lodeswing/track/link"
+	"lodeswing/track/rig"
+)
+
+// bob is one bob while it is followed.
+type bob struct {
+	f          *follower
+	rig        *rig.Bob
+	look       detect.Look
+	subsampled bool
+	hasStart   bool
+	startU     float64
+	startV     float64
+
+	fitter  *detect.Fitter
+	filter  *link.Filter
+	search  detect.Search
+	samples []track.Sample
+	good    int     // fits so far
+	lost    int     // frames since it was last seen
+	radius  float64 // usual, px
+	level   float64 // usual contrast, levels of the fitter's projection
+
+	// of the present frame
+	patch  clip.Patch
+	pred   link.Prediction
+	guess  detect.Guess
+	t      float64 // middle of its exposure, s
+	covers []detect.Disc
+	result detect.Fit
+	have   bool
+}
+
+const (
+	gate      = 25.0 // squared standard deviations that a sighting may lie from its prediction
+	wholeSeen = 0.85 // share of the outline that makes a bob seen whole
+)
+
+// expect predicts the bob for this frame.
+func (b *bob) expect(frame *clip.Frame) {
+	f := b.f
+	b.have = false
+	b.result = detect.Fit{}
+	p := b.filter.Predict(frame.T)
+	b.t = frame.T + f.cam.RowTime(p.U, p.V)
+	p = b.filter.Predict(b.t)
+	b.pred = p
+	b.guess = detect.Guess{U: p.U, V: p.V, UPos: math.Max(p.Sigma(), 0.02)}
+	if b.filter.Sightings() >= 3 {
+		tau, u := f.expo.tau, f.expo.u
+		b.guess.SmearU, b.guess.SmearV = p.DU*tau, p.DV*tau
+		b.guess.USmear = math.Hypot(p.Speed()*u, math.Min(p.USpeed, p.Speed())*tau)
+		r0 := f.cam.RowTime(p.U, p.V)
+		tu, tv := f.cam.RowTime(p.U+1, p.V)-r0, f.cam.RowTime(p.U, p.V+1)-r0
+		b.guess.Skew = [2][2]float64{{p.DU * tu, p.DU * tv}, {p.DV * tu, p.DV * tv}}
+	}
+}
+
+// shadow is the disc that the bob covers or may cover, with a margin.
+func (b *bob) shadow() detect.Disc {
+	u, v := b.pred.U, b.pred.V
+	r := b.radius + 4 + math.Hypot(b.guess.SmearU, b.guess.SmearV)/2
+	if b.have {
+		u, v = b.result.U, b.result.V
+	} else {
+		r += math.Min(3*b.pred.Sigma(), 3*b.radius)
+	}
+	return detect.Disc{U: u, V: v, R: r}
+}
+
+// look1 fits the bob where it is expected.
+func (b *bob) look1(frame *clip.Frame) {
+	f := b.f
+	b.patch.W, b.patch.H = 0, 0
+	if b.lost > 0 && b.pred.Sigma() > b.radius {
+		return // seekLost goes looking
+	}
+	b.covers = b.covers[:0]
+	for _, o := range f.bobs {
+		if o == b || o.lost > 3 {
+			continue
+		}
+		reach := b.radius + o.radius + 6 + (math.Hypot(b.guess.SmearU, b.guess.SmearV)+math.Hypot(o.guess.SmearU, o.guess.SmearV))/2
+		if math.Hypot(b.pred.U-o.pred.U, b.pred.V-o.pred.V) < reach {
+			b.covers = append(b.covers, detect.Disc{U: o.pred.U, V: o.pred.V, R: o.radius + 2.5 + math.Hypot(o.guess.SmearU, o.guess.SmearV)/2})
+		}
+	}
+	frame.Patch(&b.patch, detect.Window(b.guess, b.radius).Intersect(f.active))
+	if b.patch.W < 3 || b.patch.H < 3 {
+		return
+	}
+	if b.guess.UPos < 0.3*b.radius {
+		if b.try(b.guess) {
+			return
+		}
+	}
+	// The prediction is vague, or was wrong: look for the bob in the window.
+	b.search.Look, b.search.RMin, b.search.RMax = b.look, 0.75*b.radius, 1.3*b.radius
+	var wall *detect.Wall
+	if b.look.Kind == detect.ByMotion {
+		wall = f.wall
+	}
+	var best detect.Candidate
+	cost := math.Inf(1)
+	for _, c := range b.search.Find(&b.patch, b.patch.Rect, 0, wall, nil) {
+		if c.Score() < 0.35 || covered(c.U, c.V, b.covers) {
+			continue
+		}
+		k := b.pred.Cost(c.U, c.V, track.Cov{}, 1) + 4*(1-c.Score())
+		if k < cost {
+			best, cost = c, k
+		}
+	}
+	if cost < 2*gate {
+		g := b.guess
+		g.U, g.V, g.UPos = best.U, best.V, 0.7+0.04*b.radius
+		b.try(g)
+	}
+}
+
+func covered(u, v float64, covers []detect.Disc) bool {
+	for _, c := range covers {
+		if math.Hypot(u-c.U, v-c.V) < 0.7*c.R {
+			return true
+		}
+	}
+	return false
+}
+
+// try fits at a guess and keeps the result when it can be this bob.
+func (b *bob) try(g detect.Guess) bool {
+	free := b.free()
+	r := b.fitter.Fit(&b.patch, b.f.wall, g, b.covers, free)
+	if !r.OK || !b.plausible(&r) {
+		return false
+	}
+	floor := 0.02 * b.radius
+	if b.pred.Cost(r.U, r.V, r.Cov, floor*floor) > gate {
+		return false
+	}
+	b.result, b.have = r, true
+	b.fitter.Learn(&r, free)
+	return true
+}
+
+// free tells whether this frame's fit shall also fit blur and ellipse: at first,
+// and now and then while the bob is slow enough to show them.
+func (b *bob) free() bool {
+	if len(b.covers) > 0 || b.filter.Sightings() < 3 {
+		return false
+	}
+	slow := math.Hypot(b.guess.SmearU, b.guess.SmearV) < 0.6*b.fitter.Shape.Blur
+	return b.good < 12 || slow && b.good%16 == 0
+}
+
+// plausible tells whether a fit can be this bob: as large, and as different from
+// the wall, as it was.
+func (b *bob) plausible(r *detect.Fit) bool {
+	if math.Abs(r.R-b.radius) > 0.3*b.radius+0.5 {
+		return false
+	}
+	if b.good > 3 {
+		k := r.Contrast / b.level
+		if !(k > 0.3 && k < 3) {
+			return false
+		}
+	}
+	return true
+}
+
+// untangle makes sure that no two bobs claim the same thing: the one whose
+// prediction it fits worse goes without.
+func (f *follower) untangle() {
+	for i, a := range f.bobs {
+		for _, b := range f.bobs[i+1:] {
+			if !a.have || !b.have {
+				continue
+			}
+			d := math.Hypot(a.result.U-b.result.U, a.result.V-b.result.V)
+			if d > 0.35*math.Min(a.radius, b.radius) {
+				continue
+			}
+			if math.Hypot(a.pred.U-b.pred.U, a.pred.V-b.pred.V) < d {
+				continue // they do meet there
+			}
+			ca := a.pred.Cost(a.result.U, a.result.V, a.result.Cov, 0.01)
+			cb := b.pred.Cost(b.result.U, b.result.V, b.result.Cov, 0.01)
+			if ca < cb {
+				b.have = false
+			} else {
+				a.have = false
+			}
+		}
+	}
+}
+
+// seekLost looks farther afield for bobs without a fit, and pairs what it finds
+// with them at the least total cost.
+func (f *follower) seekLost(frame *clip.Frame) {
+	var lost []*bob
+	for _, b := range f.bobs {
+		if !b.have && b.lost > 0 {
+			lost = append(lost, b)
+		}
+	}
+	if len(lost) == 0 {
+		return
+	}
+	type sighting struct {
+		detect.Candidate
+		of *bob
+	}
+	var seen []sighting
+	for _, b := range lost {
+		// Looking over a whole picture takes a while: after some time, not in every frame.
+		if b.lost > 12 && b.lost%3 != 0 {
+			continue
+		}
+		area := f.active
+		if s := b.pred.Sigma(); s < 0.25*float64(max(area.Dx(), area.Dy())) {
+			m := 3*s + 2*b.radius + 8
+			area = area.Intersect(image.Rect(int(b.pred.U-m), int(b.pred.V-m), int(b.pred.U+m)+1, int(b.pred.V+m)+1))
+		}
+		if area.Empty() {
+			// It is expected outside: it will come back over the edge.
+			area = f.active
+		}
+		frame.Patch(&f.whole, area)
+		b.search.Look, b.search.RMin, b.search.RMax = b.look, 0.75*b.radius, 1.3*b.radius
+		for _, c := range b.search.Find(&f.whole, area, 0, f.wall, nil) {
+			if c.Score() < 0.4 || f.claimed(c.U, c.V) {
+				continue
+			}
+			double := false
+			for _, o := range seen {
+				double = double || math.Hypot(o.U-c.U, o.V-c.V) < 0.5*b.radius
+			}
+			if !double {
+				seen = append(seen, sighting{c, b})
+			}
+		}
+	}
+	if len(seen) == 0 {
+		return
+	}
+	cost := make([][]float64, len(lost))
+	for i, b := range lost {
+		cost[i] = make([]float64, len(seen))
+		for j, s := range seen {
+			cost[i][j] = math.Inf(1)
+			if s.of != b && s.of.look != b.look {
+				continue
+			}
+			if math.Abs(s.R-b.radius) > 0.35*b.radius+1 {
+				continue
+			}
+			k := b.pred.Cost(s.U, s.V, track.Cov{}, 4)
+			if b.lost <= 12 && k > 2*gate {
+				continue // not gone for long enough to be anywhere
+			}
+			cost[i][j] = math.Min(k, gate) + 20*(1-s.Score())
+		}
+	}
+	for i, j := range link.Assign(cost, gate+20) {
+		if j < 0 {
+			continue
+		}
+		lost[i].regain(frame, seen[j].Candidate)
+	}
+}
+
+func (f *follower) claimed(u, v float64) bool {
+	for _, b := range f.bobs {
+		if b.have && math.Hypot(u-b.result.U, v-b.result.V) < 0.5*b.radius {
+			return true
+		}
+	}
+	return false
+}
+
+// regain fits a lost bob where a candidate was seen.
+func (b *bob) regain(frame *clip.Frame, c detect.Candidate) {
+	g := detect.Guess{U: c.U, V: c.V, UPos: 0.08*b.radius + 1}
+	frame.Patch(&b.patch, detect.Window(g, 1.2*b.radius).Intersect(b.f.active))
+	b.covers = b.covers[:0]
+	b.fitter.Shape.UR = math.Max(b.fitter.Shape.UR, 0.08*b.radius)
+	r := b.fitter.Fit(&b.patch, b.f.wall, g, nil, false)
+	if !r.OK || !b.plausible(&r) || r.Visible < 0.5 {
+		return
+	}
+	b.result, b.have = r, true
+	b.fitter.Learn(&r, false)
+}
+
+// settle writes the frame's sample and updates what is known.
+func (b *bob) settle(frame *clip.Frame) {
+	f := b.f
+	s := track.Sample{Frame: frame.Index, T: b.t, U: math.NaN(), V: math.NaN(), X: math.NaN(), Z: math.NaN()}
+	if !b.have {
+		b.lost++
+		b.samples = append(b.samples, s)
+		return
+	}
+	r := &b.result
+	s.U, s.V, s.Pixel = r.U, r.V, r.Cov
+	s.T = frame.T + f.cam.RowTime(r.U, r.V)
+	s.State = track.Seen
+	switch {
+	case r.Cut:
+		s.State = track.AtEdge
+	case r.Visible < wholeSeen:
+		s.State = track.PartlyHidden
+	}
+	b.samples = append(b.samples, s)
+	c := r.Cov
+	if s.State != track.Seen {
+		c.AA, c.BB = 4*c.AA+0.01, 4*c.BB+0.01
+	}
+	if b.lost > 6 {
+		b.filter = link.NewFilter(s.T, r.U, r.V, c, b.reach())
+	} else {
+		b.filter.Update(s.T, r.U, r.V, c)
+	}
+	b.lost = 0
+	if s.State == track.Seen {
+		b.good++
+		k := 1 / math.Min(float64(b.good), 30)
+		b.radius += k * (r.R - b.radius)
+		b.level += k * (r.Contrast - b.level)
+		if r.USmear > 0 {
+			f.expo.learn(b.pred.Speed(), r.Smear, r.USmear)
+		}
+	}
+}
+
+// reach is the greatest speed to be expected: two diameters per frame at first.
+func (b *bob) reach() float64 {
+	return math.Min(4*b.radius, 0.25*float64(b.f.picture.Dx())) / b.f.dt
+}
+
+// exposure is what is known of the time during which a row collects light.
+type exposure struct {
+	tau, u float64 // s
+	given  bool
+	n      int
+}
+
+func newExposure(r *rig.Rig, dt float64) exposure {
+	if e := r.Camera.ExposureS; e.Set {
+		return exposure{tau: e.V, u: math.Max(e.U, 1e-5), given: true}
+	}
+	return exposure{tau: 0.4 * dt, u: 0.3 * dt}
+}
+
+// learn takes in the length of a smear, px, of a bob of known speed, px/s. A
+// camera changes its exposure as it goes, so old sightings fade.
+func (e *exposure) learn(speed, smear, u float64) {
+	if !(speed > 0) || u > 0.5*smear {
+		return
+	}
+	z, v := smear/speed, u*u/(speed*speed)
+	p := e.u*e.u + 1e-4*e.tau*e.tau
+	k := p / (p + v + 1e-4*z*z)
+	e.tau = math.Max(e.tau+k*(z-e.tau), 0)
+	e.u = math.Max(math.Sqrt((1-k)*p), 0.02*e.tau)
+	e.n++
+}
