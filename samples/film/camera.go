@@ -21,9 +21,14 @@ type view struct {
 	undoW int
 }
 
+// Project gives the pixel at which the world point p appears, in the upright
+// picture and without rolling shutter.
+func (c *Camera) Project(p Vec) (u, v float64) { return newView(c, false).project(p) }
+
 const pad = 16 // px around the picture that samples may reach
 
-func newView(c *Camera) *view {
+// newView readies c; grid: to give the coordinates of many pixels.
+func newView(c *Camera, grid bool) *view {
 	w := &view{w: c.Width, h: c.Height, k1: c.K1, k2: c.K2}
 	w.cu, w.cv = float64(c.Width-1)/2, float64(c.Height-1)/2
 	if c.CentrePX != nil {
@@ -53,7 +58,7 @@ func newView(c *Camera) *view {
 	for i := range 3 {
 		w.eye[i] = c.LookAt[i] - c.DistanceM*w.ahead[i]
 	}
-	if w.k1 != 0 || w.k2 != 0 {
+	if grid && (w.k1 != 0 || w.k2 != 0) {
 		w.undoW = w.w + 2*pad
 		w.undo = make([][2]float64, w.undoW*(w.h+2*pad))
 		for j := range w.h + 2*pad {

@@ -26,7 +26,7 @@ type stage struct {
 	soft  []float32 // the sharpening's smoothing kernel, half+1 … half
 	// back is the wall with all that is fixed on it, before vignetting and
 	// sharpening; it extends rim px beyond the picture.
-	back  [][3]float32
+	back  [][4]float32 // and what share of the pixel is fixed things, not wall
 	backW int
 	// calm is the finished picture with nothing moving, in 1/128 grey level.
 	calm  []uint16
@@ -40,7 +40,7 @@ func (s *Scene) stage() *stage {
 }
 
 func newStage(s *Scene) *stage {
-	st := &stage{scene: s, cam: newView(&s.Camera)}
+	st := &stage{scene: s, cam: newView(&s.Camera, true)}
 	st.lamp = newLamp(s.Light, st.cam)
 	st.sigma = s.Camera.BlurPX
 	if st.sigma == 0 {
@@ -114,7 +114,7 @@ func (st *stage) drawBack() {
 	s := st.scene
 	c := &s.Camera
 	st.backW = c.Width + 2*rim
-	st.back = make([][3]float32, st.backW*(c.Height+2*rim))
+	st.back = make([][4]float32, st.backW*(c.Height+2*rim))
 	tex := texture(s, st.backW, c.Height+2*rim)
 	for j := range c.Height + 2*rim {
 		for i := range st.backW {
@@ -152,7 +152,7 @@ func (st *stage) drawBack() {
 	slices.SortStableFunc(fixed, func(a, b shape) int { return cmp.Compare(b.depth(), a.depth()) })
 	if len(fixed) > 0 {
 		old, fine := st.taps, st.fine
-		st.fine = 8
+		st.fine = max(4, st.fine)
 		st.setTaps(st.fine)
 		var wg sync.WaitGroup
 		rows := make(chan int)
@@ -395,7 +395,7 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 			q := &st.back[(v+rim)*st.backW+u+rim]
 			k := 1 - p[3]
 			if len(shades) > 0 && k > 0 {
-				k *= d.shadowAt(w, i, j)
+				k *= 1 - (1-q[3])*(1-d.shadowAt(w, i, j)) // shadows fall on the wall alone
 			}
 			g := st.vignette(u, v)
 			d.lit[j*w+i] = [3]float32{(p[0] + k*q[0]) * g, (p[1] + k*q[1]) * g, (p[2] + k*q[2]) * g}

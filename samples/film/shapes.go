@@ -428,7 +428,7 @@ func (s *rod) draw(k int, delay float64, l *line) {
 type plate struct {
 	p              *Plate
 	cam            *view
-	xy             [][2]float64
+	sides          [][3]float64 // outward unit normal and offset of each side
 	u0, v0, u1, v1 float64
 	z              float64
 	c              RGB
@@ -438,22 +438,25 @@ func (s *plate) aim(st *stage, _ []float64) {
 	s.cam = st.cam
 	s.u0, s.v0, s.u1, s.v1 = math.Inf(1), math.Inf(1), math.Inf(-1), math.Inf(-1)
 	area := 0.0
-	s.xy = s.xy[:0]
+	var xy [][2]float64
 	for _, p := range s.p.Corners {
 		c := st.cam.toCamera(p)
 		s.z += c[2] / float64(len(s.p.Corners))
 		x, y := s.cam.flatten(c)
 		u, v := s.cam.lens(x, y)
 		s.u0, s.u1, s.v0, s.v1 = min(s.u0, u), max(s.u1, u), min(s.v0, v), max(s.v1, v)
-		s.xy = append(s.xy, [2]float64{x, y})
+		xy = append(xy, [2]float64{x, y})
 	}
-	for i, a := range s.xy {
-		b := s.xy[(i+1)%len(s.xy)]
+	for i, a := range xy {
+		b := xy[(i+1)%len(xy)]
 		area += a[0]*b[1] - a[1]*b[0]
 	}
-	if area < 0 {
-		for i, j := 0, len(s.xy)-1; i < j; i, j = i+1, j-1 {
-			s.xy[i], s.xy[j] = s.xy[j], s.xy[i]
+	for i, a := range xy {
+		b := xy[(i+1)%len(xy)]
+		dx, dy := b[0]-a[0], b[1]-a[1]
+		n := math.Copysign(math.Hypot(dx, dy), area)
+		if n != 0 {
+			s.sides = append(s.sides, [3]float64{dy / n, -dx / n, (dx*a[1] - dy*a[0]) / n})
 		}
 	}
 	s.c = s.p.Colour
@@ -467,24 +470,26 @@ func (s *plate) depth() float64                { return s.z }
 func (s *plate) smear() float64                { return 0 }
 
 func (s *plate) draw(_ int, _ float64, l *line) {
+	if l.v < s.v0 || l.v > s.v1 {
+		return
+	}
 	i, j := l.cells(s.u0, s.u1)
 	cell := l.cell(i, j)
 	r, g, b := float32(s.c[0]), float32(s.c[1]), float32(s.c[2])
 	for ; i < j; i++ {
 		x, y := l.xs[i], l.ys[i]
 		cover := 1.0
-		for k, a := range s.xy {
-			e := s.xy[(k+1)%len(s.xy)]
-			dx, dy := e[0]-a[0], e[1]-a[1]
-			n := math.Hypot(dx, dy)
-			if n == 0 {
+		for k := range s.sides {
+			e := &s.sides[k]
+			d := (e[0]*x + e[1]*y + e[2]) / cell
+			if d < -1 {
 				continue
 			}
-			// Positive inside: the corners go round from +x to +y.
-			cover = min(cover, covered(-(dx*(y-a[1])-dy*(x-a[0]))/(n*cell), dy/n, dx/n))
-			if cover <= 0 {
+			if d > 1 {
+				cover = 0
 				break
 			}
+			cover = min(cover, covered(d, e[0], e[1]))
 		}
 		if cover > 0 {
 			l.over(i, float32(cover), r, g, b)
@@ -537,8 +542,11 @@ func (s *picture) look(x, y float64) (RGB, float64) {
 	return s.d.Paint(a, b)
 }
 
-// draw samples 3 × 3 points of a cell, and 8 × 8 where those differ.
+// draw samples 3 × 3 points of a cell, and 16 × 16 where those differ.
 func (s *picture) draw(_ int, _ float64, l *line) {
+	if l.v < s.v0 || l.v > s.v1 {
+		return
+	}
 	i, j := l.cells(s.u0, s.u1)
 	cell := l.cell(i, j)
 	for ; i < j; i++ {
@@ -556,7 +564,7 @@ func (s *picture) draw(_ int, _ float64, l *line) {
 			}
 			continue
 		}
-		const n = 8
+		const n = 16
 		for k := range n * n {
 			fx, fy := (float64(k%n)+0.5)/n-0.5, (float64(k/n)+0.5)/n-0.5
 			c, o := s.look(l.xs[i]+fx*cell, l.ys[i]+fy*cell)
