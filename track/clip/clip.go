@@ -57,12 +57,13 @@ type Facts struct {
 	Numbered bool              `json:"numbered,omitempty"`
 	Warnings []string          `json:"warnings,omitempty"` // plain sentences
 
-	absolute string    // the path from the root, so that no name can be taken for a protocol
-	pictures []string  // numbered pictures: their files in order
-	pts      []float64 // played seconds, as the container gives them, ascending
-	start    float64   // the stream's own start time, played seconds
-	keys     []float64 // played seconds of the frames that need no other to be decoded, ascending
-	inOrder  bool      // the container lists no presentation times (avi): frames are known by their order alone
+	absolute   string    // the path from the root, so that no name can be taken for a protocol
+	pictures   []string  // numbered pictures: their files in order
+	pts        []float64 // played seconds, as the container gives them, ascending
+	start      float64   // the stream's own start time, played seconds
+	keys       []float64 // played seconds of the frames that need no other to be decoded, ascending
+	interlaced bool
+	inOrder    bool // the container lists no presentation times (avi): frames are known by their order alone
 }
 
 // LostFrames is a hole in the clip's times that whole frames would fill.

@@ -32,6 +32,7 @@ type probed struct {
 		ColorRange  string            `json:"color_range"`
 		ColorSpace  string            `json:"color_space"`
 		Transfer    string            `json:"color_transfer"`
+		FieldOrder  string            `json:"field_order"`
 		RFrameRate  string            `json:"r_frame_rate"`
 		AvgRate     string            `json:"avg_frame_rate"`
 		TimeBase    string            `json:"time_base"`
@@ -68,7 +69,7 @@ type probed struct {
 // would.
 func (f *Facts) readContainer(ctx context.Context) error {
 	out, err := runProbe(ctx, f.absolute, "-show_entries",
-		"stream=index,codec_name,profile,codec_type,width,height,pix_fmt,color_range,color_space,color_transfer,r_frame_rate,avg_frame_rate,time_base,start_pts,bit_rate,sample_aspect_ratio:"+
+		"stream=index,codec_name,profile,codec_type,width,height,pix_fmt,color_range,color_space,color_transfer,field_order,r_frame_rate,avg_frame_rate,time_base,start_pts,bit_rate,sample_aspect_ratio:"+
 			"stream_tags:stream_disposition=attached_pic:stream_side_data=side_data_type,displaymatrix,rotation:"+
 			"format=format_name,bit_rate:format_tags:packet=stream_index,pts,dts,size,flags",
 		"-select_streams", "v")
@@ -98,6 +99,7 @@ func (f *Facts) readContainer(ctx context.Context) error {
 	s := p.Streams[at]
 	f.Container, f.Codec, f.Profile, f.PixelFormat = p.Format.Name, s.CodecName, s.Profile, s.PixFmt
 	f.ColourSpace, f.ColourRange, f.Transfer = s.ColorSpace, s.ColorRange, s.Transfer
+	f.interlaced = s.FieldOrder != "" && s.FieldOrder != "progressive" && s.FieldOrder != "unknown"
 	f.StoredW, f.StoredH = s.Width, s.Height
 	f.NominalRate = ratio(s.RFrameRate)
 	for k, v := range p.Format.Tags {

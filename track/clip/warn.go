@@ -9,6 +9,13 @@ import (
 func (f *Facts) warn() {
 	f.warnOfCaptureRate()
 	f.warnOfRamp()
+	f.warnOfHandling()
+	if hdr := f.dynamicRange(); hdr != "" {
+		f.Warnings = append(f.Warnings, fmt.Sprintf("The clip was filmed in high dynamic range (%s): colours are read paler than they look on the phone. Switch HDR video off before filming, and take a bob's colour from the result's still.png.", hdr))
+	}
+	if f.interlaced {
+		f.Warnings = append(f.Warnings, "The clip is interlaced: each frame holds two moments, one in the even and one in the odd rows, so moving edges fray. Film with a progressive setting (30p, 60p).")
+	}
 	if bad := disorder(f.pts); bad > 0 {
 		f.Warnings = append(f.Warnings, fmt.Sprintf("%d frames have the same time as the frame before them; the clip was put together or converted badly. Use the file straight from the phone.", bad))
 	}
