@@ -125,6 +125,9 @@ func (f Finding) Display() Shown {
 		s.U = fixed(u*factor, d)
 	} else {
 		d = decimals(f.Value*factor) + 4 // six significant digits
+		if f.Value == 0 {
+			d = 0
+		}
 	}
 	s.Value, s.Lo, s.Hi = fixed(f.Value*factor, d), fixed(f.Lo*factor, d), fixed(f.Hi*factor, d)
 	return s

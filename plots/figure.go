@@ -1,0 +1,258 @@
+package plots
+
+import (
+	"bytes"
+	"image/png"
+	"math"
+	"strings"
+
+	"gonum.org/v1/plot"
+	"gonum.org/v1/plot/font"
+	"gonum.org/v1/plot/vg"
+	"gonum.org/v1/plot/vg/draw"
+	"gonum.org/v1/plot/vg/vgimg"
+	"gonum.org/v1/plot/vg/vgsvg"
+
+	"lodeswing/analyze/finding"
+	"lodeswing/analyze/record"
+)
+
+// drawing is one figure that can be drawn on any canvas of its size.
+type drawing struct {
+	name    string // of the file, without ending
+	title   string
+	caption string
+	w, h    vg.Length
+	draw    func(draw.Canvas)
+}
+
+// figureShown is a figure as the report shows it.
+type figureShown struct {
+	Name, Title, Caption string
+	SVG                  []byte
+}
+
+func (d *drawing) shown(svg []byte) figureShown {
+	return figureShown{d.name, d.title, d.caption, svg}
+}
+
+// svg draws the figure as a stand-alone SVG file.
+func (d *drawing) svg() ([]byte, error) {
+	c := vgsvg.New(d.w, d.h)
+	d.draw(draw.New(c))
+	var b bytes.Buffer
+	if _, err := c.WriteTo(&b); err != nil {
+		return nil, err
+	}
+	return finishSVG(b.Bytes(), d)
+}
+
+// png draws the figure for print.
+func (d *drawing) png() ([]byte, error) {
+	c := vgimg.NewWith(vgimg.UseWH(d.w, d.h), vgimg.UseDPI(pngDPI), vgimg.UseBackgroundColor(background))
+	d.draw(draw.New(c))
+	var b bytes.Buffer
+	err := png.Encode(&b, c.Image())
+	return b.Bytes(), err
+}
+
+// title is a curve's title with its subject, where the title does not name it.
+func title(c *finding.Curve) string {
+	if c.Subject == "" || strings.Contains(c.Title, c.Subject) {
+		return c.Title
+	}
+	return c.Title + ": " + c.Subject
+}
+
+// curveDrawing draws curves of one subject above each other, with a common
+// first axis where there are several.
+func curveDrawing(curves []*finding.Curve) drawing {
+	d := drawing{name: record.FileName(curves[0].Key, curves[0].Subject), title: title(curves[0]), w: width}
+	for _, c := range curves {
+		d.caption = strings.TrimSpace(d.caption + " " + c.Caption)
+	}
+	panels := make([]*panel, len(curves))
+	for i, c := range curves {
+		panels[i] = newPanel(c, i > 0, i < len(curves)-1)
+	}
+	if len(panels) > 1 {
+		lo, hi := math.Inf(1), math.Inf(-1)
+		for _, p := range panels {
+			lo, hi = math.Min(lo, p.plot.X.Min), math.Max(hi, p.plot.X.Max)
+		}
+		for _, p := range panels {
+			p.plot.X.Min, p.plot.X.Max = lo, hi
+		}
+	}
+	head := newHead(d.title, d.w)
+	d.h = head.height
+	for _, p := range panels {
+		d.h += p.height + p.legend.height
+	}
+	d.h += gap * vg.Length(len(panels)-1)
+	d.draw = func(c draw.Canvas) {
+		head.draw(c)
+		top := c.Max.Y - head.height
+		canvases := make([]draw.Canvas, len(panels))
+		left, right := vg.Length(0), vg.Length(0)
+		for i, p := range panels {
+			p.legend.draw(c, top)
+			top -= p.legend.height
+			canvases[i] = c
+			canvases[i].Max.X -= edge
+			canvases[i].Max.Y, canvases[i].Min.Y = top, top-p.height
+			top -= p.height + gap
+			data := p.plot.DataCanvas(canvases[i])
+			left = max(left, data.Min.X-c.Min.X)
+			right = max(right, c.Max.X-data.Max.X)
+		}
+		for i, p := range panels {
+			data := p.plot.DataCanvas(canvases[i])
+			canvases[i].Min.X += left - (data.Min.X - c.Min.X)
+			canvases[i].Max.X -= right - (c.Max.X - data.Max.X)
+			p.plot.Draw(canvases[i])
+		}
+	}
+	return d
+}
+
+// panel is one curve, ready to be drawn.
+type panel struct {
+	plot   *plot.Plot
+	height vg.Length
+	legend legend
+}
+
+// newPanel makes a panel. low makes it a lower one; bare leaves the first axis'
+// numbers to the panel below.
+func newPanel(c *finding.Curve, low, bare bool) *panel {
+	p := plot.New()
+	p.BackgroundColor = nil
+	x, y := newScale(c, true), newScale(c, false)
+	for _, a := range []struct {
+		axis *plot.Axis
+		s    axisScale
+	}{{&p.X, x}, {&p.Y, y}} {
+		a.axis.Label.Text = a.s.label
+		a.axis.Label.TextStyle.Font = typeface(labelSize, false)
+		a.axis.Label.TextStyle.Color = ink
+		a.axis.Label.Padding = 2
+		a.axis.Label.TextStyle.Handler = handler()
+		a.axis.Tick.Label.Handler = handler()
+		a.axis.Tick.Label.Font = typeface(tickSize, false)
+		a.axis.Tick.Label.Color = ink
+		a.axis.Tick.Length = 3.5
+		a.axis.Tick.LineStyle = draw.LineStyle{Color: ink, Width: 0.5}
+		a.axis.LineStyle = draw.LineStyle{Color: ink, Width: 0.6}
+		a.axis.Padding = 4
+		a.axis.Min, a.axis.Max = a.s.min, a.s.max
+		a.axis.Tick.Marker = a.s
+	}
+	out := &panel{plot: p, height: mainHeight}
+	numbers := 7
+	switch {
+	case low:
+		out.height, numbers = lowHeight, 5
+	case square(c):
+		out.height, numbers = 0.9*width, 9
+	}
+	x, y = x.most(7), y.most(numbers)
+	p.X.Tick.Marker, p.Y.Tick.Marker = x, y
+	if bare {
+		p.X.Label.Text = ""
+		p.X.Tick.Marker = unlabelled{p.X.Tick.Marker}
+		out.height -= 20
+	}
+	p.Add(lattice{x, y})
+	styles := looks(c)
+	for i := range c.Lines {
+		l := &c.Lines[i]
+		if l.Role == finding.Guide {
+			p.Add(stroke{line: l, look: styles[i], x: x, y: y})
+		}
+	}
+	for i := range c.Lines {
+		l := &c.Lines[i]
+		if l.Role != finding.Guide {
+			p.Add(stroke{line: l, look: styles[i], x: x, y: y})
+		}
+	}
+	out.legend = newLegend(c, styles)
+	return out
+}
+
+// square tells whether both axes mean the same, so that neither may be pressed.
+func square(c *finding.Curve) bool {
+	return c.X.Unit == c.Y.Unit && c.X.Unit != "" && c.X.Unit != "1" || strings.Contains(c.Key, "phase")
+}
+
+// lattice is the faint lines behind the data, at the numbered ticks.
+type lattice struct{ x, y axisScale }
+
+func (l lattice) Plot(c draw.Canvas, p *plot.Plot) {
+	trX, trY := p.Transforms(&c)
+	style := draw.LineStyle{Color: faint, Width: 0.4}
+	for _, t := range l.y.Ticks(p.Y.Min, p.Y.Max) {
+		if y := trY(t.Value); !t.IsMinor() && t.Value >= p.Y.Min && t.Value <= p.Y.Max {
+			c.StrokeLine2(style, c.Min.X, y, c.Max.X, y)
+		}
+	}
+	for _, t := range l.x.Ticks(p.X.Min, p.X.Max) {
+		if x := trX(t.Value); !t.IsMinor() && t.Value >= p.X.Min && t.Value <= p.X.Max {
+			c.StrokeLine2(style, x, c.Min.Y, x, c.Max.Y)
+		}
+	}
+}
+
+// head is a figure's title, wrapped to its width.
+type head struct {
+	lines  []string
+	height vg.Length
+}
+
+func newHead(title string, w vg.Length) head {
+	h := head{lines: wrap(title, w-4, typeface(titleSize, true))}
+	h.height = vg.Length(len(h.lines))*titleSize*1.25 + 4
+	return h
+}
+
+func (h head) draw(c draw.Canvas) {
+	style := textStyle(titleSize, true)
+	y := c.Max.Y - 1
+	for _, l := range h.lines {
+		c.FillText(style, vg.Point{X: c.Min.X + 2, Y: y}, l)
+		y -= titleSize * 1.25
+	}
+}
+
+// wrap breaks a text into lines of at most that width, at spaces where it can.
+func wrap(s string, w vg.Length, f font.Font) []string {
+	var lines []string
+	line := ""
+	for _, word := range strings.Fields(s) {
+		for textWidth(word, f) > w { // a name longer than the line
+			cut := len(word) - 1
+			for cut > 1 && (textWidth(word[:cut], f) > w || !utf8Start(word, cut)) {
+				cut--
+			}
+			if line != "" {
+				lines = append(lines, line)
+				line = ""
+			}
+			lines = append(lines, word[:cut])
+			word = word[cut:]
+		}
+		switch {
+		case line == "":
+			line = word
+		case textWidth(line+" "+word, f) > w:
+			lines = append(lines, line)
+			line = word
+		default:
+			line += " " + word
+		}
+	}
+	return append(lines, line)
+}
+
+func utf8Start(s string, i int) bool { return s[i]&0xc0 != 0x80 }
