@@ -149,13 +149,17 @@ func TestColourAsDecoded(t *testing.T) {
 }
 
 func TestHandledOnTheWay(t *testing.T) {
-	phone := clip.Facts{Codec: "h264", Profile: "High", W: 1080, H: 1920, TrueRate: 60, RateFactor: 1, BitRate: 17e6,
-		Tags: map[string]string{"com.android.version": "14", "handler_name": "VideoHandle"}}
+	phone := clip.Facts{
+		Codec: "h264", Profile: "High", W: 1080, H: 1920, TrueRate: 60, RateFactor: 1, BitRate: 17e6,
+		Tags: map[string]string{"com.android.version": "14", "handler_name": "VideoHandle"},
+	}
 	if h := phone.Handled(); !h.FromPhone || h.Poor || len(h.Signs) > 0 || h.Reencoded() {
 		t.Errorf("a phone's own file: %+v", h)
 	}
-	sent := clip.Facts{Codec: "h264", Profile: "Constrained Baseline", W: 848, H: 478, TrueRate: 30, RateFactor: 1, BitRate: 6e5,
-		Tags: map[string]string{"creation_time": "2026-01-01"}}
+	sent := clip.Facts{
+		Codec: "h264", Profile: "Constrained Baseline", W: 848, H: 478, TrueRate: 30, RateFactor: 1, BitRate: 6e5,
+		Tags: map[string]string{"creation_time": "2026-01-01"},
+	}
 	if h := sent.Handled(); h.FromPhone || !h.Poor || len(h.Signs) != 2 || !h.Reencoded() {
 		t.Errorf("a messenger's file: %+v", h)
 	}
