@@ -84,7 +84,7 @@ func TestOutlineOfABall(t *testing.T) {
 	// Tangent points form a circle of radius R·cos α, R·sin α nearer than the centre.
 	sin := radius / dist
 	cos := math.Sqrt(1 - sin*sin)
-	var minU, maxU, minV, maxV = math.Inf(1), math.Inf(-1), math.Inf(1), math.Inf(-1)
+	minU, maxU, minV, maxV := math.Inf(1), math.Inf(-1), math.Inf(1), math.Inf(-1)
 	for i := range 200000 {
 		s, k := math.Sincos(2 * math.Pi * float64(i) / 200000)
 		p := centre.plus(-radius*sin, axis).plus(radius*cos*k, a).plus(radius*cos*s, b)
