@@ -19,21 +19,20 @@ var (
 	standColour = film.RGB{92, 96, 104}
 	rodColour   = film.RGB{138, 140, 146}
 	steelColour = film.RGB{168, 171, 178}
-	coilColour  = film.RGB{158, 92, 48}
+	coilColour  = film.RGB{128, 78, 46}
 	markColour  = film.RGB{32, 32, 34}
 	stickColour = film.RGB{232, 228, 214}
 )
 
 // set is a scene being built around a rig.
 type set struct {
-	r      *rig.Rig
-	o      *motion
-	s      *film.Scene
-	until  float64
-	bench  float64 // m, height of the bench's top
-	left   float64 // m, how far the toy reaches to the left and right
-	right  float64
-	places map[[4]float64]bool // part and place where something is drawn already
+	r     *rig.Rig
+	o     *motion
+	s     *film.Scene
+	until float64
+	bench float64 // m, height of the bench's top
+	left  float64 // m, how far the toy reaches to the left and right
+	right float64
 }
 
 // tilted tells that the camera looks down so much that the bench is the backdrop.
@@ -42,7 +41,7 @@ func (b *set) tilted() bool { return b.s.Camera.Tilt > 15*math.Pi/180 }
 // scene builds the film's scene of a rig and its motion over until seconds.
 func scene(r *rig.Rig, o *motion, until float64) (*film.Scene, error) {
 	f := &r.Film
-	b := &set{r: r, o: o, until: until, places: map[[4]float64]bool{}, s: &film.Scene{}}
+	b := &set{r: r, o: o, until: until, s: &film.Scene{}}
 	s := b.s
 	s.Camera = camera(r)
 	s.FramesPerS = f.FramesPerS.Or(60)
@@ -136,13 +135,8 @@ func (b *set) bobs() error {
 			Name: k.Name, Colour: c, DiameterM: k.DiameterM.V, Gloss: gloss,
 			Flat: k.BallSet && !k.Ball, At: b.o.point(b.o.part(k.Part), at),
 		})
-		b.places[b.key(k.Part, at)] = true
 	}
 	return nil
-}
-
-func (b *set) key(part string, at [3]float64) [4]float64 {
-	return [4]float64{float64(b.o.part(part)), at[0], at[1], at[2]}
 }
 
 // room finds how much space the toy takes and sets the bench under it.
@@ -206,8 +200,8 @@ func (b *set) spokes(name string) [][3]float64 {
 		}
 	}
 	for i := range b.r.Magnets {
-		if b.r.Magnets[i].Part == name {
-			add(rig.XYZ(b.r.Magnets[i].AtM))
+		if m := &b.r.Magnets[i]; m.Part == name && !b.inBob(m) {
+			add(rig.XYZ(m.AtM))
 		}
 	}
 	for i := range b.r.Parts {
@@ -265,12 +259,24 @@ func (b *set) parts() {
 	for i := range b.r.Magnets {
 		m := &b.r.Magnets[i]
 		at := rig.XYZ(m.AtM)
-		if k := b.o.part(m.Part); k >= 0 && !b.places[b.key(m.Part, at)] {
+		if k := b.o.part(m.Part); k >= 0 && !b.inBob(m) {
 			b.s.Bobs = append(b.s.Bobs, film.Bob{
-				Colour: steelColour, DiameterM: magnetWidth(m), At: b.o.point(k, at), Unmarked: true, NoShadow: true,
+				Colour: steelColour, DiameterM: magnetWidth(m), At: b.o.point(k, at), Unmarked: true,
 			})
 		}
 	}
+}
+
+// inBob tells that a magnet is hidden inside a bob of its part.
+func (b *set) inBob(m *rig.Magnet) bool {
+	p := rig.XYZ(m.AtM)
+	for _, k := range b.r.Bobs {
+		q := rig.XYZ(k.AtM)
+		if k.Part == m.Part && norm([3]float64{p[0] - q[0], p[1] - q[1], p[2] - q[2]}) < k.DiameterM.V/2 {
+			return true
+		}
+	}
+	return false
 }
 
 func magnetWidth(m *rig.Magnet) float64 {
@@ -317,18 +323,40 @@ func (b *set) fixed() {
 		if b.o.part(m.Part) >= 0 {
 			continue
 		}
-		at, w := rig.XYZ(m.AtM), magnetWidth(m)/2
+		at, w := film.Vec(rig.XYZ(m.AtM)), magnetWidth(m)/2
 		if m.Cylinder == nil {
 			w = 0.006
 		}
-		b.s.Plates = append(b.s.Plates, box(at[0]-w, at[0]+w, at[2]-0.003, at[2]+0.003, at[1], steelColour)...)
-		if b.bench < at[2]-0.003 {
-			b.s.Plates = append(b.s.Plates, box(at[0]-w-0.006, at[0]+w+0.006, b.bench, at[2]-0.003, at[1], standColour)...)
+		if foot := at[2] - 0.003; b.bench < foot {
+			b.puck(film.Vec{at[0], at[1], foot}, w+0.006, foot-b.bench, standColour)
 		}
+		b.puck(film.Vec{at[0], at[1], at[2] + 0.003}, w, 0.006, steelColour)
 	}
 	for i := range b.r.Coils {
 		k := &b.r.Coils[i]
-		at, w := rig.XYZ(k.AtM), k.RadiusM.Or(0.012)
-		b.s.Plates = append(b.s.Plates, box(at[0]-w, at[0]+w, at[2]-0.006, at[2], at[1], coilColour)...)
+		at, r := film.Vec(rig.XYZ(k.AtM)), k.RadiusM.Or(0.012)
+		b.puck(at, r, 0.006, coilColour)
+		b.s.Bobs = append(b.s.Bobs, film.Bob{ // its core
+			Colour: film.RGB{70, 62, 56}, DiameterM: 0.7 * r, Flat: true, Normal: film.Vec{0, 0, 1}, Still: true, Plain: true,
+			At: still(film.Vec{at[0], at[1] - 2e-4, at[2]}),
+		})
+		if at[2] > b.bench+0.05 { // held from behind
+			b.rod(standColour, 0.008, film.Vec{at[0], 0.05, 0.012}, film.Vec{at[0], 0.05, at[2] - 0.003})
+			b.rod(standColour, 0.006, film.Vec{at[0], 0.05, at[2] - 0.003}, film.Vec{at[0], 0.008, at[2] - 0.003})
+		}
 	}
+}
+
+// puck is a low cylinder that stands upright, its top's middle at top.
+func (b *set) puck(top film.Vec, r, height float64, c film.RGB) {
+	lower := film.Vec{top[0], top[1], top[2] - height}
+	dark := film.RGB{c[0] * 0.72, c[1] * 0.72, c[2] * 0.72}
+	disc := film.Bob{DiameterM: 2 * r, Flat: true, Normal: film.Vec{0, 0, 1}, Still: true, Plain: true}
+	disc.Colour, disc.At = dark, still(lower)
+	b.s.Bobs = append(b.s.Bobs, disc)
+	b.s.Plates = append(b.s.Plates, film.Plate{Colour: dark, Corners: []film.Vec{
+		{top[0] - r, top[1], lower[2]}, {top[0] + r, top[1], lower[2]}, {top[0] + r, top[1], top[2]}, {top[0] - r, top[1], top[2]},
+	}})
+	disc.Colour, disc.At = c, still(film.Vec{top[0], top[1] - 1e-4, top[2]})
+	b.s.Bobs = append(b.s.Bobs, disc)
 }

@@ -91,7 +91,8 @@ type Bob struct {
 	Still     bool // drawn once, behind everything that moves; casts no shadow, not in the truth
 }
 
-// Rod is a round bar between two points; it is shaded, not followed.
+// Rod is a round bar between two points; it is shaded, not followed. A moving one
+// is sorted among the bobs by the depth of To, a still one by its middle's.
 type Rod struct {
 	Colour    RGB
 	DiameterM float64

@@ -354,6 +354,9 @@ func (s *rod) depth() float64 {
 	if s.r.Front {
 		return math.Inf(-1)
 	}
+	if !s.r.Still {
+		return s.q.c[k][1][2] // what hangs on its end covers it, or not
+	}
 	return (s.p.c[k][1][2] + s.q.c[k][1][2]) / 2
 }
 
