@@ -27,8 +27,9 @@ func DipoleField(m, r Vec) Vec {
 // own place. Force and torques are exact gradients of the energy. r leads from
 // the first to the second.
 func DipolePair(m1, m2, r Vec) (energy float64, force2, torque1, torque2 Vec) {
-	inv := 1 / math.Sqrt(r.X*r.X+r.Y*r.Y+r.Z*r.Z)
-	inv2 := inv * inv
+	r2 := r.X*r.X + r.Y*r.Y + r.Z*r.Z
+	inv2 := 1 / r2
+	inv := math.Sqrt(r2) * inv2 // the root does not wait for the division
 	k := Mu0 / (4 * math.Pi) * inv2 * inv
 	n := Vec{r.X * inv, r.Y * inv, r.Z * inv}
 	a := m1.X*n.X + m1.Y*n.Y + m1.Z*n.Z

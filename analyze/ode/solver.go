@@ -134,7 +134,7 @@ func (s *Solver) scale(i int, a, b float64) float64 {
 // to change t, or when the derivative is not a number.
 func (s *Solver) Step(tEnd float64) error {
 	const (
-		safety  = 0.9
+		safety  = 0.85 // fewest evaluations for its error on the lantern, tried 0.8 to 0.9
 		beta    = 0.04 // stabilisation, Hairer et al. (II.4, IV.2)
 		expo    = 1.0/8 - 0.2*beta
 		slowest = 1 / 0.333 // the step shrinks at most to a third
@@ -181,7 +181,7 @@ func (s *Solver) Step(tEnd float64) error {
 		}
 		fac11 := 0.0
 		if err > 0 {
-			fac11 = math.Pow(err, expo)
+			fac11 = roughPower(err, expo)
 		}
 		if err > 1 {
 			s.stats.Rejected++
@@ -189,7 +189,7 @@ func (s *Solver) Step(tEnd float64) error {
 			s.h = h / math.Min(slowest, fac11/safety)
 			continue
 		}
-		fac := fac11 / math.Pow(s.facOld, beta)
+		fac := fac11 / roughPower(s.facOld, beta)
 		fac = math.Max(fastest, math.Min(slowest, fac/safety))
 		next := h / fac
 		if s.rejectedLast && math.Abs(next) > math.Abs(h) {
@@ -207,6 +207,19 @@ func (s *Solver) Step(tEnd float64) error {
 		s.accept(tNew)
 		return nil
 	}
+}
+
+// roughPower is x^p for x > 0 and small p, to a few parts in a thousand: enough
+// for a step size, and several times quicker than math.Pow. It takes the binary
+// logarithm as exponent plus a parabola through the mantissa, and back.
+func roughPower(x, p float64) float64 {
+	bits := math.Float64bits(x)
+	mantissa := math.Float64frombits(bits&(1<<52-1) | 1023<<52) // 1 to 2
+	log := float64(int(bits>>52)-1023) + (mantissa-1)*(4.0/3-(mantissa-1)/3)
+	y := log * p
+	whole := math.Floor(y)
+	part := y - whole
+	return math.Float64frombits(uint64(int(whole)+1023)<<52) * (1 + part*(2.0/3+part/3))
 }
 
 // accept makes the state just tried the present one.

@@ -2,9 +2,13 @@ package ode
 
 import "math"
 
-// stages runs the twelve stages of one step of size h and leaves the new state
-// in s.yNew and the derivative there in s.kNew. s.k1 holds f(t, y).
+// stages runs the stages of one step of size h and leaves the new state in
+// s.yNew. s.k1 holds f(t, y).
 func (s *Solver) stages(h float64) {
+	if s.n == 2 {
+		s.stagesOfTwo(h)
+		return
+	}
 	n, t := s.n, s.t
 	y, w := s.y[:n], s.w[:n]
 	k1, k2, k3, k4, k5, k6, k7, k8, k9, k10, k11, k12 := s.k1[:n], s.k2[:n], s.k3[:n], s.k4[:n], s.k5[:n], s.k6[:n], s.k7[:n], s.k8[:n], s.k9[:n], s.k10[:n], s.k11[:n], s.k12[:n]

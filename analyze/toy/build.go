@@ -78,6 +78,12 @@ func New(r *rig.Rig) (*Model, error) {
 			return nil, err
 		}
 	}
+	m.allAlone = true
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		b.alone = b.parent < 0 && m.trees[b.tree].n == b.nv
+		m.allAlone = m.allAlone && b.alone
+	}
 	m.workSpace()
 	m.findPairs()
 	m.listParams()
@@ -241,8 +247,14 @@ func (b *body) refreshInertia() {
 		along := b.centre.Dot(b.axis)
 		about := b.inertia - b.mass*(lever2-along*along)
 		b.comInertia = axisymmetric(b.axis, about, about/2)
-		return
+	} else {
+		b.comInertia = b.comInertiaOfHanging(long, lever2)
 	}
+	b.pivotInertia = b.comInertia
+	b.pivotInertia.addPoint(b.mass, b.centre)
+}
+
+func (b *body) comInertiaOfHanging(long vec, lever2 float64) sym {
 	if lever2 == 0 {
 		long = vec{Z: 1}
 	}
@@ -258,7 +270,7 @@ func (b *body) refreshInertia() {
 			}
 		}
 	}
-	b.comInertia = axisymmetric(long, b.spin, across)
+	return axisymmetric(long, b.spin, across)
 }
 
 func (m *Model) addMagnet(g *rig.Magnet, index map[string]int) error {

@@ -9,6 +9,10 @@ import (
 func (m *Model) kinematics(y []float64) {
 	for k := range m.bodies {
 		b := &m.bodies[k]
+		if b.alone && b.joint != ball {
+			b.swing(y[b.q], y[m.nq+b.v])
+			continue
+		}
 		up := &identity
 		var w, vo, aw, ao vec
 		b.p = b.pivot
@@ -32,16 +36,7 @@ func (m *Model) kinematics(y []float64) {
 			m.setDof(b.v+1, b.p, vec{X: r.xy, Y: r.yy, Z: r.zy})
 			m.setDof(b.v+2, b.p, vec{X: r.xz, Y: r.yz, Z: r.zz})
 		} else {
-			angle := y[b.q]
-			var turn rotation
-			switch {
-			case b.flat:
-				turn = aboutZ(angle)
-			case b.joint == hinge:
-				turn = aboutY(-angle)
-			default:
-				turn = aboutY(angle)
-			}
+			turn := b.turn(y[b.q])
 			axis := b.axis
 			if b.parent >= 0 {
 				b.rot = up.times(&turn)
@@ -58,12 +53,9 @@ func (m *Model) kinematics(y []float64) {
 			jv = jv.Add(m.sB[b.v+i].Scale(speed))
 		}
 		b.w, b.vo = w.Add(jw), vo.Add(jv)
-		if b.parent >= 0 || b.joint == ball {
+		if !b.alone {
 			b.aw = aw.Add(b.w.Cross(jw))
 			b.ao = ao.Add(b.w.Cross(jv)).Add(b.vo.Cross(jw))
-		} else {
-			// A fixed axis: w × jw and its fellows cancel exactly.
-			b.aw, b.ao = vec{}, vec{}
 		}
 		b.c = b.p.Add(b.rot.mul(b.centre))
 	}
@@ -72,9 +64,37 @@ func (m *Model) kinematics(y []float64) {
 		if g.body >= 0 {
 			b := &m.bodies[g.body]
 			g.r = b.p.Add(b.rot.mul(g.at))
-			g.m = b.rot.mul(g.axis).Scale(g.moment)
+			g.m = b.rot.mul(g.ownM)
 		}
 	}
+}
+
+// turn is the rotation of a one-axis joint by an angle.
+func (b *body) turn(angle float64) rotation {
+	switch {
+	case b.flat:
+		return aboutZ(angle)
+	case b.joint == hinge:
+		return aboutY(-angle)
+	}
+	return aboutY(angle)
+}
+
+// swing is kinematics for a part alone on the base on a hinge or pin. It writes
+// the rotation in place: this is what most toys spend their time on.
+func (b *body) swing(angle, speed float64) {
+	r := &b.rot
+	sin, cos := sincos(angle)
+	if b.flat {
+		r.xx, r.xy, r.yx, r.yy = cos, -sin, sin, cos
+	} else {
+		if b.joint == hinge {
+			sin = -sin
+		}
+		r.xx, r.xz, r.zx, r.zz = cos, sin, -sin, cos
+	}
+	b.w, b.vo = b.axis.Scale(speed), b.arm.Scale(speed)
+	b.c = b.p.Add(r.mul(b.centre))
 }
 
 // setDof sets motion vector j: a turn about the axis a through p.
@@ -83,24 +103,25 @@ func (m *Model) setDof(j int, p, a vec) {
 	m.sB[j] = p.Cross(a)
 }
 
-// massMatrix fills m.mass (row-major, nv × nv, one block per tree) for the
-// places that kinematics set.
+// massMatrix fills m.mass (row-major, nv × nv, lower half, one block per tree)
+// for the places that kinematics set. The blocks of parts that are alone on the
+// base do not change: refresh fills them.
 func (m *Model) massMatrix() {
+	if m.allAlone {
+		return
+	}
 	for k := range m.bodies {
 		b := &m.bodies[k]
-		in := b.comInertia.turned(&b.rot)
-		c, mm := b.c, b.mass
-		in.xx += mm * (c.Y*c.Y + c.Z*c.Z)
-		in.yy += mm * (c.X*c.X + c.Z*c.Z)
-		in.zz += mm * (c.X*c.X + c.Y*c.Y)
-		in.xy -= mm * c.X * c.Y
-		in.xz -= mm * c.X * c.Z
-		in.yz -= mm * c.Y * c.Z
-		b.own = composite{m: mm, h: c.Scale(mm), i: in}
-		b.comp = b.own
+		if !b.alone {
+			b.own = b.inWorld()
+			b.comp = b.own
+		}
 	}
 	for k := len(m.bodies) - 1; k >= 0; k-- {
 		b := &m.bodies[k]
+		if b.alone {
+			continue
+		}
 		for i := b.v; i < b.v+b.nv; i++ {
 			l, p := b.comp.momentum(m.sA[i], m.sB[i])
 			row := m.mass[i*m.nv : (i+1)*m.nv]
@@ -120,11 +141,22 @@ func (m *Model) massMatrix() {
 	}
 }
 
+// inWorld is the part's inertia about the world's origin where it is now.
+func (b *body) inWorld() composite {
+	in := b.comInertia.turned(&b.rot)
+	in.addPoint(b.mass, b.c)
+	return composite{m: b.mass, h: b.c.Scale(b.mass), i: in}
+}
+
 // bias fills m.rhs with what drives each degree of freedom: joint torques and
 // outside forces less the inertial forces at zero joint acceleration.
 func (m *Model) bias(y []float64) {
 	for k := range m.bodies {
 		b := &m.bodies[k]
+		if b.alone {
+			m.biasAlone(k, y)
+			continue
+		}
 		l, p := b.own.momentum(b.w, b.vo)
 		n, f := b.own.momentum(b.aw, b.ao)
 		n = n.Add(b.w.Cross(l)).Add(b.vo.Cross(p))
@@ -134,22 +166,58 @@ func (m *Model) bias(y []float64) {
 		b.fn = vec{X: n.X + g*b.c.Y - b.extN.X, Y: n.Y - g*b.c.X - b.extN.Y, Z: n.Z - b.extN.Z}
 		b.ff = vec{X: f.X - b.extF.X, Y: f.Y - b.extF.Y, Z: f.Z + g - b.extF.Z}
 	}
+	if m.allAlone {
+		return
+	}
 	for k := len(m.bodies) - 1; k >= 0; k-- {
 		b := &m.bodies[k]
+		if b.alone {
+			continue
+		}
 		for i := b.v; i < b.v+b.nv; i++ {
 			m.rhs[i] = -m.sA[i].Dot(b.fn) - m.sB[i].Dot(b.ff)
 		}
-		if b.joint == ball {
-			m.ballFriction(b, y[m.nq+b.v:m.nq+b.v+3])
-		} else {
-			m.rhs[b.v] += m.jointTorque(k, y[b.q], y[m.nq+b.v])
-		}
+		m.jointForces(k, y)
 		if b.parent >= 0 {
 			u := &m.bodies[b.parent]
 			u.fn = u.fn.Add(b.fn)
 			u.ff = u.ff.Add(b.ff)
 		}
 	}
+}
+
+// biasAlone is bias for a part on the base that carries no other: about its own
+// pivot its inertia is constant in its own axes, and Euler's equations hold.
+func (m *Model) biasAlone(k int, y []float64) {
+	b := &m.bodies[k]
+	n := b.extN
+	f := b.extF
+	g := b.mass * m.gravity
+	// About the pivot: the outside torque, and gravity at the centre of mass.
+	n.X -= b.p.Y*f.Z - b.p.Z*f.Y
+	n.Y -= b.p.Z*f.X - b.p.X*f.Z
+	n.Z -= b.p.X*f.Y - b.p.Y*f.X
+	n.X -= g * (b.c.Y - b.p.Y)
+	n.Y += g * (b.c.X - b.p.X)
+	if b.joint != ball {
+		m.rhs[b.v] = b.axis.Dot(n)
+	} else {
+		n = b.rot.mulT(n)
+		w := vec{X: y[m.nq+b.v], Y: y[m.nq+b.v+1], Z: y[m.nq+b.v+2]}
+		n = n.Sub(w.Cross(b.pivotInertia.mul(w)))
+		m.rhs[b.v], m.rhs[b.v+1], m.rhs[b.v+2] = n.X, n.Y, n.Z
+	}
+	m.jointForces(k, y)
+}
+
+// jointForces adds what part k's joint does.
+func (m *Model) jointForces(k int, y []float64) {
+	b := &m.bodies[k]
+	if b.joint == ball {
+		m.ballFriction(b, y[m.nq+b.v:m.nq+b.v+3])
+		return
+	}
+	m.rhs[b.v] += m.jointTorque(k, y[b.q], y[m.nq+b.v])
 }
 
 // jointTorque is the spring's and friction's torque about a one-axis joint.
@@ -197,8 +265,10 @@ var errSingular = errors.New("the toy's mass matrix is singular: a part has neit
 // solve leaves the joint accelerations in m.acc. Joints that dry friction holds
 // do not accelerate.
 func (m *Model) solve() error {
-	copy(m.acc, m.rhs)
 	for _, tr := range m.trees {
+		for i := tr.v; i < tr.v+tr.n; i++ {
+			m.acc[i] = m.rhs[i]
+		}
 		if tr.n == 1 {
 			i := tr.v
 			d := m.mass[i*m.nv+i]
@@ -279,7 +349,9 @@ func (m *Model) derive(t float64, y, dy []float64) {
 		}
 		return
 	}
-	copy(dy[m.nq:m.nq+m.nv], m.acc)
+	for i, a := range m.acc {
+		dy[m.nq+i] = a
+	}
 	for k := range m.bodies {
 		b := &m.bodies[k]
 		if b.joint != ball {

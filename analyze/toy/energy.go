@@ -16,12 +16,10 @@ func (e Energies) Total() float64 { return e.Kinetic + e.Gravity + e.Spring + e.
 func (m *Model) Energy(y []float64) Energies {
 	m.prepare()
 	m.kinematics(y)
-	m.massMatrix()
 	var e Energies
 	for k := range m.bodies {
 		b := &m.bodies[k]
-		l, p := b.own.momentum(b.w, b.vo)
-		e.Kinetic += 0.5 * (b.w.Dot(l) + b.vo.Dot(p))
+		e.Kinetic += b.kinetic()
 		e.Gravity += b.mass * m.gravity * b.c.Z
 		if b.joint != ball && (b.rate != 0 || b.cubic != 0) {
 			d, _ := m.Angle(y, k)
@@ -31,6 +29,13 @@ func (m *Model) Energy(y []float64) Energies {
 	}
 	e.Magnetic = m.magneticEnergy()
 	return e
+}
+
+// kinetic is the part's kinetic energy as kinematics set it.
+func (b *body) kinetic() float64 {
+	in := b.inWorld()
+	l, p := in.momentum(b.w, b.vo)
+	return 0.5 * (b.w.Dot(l) + b.vo.Dot(p))
 }
 
 // magneticEnergy is that of the magnets as kinematics placed them.
@@ -48,11 +53,9 @@ func (m *Model) magneticEnergy() float64 {
 func (m *Model) PartEnergies(y, dst []float64) {
 	m.prepare()
 	m.kinematics(y)
-	m.massMatrix()
 	for k := range m.bodies {
 		b := &m.bodies[k]
-		l, p := b.own.momentum(b.w, b.vo)
-		dst[k] = 0.5*(b.w.Dot(l)+b.vo.Dot(p)) + b.mass*m.gravity*b.c.Z
+		dst[k] = b.kinetic() + b.mass*m.gravity*b.c.Z
 		if b.joint != ball {
 			d, _ := m.Angle(y, k)
 			d -= b.restRad

@@ -131,6 +131,21 @@ func (m *Model) refresh() error {
 	for k := range m.bodies {
 		b := &m.bodies[k]
 		b.refreshInertia()
+		if b.alone && b.joint != ball { // what swing leaves as it is
+			b.arm = b.pivot.Cross(b.axis)
+			b.p, b.rot = b.pivot, identity
+			m.sA[b.v], m.sB[b.v] = b.axis, b.arm
+		}
+		if b.alone {
+			i := b.pivotInertia
+			if b.joint != ball {
+				m.mass[b.v*m.nv+b.v] = b.inertia
+			} else {
+				for r, row := range [3][3]float64{{i.xx}, {i.xy, i.yy}, {i.xz, i.yz, i.zz}} {
+					copy(m.mass[(b.v+r)*m.nv+b.v:], row[:r+1])
+				}
+			}
+		}
 		if b.inertia <= 0 || math.IsNaN(b.inertia) {
 			return fmt.Errorf("the inertia of %q is %g kg·m²: it must be above zero", b.name, b.inertia)
 		}
@@ -140,6 +155,7 @@ func (m *Model) refresh() error {
 		if g.cylinder {
 			g.moment = g.cyl.Moment()
 		}
+		g.ownM = g.axis.Scale(g.moment)
 	}
 	m.restKinematics()
 	for i := range m.magnets {
@@ -189,6 +205,9 @@ func (m *Model) Clone() *Model {
 	c.coils = append([]coilPart(nil), m.coils...)
 	c.solver, c.events, c.params, c.tangentWork = nil, nil, nil, nil
 	c.workSpace()
+	copy(c.mass, m.mass)
+	copy(c.sA, m.sA)
+	copy(c.sB, m.sB)
 	c.listParams()
 	return &c
 }

@@ -56,7 +56,11 @@ type body struct {
 	viscous, drag, dry   float64
 	rate, cubic, restRad float64
 
-	comInertia sym // about the centre of mass, own axes; follows from the above
+	// What follows from the above.
+	comInertia   sym  // about the centre of mass, own axes
+	pivotInertia sym  // about the pivot, own axes
+	alone        bool // on the base, carrying nothing
+	arm          vec  // pivot × axis, for a part alone on one axis
 
 	// work space, refreshed by kinematics
 	rot    rotation // own axes -> world
@@ -84,7 +88,9 @@ type magnetPart struct {
 	moment   float64
 	cylinder bool
 	cyl      magnet.Cylinder
-	r, m     vec // world: place and moment
+	ownM     vec  // moment, own axes
+	r, m     vec  // world: place and moment
+	exact    bool // a cylinder whose charges are summed, not its dipole
 	// gap, when above zero, sets a base magnet's distance from the moving magnet
 	// gapTo, both at rest, in the direction of at.
 	gap   float64
@@ -129,10 +135,11 @@ type Model struct {
 	gravity float64
 	starts  []rig.Start
 
-	nq, nv int
-	params []param
-	dirty  bool
-	trees  []tree
+	nq, nv   int
+	params   []param
+	dirty    bool
+	trees    []tree
+	allAlone bool
 
 	sA, sB               []vec // motion vectors of the degrees of freedom, world, about the origin
 	dofOf                []int // body of each degree of freedom
@@ -147,6 +154,7 @@ type Model struct {
 	nStuck               int
 	solver               *ode.Solver
 	events               []ode.Event
+	lamp                 *lamp
 }
 
 // pair is two magnets that act on each other and can move against each other.

@@ -124,19 +124,14 @@ func TestDryFriction(t *testing.T) {
 	}
 }
 
-func BenchmarkLantern(b *testing.B) {
-	r := pendulum()
-	r.Magnets = []rig.Magnet{
-		{Name: "bob magnet", Part: "arm", AtM: []float64{0, -0.28}, Axis: []float64{0, -1}, Moment: number(1.12)},
-		{Name: "base magnet", Part: "base", AtM: []float64{0, -0.31}, Axis: []float64{0, 1}, Moment: number(1.12)},
-	}
-	m := mustNew(b, r)
-	for b.Loop() {
-		y := m.Rest()
-		m.SetAngle(y, 0, 0.75, 0)
-		if err := m.Run(context.Background(), 0, y, 20, Options{Tol: 1e-8}, nil, nil); err != nil {
-			b.Fatal(err)
+// The quick sine and cosine against the library's.
+func TestSincos(t *testing.T) {
+	for i := range 200001 {
+		x := (float64(i) - 1e5) * 0.0123456789 * float64(1+i%7)
+		s, c := sincos(x)
+		ws, wc := math.Sincos(x)
+		if math.Abs(s-ws) > 4e-16 || math.Abs(c-wc) > 4e-16 {
+			t.Fatalf("sincos(%g) = %.17g, %.17g, want %.17g, %.17g", x, s, c, ws, wc)
 		}
 	}
-	b.ReportMetric(20*float64(b.N)/b.Elapsed().Seconds(), "s/s")
 }
