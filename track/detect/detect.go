@@ -58,7 +58,8 @@ type Fit struct {
 	Blur          float64 // standard deviation of the edge's blur, px
 	UBlur         float64 // its standard uncertainty (0: it was held)
 	E1, E2, UE    float64 // ellipse, as in Shape
-	Contrast      float64 // bob minus wall, levels of the projection in use
+	Level         float64 // of the bob near its outline, levels of the projection in use
+	Contrast      float64 // bob minus wall, same levels
 	Noise         float64 // scatter of the residuals, levels of the projection
 	Visible       float64 // share of the outline that agrees with the model, 0 to 1
 	Cut           bool    // the outline reaches the picture's edge

@@ -47,9 +47,9 @@ var directions = func() (d [sectors][2]float64) {
 const flat = 3.3 // blurs from the outline beyond which a pixel shows bob or wall alone
 
 // quick tells whether the everyday pass is good for this model: a smear that is
-// short against the radius, blur and ellipse held.
+// short against the radius, and the blur held.
 func (m *model) quick(on *[pCount]bool) bool {
-	return !on[pBlur] && !on[pE1] && m.l <= 0.4*m.r
+	return !on[pBlur] && m.l <= 0.4*m.r
 }
 
 // passQuick does what pass does, for models that are quick.
@@ -181,23 +181,40 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 
 // spreadSectors turns the sectors' sums into those of the whole fit.
 func (f *Fitter) spreadSectors(m *model, acc *sums) {
-	where := [pBlur]int{pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lBob, pFy: lBob, pFz: lFront, pB0: lWall, pBx: lWall, pBy: lWall}
 	kb, kw := 1-1.5*m.s/m.r, 1+1.5*m.s/m.r
 	for k := range f.sec {
 		s := &f.sec[k]
 		acc.all[k], acc.kept[k] = s.all, s.kept
 		c, d := directions[k][0], directions[k][1]
-		mult := [pBlur]float64{c, d, 1, 1, 1, kb * c, kb * d, 1, 1, kw * c, kw * d}
-		for i := range pBlur {
-			li := where[i]
+		mult := vector{
+			pU: c, pV: d, pR: 1, pSmear: 1, pF0: 1, pFx: kb * c, pFy: kb * d, pFz: 1, pB0: 1, pBx: kw * c, pBy: kw * d,
+			pE1: m.r * (c*c - d*d), pE2: m.r * 2 * c * d,
+		}
+		for i := range pCount {
+			if i == pBlur {
+				continue
+			}
+			li := local[i]
 			gi := mult[i] * s.g[li]
 			acc.g[i] += gi
 			acc.score[k][i] = gi
-			for j := i; j < pBlur; j++ {
-				acc.a[i][j] += mult[i] * mult[j] * s.a[li][where[j]]
+			for j := i; j < pCount; j++ {
+				// The local sums fill the upper triangle only.
+				a, b := li, local[j]
+				if a > b {
+					a, b = b, a
+				}
+				acc.a[i][j] += mult[i] * mult[j] * s.a[a][b]
 			}
 		}
 	}
+}
+
+// local tells which of a sector's sums each parameter of the fit moves; the blur
+// is held.
+var local = [pCount]int{
+	pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lBob, pFy: lBob, pFz: lFront,
+	pB0: lWall, pBx: lWall, pBy: lWall, pE1: lEdge, pE2: lEdge,
 }
 
 // weigh is the weight of a residual whose square over its variance is t: full

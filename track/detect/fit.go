@@ -31,6 +31,7 @@ type Fitter struct {
 	px   []pixel
 	sec  [sectors]sectorSums
 	ring []float64
+	back float64 // mean of the wall's picture behind the band, 0 where none is used
 }
 
 // Shape is what is known of a bob's outline: px, with standard uncertainties.
@@ -64,7 +65,7 @@ func NewFitter(weights [3]float64, r, ur float64, active image.Rectangle) *Fitte
 func (f *Fitter) Agreement() float64 { return f.agree }
 
 // Fit fits the bob near the guess. wall may be nil. Pixels within covers (other
-// bobs) are left out. Free says that blur and ellipse are to be fitted as well.
+// bobs) are left out. free says that the blur is to be fitted as well.
 func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free bool) Fit {
 	r0, s0 := f.Shape.R, math.Max(f.Shape.Blur, leastBlur)
 	smear := math.Hypot(g.SmearU, g.SmearV)
@@ -84,7 +85,8 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		on[i] = i < pBlur
 	}
 	on[pSmear] = g.USmear > 0 && smear > 0.6*s0
-	on[pBlur], on[pE1], on[pE2] = free, free, free
+	on[pBlur] = free
+	on[pE1], on[pE2] = r0 >= 6, r0 >= 6
 	if r0 < 6 {
 		on[pFx], on[pFy], on[pFz] = false, false, false
 		m.level[1], m.level[2], m.level[3] = 0, 0, 0
@@ -93,12 +95,12 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 
 	var out Fit
 	reach := math.Min(2.5*g.UPos, 0.4*r0)
-	useWall := f.gather(p, wall, &m, covers, reach)
+	f.gather(p, wall, &m, covers, reach)
 	if len(f.px) < 40 {
 		return Fit{Why: "too few pixels in the picture"}
 	}
 	noise := f.startLevels(&m)
-	loose := math.Max(g.UPos, 0.05)
+	loose := math.Max(math.Hypot(g.UPos, math.Min(f.Shape.UR, 0.1*r0)), 0.05)
 	var acc sums
 	var inv matrix
 	gathered := [2]float64{m.cu, m.cv}
@@ -140,9 +142,8 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 			break
 		}
 	}
-	out.fill(&m, &inv, &acc, &noise, &on)
+	out.fill(&m, &inv, &acc, &noise, &on, f.back)
 	out.Cut = f.cut(&m)
-	_ = useWall
 	f.assess(&inv, &acc, &on)
 	f.frames++
 	out.Cov.AA *= f.agree
@@ -181,6 +182,7 @@ func (m *model) apply(d *vector, r0 float64) float64 {
 	if lim := 0.2 * m.r; math.Abs(d[pR])*k > lim {
 		k = lim / math.Abs(d[pR])
 	}
+	from := *m
 	m.cu += k * d[pU]
 	m.cv += k * d[pV]
 	m.r = math.Min(math.Max(m.r+k*d[pR], 0.4*r0), 2.5*r0)
@@ -191,7 +193,7 @@ func (m *model) apply(d *vector, r0 float64) float64 {
 	m.s = math.Min(math.Max(m.s+k*d[pBlur], math.Max(leastBlur, 0.5*m.s)), 2*m.s)
 	m.e1 = math.Min(math.Max(m.e1+k*d[pE1], -0.5), 0.5)
 	m.e2 = math.Min(math.Max(m.e2+k*d[pE2], -0.5), 0.5)
-	return math.Max(move, math.Max(math.Abs(d[pR]), 0.3*math.Abs(d[pSmear])))
+	return math.Max(k*move, math.Max(math.Abs(m.r-from.r), 0.3*math.Abs(m.l-from.l)))
 }
 
 // prior is what is known of each parameter before the frame is looked at.
@@ -252,7 +254,7 @@ type sums struct {
 }
 
 // fill writes what the last step found.
-func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]bool) {
+func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]bool, back float64) {
 	p := 0.0
 	for _, yes := range on {
 		if yes {
@@ -269,10 +271,13 @@ func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]b
 	}
 	if on[pBlur] {
 		out.UBlur = math.Sqrt(inv[pBlur][pBlur])
+	}
+	if on[pE1] {
 		out.UE = math.Sqrt(math.Max(inv[pE1][pE1], inv[pE2][pE2]))
 	}
 	out.E1, out.E2 = m.e1, m.e2
-	out.Contrast = m.level[0] - m.level[4]
+	out.Level = m.level[0] + 0.4*m.level[3]
+	out.Contrast = out.Level - m.level[4] - back
 	out.Noise = math.Sqrt(math.Max((n.bob+n.wall)/2*scale, 0))
 	out.Pixels = int(acc.n)
 	seen, most := 0.0, 0.0

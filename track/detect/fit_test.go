@@ -82,7 +82,7 @@ func run(t *testing.T, s scene, n int, off float64, seed uint64, each func(*scen
 		}
 		free := i < 8
 		r := f.Fit(p, nil, g, nil, free)
-		f.Learn(&r, free)
+		f.Learn(&r)
 		if i >= 8 {
 			y.add(r, s.u, s.v)
 		}

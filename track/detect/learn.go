@@ -2,19 +2,35 @@ package detect
 
 import "math"
 
-// Learn updates what is known of the bob's outline from a good fit. free says
-// that the fit had blur and ellipse free.
-func (f *Fitter) Learn(r *Fit, free bool) {
-	if !r.OK || r.Cut || r.Visible < 0.8 {
-		f.Shape.UR = math.Hypot(f.Shape.UR, 0.004*f.Shape.R)
-		return
+// What a bob's outline may change from frame to frame, one standard deviation:
+// its radius (it comes nearer), its ellipse (it turns), its blur (the focus
+// breathes).
+const (
+	walkR    = 0.004 // of the radius
+	walkE    = 0.003
+	walkBlur = 0.005 // px
+)
+
+// Learn updates what is known of the bob's outline from a fit. The fit already
+// holds what was known before: its values are the updated means.
+func (f *Fitter) Learn(r *Fit) {
+	s := &f.Shape
+	if r.OK && !r.Cut && r.Visible > 0.8 {
+		s.R, s.UR = r.R, r.UR
+		if r.UBlur > 0 {
+			s.Blur, s.UBlur = r.Blur, r.UBlur
+		}
+		if r.UE > 0 {
+			s.E1, s.E2, s.UE = r.E1, r.E2, r.UE
+		}
 	}
-	// The fit already holds the prior: its R is the updated mean.
-	f.Shape.R = r.R
-	f.Shape.UR = math.Hypot(r.UR, 0.004*r.R)
-	if free {
-		f.Shape.Blur, f.Shape.UBlur = r.Blur, math.Max(r.UBlur, 0.02)
-		f.Shape.E1, f.Shape.E2 = r.E1, r.E2
-		f.Shape.UE = math.Max(r.UE, 0.01)
-	}
+	s.UR = math.Hypot(s.UR, walkR*s.R)
+	s.UE = math.Min(math.Hypot(s.UE, walkE), 0.1)
+	s.UBlur = math.Min(math.Hypot(s.UBlur, walkBlur), 0.5)
+}
+
+// Widen makes room in what is known of the radius for one that was seen
+// coarsely.
+func (f *Fitter) Widen(r float64) {
+	f.Shape.UR = math.Max(f.Shape.UR, math.Abs(r-f.Shape.R)+0.02*f.Shape.R)
 }

@@ -10,9 +10,8 @@ import (
 const notSeen = float32(math.MaxFloat32)
 
 // gather collects the pixels of the band around the model's outline. reach is
-// by how much the outline may still move, px. It tells whether the wall's own
-// picture is used.
-func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reach float64) bool {
+// by how much the outline may still move, px.
+func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reach float64) {
 	f.px = f.px[:0]
 	out := m.r*(1+math.Abs(m.e1)+math.Abs(m.e2)) + 3*m.s + 3 + m.l/2 + reach
 	in := m.r*(1-math.Abs(m.e1)-math.Abs(m.e2)) - math.Min(3*m.s+2, 0.6*m.r) - m.l/2 - reach
@@ -76,16 +75,16 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 			f.px = append(f.px, px)
 		}
 	}
-	if wall == nil {
-		return false
+	f.back = 0
+	if wall != nil {
+		f.chooseWall(m, known)
 	}
-	return f.chooseWall(m, known)
 }
 
 // chooseWall keeps the wall's picture where it explains the pixels outside the
 // outline better than a plane does, and drops it otherwise (a camera that has
 // moved, a wall not seen yet).
-func (f *Fitter) chooseWall(m *model, known int) bool {
+func (f *Fitter) chooseWall(m *model, known int) {
 	use := known > len(f.px)*7/10
 	if use {
 		r1 := m.r + 2*m.s + m.l/2
@@ -111,16 +110,17 @@ func (f *Fitter) chooseWall(m *model, known int) bool {
 		for i := range f.px {
 			f.px[i].wall = 0
 		}
-		return false
+		return
 	}
 	kept := f.px[:0]
 	for _, q := range f.px {
 		if q.wall != notSeen {
 			kept = append(kept, q)
+			f.back += float64(q.wall)
 		}
 	}
 	f.px = kept
-	return true
+	f.back /= math.Max(float64(len(kept)), 1)
 }
 
 // spread returns a robust standard deviation of ring, which it spoils.
@@ -378,7 +378,9 @@ func (f *Fitter) assess(inv *matrix, acc *sums, on *[pCount]bool) {
 	}
 	scale := acc.chi / math.Max(acc.n-free, 1)
 	white := (inv[pU][pU] + inv[pV][pV]) * scale
-	ratio := meat / white * used / (used - 1)
+	// The fit itself zeroes the pulls' sum and their first and second harmonics,
+	// which costs about four of the clusters' freedoms.
+	ratio := meat / white * used / (used - 4)
 	// One wild frame must not spoil the average.
 	if f.agreeN >= 3 {
 		ratio = math.Min(ratio, 4*f.agree)

@@ -21,14 +21,16 @@ type bob struct {
 	startU     float64
 	startV     float64
 
-	fitter  *detect.Fitter
-	filter  *link.Filter
-	search  detect.Search
-	samples []track.Sample
-	good    int     // fits so far
-	lost    int     // frames since it was last seen
-	radius  float64 // usual, px
-	level   float64 // usual contrast, levels of the fitter's projection
+	fitter   *detect.Fitter
+	filter   *link.Filter
+	search   detect.Search
+	samples  []track.Sample
+	good     int     // fits so far
+	lost     int     // frames since it was last seen
+	stall    bool    // the last frame looked like a repeated one
+	radius   float64 // usual, px
+	level    float64 // usual level of the bob, in the fitter's projection
+	contrast float64 // usual size of its difference from the wall
 
 	// of the present frame
 	patch  clip.Patch
@@ -115,14 +117,15 @@ func (b *bob) look1(frame *clip.Frame) {
 		if c.Score() < 0.35 || covered(c.U, c.V, b.covers) {
 			continue
 		}
-		k := b.pred.Cost(c.U, c.V, track.Cov{}, 1) + 4*(1-c.Score())
+		k := b.pred.Cost(c.U, c.V, track.Cov{}, 1+b.leeway()) + 4*(1-c.Score())
 		if k < cost {
 			best, cost = c, k
 		}
 	}
-	if cost < 2*gate {
+	if cost < gate {
 		g := b.guess
 		g.U, g.V, g.UPos = best.U, best.V, 0.7+0.04*b.radius
+		b.fitter.Widen(best.R)
 		b.try(g)
 	}
 }
@@ -143,17 +146,26 @@ func (b *bob) try(g detect.Guess) bool {
 	if !r.OK || !b.plausible(&r) {
 		return false
 	}
-	floor := 0.02 * b.radius
-	if b.pred.Cost(r.U, r.V, r.Cov, floor*floor) > gate {
+	// A plain sighting may lie farther from where it was expected than a poor one:
+	// clips hold repeated frames, and hands push bobs.
+	floor := 1e-3 * b.radius * b.radius
+	if r.Visible > 0.8 && math.Abs(r.R-b.radius) < 0.1*b.radius {
+		floor = b.leeway()
+	}
+	if b.pred.Cost(r.U, r.V, r.Cov, floor) > gate {
 		return false
 	}
 	b.result, b.have = r, true
-	b.fitter.Learn(&r, free)
+	b.fitter.Learn(&r)
 	return true
 }
 
-// free tells whether this frame's fit shall also fit blur and ellipse: at first,
-// and now and then while the bob is slow enough to show them.
+// leeway is the variance, px², that is granted to a plain sighting on top of the
+// prediction's.
+func (b *bob) leeway() float64 { return 0.04 * b.radius * b.radius }
+
+// free tells whether this frame's fit shall also fit the blur: at first,
+// and now and then while the bob is slow enough to show it.
 func (b *bob) free() bool {
 	if len(b.covers) > 0 || b.filter.Sightings() < 3 {
 		return false
@@ -162,15 +174,14 @@ func (b *bob) free() bool {
 	return b.good < 12 || slow && b.good%16 == 0
 }
 
-// plausible tells whether a fit can be this bob: as large, and as different from
-// the wall, as it was.
+// plausible tells whether a fit can be this bob: as large and as
+// bright as it was.
 func (b *bob) plausible(r *detect.Fit) bool {
 	if math.Abs(r.R-b.radius) > 0.3*b.radius+0.5 {
 		return false
 	}
 	if b.good > 3 {
-		k := r.Contrast / b.level
-		if !(k > 0.3 && k < 3) {
+		if math.Abs(r.Level-b.level) > 25+0.35*b.contrast {
 			return false
 		}
 	}
@@ -292,13 +303,13 @@ func (b *bob) regain(frame *clip.Frame, c detect.Candidate) {
 	g := detect.Guess{U: c.U, V: c.V, UPos: 0.08*b.radius + 1}
 	frame.Patch(&b.patch, detect.Window(g, 1.2*b.radius).Intersect(b.f.active))
 	b.covers = b.covers[:0]
-	b.fitter.Shape.UR = math.Max(b.fitter.Shape.UR, 0.08*b.radius)
+	b.fitter.Widen(c.R)
 	r := b.fitter.Fit(&b.patch, b.f.wall, g, nil, false)
 	if !r.OK || !b.plausible(&r) || r.Visible < 0.5 {
 		return
 	}
 	b.result, b.have = r, true
-	b.fitter.Learn(&r, false)
+	b.fitter.Learn(&r)
 }
 
 // settle writes the frame's sample and updates what is known.
@@ -325,7 +336,13 @@ func (b *bob) settle(frame *clip.Frame) {
 	if s.State != track.Seen {
 		c.AA, c.BB = 4*c.AA+0.01, 4*c.BB+0.01
 	}
-	if b.lost > 6 {
+	if b.stalled(s.T) {
+		// The position may be that of the frame before.
+		du, dv := b.pred.DU*f.dt, b.pred.DV*f.dt
+		wide := track.Cov{AA: c.AA + du*du, AB: c.AB + du*dv, BB: c.BB + dv*dv}
+		b.samples[len(b.samples)-1].Pixel = wide
+		f.repeated++
+	} else if b.lost > 6 {
 		b.filter = link.NewFilter(s.T, r.U, r.V, c, b.reach())
 	} else {
 		b.filter.Update(s.T, r.U, r.V, c)
@@ -335,11 +352,29 @@ func (b *bob) settle(frame *clip.Frame) {
 		b.good++
 		k := 1 / math.Min(float64(b.good), 30)
 		b.radius += k * (r.R - b.radius)
-		b.level += k * (r.Contrast - b.level)
+		b.level += k * (r.Level - b.level)
+		b.contrast += k * (math.Abs(r.Contrast) - b.contrast)
 		if r.USmear > 0 {
 			f.expo.learn(b.pred.Speed(), r.Smear, r.USmear)
 		}
 	}
+}
+
+// stalled tells whether the bob stands where it was a frame ago although it was
+// going fast: a clip that was encoded again holds repeated frames. It tells so
+// once; a bob that stays is believed to have stopped.
+func (b *bob) stalled(t float64) bool {
+	was := b.stall
+	b.stall = false
+	n := len(b.samples)
+	if was || n < 2 || b.filter.Sightings() < 5 {
+		return false
+	}
+	last := &b.samples[n-2]
+	step := math.Hypot(b.pred.U-last.U, b.pred.V-last.V)
+	moved := math.Hypot(b.result.U-last.U, b.result.V-last.V)
+	b.stall = last.State != track.Missing && step > 2 && moved < 0.15*step && step > 4*b.pred.Sigma()
+	return b.stall
 }
 
 // reach is the greatest speed to be expected: two diameters per frame at first.

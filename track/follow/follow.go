@@ -52,23 +52,24 @@ type Progress struct {
 
 // follower is one run.
 type follower struct {
-	src     clip.Source
-	rig     *rig.Rig
-	cam     *camera.Camera
-	opt     Options
-	facts   *clip.Facts
-	bobs    []*bob
-	wall    *detect.Wall
-	watch   *shake.Watch
-	active  image.Rectangle // where there is picture
-	picture image.Rectangle
-	dt      float64 // median time between frames, s
-	expo    exposure
-	discs   []detect.Disc
-	whole   clip.Patch
-	frames  int
-	problem *NotFound     // what was wrong in the first frame
-	scouted []*clip.Patch // later pictures, for bobs known by their motion
+	src      clip.Source
+	rig      *rig.Rig
+	cam      *camera.Camera
+	opt      Options
+	facts    *clip.Facts
+	bobs     []*bob
+	wall     *detect.Wall
+	watch    *shake.Watch
+	active   image.Rectangle // where there is picture
+	picture  image.Rectangle
+	dt       float64 // median time between frames, s
+	expo     exposure
+	discs    []detect.Disc
+	whole    clip.Patch
+	frames   int
+	repeated int           // sightings in frames that repeat the one before
+	problem  *NotFound     // what was wrong in the first frame
+	scouted  []*clip.Patch // later pictures, for bobs known by their motion
 }
 
 // Follow follows the rig's bobs through the clip. It reads src to its end and

@@ -233,7 +233,8 @@ func (b *bob) accept(c detect.Candidate) (why string) {
 		return "its outline is not round"
 	}
 	fitter.Shape.UBlur = math.Max(0.5*r.Blur, 0.3)
-	b.fitter, b.result, b.radius, b.level = fitter, r, r.R, r.Contrast
+	b.fitter, b.result, b.radius, b.level = fitter, r, r.R, r.Level
+	b.contrast = math.Abs(r.Contrast)
 	return ""
 }
 

@@ -86,20 +86,39 @@ func (p *Prediction) Cost(u, v float64, c track.Cov, floor float64) float64 {
 func (f *Filter) Update(t, u, v float64, c track.Cov) {
 	dt := t - f.T
 	f.T = t
-	nis := 0.0
 	z, r := [2]float64{u, v}, [2]float64{c.AA, c.BB}
+	before := f.axis
+	predict := func() (nis float64) {
+		f.axis = before
+		for i := range f.axis {
+			a := &f.axis[i]
+			a.advance(dt, f.jerk)
+			e := z[i] - a.x[0]
+			nis += e * e / (a.p[0][0] + r[i])
+		}
+		return nis
+	}
+	nis := predict()
+	// What could not have been expected (a kick, a hand) was a jerk: let there be
+	// as much as makes it likely, so that speed and acceleration are free to follow.
+	for n := 0; n < 20 && nis > surprise && dt > 0 && f.n > 2; n++ {
+		f.jerk *= 4
+		nis = predict()
+	}
 	for i := range f.axis {
-		a := &f.axis[i]
-		a.advance(dt, f.jerk)
-		nis += a.update(z[i], r[i])
+		f.axis[i].update(z[i], r[i])
 	}
 	f.n++
 	if f.n > 3 && dt > 0 {
 		// A normalised innovation of 1 per axis is what a right jerk gives.
-		f.jerk *= math.Exp(0.15 * (math.Min(nis/2, 12) - 1))
+		f.jerk *= math.Exp(0.15 * (math.Min(nis/2, 4) - 1))
 		f.jerk = math.Min(math.Max(f.jerk, 1), 1e16)
 	}
 }
+
+// surprise is the normalised innovation, both axes together, beyond which the
+// jerk is raised at once.
+const surprise = 16.0
 
 // advance moves the state on by dt.
 func (a *axis) advance(dt, q float64) {
@@ -135,9 +154,8 @@ func (a *axis) advance(dt, q float64) {
 	a.p = p
 }
 
-// update takes in a position z of variance r and returns the normalised
-// innovation squared.
-func (a *axis) update(z, r float64) float64 {
+// update takes in a position z of variance r.
+func (a *axis) update(z, r float64) {
 	s := a.p[0][0] + r
 	e := z - a.x[0]
 	var k [3]float64
@@ -158,5 +176,4 @@ func (a *axis) update(z, r float64) float64 {
 			a.p[i][j], a.p[j][i] = m, m
 		}
 	}
-	return e * e / s
 }
