@@ -78,6 +78,9 @@ type Sample struct {
 type Bob struct {
 	Name    string
 	Part    string // the rig's part that it sits on; empty when it names none
+	// RadiusPX is the usual radius of its outline in the picture, px; 0 when
+	// unknown (the track's table does not keep it).
+	RadiusPX float64
 	Samples []Sample
 }
 

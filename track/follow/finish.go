@@ -51,7 +51,7 @@ func (f *follower) finish() *track.Track {
 			s.X, s.Z, j = f.cam.BobToPlane(u, v, radius, b.rig.DepthM.Or(0))
 			s.Plane = s.Pixel.Through(j)
 		}
-		out.Bobs = append(out.Bobs, track.Bob{Name: b.rig.Name, Part: b.rig.Part, Samples: b.samples})
+		out.Bobs = append(out.Bobs, track.Bob{Name: b.rig.Name, Part: b.rig.Part, RadiusPX: b.radius, Samples: b.samples})
 		moved = math.Max(moved, spread(b.samples))
 		out.Cautions = append(out.Cautions, b.cautions()...)
 	}

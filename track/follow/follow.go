@@ -33,9 +33,6 @@ import (
 type Options struct {
 	// Progress, if not nil, is called a few times a second and at the end.
 	Progress func(Progress)
-	// MarkedPicture is where a picture of what was seen is written, as PNG, when
-	// the bobs are not found; empty: nowhere (it is in the error all the same).
-	MarkedPicture string
 	// Shake, if not nil, is handed the report on the camera's own motion.
 	Shake func(*shake.Report)
 	// Again opens the clip once more, for bobs that are found by their motion
@@ -111,7 +108,7 @@ func Follow(ctx context.Context, src clip.Source, r *rig.Rig, cam *camera.Camera
 		return nil, fmt.Errorf("the clip %s has no frame that can be read", f.facts.Path)
 	}
 	if !f.started() {
-		return nil, f.notFound()
+		return nil, f.problem
 	}
 	if opt.Progress != nil {
 		f.tell(begun)

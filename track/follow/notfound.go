@@ -3,16 +3,8 @@ package follow
 import (
 	"fmt"
 	"image"
-	"image/color"
-	"image/png"
 	"math"
-	"os"
-	"path/filepath"
 	"strings"
-
-	"golang.org/x/image/font"
-	"golang.org/x/image/font/basicfont"
-	"golang.org/x/image/math/fixed"
 
 	"lodeswing/track/clip"
 	"lodeswing/track/detect"
@@ -97,89 +89,13 @@ func hex(r, g, b float64) string {
 	return fmt.Sprintf("#%02x%02x%02x", uint8(math.Round(r)), uint8(math.Round(g)), uint8(math.Round(b)))
 }
 
-// notFound completes the error and writes its picture.
-func (f *follower) notFound() error {
-	e := f.problem
-	if f.opt.MarkedPicture != "" {
-		if err := writePNG(f.opt.MarkedPicture, e.Picture); err != nil {
-			e.Advice += fmt.Sprintf("\n(A marked picture could not be written: %v.)", err)
-		} else {
-			e.Path = f.opt.MarkedPicture
-		}
-	}
-	return e
-}
-
-// writePNG writes a picture whole or not at all.
-func writePNG(path string, img image.Image) error {
-	tmp, err := os.CreateTemp(filepath.Dir(path), ".marked-*.png")
-	if err != nil {
-		return err
-	}
-	defer os.Remove(tmp.Name())
-	if err := png.Encode(tmp, img); err != nil {
-		tmp.Close()
-		return err
-	}
-	if err := tmp.Sync(); err != nil {
-		tmp.Close()
-		return err
-	}
-	if err := tmp.Close(); err != nil {
-		return err
-	}
-	return os.Rename(tmp.Name(), path)
-}
-
 // draw marks what was seen in the picture.
 func (e *NotFound) draw(p *clip.Patch) {
-	img := p.RGBA()
-	for i, c := range e.Seen {
-		ring(img, c.U, c.V, c.R+3, color.RGBA{255, 220, 0, 255})
-		label(img, int(c.U+0.75*c.R)+6, int(c.V-0.75*c.R)-4, fmt.Sprint(i+1))
+	c := canvas{p}
+	for i, s := range e.Seen {
+		c.ring(s.U, s.V, s.R+3, ink{255, 220, 0})
+		c.label(int(s.U+0.75*s.R)+6, int(s.V-0.75*s.R)-4, fmt.Sprint(i+1), ink{255, 220, 0})
 	}
-	title := fmt.Sprintf("bob %q: %s", e.Bob, e.Reason)
-	label(img, 8, 18, title)
-	e.Picture = img
-}
-
-// ring draws a circle two pixels wide with a dark rim, so that it shows on
-// anything.
-func ring(img *image.RGBA, u, v, r float64, c color.RGBA) {
-	for y := int(v - r - 4); y <= int(v+r+4); y++ {
-		for x := int(u - r - 4); x <= int(u+r+4); x++ {
-			if !image.Pt(x, y).In(img.Rect) {
-				continue
-			}
-			d := math.Abs(math.Hypot(float64(x)-u, float64(y)-v) - r)
-			switch {
-			case d < 1:
-				img.SetRGBA(x, y, c)
-			case d < 2.2:
-				img.SetRGBA(x, y, color.RGBA{0, 0, 0, 255})
-			}
-		}
-	}
-}
-
-// label writes light words on a dark plate, enlarged on large pictures.
-func label(img *image.RGBA, x, y int, words string) {
-	face := basicfont.Face7x13
-	w := font.MeasureString(face, words).Ceil() + 6
-	plate := image.NewRGBA(image.Rect(0, 0, w, 17))
-	for i := 3; i < len(plate.Pix); i += 4 {
-		plate.Pix[i] = 255
-	}
-	d := font.Drawer{Dst: plate, Src: image.NewUniform(color.RGBA{255, 255, 255, 255}), Face: face, Dot: fixed.P(3, 12)}
-	d.DrawString(words)
-	k := max(min(img.Rect.Dx(), img.Rect.Dy())/500, 1)
-	x = min(max(x, 0), max(img.Rect.Dx()-k*w, 0))
-	y = min(max(y-12*k, 0), max(img.Rect.Dy()-17*k, 0))
-	for j := range 17 * k {
-		for i := range w * k {
-			if p := image.Pt(x+i, y+j); p.In(img.Rect) {
-				img.SetRGBA(p.X, p.Y, plate.RGBAAt(i/k, j/k))
-			}
-		}
-	}
+	c.label(8, 18, fmt.Sprintf("bob %q: %s", e.Bob, e.Reason), ink{255, 255, 255})
+	e.Picture = p.RGBA()
 }

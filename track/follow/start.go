@@ -49,7 +49,7 @@ func (f *follower) start(ctx context.Context, frame *clip.Frame) error {
 			b.samples = append(b.samples, track.Sample{Frame: frame.Index, T: frame.T, U: math.NaN(), V: math.NaN(), X: math.NaN(), Z: math.NaN()})
 		}
 		if f.frames+1 >= startFrames || frame.T > startTime || problem.certain {
-			return f.notFound()
+			return f.problem
 		}
 		return nil
 	}
