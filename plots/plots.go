@@ -59,8 +59,8 @@ func Curve(c *finding.Curve) (svg, png []byte, err error) {
 // record holds both for the same subject, the second is drawn as a lower panel
 // of the first.
 var stacks = []struct{ upper, lower string }{
-	{"decay.fit", "decay.residual"},
-	{"match.fit", "match.residual"},
+	{"decay-fit", "decay-residuals"},
+	{"match-fit", "match-residuals"},
 }
 
 // compose lists a record's drawings in the order in which the report shows

@@ -109,11 +109,11 @@ func swing() *record.Record {
 			Candidates:   []finding.Candidate{{Name: "viscous", BIC: 1301.2, Weight: 0.03}, {Name: "viscous and drag", BIC: 1294.1, Weight: 0.96999}, {Name: "dry", BIC: 4294, Weight: 0}},
 		}},
 		Curves: []finding.Curve{
-			{Key: "decay.fit", Subject: "arm", Title: "How the swing dies", Caption: "Measured angle and the fitted swing; below, their difference, which scatters by 0.011° as the pictures let expect.", X: clock, Y: angle, Lines: []finding.Line{data, fit}},
-			{Key: "decay.residual", Subject: "arm", Title: "Residual", X: clock, Y: finding.Axis{Label: "difference", Unit: "rad", ShowUnit: "°", ShowFactor: deg}, Lines: []finding.Line{res}},
-			{Key: "decay.envelope", Subject: "arm", Title: "Amplitude at each turning point", Caption: "Bars and band: 95 %.", X: clock, Y: finding.Axis{Label: "amplitude", Unit: "rad"}, Lines: []finding.Line{env, law, alt}},
-			{Key: "series.phase", Subject: "arm", Title: "Phase portrait", Caption: "Angle against angular speed.", X: angle, Y: finding.Axis{Label: "angular speed", Unit: "rad/s"}, Lines: []finding.Line{phase}},
-			{Key: "spectrum.psd", Subject: "arm", Title: "Spectrum", Caption: "Power at each frequency. The peak is the swing.", X: finding.Axis{Label: "frequency", Unit: "Hz"}, Y: finding.Axis{Label: "power", Unit: "rad²/Hz", Log: true}, Lines: []finding.Line{spec, {Name: "noise", Role: finding.Guide, X: []float64{0, 30}, Y: []float64{1.2e-7, 1.2e-7}}}},
+			{Key: "decay-fit", Subject: "arm", Title: "How the swing dies", Caption: "Measured angle and the fitted swing; below, their difference, which scatters by 0.011° as the pictures let expect.", X: clock, Y: angle, Lines: []finding.Line{data, fit}},
+			{Key: "decay-residuals", Subject: "arm", Title: "Residual", X: clock, Y: finding.Axis{Label: "difference", Unit: "rad", ShowUnit: "°", ShowFactor: deg}, Lines: []finding.Line{res}},
+			{Key: "decay-envelope", Subject: "arm", Title: "Amplitude at each turning point", Caption: "Bars and band: 95 %.", X: clock, Y: finding.Axis{Label: "amplitude", Unit: "rad"}, Lines: []finding.Line{env, law, alt}},
+			{Key: "phase", Subject: "arm", Title: "Phase portrait", Caption: "Angle against angular speed.", X: angle, Y: finding.Axis{Label: "angular speed", Unit: "rad/s"}, Lines: []finding.Line{phase}},
+			{Key: "spectrum", Subject: "arm", Title: "Spectrum", Caption: "Power at each frequency. The peak is the swing.", X: finding.Axis{Label: "frequency", Unit: "Hz"}, Y: finding.Axis{Label: "power", Unit: "rad²/Hz", Log: true}, Lines: []finding.Line{spec, {Name: "noise", Role: finding.Guide, X: []float64{0, 30}, Y: []float64{1.2e-7, 1.2e-7}}}},
 		},
 	}
 }

@@ -1,0 +1,109 @@
+package analyze
+
+import (
+	"fmt"
+	"math"
+	"strings"
+
+	"lodeswing/analyze/finding"
+	"lodeswing/track/rig"
+)
+
+// headline sums a record up in a few plain sentences.
+func headline(w *work) string {
+	var out []string
+	for _, d := range w.decays {
+		if d.Found {
+			out = append(out, decayWords(w, d.Part, d.Decided, d.Law))
+		}
+	}
+	for i := range w.angles {
+		part := w.angles[i].Part
+		if w.rec.Find("decay.period_zero", part) != nil {
+			continue
+		}
+		if f := w.rec.Find("spectrum.line1.frequency", part); f != nil {
+			out = append(out, fmt.Sprintf("“%s” moves mainly at %s. No free decay could be read from this clip%s.", part, inWords(f), whyNot(w, part)))
+		}
+	}
+	if len(out) == 0 {
+		if w.track != nil {
+			n := 0
+			for i := range w.track.Bobs {
+				n += len(w.track.Bobs[i].Usable())
+			}
+			return fmt.Sprintf("%d positions were measured, but no period or damping could be read from them; the findings say why.", n)
+		}
+		return "No period or damping could be read from this table; the findings say why."
+	}
+	const most = 3
+	if n := len(out); n > most {
+		out = append(out[:most], fmt.Sprintf("%d more parts are in the findings.", n-most))
+	}
+	return strings.Join(out, " ")
+}
+
+func decayWords(w *work, part string, decided bool, law string) string {
+	var b strings.Builder
+	if f := w.rec.Find("decay.period_zero", part); f != nil {
+		fmt.Fprintf(&b, "“%s” swings once every %s in small swings.", part, inWords(f))
+	}
+	if f := w.rec.Find("decay.log_decrement", part); f != nil && f.Kind == finding.Measured {
+		loss, u := 1-math.Exp(-f.Value), f.U*math.Exp(-f.Value)
+		at := ""
+		if _, after, ok := strings.Cut(f.Name, " at an amplitude of "); ok {
+			at = ", at " + after
+		}
+		shown := finding.DisplayValue(100*loss, 100*u, "1")
+		fmt.Fprintf(&b, " Left alone it loses %s %% (± %s) of its swing each time%s", shown.Value, shown.U, at)
+		if q := w.rec.Find("decay.q", part); q != nil && q.Kind == finding.Measured {
+			fmt.Fprintf(&b, ", a quality factor Q of %s", inWords(q))
+		}
+		b.WriteString(".")
+	}
+	if decided {
+		fmt.Fprintf(&b, " The friction is %s.", law)
+	} else {
+		b.WriteString(" Which friction it is could not be decided.")
+	}
+	return strings.TrimSpace(b.String())
+}
+
+// inWords writes a finding as "1.0634 s (± 0.0001 s)".
+func inWords(f *finding.Finding) string {
+	s := f.Display()
+	unit := ""
+	if s.Unit != "" {
+		unit = " " + s.Unit
+	}
+	if s.U == "" || s.Power != 0 {
+		return s.String()
+	}
+	return fmt.Sprintf("%s%s (± %s%s)", s.Value, unit, s.U, unit)
+}
+
+func whyNot(w *work, part string) string {
+	f := w.rec.Find("decay.free_decay", part)
+	if f == nil || f.Text == "" {
+		return ""
+	}
+	why := strings.TrimSuffix(f.Text, ".")
+	why = strings.TrimPrefix(why, "Not looked for: ")
+	return ": " + why
+}
+
+// safety is the usual cautions about what the rig says the toy is made of.
+func safety(r *rig.Rig) []string {
+	var out []string
+	if len(r.Magnets) > 0 {
+		out = append(out,
+			"Strong magnets must not be swallowed: two of them can close on the bowel. Keep them from small children, and from people with medical implants such as pacemakers and defibrillators. They pinch fingers and shatter when they meet.",
+			"Whether a toy with magnets may be sold is for an accredited laboratory to say, under local law.")
+	}
+	if len(r.Coils) > 0 {
+		out = append(out,
+			"Button cells and 9 V blocks must be out of children's reach: a swallowed cell burns within hours. Get medical help at once.",
+			"A kicked swing often hangs on needle points: they are sharp.")
+	}
+	return out
+}

@@ -1,0 +1,204 @@
+package analyze
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"slices"
+
+	"lodeswing/analyze/decay"
+	"lodeswing/analyze/finding"
+	"lodeswing/analyze/record"
+	"lodeswing/analyze/series"
+	"lodeswing/analyze/spectrum"
+	"lodeswing/track"
+)
+
+const degree = math.Pi / 180
+
+// angles turns the track, or the tables, into angle series.
+func angles(_ context.Context, w *work) error {
+	var all []series.Angle
+	var err error
+	if w.track != nil {
+		all, err = series.FromTrack(w.track, w.rig)
+	} else {
+		all, err = fromTables(w.tables)
+	}
+	have := map[string]bool{}
+	for _, a := range all {
+		if a.Problem != "" {
+			subject := a.Part
+			if subject == "" {
+				subject = a.Bob
+			}
+			w.undecided("series.angle", subject, "Angle", a.Problem, "direction from the pivot to the bob")
+			err = nil // said, in the words of the bob that it is about
+			continue
+		}
+		if !have[a.Part] { // a second bob on the same part tells the same
+			have[a.Part] = true
+			w.angles = append(w.angles, a)
+		}
+	}
+	if err != nil {
+		return err
+	}
+	for i := range w.angles {
+		a := &w.angles[i]
+		w.rec.Angles = append(w.rec.Angles, record.Angles{
+			Part: a.Part, T: a.T, Angle: a.Angle, U: a.UAngle, Rate: a.Rate, URate: a.URate,
+		})
+		w.caution(a.Part, a.Cautions...)
+		if words := gaps(a); words != "" {
+			w.rec.Cautions = append(w.rec.Cautions, words)
+		}
+		if a.Pivot.From != "" && a.Pivot.R > 0 && !a.Pivot.Moves {
+			f := finding.Normal("series.radius", a.Part, fmt.Sprintf("Distance of “%s” from the pivot", a.Bob), a.Pivot.R, a.Pivot.UR, "m", a.Pivot.From)
+			if w.track != nil {
+				scale := w.track.Cal.UScale * a.Pivot.R
+				rest := math.Sqrt(math.Max(0, a.Pivot.UR*a.Pivot.UR-scale*scale))
+				f.Budget = []finding.Share{{Source: "pictures", U: rest}, {Source: "scale", U: scale}}
+			}
+			w.rec.Findings = append(w.rec.Findings, f)
+		}
+	}
+	return nil
+}
+
+func fromTables(tables []record.Angles) ([]series.Angle, error) {
+	var all []series.Angle
+	var first error
+	for _, t := range tables {
+		u := t.U
+		if slices.ContainsFunc(u, math.IsNaN) {
+			u = nil
+		}
+		a, err := series.FromTable(t.Part, t.T, t.Angle, u)
+		if err != nil {
+			a.Problem = err.Error()
+			if first == nil {
+				first = err
+			}
+		}
+		all = append(all, a)
+	}
+	return all, first
+}
+
+// gaps says in one sentence where a series has no samples; empty when it has none.
+func gaps(a *series.Angle) string {
+	if len(a.Gaps) == 0 {
+		return ""
+	}
+	total, longest := 0.0, a.Gaps[0]
+	for _, g := range a.Gaps {
+		total += g.ToS - g.FromS
+		if g.ToS-g.FromS > longest.ToS-longest.FromS {
+			longest = g
+		}
+	}
+	if len(a.Gaps) == 1 {
+		return fmt.Sprintf("“%s” was not measured from %.2f s to %.2f s (%s); nothing was filled in.", a.Bob, longest.FromS, longest.ToS, longest.Why)
+	}
+	return fmt.Sprintf("“%s” was not measured in %d gaps, %.2f s in all, the longest from %.2f s to %.2f s (%s); nothing was filled in.",
+		a.Bob, len(a.Gaps), total, longest.FromS, longest.ToS, longest.Why)
+}
+
+// decays looks for the free decay of each part.
+func decays(ctx context.Context, w *work) error {
+	for i := range w.angles {
+		a := &w.angles[i]
+		res, err := decay.Analyze(ctx, *a, decay.OptionsFor(w.rig, a.Part, a.Bob, w.clip))
+		if ctx.Err() != nil {
+			return ctx.Err()
+		}
+		if err != nil {
+			w.undecided("decay.free_decay", a.Part, "Free decay", err.Error(), "fit of a damped swing")
+			w.motion(a)
+			continue
+		}
+		w.decays = append(w.decays, res)
+		w.rec.Findings = append(w.rec.Findings, res.Findings...)
+		w.rec.Fits = append(w.rec.Fits, res.Fits...)
+		w.rec.Curves = append(w.rec.Curves, res.Curves...)
+		w.caution(a.Part, res.Cautions...)
+		if !res.Found {
+			w.motion(a)
+		}
+	}
+	return nil
+}
+
+// motion adds the plain curves of a part that no free decay explains: angle over
+// time and the phase portrait.
+func (w *work) motion(a *series.Angle) {
+	angle := finding.Axis{Label: "angle", Unit: "rad", ShowUnit: "°", ShowFactor: 1 / degree}
+	t, y := a.Broken(a.Angle)
+	u := a.UAngle[len(a.UAngle)/2]
+	w.rec.Curves = append(w.rec.Curves, finding.Curve{
+		Key: "angle", Subject: a.Part, Title: "Angle over time", X: finding.Axis{Label: "time", Unit: "s"}, Y: angle,
+		Caption: fmt.Sprintf("The measured angle; one sample's standard uncertainty is %s.", finding.DisplayValue(0, u, "rad").U+"°"),
+		Lines:   []finding.Line{{Name: "measured", Role: finding.Data, X: t, Y: y}},
+	})
+	_, rate := a.Broken(a.Rate)
+	w.rec.Curves = append(w.rec.Curves, finding.Curve{
+		Key: "phase", Subject: a.Part, Title: "Phase portrait", X: angle,
+		Y:       finding.Axis{Label: "rate", Unit: "rad/s", ShowUnit: "°/s", ShowFactor: 1 / degree},
+		Caption: "Rate against angle. A steady swing draws one closed loop.",
+		Lines:   []finding.Line{{Name: "measured", Role: finding.Data, X: y, Y: rate}},
+	})
+}
+
+// spectra finds the spectral lines of each part's angle, and of the sideways
+// motion of each bob that gives no angle.
+func spectra(ctx context.Context, w *work) error {
+	told := map[string]bool{}
+	for i := range w.angles {
+		a := &w.angles[i]
+		told[a.Bob] = true
+		w.spectrum(a.Part, a.T, a.Angle, a.UAngle, spectrum.Options{
+			UClock: a.UClock, Unit: "rad", Quantity: "angle", ShowUnit: "°", ShowFactor: 1 / degree,
+		})
+		if ctx.Err() != nil {
+			return ctx.Err()
+		}
+	}
+	if w.track == nil {
+		return nil
+	}
+	for i := range w.track.Bobs {
+		b := &w.track.Bobs[i]
+		if told[b.Name] || w.tellsPart(b) {
+			continue
+		}
+		var t, x, u []float64
+		for _, s := range b.Usable() {
+			ux, _ := s.Plane.Sigmas()
+			t, x, u = append(t, s.T), append(x, s.X), append(u, ux)
+		}
+		w.spectrum(b.Name, t, x, u, spectrum.Options{
+			UClock: w.track.Cal.UClock, UScale: w.track.Cal.UScale, Unit: "m", Quantity: "sideways motion", ShowUnit: "mm", ShowFactor: 1e3,
+		})
+		if ctx.Err() != nil {
+			return ctx.Err()
+		}
+	}
+	return nil
+}
+
+// tellsPart tells whether a bob sits on a part whose angle is already known.
+func (w *work) tellsPart(b *track.Bob) bool {
+	return b.Part != "" && slices.ContainsFunc(w.angles, func(a series.Angle) bool { return a.Part == b.Part })
+}
+
+func (w *work) spectrum(subject string, t, y, u []float64, opt spectrum.Options) {
+	s, err := spectrum.Compute(t, y, u, opt)
+	if err != nil {
+		w.undecided("spectrum.lines", subject, "Spectral lines", err.Error(), "spectrum on the true sample times")
+		return
+	}
+	w.rec.Findings = append(w.rec.Findings, s.Findings(subject)...)
+	w.rec.Curves = append(w.rec.Curves, s.Curve(subject))
+	w.caution(subject, s.Cautions...)
+}
