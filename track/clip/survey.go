@@ -46,7 +46,7 @@ type Surveyor struct {
 	step       int // the thin grid takes every step-th pixel both ways
 	gw, gh     int
 	now, prior []uint8 // thin grids of grey values
-	most       []uint8 // brightest that each grid pixel ever was
+	dark       [4][]int // black grid columns and rows at left, right, top, bottom, in some frames
 	over, under, total,
 	sum float64
 	bright []float64
@@ -67,12 +67,15 @@ func NewSurveyor(facts *Facts) *Surveyor {
 func (s *Surveyor) Observe(f *Frame) {
 	if s.now == nil {
 		s.gw, s.gh = (f.W+s.step-1)/s.step, (f.H+s.step-1)/s.step
-		s.now, s.prior, s.most = make([]uint8, s.gw*s.gh), make([]uint8, s.gw*s.gh), make([]uint8, s.gw*s.gh)
+		s.now, s.prior = make([]uint8, s.gw*s.gh), make([]uint8, s.gw*s.gh)
 	}
 	s.now, s.prior = s.prior, s.now
 	s.thin(f)
 	if s.frames > 0 {
 		s.difference()
+	}
+	if s.frames%10 == 0 {
+		s.darkSides()
 	}
 	s.edges.observe(f, s.facts.TrueRate)
 	s.frames++
@@ -94,7 +97,6 @@ func (s *Surveyor) thin(f *Frame) {
 				s.under++
 			}
 			s.now[i] = uint8(grey)
-			s.most[i] = max(s.most[i], uint8(grey))
 			sum += grey
 			i++
 		}
@@ -189,43 +191,51 @@ func flicker(b []float64) float64 {
 	return median(d) / 0.6745 * math.Sqrt(2.0/3)
 }
 
-// bars looks for rows and columns about the picture that are black in every
-// frame.
-func (s *Surveyor) bars() Bars {
-	dark := func(row bool, k int) bool {
-		n, step, at := s.gw, 1, k*s.gw
-		if !row {
-			n, step, at = s.gh, s.gw, k
-		}
+// darkSides counts the black columns and rows about the latest frame.
+func (s *Surveyor) darkSides() {
+	dark := func(first, n, step int) bool {
 		for i := 0; i < n; i++ {
-			if s.most[at+i*step] > 26 {
+			if s.now[first+i*step] > 26 {
 				return false
 			}
 		}
 		return true
 	}
-	run := func(row, fromEnd bool) int {
-		n := s.gw
-		if row {
-			n = s.gh
-		}
+	count := func(n int, isDark func(k int) bool) int {
 		k := 0
-		for k < n/2 {
-			at := k
-			if fromEnd {
-				at = n - 1 - k
-			}
-			if !dark(row, at) {
-				break
-			}
+		for k < n/2 && isDark(k) {
 			k++
 		}
-		if k*50 < n { // under 2 %: a dark edge, no bar
-			return 0
-		}
-		return k * s.step
+		return k
 	}
-	l, r, t, b := run(false, false), run(false, true), run(true, false), run(true, true)
+	column := func(k int) bool { return dark(k, s.gh, s.gw) }
+	row := func(k int) bool { return dark(k*s.gw, s.gw, 1) }
+	for side, n := range [4]int{
+		count(s.gw, column), count(s.gw, func(k int) bool { return column(s.gw - 1 - k) }),
+		count(s.gh, row), count(s.gh, func(k int) bool { return row(s.gh - 1 - k) }),
+	} {
+		s.dark[side] = append(s.dark[side], n)
+	}
+}
+
+// bars gives the black bars that most frames have; a caption may lie in them now
+// and then.
+func (s *Surveyor) bars() Bars {
+	var side [4]int
+	for i, d := range s.dark {
+		x := make([]float64, len(d))
+		for k, n := range d {
+			x[k] = float64(n)
+		}
+		n := s.gw
+		if i >= 2 {
+			n = s.gh
+		}
+		if m := int(median(x)); m*50 >= n { // less is a dark edge, no bar
+			side[i] = m * s.step
+		}
+	}
+	l, r, t, b := side[0], side[1], side[2], side[3]
 	// Bars come in pairs; one alone is a dark thing at the picture's edge.
 	if l == 0 || r == 0 {
 		l, r = 0, 0

@@ -164,7 +164,7 @@ func shutter(f *clip.Facts, s *clip.Survey) Advice {
 	case s.ExposureLess:
 		a.Seen = fmt.Sprintf("Exposure below %s: the fastest edges (%.1f px per frame) show no smear.", part(*s.ExposureS), s.SpeedPX)
 	default:
-		a.Seen = fmt.Sprintf("Exposure about %s (± %.0f %%); the fastest edges move %.1f px per frame and smear over %.1f px.", part(*s.ExposureS), 100*s.UExposureS/ *s.ExposureS, s.SpeedPX, s.BlurPX)
+		a.Seen = fmt.Sprintf("Exposure about %s (± %.0f %%); the fastest edges move %.1f px per frame and smear over %.1f px.", part(*s.ExposureS), 100*s.UExposureS / *s.ExposureS, s.SpeedPX, s.BlurPX)
 		if s.BlurPX > 6 {
 			a.State, a.Do = Improve, "Set the shutter to 1/500 s or shorter and add light until the picture is bright again, or film with more frames/s."
 		}

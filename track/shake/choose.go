@@ -88,6 +88,46 @@ func choose(f *clip.Frame, avoid []image.Rectangle, noise float64, buf *buffers)
 	return out
 }
 
+// bars returns the black bars about a picture that a program framed anew: they
+// stand still whatever the camera does. Stretches of rows or columns count that
+// are black from end to end.
+func bars(f *clip.Frame, buf *buffers) []image.Rectangle {
+	w, h := f.Size()
+	dark := func(r image.Rectangle) bool {
+		f.Patch(&buf.patch, r)
+		for i := 0; i < len(buf.patch.BGR); i += 3 * 5 { // every fifth pixel
+			if buf.patch.BGR[i+1] > 26 {
+				return false
+			}
+		}
+		return true
+	}
+	l, r, t, b := 0, w, 0, h
+	for l < w/2 && dark(image.Rect(l, 0, l+1, h)) {
+		l++
+	}
+	for r > w/2 && dark(image.Rect(r-1, 0, r, h)) {
+		r--
+	}
+	for t < h/2 && dark(image.Rect(0, t, w, t+1)) {
+		t++
+	}
+	for b > h/2 && dark(image.Rect(0, b-1, w, b)) {
+		b--
+	}
+	var out []image.Rectangle
+	add := func(r image.Rectangle) {
+		if !r.Empty() {
+			out = append(out, r.Inset(-3)) // the codec softens a bar's edge
+		}
+	}
+	add(image.Rect(0, 0, l, h))
+	add(image.Rect(r, 0, w, h))
+	add(image.Rect(0, 0, w, t))
+	add(image.Rect(0, b, w, h))
+	return out
+}
+
 // covered tells whether a patch about (u, v) touches an avoided rectangle.
 func covered(u, v int, avoid []image.Rectangle) bool {
 	patch := image.Rect(u-half-1, v-half-1, u+half+2, v+half+2)
@@ -107,6 +147,10 @@ func greyRow(f *clip.Frame, v int, out []int, buf *buffers) {
 		out[u] = int(q[0]) + 2*int(q[1]) + int(q[2])
 	}
 }
+
+// leastNoise is taken, in grey levels, where a codec has smoothed a picture's
+// noise away: what it leaves is not to be trusted to less.
+const leastNoise = 0.8
 
 // noiseOf estimates a frame's noise, grey levels r.m.s., from the second
 // differences that a smooth picture lacks (Immerkær, CVIU 64, 1996), with the
@@ -137,7 +181,7 @@ func noiseOf(f *clip.Frame, buf *buffers) float64 {
 		seen += k
 		if 2*seen >= n {
 			// The mask's weights have the length 6; greys are four times too large.
-			return math.Max(1.4826*(float64(d)+0.5)/6/4, 0.2)
+			return math.Max(1.4826*(float64(d)+0.5)/6/4, leastNoise)
 		}
 	}
 	return 1

@@ -26,7 +26,7 @@ type fitted struct {
 	similarity
 	u, uz  float64 // standard uncertainty of a and b, and of z and r
 	used   int
-	spread float64 // r.m.s. of the used shifts about the fit, per axis
+	spread float64 // r.m.s. of the used shifts about the fit, per axis, weighted
 	in     []bool
 }
 
@@ -156,10 +156,10 @@ func leastSquares(shifts []shift, in []bool) (f fitted, ok bool) {
 	for i, s := range shifts {
 		if in == nil || in[i] {
 			u, v := f.at(s.x, s.y)
-			sq += (u-s.du)*(u-s.du) + (v-s.dv)*(v-s.dv)
+			sq += ((u-s.du)*(u-s.du) + (v-s.dv)*(v-s.dv)) / (s.u * s.u)
 		}
 	}
-	f.spread = math.Sqrt(sq / float64(max(2*f.used-4, 1)))
+	f.spread = math.Sqrt(sq / sw * float64(f.used) / float64(max(2*f.used-4, 1)))
 	f.in = in
 	return f, true
 }

@@ -108,15 +108,7 @@ func (r *Report) sumUp() {
 			}
 		}
 	}
-	var fast float64
-	for i := 1; i+1 < n; i++ {
-		a, b, c := &r.Motions[i-1], &r.Motions[i], &r.Motions[i+1]
-		x := (b.T - a.T) / (c.T - a.T)
-		du, dv := b.DU-a.DU-x*(c.DU-a.DU), b.DV-a.DV-x*(c.DV-a.DV)
-		excess := du*du + dv*dv - 2*b.U*b.U*(1+(1-x)*(1-x)+x*x)
-		fast += excess
-	}
-	r.FastPX = math.Sqrt(math.Max(fast, 0) / float64(max(n-2, 1)))
+	r.FastPX = r.fast()
 
 	turns, zooms, spreads := make([]float64, n), make([]float64, n), make([]float64, n)
 	for i, m := range r.Motions {
@@ -126,13 +118,45 @@ func (r *Report) sumUp() {
 	r.TurnRad = (hi - lo) / 2
 	// Focus and warming change the scale slowly; means over a second keep that
 	// and lose the noise.
-	slow := smooth(zooms, perSecond)
-	lo, hi = ends(slow)
+	perS := 1.0
+	if d := r.Motions[n-1].T - r.Motions[0].T; d > 0 {
+		perS = math.Max(1, float64(n-1)/d)
+	}
+	lo, hi = ends(smooth(zooms, int(perS)))
 	r.Zoom = hi - lo
-	r.UZoom = 2 * r.Motions[n/2].UZoom / math.Sqrt(perSecond)
+	r.UZoom = 2 * r.Motions[n/2].UZoom / math.Sqrt(perS)
 	sort.Float64s(spreads)
 	quiet, worst := spreads[max(n/10, 1)], spreads[n-1-n/10] // the first frame's is 0
 	r.WarpPX = math.Sqrt(math.Max(worst*worst-quiet*quiet, 0))
+}
+
+// fast is the r.m.s. distance of the picture's centre from its mean place in the
+// second around, less what noise explains. Slow parts of a motion drop out.
+func (r *Report) fast() float64 {
+	m := r.Motions
+	var sum float64
+	n, lo, hi := 0, 0, 0
+	for i := range m {
+		for m[i].T-m[lo].T > 0.5 {
+			lo++
+		}
+		for hi < len(m) && m[hi].T-m[i].T <= 0.5 {
+			hi++
+		}
+		if m[i].T-m[0].T < 0.5 || m[len(m)-1].T-m[i].T < 0.5 || hi-lo < 3 {
+			continue
+		}
+		var du, dv float64
+		for _, k := range m[lo:hi] {
+			du += k.DU
+			dv += k.DV
+		}
+		k := float64(hi - lo)
+		du, dv = m[i].DU-du/k, m[i].DV-dv/k
+		sum += du*du + dv*dv - 2*m[i].U*m[i].U*(1-1/k)
+		n++
+	}
+	return math.Sqrt(math.Max(sum, 0) / float64(max(n, 1)))
 }
 
 // judge puts the cautions.
@@ -152,7 +176,7 @@ func (r *Report) judge(lastLost float64) {
 	if moved {
 		switch {
 		case r.FastPX > moveLimit/2:
-			say("The still background moves by up to %.2g px, too fast to be taken out: the camera was held by hand or shaken, or electronic stabilisation was on. Use a tripod and switch stabilisation off.", r.MovePX)
+			say("The still background moves by up to %.2g px and fast: the camera was held by hand or shaken, or electronic stabilisation was on. Use a tripod and switch stabilisation off; what is measured here is the less sure for it.", r.MovePX)
 		case !breathes:
 			say("The still background drifts slowly by up to %.2g px: the camera sagged or was touched.", r.MovePX)
 		}
@@ -160,14 +184,14 @@ func (r *Report) judge(lastLost float64) {
 }
 
 // Correct returns where a point of the picture, seen at (u, v) at time t, would
-// have been seen by a camera that had stayed where it was in the first observed
-// frame. ok is false where the background was not measured around t, or moved
-// too fast between looks for a straight line between them to hold. It is right
-// for a camera that turns or breathes; one that shifts sideways moves near
-// things more than the wall behind them.
+// have been seen by a camera that had stayed where it was in the first frame.
+// ok is false, and the point unchanged, where the background was not measured
+// within a second of t. The correction is right for a camera that turns or
+// breathes; one that shifts sideways moves near things more than the wall behind
+// them.
 func (r *Report) Correct(t, u, v float64) (u2, v2 float64, ok bool) {
 	n := len(r.Motions)
-	if n < 3 || r.FastPX > moveLimit/2 || t < r.Motions[0].T-1 || t > r.Motions[n-1].T+1 {
+	if n < 3 || t < r.Motions[0].T-1 || t > r.Motions[n-1].T+1 {
 		return u, v, false
 	}
 	i := sort.Search(n, func(i int) bool { return r.Motions[i].T >= t })
@@ -179,7 +203,7 @@ func (r *Report) Correct(t, u, v float64) (u2, v2 float64, ok bool) {
 		s = r.Motions[n-1].similarity()
 	default:
 		a, b := &r.Motions[i-1], &r.Motions[i]
-		if b.T-a.T > 1 {
+		if t-a.T > 1 && b.T-t > 1 {
 			return u, v, false
 		}
 		x := (t - a.T) / (b.T - a.T)

@@ -40,6 +40,16 @@ var (
 	baseMark  = rig.Mark{Name: "foot", On: "base", PX: []float64{200, 240}}
 )
 
+// grain is normal noise of standard deviation 1.
+var grain = func() []float64 {
+	rng := rand.New(rand.NewSource(99))
+	x := make([]float64, 1<<17)
+	for i := range x {
+		x[i] = rng.NormFloat64()
+	}
+	return x
+}()
+
 func (s *scene) frame(index int, t float64) *clip.Frame {
 	plane := make([]float64, s.w*s.h)
 	for i := range plane {
@@ -60,7 +70,9 @@ func (s *scene) frame(index int, t float64) *clip.Frame {
 		for y := max(int(v)-r, 0); y <= min(int(v)+r, s.h-1); y++ {
 			for x := max(int(u)-r, 0); x <= min(int(u)+r, s.w-1); x++ {
 				d := ((float64(x)-u)*(float64(x)-u) + (float64(y)-v)*(float64(y)-v)) / (2 * radius * radius)
-				plane[y*s.w+x] += height * math.Exp(-d)
+				if d < 9 {
+					plane[y*s.w+x] += height * math.Exp(-d)
+				}
 			}
 		}
 	}
@@ -78,8 +90,8 @@ func (s *scene) frame(index int, t float64) *clip.Frame {
 	add(bu, bv, -110, 3)
 	if s.bob != nil {
 		u, v := s.bob(t)
-		for y := 0; y < s.h; y++ {
-			for x := 0; x < s.w; x++ {
+		for y := max(int(v)-28, 0); y < min(int(v)+28, s.h); y++ {
+			for x := max(int(u)-28, 0); x < min(int(u)+28, s.w); x++ {
 				d := math.Hypot(float64(x)-u, float64(y)-v)
 				k := 1 / (1 + math.Exp((d-18)/0.7))
 				plane[y*s.w+x] = plane[y*s.w+x]*(1-k) + 30*k
@@ -87,10 +99,14 @@ func (s *scene) frame(index int, t float64) *clip.Frame {
 		}
 	}
 	f := clip.NewFrame(index, t, s.w, s.h)
-	for i, g := range plane {
-		for c := 0; c < 3; c++ {
-			x := g + s.noise*s.rng.NormFloat64()
-			f.Pix[3*i+c] = byte(math.Max(0, math.Min(255, math.Round(x))))
+	// Noise from a long table, read from a place drawn anew for each row.
+	for y := 0; y < s.h; y++ {
+		noise := grain[s.rng.Intn(len(grain)-3*s.w):]
+		for x := 0; x < s.w; x++ {
+			g := plane[y*s.w+x] + 0.5
+			for c := 0; c < 3; c++ {
+				f.Pix[3*(y*s.w+x)+c] = byte(max(0, min(255, g+s.noise*noise[3*x+c])))
+			}
 		}
 	}
 	return f

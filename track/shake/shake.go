@@ -6,7 +6,8 @@
 // pixels of the upright picture (u right, v down), radians clockwise as seen.
 //
 // It looks at a few frames a second only and at small patches of them, so it
-// costs a follower next to nothing.
+// costs a follower next to nothing; while the camera shakes it looks at every
+// frame, which costs a quarter to half a millisecond each.
 package shake
 
 import (
@@ -56,15 +57,18 @@ type Watch struct {
 	facts  *clip.Facts
 	marks  []*MarkMotion
 	avoid  []image.Rectangle
-	wanted map[int]bool // nil: every frame
+	wanted map[int]bool // what is looked at while all is calm
 
 	started  bool
 	noise    float64
 	patches  []*template
+	thumb    *thumb
 	wide     []*template // the same places, coarse, for large moves; nil where they do not fit
 	seen     int
 	lost     int // observed frames in which the background was not found
 	lastLost float64
+	calm     Motion // where the background was when it last was at rest
+	restless int    // looks to go until the camera counts as still again
 	motions  []Motion
 	last     similarity
 	shifts   []shift
@@ -97,12 +101,35 @@ func New(facts *clip.Facts, marks []rig.Mark, avoid []image.Rectangle) *Watch {
 	return w
 }
 
-// EveryFrame makes the Watch look at every frame, which costs about 0.5 ms each
-// and lets Steady.Correct follow a hand's tremor.
-func (w *Watch) EveryFrame() { w.wanted = nil }
-
 // Wants tells whether Observe would look at the frame of this index.
-func (w *Watch) Wants(index int) bool { return w.wanted == nil || w.wanted[index] }
+func (w *Watch) Wants(index int) bool {
+	return w.restless > 0 || w.wanted[index] || index < 4
+}
+
+// restlessPX is how far the background may go from one look to the next, in
+// pixels, before every frame is looked at.
+const restlessPX = 0.3
+
+// mind decides from the latest motion whether to look at every frame: as soon
+// as the background has gone far from where it was when all was calm, and for as
+// long as it has not stayed in one place for a second.
+func (w *Watch) mind(m *Motion) {
+	far := 0.0
+	for _, c := range corners {
+		x, y := c[0]*float64(w.facts.W), c[1]*float64(w.facts.H)
+		u1, v1 := m.similarity().at(x, y)
+		u0, v0 := w.calm.similarity().at(x, y)
+		far = math.Max(far, math.Hypot(u1-u0, v1-v0)-4*math.Hypot(m.U, m.UZoom*math.Hypot(x, y)))
+	}
+	switch {
+	case far > restlessPX:
+		w.calm, w.restless = *m, max(10, int(w.facts.TrueRate))
+	case w.restless > 0:
+		w.restless--
+	default:
+		w.calm = *m // a slow drift is no restlessness
+	}
+}
 
 // Observe looks at a frame, cheaply, and does nothing for frames that it does
 // not want. Frames come in order.
@@ -118,6 +145,7 @@ func (w *Watch) Observe(f *clip.Frame) {
 	m, ok := w.background(f)
 	if ok {
 		w.motions = append(w.motions, m)
+		w.mind(&m)
 	} else if len(w.patches) > 0 {
 		w.lost++
 		w.lastLost = f.T
@@ -131,7 +159,10 @@ func (w *Watch) Observe(f *clip.Frame) {
 func (w *Watch) start(f *clip.Frame) {
 	w.started, w.seen = true, 1
 	w.noise = noiseOf(f, &w.buf)
-	w.patches = choose(f, w.avoid, w.noise, &w.buf)
+	avoid := append(bars(f, &w.buf), w.avoid...)
+	w.patches = choose(f, avoid, w.noise, &w.buf)
+	w.thumb = newThumb(f, &w.buf)
+	w.thumb.mask(avoid)
 	for _, t := range w.patches {
 		w.wide = append(w.wide, wideTemplate(f, t, &w.buf))
 	}
@@ -163,12 +194,20 @@ func (w *Watch) background(f *clip.Frame) (Motion, bool) {
 		return Motion{}, false
 	}
 	best, ok := w.look(f, w.last, false)
-	if !ok || 10*best.used < 6*len(w.patches) {
-		// It went far: coarsely first, then finely from there.
-		if rough, found := w.look(f, w.last, true); found {
-			if fine, found := w.look(f, rough.similarity, false); found && (!ok || fine.used > best.used) {
-				best, ok = fine, true
-			}
+	// When it went far: coarsely first, from where it was and from where the
+	// whole picture fits best, then finely from there.
+	for try := 0; try < 2 && (!ok || 10*best.used < 6*len(w.patches)); try++ {
+		guess := w.last
+		if try == 1 {
+			guess = similarity{}
+			guess.a, guess.b = w.thumb.shift(newThumb(f, &w.buf))
+		}
+		rough, found := w.look(f, guess, true)
+		if !found {
+			rough.similarity = guess
+		}
+		if fine, found := w.look(f, rough.similarity, false); found && (!ok || fine.used > best.used) {
+			best, ok = fine, true
 		}
 	}
 	if !ok {
@@ -205,7 +244,7 @@ func (w *Watch) look(f *clip.Frame, guess similarity, far bool) (fitted, bool) {
 		u := math.Hypot(float64(t.scale)*w.noise*math.Sqrt((t.inv[0]+t.inv[2])/2), 0.02*float64(t.scale))
 		w.shifts = append(w.shifts, shift{x: x, y: y, du: du, dv: dv, u: u})
 	}
-	if 2*len(w.shifts) < possible {
+	if len(w.shifts) < 3 || 10*len(w.shifts) < 3*possible {
 		return fitted{}, false
 	}
 	return fit(w.shifts)
