@@ -91,6 +91,21 @@ type Curve struct {
 	X       Axis   `json:"x"`
 	Y       Axis   `json:"y"`
 	Lines   []Line `json:"lines"`
+	// Grid, when not nil, is a picture of cells behind the lines: a recurrence
+	// plot, a spectrogram.
+	Grid *Grid `json:"grid,omitempty"`
+}
+
+// Grid is a picture of cells. X and Y hold the cells' middles in the curve's
+// units, evenly spaced; Z holds len(Y) rows of len(X) values, NaN where there is
+// none. Label says what Z is.
+type Grid struct {
+	X     []float64 `json:"x"`
+	Y     []float64 `json:"y"`
+	Z     []float64 `json:"z"`
+	Label string    `json:"label"`
+	Unit  string    `json:"unit"`
+	Log   bool      `json:"log,omitempty"` // Z is best shown by its logarithm
 }
 
 // Fit is the summary of one fit: what was free, what was held, what the data
