@@ -148,8 +148,7 @@ func (i *inspected) print(w io.Writer) error {
 		said += text
 		paragraph(&b, a.Topic, text)
 	}
-	for _, words := range append(append([]string{}, f.Warnings...), i.Background.Cautions...) {
-		// Most are in the advice already, in the same words.
+	for _, words := range f.Warnings { // most are in the advice already, in the same words
 		if !strings.Contains(said, words) {
 			paragraph(&b, "caution", words)
 		}

@@ -45,7 +45,7 @@ type Surveyor struct {
 
 	step       int // the thin grid takes every step-th pixel both ways
 	gw, gh     int
-	now, prior []uint8 // thin grids of grey values
+	now, prior []uint8  // thin grids of grey values
 	dark       [4][]int // black grid columns and rows at left, right, top, bottom, in some frames
 	over, under, total,
 	sum float64
@@ -142,6 +142,13 @@ func (s *Surveyor) Survey() *Survey {
 		}
 	}
 	v.Bars = s.bars()
+	if v.Bars.Any() { // they are no part of the picture's light
+		w, h := float64(s.facts.W), float64(s.facts.H)
+		inside := (1 - float64(v.Bars.Left+v.Bars.Right)/w) * (1 - float64(v.Bars.Top+v.Bars.Bottom)/h)
+		v.Brightness /= inside
+		v.OverShare /= inside
+		v.UnderShare = math.Max(0, v.UnderShare-(1-inside)) / inside
+	}
 	v.EdgePX, v.SpeedPX = s.edges.sharpness(), s.edges.fastest()
 	if e, u, less, ok := s.edges.exposure(); ok {
 		v.ExposureS, v.UExposureS, v.ExposureLess = &e, u, less

@@ -68,6 +68,11 @@ func file(f *clip.Facts, s *clip.Survey) Advice {
 	default:
 		a.Seen = "No phone's tags are in it, and no sign of a messenger or an upload."
 	}
+	for _, w := range f.Warnings {
+		if strings.Contains(w, "encoded anew") { // says all of it, and the bits
+			a.Seen, h.Poor = w, false
+		}
+	}
 	if h.Poor {
 		if a.State == Good {
 			a.State = Improve
@@ -109,7 +114,10 @@ func times(f *clip.Facts, s *clip.Survey) Advice {
 	if f.TrueRate > 0 {
 		step = 1 / f.TrueRate
 	}
-	a.Seen = fmt.Sprintf("Frame times vary by %.2g ms r.m.s.; each frame's own time is used.", 1e3*f.JitterS)
+	a.Seen = "Frames are evenly spaced; each frame's own time is used."
+	if f.JitterS > 1e-5 {
+		a.Seen = fmt.Sprintf("Frame times vary by %.2g ms r.m.s.; each frame's own time is used.", 1e3*f.JitterS)
+	}
 	if f.Numbered {
 		a.State, a.Seen = Unknown, "Pictures carry no times: they are as even as the rig's frames_per_s says."
 		a.Do = "Give a video file where you have one; it brings its own times."
@@ -162,7 +170,7 @@ func shutter(f *clip.Facts, s *clip.Survey) Advice {
 		a.Seen = "Nothing with clear edges moved fast enough to show the exposure."
 		a.Do = "Where the phone lets you, set the shutter to 1/500 s or shorter and add light until the picture is bright again."
 	case s.ExposureLess:
-		a.Seen = fmt.Sprintf("Exposure below %s: the fastest edges (%.1f px per frame) show no smear.", part(*s.ExposureS), s.SpeedPX)
+		a.Seen = fmt.Sprintf("Exposure not longer than %s: the fastest edges move %.1f px per frame and smear over less than %.1f px.", part(*s.ExposureS), s.SpeedPX, s.SpeedPX**s.ExposureS*f.TrueRate)
 	default:
 		a.Seen = fmt.Sprintf("Exposure about %s (± %.0f %%); the fastest edges move %.1f px per frame and smear over %.1f px.", part(*s.ExposureS), 100*s.UExposureS / *s.ExposureS, s.SpeedPX, s.BlurPX)
 		if s.BlurPX > 6 {
@@ -198,14 +206,14 @@ func focus(s *clip.Survey, r *Report) Advice {
 	default:
 		a.Seen = fmt.Sprintf("Sharp: still edges are blurred by %.1f px (standard deviation).", s.EdgePX)
 	}
-	if len(r.Motions) >= 3 {
-		if r.Zoom > zoomLimit && r.Zoom > 4*r.UZoom {
-			a.State = Bad
-			a.Seen += fmt.Sprintf(" The picture's scale changed by %.2g %% while filming: the focus moved.", 100*r.Zoom)
-			a.Do = "Lock focus and exposure before filming (on most phones: hold a finger on the toy)."
-		} else {
-			a.Seen += " It did not move while filming."
-		}
+	switch {
+	case len(r.Motions) < 3 || r.kind() == shaken:
+	case r.breathes():
+		a.State = Bad
+		a.Seen = fmt.Sprintf("The picture's scale changed by %.2g %% while filming: the focus moved. ", 100*r.Zoom) + a.Seen
+		a.Do = "Lock focus and exposure before filming (on most phones: hold a finger on the toy)."
+	default:
+		a.Seen += " It did not move while filming."
 	}
 	return a
 }
@@ -216,18 +224,21 @@ func camera(r *Report) Advice {
 	if len(r.Motions) < 3 {
 		return Advice{Topic: "camera", State: Unknown, Seen: r.Why, Do: do}
 	}
-	moved := r.MovePX > moveLimit && r.MovePX > 3*r.UMovePX
+	kind := r.kind()
 	switch {
 	case 10*r.Lost > r.Seen:
 		a.State, a.Do = Bad, do
 		a.Seen = fmt.Sprintf("The still background was lost in %d of %d frames looked at: the camera was moved, or something large passed before it.", r.Lost, r.Seen)
-	case r.WarpPX > warpLimit:
-		a.State, a.Do = Bad, do
-		a.Seen = fmt.Sprintf("The background bends by %.2g px from frame to frame, as electronic stabilisation does.", r.WarpPX)
-	case moved && r.FastPX > moveLimit/2:
+	case kind == shaken:
 		a.State, a.Do = Bad, do
 		a.Seen = fmt.Sprintf("The background moves by up to %.2g px and fast: hand-held, shaken, or electronic stabilisation.", r.MovePX)
-	case moved:
+		if r.WarpPX > warpLimit {
+			a.Seen += fmt.Sprintf(" It also bends by %.2g px: near and far things move differently, or stabilisation warps the picture.", r.WarpPX)
+		}
+	case kind == bending:
+		a.State, a.Do = Bad, do
+		a.Seen = fmt.Sprintf("The background bends by %.2g px from frame to frame, as electronic stabilisation makes it.", r.WarpPX)
+	case kind == drifting:
 		a.State, a.Do = Improve, do
 		a.Seen = fmt.Sprintf("The background drifts slowly by up to %.2g px: the camera sagged or was touched.", r.MovePX)
 	default:
@@ -258,7 +269,11 @@ func wall(r *Report) Advice {
 func base(r *Report) Advice {
 	const do = "To have it watched, stick a dark dot on the base and one on the stand or the wall, and name both as [[mark]] in the rig (on = \"base\", on = \"stand\")."
 	if r.Rock == nil {
-		return Advice{Topic: "base", State: Unknown, Seen: "Whether the base rocks was not measured.", Do: do}
+		a := Advice{Topic: "base", State: Unknown, Seen: "Whether the base rocks was not measured.", Do: do}
+		if len(r.marked) > 0 {
+			a.Seen, a.Do = strings.Join(r.marked, " "), "Correct the [[mark]]s in the rig, so that a base that rocks is noticed."
+		}
+		return a
 	}
 	a := Advice{Topic: "base", State: Good}
 	a.Seen = fmt.Sprintf("The base moves by %.2g ± %.1g px r.m.s. against %s.", r.Rock.PX, r.Rock.U, r.Rock.Against)

@@ -30,8 +30,10 @@ func pick(t *testing.T, all []Advice, topic string) Advice {
 
 func TestAdvice(t *testing.T) {
 	facts := func(change func(*clip.Facts)) *clip.Facts {
-		f := &clip.Facts{Codec: "h264", Profile: "High", W: 1920, H: 1080, TrueRate: 60, RateFactor: 1, BitRate: 17e6,
-			Times: make([]float64, 600), Tags: map[string]string{"com.android.version": "14"}}
+		f := &clip.Facts{
+			Codec: "h264", Profile: "High", W: 1920, H: 1080, TrueRate: 60, RateFactor: 1, BitRate: 17e6,
+			Times: make([]float64, 600), Tags: map[string]string{"com.android.version": "14"},
+		}
 		if change != nil {
 			change(f)
 		}
@@ -76,7 +78,7 @@ func TestAdvice(t *testing.T) {
 		{"light", Unknown, "No frame", facts(nil), nil, still(nil)},
 		{"shutter", Good, "about 1/70 s", facts(nil), good(nil), still(nil)},
 		{"shutter", Improve, "smear over 12.0 px", facts(nil), good(func(s *clip.Survey) { s.BlurPX = 12 }), still(nil)},
-		{"shutter", Good, "below 1/70 s", facts(nil), good(func(s *clip.Survey) { s.ExposureLess = true }), still(nil)},
+		{"shutter", Good, "not longer than 1/70 s", facts(nil), good(func(s *clip.Survey) { s.ExposureLess = true }), still(nil)},
 		{"shutter", Unknown, "moved fast enough", facts(nil), good(func(s *clip.Survey) { s.ExposureS = nil }), still(nil)},
 		{"focus", Good, "did not move", facts(nil), good(nil), still(nil)},
 		{"focus", Improve, "soft", facts(nil), good(func(s *clip.Survey) { s.EdgePX = 3 }), still(nil)},

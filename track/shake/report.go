@@ -26,7 +26,8 @@ type Report struct {
 	Why      string   `json:"why,omitempty"`  // why the background was not measured
 	Cautions []string `json:"cautions,omitempty"`
 
-	w, h int
+	marked []string // cautions about marks, also in Cautions
+	w, h   int
 }
 
 // Rock is how far the base moved against the stand, or, without a mark on the
@@ -55,14 +56,15 @@ func (w *Watch) Report() *Report {
 	for _, k := range w.marks {
 		switch {
 		case k.why != "":
-			r.Cautions = append(r.Cautions, k.why)
+			r.marked = append(r.marked, k.why)
 		case k.tpl != nil:
 			r.Marks = append(r.Marks, k)
 			if k.lost > 0 && 5*k.lost > len(k.T) {
-				r.Cautions = append(r.Cautions, fmt.Sprintf("The mark %q was not found in %d of %d frames looked at; something covers it.", k.Name, k.lost, k.lost+len(k.T)))
+				r.marked = append(r.marked, fmt.Sprintf("The mark %q was not found in %d of %d frames looked at; something covers it.", k.Name, k.lost, k.lost+len(k.T)))
 			}
 		}
 	}
+	r.Cautions = append(r.Cautions, r.marked...)
 	switch {
 	case !w.started:
 		r.Why = "No frame was looked at."
@@ -165,22 +167,52 @@ func (r *Report) judge(lastLost float64) {
 	if 10*r.Lost > r.Seen {
 		say("The still background was lost in %d of %d frames looked at, last at %.2f s: the camera was moved or something large passed before it.", r.Lost, r.Seen, lastLost)
 	}
-	moved := r.MovePX > moveLimit && r.MovePX > 3*r.UMovePX
-	if r.WarpPX > warpLimit {
-		say("The still background bends by %.2g px from frame to frame, as electronic stabilisation does. Positions are off by about as much: switch stabilisation off and film from a tripod.", r.WarpPX)
-	}
-	breathes := r.Zoom > zoomLimit && r.Zoom > 4*r.UZoom
-	if breathes {
-		say("The background's scale changes by %.2g %% during the clip: the focus moved (focus breathing), or the camera came nearer. Lock the focus before filming; lengths and amplitudes carry this change.", 100*r.Zoom)
-	}
-	if moved {
-		switch {
-		case r.FastPX > moveLimit/2:
-			say("The still background moves by up to %.2g px and fast: the camera was held by hand or shaken, or electronic stabilisation was on. Use a tripod and switch stabilisation off; what is measured here is the less sure for it.", r.MovePX)
-		case !breathes:
+	switch r.kind() {
+	case shaken:
+		rest := ""
+		if r.WarpPX > warpLimit {
+			rest = fmt.Sprintf(", and bends by %.2g px (near and far things move differently, or stabilisation warps the picture), so what is put right is right to about that", r.WarpPX)
+		}
+		say("The still background moves by up to %.2g px and fast: the camera was held by hand or shaken, or electronic stabilisation was on%s. Use a tripod and switch stabilisation off.", r.MovePX, rest)
+	case bending:
+		say("The still background bends by %.2g px from frame to frame, as electronic stabilisation makes it. Positions are off by about as much: switch stabilisation off and film from a tripod.", r.WarpPX)
+	case drifting:
+		if !r.breathes() {
 			say("The still background drifts slowly by up to %.2g px: the camera sagged or was touched.", r.MovePX)
 		}
 	}
+	if r.breathes() {
+		say("The background's scale changes by %.2g %% during the clip: the focus moved (focus breathing), or the camera came nearer. Lock the focus before filming; lengths and amplitudes carry this change where it is not put right.", 100*r.Zoom)
+	}
+}
+
+// motionKind sorts what a camera did.
+type motionKind int
+
+const (
+	stood motionKind = iota
+	drifting
+	bending
+	shaken
+)
+
+func (r *Report) kind() motionKind {
+	moved := r.MovePX > moveLimit && r.MovePX > 3*r.UMovePX
+	switch {
+	case moved && r.FastPX > moveLimit/2:
+		return shaken
+	case r.WarpPX > warpLimit:
+		return bending
+	case moved:
+		return drifting
+	}
+	return stood
+}
+
+// breathes tells whether the scale changed by itself; a camera in the hand comes
+// nearer and goes farther anyhow.
+func (r *Report) breathes() bool {
+	return r.Zoom > zoomLimit && r.Zoom > 4*r.UZoom && r.kind() != shaken
 }
 
 // Correct returns where a point of the picture, seen at (u, v) at time t, would
