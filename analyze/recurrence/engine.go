@@ -274,13 +274,13 @@ func (t *rowTally) count(i, w0 int, row []uint64) {
 // row.
 type follower struct {
 	tally
-	e                    *engine
-	diag                 lengths
-	lag                  []int64 // points by diagonal
-	prev                 []uint64
-	diagStart            []int32 // row in which the line on a diagonal began
-	colStart, colEnd     []int32 // row of the latest line's first point, and after its last
-	offset               int     // diagonal j − i is at j − i + offset
+	e                *engine
+	diag             lengths
+	lag              []int64 // points by diagonal
+	prev             []uint64
+	diagStart        []int32 // row in which the line on a diagonal began
+	colStart, colEnd []int32 // row of the latest line's first point, and after its last
+	offset           int     // diagonal j − i is at j − i + offset
 }
 
 func newFollower(e *engine) *follower {

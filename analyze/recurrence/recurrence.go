@@ -35,8 +35,8 @@ type Options struct {
 	// Threshold is the greatest distance of two states that are the same.
 	Threshold float64
 	// Rate is the share of all pairs that shall be recurrences; the threshold is
-	// then found from a million pairs (all, of 1,400 states or fewer), which meets
-	// the rate to about 0.5 % of it.
+	// then found from half a million pairs (all, of 1,000 states or fewer), which
+	// meets a rate of 5 % to 0.6 % of it.
 	Rate float64
 	// Theiler leaves out pairs nearer in time than this many samples (J. Theiler,
 	// Physical Review A 34 (1986) 2427). 0: 1, only a state with itself. Not used

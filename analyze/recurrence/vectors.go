@@ -4,7 +4,6 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
-	"slices"
 )
 
 // Vectors are N states of dimension Dim at even steps of time, row-major: state
@@ -91,7 +90,7 @@ func threshold(a, b Vectors, opt Options, band int) (float64, error) {
 	if opt.Threshold > 0 {
 		return opt.Threshold, nil
 	}
-	const most = 1 << 20
+	const most = 1 << 19
 	var d []float64
 	take := func(i, j int) {
 		if x := opt.Norm.Distance(a.State(i), b.State(j)); !math.IsNaN(x) {
@@ -123,13 +122,47 @@ func threshold(a, b Vectors, opt Options, band int) (float64, error) {
 	if len(d) < 2 {
 		return 0, fmt.Errorf("recurrence: of %d and %d states no two can be compared: they are missing or lie within the excluded band", a.N, b.N)
 	}
-	slices.Sort(d)
-	at := max(int(math.Round(opt.Rate*float64(len(d))))-1, 0)
-	if d[at] == 0 {
-		at = slices.IndexFunc(d, func(x float64) bool { return x > 0 })
-		if at < 0 {
+	eps := smallest(d, max(int(math.Round(opt.Rate*float64(len(d))))-1, 0))
+	if eps == 0 {
+		eps = math.Inf(1)
+		for _, x := range d {
+			if x > 0 {
+				eps = min(eps, x)
+			}
+		}
+		if math.IsInf(eps, 1) {
 			return 0, fmt.Errorf("recurrence: all states are the same; nothing moves")
 		}
 	}
-	return d[at], nil
+	return eps, nil
+}
+
+// smallest returns the value that would stand at k were d in order, and changes
+// d's order (C. A. R. Hoare's "Find", Communications of the ACM 4 (1961) 321).
+func smallest(d []float64, k int) float64 {
+	lo, hi := 0, len(d)-1
+	for lo < hi {
+		pivot := d[k]
+		i, j := lo, hi
+		for i <= j {
+			for d[i] < pivot {
+				i++
+			}
+			for pivot < d[j] {
+				j--
+			}
+			if i <= j {
+				d[i], d[j] = d[j], d[i]
+				i++
+				j--
+			}
+		}
+		if j < k {
+			lo = i
+		}
+		if k < i {
+			hi = j
+		}
+	}
+	return d[k]
 }
