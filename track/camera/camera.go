@@ -271,12 +271,19 @@ func (c *Camera) Moved(by []float64) *Camera {
 func (c *Camera) budget() {
 	cal := &c.cal
 	w, h := float64(cal.PictureW-1), float64(cal.PictureH-1)
-	// Lengths are judged over the middle half of the picture.
-	local := func(p *pinhole) (out [9]float64) {
+	// Lengths are judged over the middle half of the picture: those between the
+	// nine points of a grid there.
+	local := func(p *pinhole) (out [36]float64) {
 		q := Camera{pinhole: *p, pl: c.pl}
-		for i := range 9 {
-			_, _, j := q.ToPlane(w*(0.25+0.25*float64(i%3)), h*(0.25+0.25*float64(i/3)))
-			out[i] = math.Sqrt(math.Abs(j[0][0]*j[1][1] - j[0][1]*j[1][0]))
+		var pts [9][2]float64
+		k := 0
+		for i := range pts {
+			x, z, _ := q.ToPlane(w*(0.25+0.25*float64(i%3)), h*(0.25+0.25*float64(i/3)))
+			pts[i] = [2]float64{x, z}
+			for _, o := range pts[:i] {
+				out[k] = math.Hypot(x-o[0], z-o[1])
+				k++
+			}
 		}
 		return out
 	}
@@ -286,8 +293,10 @@ func (c *Camera) budget() {
 		_, _, j := q.ToPlane(w/2, h/2)
 		return math.Atan2(-j[0][1], -j[1][1])
 	}
-	at, up := local(&c.pinhole), upAngle(&c.pinhole)
-	cal.MetresPerPixel = at[4]
+	between := local(&c.pinhole)
+	up := upAngle(&c.pinhole)
+	_, _, j := c.ToPlane(w/2, h/2)
+	cal.MetresPerPixel = math.Sqrt(math.Abs(j[0][0]*j[1][1] - j[0][1]*j[1][0]))
 	var order []string
 	sums := map[string]float64{}
 	var vertical float64
@@ -295,8 +304,8 @@ func (c *Camera) budget() {
 		p := c.moved(s.By)
 		var sum float64
 		for i, x := range local(&p) {
-			d := x/at[i] - 1
-			sum += d * d / 9
+			d := x/between[i] - 1
+			sum += d * d / float64(len(between))
 		}
 		if _, known := sums[s.Source]; !known {
 			order = append(order, s.Source)

@@ -102,7 +102,7 @@ func (s setup) place(p *pinhole) (float64, error) {
 }
 
 func (s setup) checkLens(p *pinhole) error {
-	if (p.k1 != 0 || p.k2 != 0) && p.folds(math.Hypot(float64(s.w), float64(s.h))/2/p.f) {
+	if (p.k1 != 0 || p.k2 != 0) && p.folds(float64(max(s.w, s.h))/2/p.f) {
 		return fmt.Errorf("the lens distortion k1 = %g, k2 = %g folds the picture over at a focal length of %.0f px. Check lens and focal_px in [camera]", p.k1, p.k2, p.f)
 	}
 	return nil

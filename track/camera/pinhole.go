@@ -121,22 +121,25 @@ func (p *pinhole) lens(x, y float64) (u, v float64) {
 }
 
 // unlens gives the direction (x, y, 1) of a pixel, by Newton's method on the
-// radius, and ∂(x, y)/∂(u, v).
+// radius, and ∂(x, y)/∂(u, v); NaN in a corner that no direction leads to.
 func (p *pinhole) unlens(u, v float64) (x, y float64, j [2][2]float64) {
 	x, y = (u-p.cu)/p.f, (v-p.cv)/p.f
 	if p.k1 == 0 && p.k2 == 0 {
 		return x, y, [2][2]float64{{1 / p.f, 0}, {0, 1 / p.f}}
 	}
 	if rd := math.Hypot(x, y); rd > 0 {
-		r := rd
+		r, off := rd, 0.0
 		for range 50 {
 			r2 := r * r
-			slope := math.Max(1+r2*(3*p.k1+5*r2*p.k2), 0.05) // New refuses a lens that folds inside the picture
-			step := (r*(1+r2*(p.k1+r2*p.k2)) - rd) / slope
-			r -= step
-			if math.Abs(step) < 1e-15 {
+			slope := math.Max(1+r2*(3*p.k1+5*r2*p.k2), 0.05) // New refuses a lens that folds the picture but for its corners
+			off = r*(1+r2*(p.k1+r2*p.k2)) - rd
+			r -= off / slope
+			if math.Abs(off) < 1e-15 {
 				break
 			}
+		}
+		if math.Abs(off) > 1e-9 || !(r > 0) { // a corner that the lens as modelled does not reach
+			r = math.NaN()
 		}
 		x, y = x*r/rd, y*r/rd
 	}

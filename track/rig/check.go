@@ -71,6 +71,11 @@ func (c *checker) camera() {
 	}
 }
 
+// farKnown tells whether the camera's distance follows from the rig.
+func (c *checker) farKnown() bool {
+	return c.r.Camera.DistanceM.Set || c.r.Camera.FocalPX.Set || c.r.Scale.Target != ""
+}
+
 func spread(p [][2]float64) (most float64) {
 	for _, q := range p[1:] {
 		most = math.Max(most, math.Hypot(q[0]-p[0][0], q[1]-p[0][1]))
@@ -93,9 +98,9 @@ func (c *checker) scale() {
 	} else if len(s.EndsPX) > 0 && s.MarkLook != "" {
 		c.say(c.line("scale", "mark_look"), "[scale] gives both ends_px and mark_look: keep one")
 	}
-	if s.DepthM.Set && s.DepthM.V != 0 && !c.r.Camera.DistanceM.Set {
+	if s.DepthM.Set && s.DepthM.V != 0 && !c.farKnown() {
 		c.say(c.line("scale", "depth_mm"), "key \"depth_mm\" in [scale] can be corrected only with the camera's distance: add distance_mm to [camera], lens to plane of motion")
-	} else if s.DepthM.Set && s.DepthM.V >= c.r.Camera.DistanceM.V && s.DepthM.V != 0 {
+	} else if c.r.Camera.DistanceM.Set && s.DepthM.V >= c.r.Camera.DistanceM.V {
 		c.say(c.line("scale", "depth_mm"), "key \"depth_mm\" in [scale] puts the length behind the camera: it must be less than distance_mm")
 	}
 	c.point(s.OriginPX, "origin_px", "[scale]", c.line("scale", "origin_px"), false)
@@ -133,7 +138,7 @@ func (c *checker) bobs() {
 			c.say(c.line("bob", i, "at_mm"), "key \"at_mm\" in %s needs \"part\", the part that it sits on", where)
 		}
 		c.part(b.Part, where, c.line("bob", i, "part"), true)
-		if b.DepthM.Set && b.DepthM.V != 0 && !c.r.Camera.DistanceM.Set {
+		if b.DepthM.Set && b.DepthM.V != 0 && !c.farKnown() {
 			c.say(c.line("bob", i, "depth_mm"), "key \"depth_mm\" in %s can be corrected only with the camera's distance: add distance_mm to [camera]", where)
 		}
 	}
