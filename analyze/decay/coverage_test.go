@@ -55,9 +55,9 @@ func TestCoverage(t *testing.T) {
 	}
 	rng := rand.New(rand.NewPCG(20, 26))
 	type tally struct {
-		in, all  int
-		ratio    []float64
-		z2       float64
+		in, all int
+		ratio   []float64
+		z2      float64
 	}
 	keys := []string{"decay.period_zero", "decay.period_at", "decay.zeta"}
 	tallies := map[string]*tally{}

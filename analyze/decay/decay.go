@@ -103,6 +103,7 @@ type analysis struct {
 	weights  []float64
 	bics     []float64
 	noise    noise
+	limits   [3]limit // of the frictions that the chosen law lacks
 	gains    map[[2]int][]float64
 	turns    []turn
 	period   float64 // of small swings, s

@@ -247,12 +247,27 @@ func TestConfusion(t *testing.T) {
 	}
 	pure := []row{{"viscous", [3]float64{1, 0, 0}}, {"drag", [3]float64{0, 1, 0}}, {"dry", [3]float64{0, 0, 1}}}
 	mixed := []row{
-		{"viscous + drag", [3]float64{.5, .5, 0}}, {"viscous + dry", [3]float64{.5, 0, .5}}, {"drag + dry", [3]float64{0, .5, .5}},
-		{"viscous + drag 20 %", [3]float64{.8, .2, 0}}, {"viscous 20 % + drag", [3]float64{.2, .8, 0}},
-		{"viscous + dry 20 %", [3]float64{.8, 0, .2}}, {"viscous 20 % + dry", [3]float64{.2, 0, .8}},
-		{"drag + dry 20 %", [3]float64{0, .8, .2}}, {"drag 20 % + dry", [3]float64{0, .2, .8}},
+		{"viscous + drag", [3]float64{.5, .5, 0}},
+		{"viscous + dry", [3]float64{.5, 0, .5}},
+		{"drag + dry", [3]float64{0, .5, .5}},
+		{"viscous + drag 20 %", [3]float64{.8, .2, 0}},
+		{"viscous 20 % + drag", [3]float64{.2, .8, 0}},
+		{"viscous + dry 20 %", [3]float64{.8, 0, .2}},
+		{"viscous 20 % + dry", [3]float64{.2, 0, .8}},
+		{"drag + dry 20 %", [3]float64{0, .8, .2}},
+		{"drag 20 % + dry", [3]float64{0, .2, .8}},
 		{"viscous + drag + dry", [3]float64{.34, .33, .33}},
-		{"viscous + drag + dry 20 %", [3]float64{.4, .4, .2}}, {"viscous 20 % + drag + dry", [3]float64{.2, .4, .4}}, {"viscous + drag 20% + dry", [3]float64{.4, .2, .4}},
+		{"viscous + drag + dry 20 %", [3]float64{.4, .4, .2}},
+		{"viscous 20 % + drag + dry", [3]float64{.2, .4, .4}},
+		{"viscous + drag 20% + dry", [3]float64{.4, .2, .4}},
+	}
+	sloppy := []row{
+		{"viscous", [3]float64{1, 0, 0}},
+		{"drag", [3]float64{0, 1, 0}},
+		{"dry", [3]float64{0, 0, 1}},
+		{"viscous + drag", [3]float64{.5, .5, 0}},
+		{"viscous + dry", [3]float64{.5, 0, .5}},
+		{"drag + dry", [3]float64{0, .5, .5}},
 	}
 	sets := []struct {
 		rows         []row
@@ -267,6 +282,10 @@ func TestConfusion(t *testing.T) {
 		{pure, 1.0, 30, 30, 1.0, 0.35},
 		{mixed, 0.7, 55, 30, 1.0, 0.35},
 		{mixed, 0.7, 55, 30, 1.0, 1.2},
+		{sloppy, 0.2, 30, 30, 1.0, 0.35},
+		{sloppy, 0.4, 20, 30, 1.0, 0.35},
+		{sloppy, 0.7, 30, 30, 1.0, 0.35},
+		{sloppy, 0.7, 40, 30, 1.0, 0.35},
 	}
 	for _, s := range sets {
 		for ri, r := range s.rows {

@@ -32,19 +32,18 @@ func (a *Angle) rates() {
 	n := len(a.T)
 	a.Rate, a.URate = make([]float64, n), make([]float64, n)
 	segs := a.segmentOf()
-	best, bestCost := -1, math.Inf(1)
-	var bestPts []point
 	noise := a.noiseRatio(segs)
 	a.NoiseRatio = noise
 	inflate := math.Max(1, noise)
 	step := medianStep(a.T)
+	best, bestCost := -1, math.Inf(1)
+	every := 1 + n/500 // the width is chosen on so many samples, for speed
 	for k, w := range widths {
 		if w > float64(n)/4 {
 			break
 		}
-		pts := localFits(a.T, a.Angle, a.UAngle, segs, w*step)
 		cost, good := 0.0, 0
-		for _, p := range pts {
+		for _, p := range localFits(a.T, a.Angle, a.UAngle, segs, w*step, every) {
 			if p.ok {
 				good++
 				cost += p.varRate*inflate*inflate + p.diff*p.diff - p.varDiff*inflate*inflate
@@ -55,7 +54,7 @@ func (a *Angle) rates() {
 		}
 		cost /= float64(good)
 		if cost < bestCost || best < 0 {
-			best, bestCost, bestPts = k, cost, pts
+			best, bestCost = k, cost
 		} else if cost > 4*bestCost {
 			break
 		}
@@ -66,6 +65,7 @@ func (a *Angle) rates() {
 		}
 		return
 	}
+	bestPts := localFits(a.T, a.Angle, a.UAngle, segs, widths[best]*step, 1)
 	a.WindowS = widths[best] * step
 	reach := 2 * int(widths[best])
 	for i, p := range bestPts {
@@ -102,7 +102,7 @@ func (a *Angle) segmentOf() []int {
 // noiseRatio is the robust scatter about a narrow local quintic over what UAngle
 // lets expect.
 func (a *Angle) noiseRatio(segs []int) float64 {
-	pts := localFits(a.T, a.Angle, a.UAngle, segs, 5*medianStep(a.T))
+	pts := localFits(a.T, a.Angle, a.UAngle, segs, 5*medianStep(a.T), 1+len(a.T)/2000)
 	var r []float64
 	for _, p := range pts {
 		if p.ok {
@@ -134,9 +134,9 @@ func scatter(t, y []float64) float64 {
 	return s
 }
 
-// localFits fits cubic and quintic about each sample. Points with too few
-// samples in reach are not ok.
-func localFits(t, y, u []float64, seg []int, w float64) []point {
+// localFits fits cubic and quintic about every so many samples. Points in
+// between, and those with too few samples in reach, are not ok.
+func localFits(t, y, u []float64, seg []int, w float64, every int) []point {
 	n := len(t)
 	pts := make([]point, n)
 	const crumb = 1e-9 // of w: times that are equal but for rounding
@@ -153,6 +153,9 @@ func localFits(t, y, u []float64, seg []int, w float64) []point {
 			}
 			for hi < last && t[hi+1] <= t[i]+w {
 				hi++
+			}
+			if i%every != 0 {
+				continue
 			}
 			l, h := lo, hi
 			// At a segment's ends the window is shifted inwards, so that it keeps its
