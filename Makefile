@@ -21,7 +21,7 @@ build: install-run
 
 demo: build
 	@./bin/lodeswing film lantern --out results/demo
-	@./bin/lodeswing measure results/demo/lantern.mp4 --rig results/demo/lantern.toml --out results/demo/lantern-result --replace
+	@./bin/lodeswing measure results/demo/lantern.mp4 --rig results/demo/lantern.toml --out results/demo/lantern-result
 	@echo "The report is $(CURDIR)/results/demo/lantern-result/report.html"
 
 test: install-run install-test

@@ -38,6 +38,11 @@ Exit status: 0 done; 1 failed; 2 wrong use; 3 done, but the verdict is reject.`,
 	})
 	root.AddCommand(
 		measureCommand(),
+		analyzeCommand(),
+		plotCommand(),
+		inspectCommand(),
+		targetCommand(),
+		filmCommand(),
 	)
 	return root
 }
