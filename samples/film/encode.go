@@ -189,7 +189,7 @@ func (s *Scene) arguments(e Encoding, path string) []string {
 		filters = append(filters, "transpose=clock")
 	}
 	if !e.Lossless {
-		filters = append(filters, "scale=out_color_matrix=bt709:out_range=tv:flags=bicubic+accurate_rnd+full_chroma_int,format=yuv420p")
+		filters = append(filters, "scale=out_color_matrix=bt709:out_range=tv,format=yuv420p")
 	}
 	if e.Jitter != nil {
 		filters = append(filters, "settb=1/90000,setpts="+e.Jitter.expression(factor))
@@ -213,7 +213,9 @@ func (s *Scene) arguments(e Encoding, path string) []string {
 		a = append(a, "-c:v", "libx265", "-preset", "superfast", "-tag:v", "hvc1", "-x265-params", "log-level=error")
 		a = append(a, bits...)
 	default:
-		a = append(a, "-c:v", "libx264", "-preset", "fast", "-profile:v", "high")
+		// A phone's encoder is a small circuit, about as thrifty as this preset
+		// (common practice, no source).
+		a = append(a, "-c:v", "libx264", "-preset", "veryfast", "-profile:v", "high")
 		a = append(a, bits...)
 	}
 	if !e.Lossless {

@@ -10,7 +10,7 @@ import (
 // for every row of every frame.
 type grain struct {
 	pool []int16  // standard normal × 4096, mean 0 and variance 1 over the pool
-	gain [256]int // σ in levels × 64, by grey level
+	gain [256]int32 // σ in levels × 64, by grey level
 	none bool
 	seed uint64
 }
@@ -23,7 +23,7 @@ func newGrain(s *Scene) *grain {
 		return g
 	}
 	for i := range g.gain {
-		g.gain[i] = int(math.Round(64 * math.Sqrt(s.Noise.Read*s.Noise.Read+s.Noise.Shot*float64(i))))
+		g.gain[i] = int32(math.Round(64 * math.Sqrt(s.Noise.Read*s.Noise.Read+s.Noise.Shot*float64(i))))
 	}
 	rnd := rand.New(rand.NewPCG(s.Seed, 0x6772_6169_6e))
 	x := make([]float64, poolSize)
@@ -53,13 +53,16 @@ func (g *grain) develop(src []uint16, dst []byte, width int, t float64) {
 	n := 3 * width
 	for o := 0; o < len(src); o += n {
 		row := src[o : o+n]
-		to := dst[o : o+n]
+		to := dst[o : o+n][:len(row)]
 		at := rnd.IntN(poolSize - n)
-		pool := g.pool[at : at+n]
+		pool := g.pool[at : at+n][:len(row)]
 		for i, x := range row {
 			// levels × 128: pool 4096, gain 64, so 4096·64/128 = 2048.
-			y := (int(x) + (int(pool[i])*g.gain[(x>>7)&255]+1024)>>11 + 64) >> 7
-			to[i] = byte(min(max(y, 0), 255))
+			y := (int32(x) + (int32(pool[i])*g.gain[uint8(x>>7)]+1024)>>11 + 64) >> 7
+			if uint32(y) > 255 {
+				y = min(max(y, 0), 255)
+			}
+			to[i] = byte(y)
 		}
 	}
 }
