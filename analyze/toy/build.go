@@ -90,6 +90,10 @@ func New(r *rig.Rig) (*Model, error) {
 	if err := m.refresh(); err != nil {
 		return nil, err
 	}
+	m.chooseRules()
+	if err := m.refresh(); err != nil { // with the faces cut by those rules
+		return nil, err
+	}
 	return m, m.check()
 }
 
@@ -285,7 +289,7 @@ func (m *Model) addMagnet(g *rig.Magnet, index map[string]int) error {
 	}
 	p := magnetPart{name: g.Name, body: k, at: vector(g.AtM), axis: axis, moment: g.Moment.Or(1), gapTo: -1}
 	if c := g.Cylinder; c != nil {
-		p.cylinder = true
+		p.cylinder, p.exact = true, true
 		p.cyl = magnet.Cylinder{
 			Radius: c.DiameterM.V / 2, Height: c.HeightM.V,
 			Remanence: c.RemanenceT.Or(1.2), Recoil: c.Recoil.Or(magnet.DefaultRecoil),

@@ -65,6 +65,11 @@ func (m *Model) kinematics(y []float64) {
 			b := &m.bodies[g.body]
 			g.r = b.p.Add(b.rot.mul(g.at))
 			g.m = b.rot.mul(g.ownM)
+			if g.exact {
+				for j := range g.own {
+					g.charges[j].At = b.p.Add(b.rot.mul(g.own[j].At))
+				}
+			}
 		}
 	}
 }

@@ -1,7 +1,5 @@
 package toy
 
-import "lodeswing/analyze/magnet"
-
 // Energies are a toy's energies in J. Gravity is zero where every centre of mass
 // is at the world's origin, Spring where the springs are relaxed, Magnetic where
 // the magnets are far apart.
@@ -38,12 +36,12 @@ func (b *body) kinetic() float64 {
 	return 0.5 * (b.w.Dot(l) + b.vo.Dot(p))
 }
 
-// magneticEnergy is that of the magnets as kinematics placed them.
+// magneticEnergy is that of the magnets as kinematics placed them. It spoils the
+// sums of outside forces, which derive begins anew.
 func (m *Model) magneticEnergy() float64 {
 	sum := 0.0
 	for _, p := range m.pairs {
-		a, b := &m.magnets[p.a], &m.magnets[p.b]
-		sum += magnet.DipoleEnergy(a.m, b.m, b.r.Sub(a.r))
+		sum += m.pairForces(&p)
 	}
 	return sum
 }

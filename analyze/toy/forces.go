@@ -1,10 +1,6 @@
 package toy
 
-import (
-	"math"
-
-	"lodeswing/analyze/magnet"
-)
+import "math"
 
 // forces sums what magnets and coils do to the parts, and the rates of the
 // coils' quadratures in dy.
@@ -21,15 +17,7 @@ func (m *Model) magnetForces() {
 		m.bodies[k].extN, m.bodies[k].extF = vec{}, vec{}
 	}
 	for i := range m.pairs {
-		p := &m.pairs[i]
-		a, b := &m.magnets[p.a], &m.magnets[p.b]
-		_, f, ta, tb := magnet.DipolePair(a.m, b.m, b.r.Sub(a.r))
-		if b.body >= 0 {
-			m.push(b.body, b.r, f, tb)
-		}
-		if a.body >= 0 {
-			m.push(a.body, a.r, f.Scale(-1), ta)
-		}
+		m.pairForces(&m.pairs[i])
 	}
 }
 

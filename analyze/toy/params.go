@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"strings"
+
+	"lodeswing/analyze/magnet"
 )
 
 // Param is one number of a model that can be changed without building it anew.
@@ -156,6 +158,9 @@ func (m *Model) refresh() error {
 			g.moment = g.cyl.Moment()
 		}
 		g.ownM = g.axis.Scale(g.moment)
+		if g.exact && g.body >= 0 {
+			g.cutFaces()
+		}
 	}
 	m.restKinematics()
 	for i := range m.magnets {
@@ -163,21 +168,9 @@ func (m *Model) refresh() error {
 		if g.body >= 0 {
 			continue
 		}
-		g.r, g.m = g.at, g.axis.Scale(g.moment)
-		if g.gap <= 0 {
-			continue
-		}
-		best := math.Inf(1)
-		var from vec
-		for j := range m.magnets {
-			if o := &m.magnets[j]; o.body >= 0 {
-				if d := o.r.Sub(g.at).Norm(); d < best {
-					best, from = d, o.r
-				}
-			}
-		}
-		if !math.IsInf(best, 1) && best > 0 {
-			g.r = from.Add(g.at.Sub(from).Scale(g.gap / best))
+		g.r, g.m = m.standsAt(g), g.ownM
+		if g.exact {
+			g.cutFaces()
 		}
 	}
 	for i := range m.coils {
@@ -197,11 +190,36 @@ func (m *Model) refresh() error {
 	return nil
 }
 
+// standsAt is where a base magnet stands: at its own place, or as far from the
+// nearest moving magnet at rest, in that direction, as its gap says.
+func (m *Model) standsAt(g *magnetPart) vec {
+	if g.gap <= 0 {
+		return g.at
+	}
+	best := math.Inf(1)
+	var from vec
+	for j := range m.magnets {
+		if o := &m.magnets[j]; o.body >= 0 {
+			if d := o.r.Sub(g.at).Norm(); d < best {
+				best, from = d, o.r
+			}
+		}
+	}
+	if math.IsInf(best, 1) || best == 0 {
+		return g.at
+	}
+	return from.Add(g.at.Sub(from).Scale(g.gap / best))
+}
+
 // Clone returns a model of the same toy with its own work space and numbers.
 func (m *Model) Clone() *Model {
 	c := *m
 	c.bodies = append([]body(nil), m.bodies...)
 	c.magnets = append([]magnetPart(nil), m.magnets...)
+	for i := range c.magnets {
+		g := &c.magnets[i]
+		g.own, g.charges = append([]magnet.Charge(nil), g.own...), append([]magnet.Charge(nil), g.charges...)
+	}
 	c.coils = append([]coilPart(nil), m.coils...)
 	c.solver, c.events, c.params, c.tangentWork = nil, nil, nil, nil
 	c.workSpace()

@@ -124,3 +124,17 @@ func BenchmarkAgainstGSL(b *testing.B) {
 	b.ReportMetric(line(curves["short way"])(1e-8)/gsl, "short/GSL")
 	b.ReportMetric(line(curves["general tree"])(1e-8)/gsl, "general/GSL")
 }
+
+// The lantern with cylinders: what the user pays for small gaps.
+func BenchmarkCylinders(b *testing.B) {
+	r := lantern()
+	for i := range r.Magnets {
+		r.Magnets[i].Moment = rig.Value{}
+		r.Magnets[i].Cylinder = &rig.Cylinder{DiameterM: number(0.012), HeightM: number(0.006), RemanenceT: number(1.2)}
+	}
+	m := mustNew(b, r)
+	for b.Loop() {
+		swing(b, m, Options{Tol: 1e-8})
+	}
+	b.ReportMetric(20*float64(b.N)/b.Elapsed().Seconds(), "s/s")
+}

@@ -85,12 +85,14 @@ type magnetPart struct {
 	at   vec // own axes
 	axis vec // own axes, unit, south to north
 	// moment in A·m² along axis; for a cylinder it follows from remanence.
-	moment   float64
-	cylinder bool
-	cyl      magnet.Cylinder
-	ownM     vec  // moment, own axes
-	r, m     vec  // world: place and moment
-	exact    bool // a cylinder whose charges are summed, not its dipole
+	moment       float64
+	cylinder     bool
+	cyl          magnet.Cylinder
+	ownM         vec  // moment, own axes
+	r, m         vec  // world: place and moment
+	exact        bool // a cylinder whose charges are summed, not its dipole
+	rule         magnet.Rule
+	own, charges []magnet.Charge // in its own axes and in the world
 	// gap, when above zero, sets a base magnet's distance from the moving magnet
 	// gapTo, both at rest, in the direction of at.
 	gap   float64
@@ -130,10 +132,13 @@ type Model struct {
 	bodies  []body
 	magnets []magnetPart
 	pairs   []pair
-	coils   []coilPart
-	bobs    []bobPart
-	gravity float64
-	starts  []rig.Start
+	// Least distance of each pair's centres and faces in all that chooseRules
+	// looked at, m.
+	nearest, gaps []float64
+	coils         []coilPart
+	bobs          []bobPart
+	gravity       float64
+	starts        []rig.Start
 
 	nq, nv   int
 	params   []param
