@@ -276,6 +276,9 @@ func (an *analysis) work() error {
 			best = g
 		}
 	}
+	if err := an.follows(best); err != nil {
+		return err
+	}
 	an.shape = best.m
 	an.shape.law = 0
 	an.noise = measureNoise(an.data.t, best, freq)
@@ -302,6 +305,23 @@ func (an *analysis) work() error {
 			}
 		}
 		an.shared = append(an.shared, cut)
+	}
+	return nil
+}
+
+// follows returns an error when the motion plainly is no damped swing: the
+// residuals are well above the noise and more than a fiftieth of the swing.
+func (an *analysis) follows(f *fitted) error {
+	var rr, yy, uu float64
+	for i, r := range f.resid {
+		u := an.data.u[i]
+		rr += sq(r * u)
+		yy += sq(an.data.y[i] - f.p[atRest])
+		uu += u * u
+	}
+	if rr > 9*uu*sq(math.Max(1, an.angle.NoiseRatio)) && rr > sq(0.02)*yy {
+		return notFollowed{fmt.Sprintf("between %.2f s and %.2f s the swing dies, but it does not follow a damped swing about one rest: what is left is %.2g %% of it. Another part may take and give energy, or a hand may be on it",
+			an.data.t[0], an.data.t[len(an.data.t)-1], 100*math.Sqrt(rr/yy))}
 	}
 	return nil
 }

@@ -69,7 +69,7 @@ func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool
 			pr.Lo[m.frictionAt(l)] = 0
 		}
 	}
-	opt := lsq.Options{SigmaKnown: true, TolF: 1e-10, TolP: 1e-10, MaxIterations: 60}
+	opt := lsq.Options{SigmaKnown: true, TolF: 1e-8, TolP: 1e-9, MaxIterations: 60}
 	if coarse {
 		opt.TolF, opt.MaxIterations = 1e-4, 25
 	}

@@ -114,10 +114,10 @@ func (an *analysis) noteCautions(res *Result) {
 	if an.outliers > 0 {
 		add("%d samples lay more than six standard deviations from the fit and were left out.", an.outliers)
 	}
-	lost := 0.0
+	lost, step := 0.0, (res.ToS-res.FromS)/float64(res.Samples)
 	for _, g := range an.angle.Gaps {
 		if g.FromS < res.ToS && g.ToS > res.FromS {
-			lost += g.ToS - g.FromS
+			lost += math.Max(0, g.ToS-g.FromS-step)
 		}
 	}
 	if lost > 0.02*(res.ToS-res.FromS) {

@@ -316,8 +316,8 @@ func (an *analysis) extendBackward(st *stretch, f *fitted, usual, half float64) 
 		good = i + 1
 	}
 	if good < len(times) {
-		margin := half / 15
-		for good > 0 && times[good-1] < times[min(good, len(times)-1)]+margin {
+		edge := times[good] + half/15
+		for good > 0 && times[good-1] < edge {
 			good--
 		}
 	}

@@ -16,6 +16,7 @@ func (b *builder) finish(a *Angle, part *rig.Part, bob *track.Bob) {
 		}
 	}
 	a.unwrap()
+	a.despike()
 	if hasZero(a.UAngle) {
 		s := scatter(a.T, a.Angle)
 		for i := range a.UAngle {

@@ -14,6 +14,7 @@ import (
 const (
 	cubic   = 4 // coefficients
 	quintic = 6
+	least   = quintic + 1 // samples in a window
 )
 
 // widths are the half widths tried, in median steps.
@@ -170,7 +171,16 @@ func localFits(t, y, u []float64, seg []int, w float64, every int) []point {
 					l--
 				}
 			}
-			if h-l+1 >= quintic+1 {
+			// Rows are read one after another, so that a moving bob's times are not
+			// even and the narrowest window may just miss a sample: it takes the nearer one.
+			for h-l+1 < least && (l > first || h < last) {
+				if h == last || l > first && t[i]-t[l-1] <= t[h+1]-t[i] {
+					l--
+				} else {
+					h++
+				}
+			}
+			if h-l+1 >= least {
 				pts[i] = fitAt(t[l:h+1], y[l:h+1], u[l:h+1], i-l, w)
 			}
 		}
@@ -213,18 +223,18 @@ func fitAt(t, y, u []float64, at int, w float64) point {
 		for j := range m {
 			before += q[k][j] * q[k][j]
 		}
-		for pass := 0; pass < 2; pass++ {
-			for l := range k {
-				dot := 0.0
-				for j := range m {
-					dot += q[l][j] * q[k][j]
-				}
-				for j := range m {
-					q[k][j] -= dot * q[l][j]
-				}
-				slope -= dot * d[l]
-				value -= dot * v[l]
+		qk := q[k]
+		for l := range k {
+			ql := q[l][:len(qk)]
+			dot := 0.0
+			for j, x := range qk {
+				dot += ql[j] * x
 			}
+			for j := range qk {
+				qk[j] -= dot * ql[j]
+			}
+			slope -= dot * d[l]
+			value -= dot * v[l]
 		}
 		norm := 0.0
 		for j := range m {

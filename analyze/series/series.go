@@ -154,6 +154,8 @@ func FromTable(name string, t, angle, u []float64) (Angle, error) {
 	}
 	a.T, a.Angle, a.UAngle = tt, yy, uu
 	a.Gaps = tableGaps(t, skipped)
+	a.despike()
+	tt, yy, uu = a.T, a.Angle, a.UAngle
 	a.Gaps = append(a.Gaps, lostFrames(tt, a.Gaps)...)
 	if !known {
 		s := scatter(tt, yy)
