@@ -1,9 +1,8 @@
-// Package board draws the printed scale target and finds it in a picture, and
-// finds the two round marks of a scale. What comes in: upright frames of a clip
-// as bytes, and the target's name or the marks' look from the rig. What goes out:
-// a camera.Sighting, places in pixels of the upright picture (middle of the
-// top-left pixel at (0, 0)) with covariances in px², and places on the print in
-// metres; and the target as SVG or PDF, true to size.
+// Package board draws the printed scale target and finds it in a picture. What
+// comes in: upright frames of a clip as bytes, and the target's name from the
+// rig. What goes out: a camera.Sighting, places in pixels of the upright picture
+// (middle of the top-left pixel at (0, 0)) with covariances in px², and places on
+// the print in metres; and the target as SVG or PDF, true to size.
 //
 // The target is a chequered board, an odd number of squares wide and an even
 // number high, so that its two upper corners are black and its lower ones white:
