@@ -9,7 +9,7 @@ import (
 // normal numbers come from a fixed pool that is entered at a new random place
 // for every row of every frame.
 type grain struct {
-	pool []int16  // standard normal × 4096, mean 0 and variance 1 over the pool
+	pool []int16    // standard normal × 4096, mean 0 and variance 1 over the pool
 	gain [256]int32 // σ in levels × 64, by grey level
 	none bool
 	seed uint64

@@ -199,7 +199,6 @@ type block struct{ x0, y0, x1, y1 int }
 // desk is one goroutine's working memory.
 type desk struct {
 	shapes []shape
-	depths []float64
 	balls  []*ball
 	here   []shape
 	times  []float64
