@@ -63,7 +63,8 @@ type Facts struct {
 	start      float64   // the stream's own start time, played seconds
 	keys       []float64 // played seconds of the frames that need no other to be decoded, ascending
 	interlaced bool
-	inOrder    bool // the container lists no presentation times (avi): frames are known by their order alone
+	cut        string // plain words, where the container promises more than the file holds
+	inOrder    bool   // the container lists no presentation times (avi): frames are known by their order alone
 }
 
 // LostFrames is a hole in the clip's times that whole frames would fill.

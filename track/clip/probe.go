@@ -38,6 +38,8 @@ type probed struct {
 		TimeBase    string            `json:"time_base"`
 		StartPTS    *int64            `json:"start_pts"`
 		BitRate     string            `json:"bit_rate"`
+		Duration    string            `json:"duration"`
+		NbFrames    string            `json:"nb_frames"`
 		Aspect      string            `json:"sample_aspect_ratio"`
 		Tags        map[string]string `json:"tags"`
 		Disposition struct {
@@ -69,7 +71,7 @@ type probed struct {
 // would.
 func (f *Facts) readContainer(ctx context.Context) error {
 	out, err := runProbe(ctx, f.absolute, "-show_entries",
-		"stream=index,codec_name,profile,codec_type,width,height,pix_fmt,color_range,color_space,color_transfer,field_order,r_frame_rate,avg_frame_rate,time_base,start_pts,bit_rate,sample_aspect_ratio:"+
+		"stream=index,codec_name,profile,codec_type,width,height,pix_fmt,color_range,color_space,color_transfer,field_order,r_frame_rate,avg_frame_rate,time_base,start_pts,bit_rate,duration,nb_frames,sample_aspect_ratio:"+
 			"stream_tags:stream_disposition=attached_pic:stream_side_data=side_data_type,displaymatrix,rotation:"+
 			"format=format_name,bit_rate:format_tags:packet=stream_index,pts,dts,size,flags",
 		"-select_streams", "v")
@@ -146,12 +148,11 @@ func (f *Facts) readContainer(ctx context.Context) error {
 
 	base := ratio(s.TimeBase)
 	bytesIn := 0.0
+	listed, first, last := 0, math.Inf(1), math.Inf(-1)
 	for _, pk := range p.Packets {
-		if pk.Stream != s.Index || strings.Contains(pk.Flags, "D") {
+		if pk.Stream != s.Index {
 			continue
 		}
-		size, _ := strconv.ParseFloat(pk.Size, 64)
-		bytesIn += size
 		at := pk.PTS
 		if at == nil {
 			at, f.inOrder = pk.DTS, true
@@ -159,6 +160,13 @@ func (f *Facts) readContainer(ctx context.Context) error {
 		if at == nil {
 			continue
 		}
+		listed++
+		first, last = math.Min(first, float64(*at)*base), math.Max(last, float64(*at)*base)
+		if strings.Contains(pk.Flags, "D") {
+			continue // an edit list hides it
+		}
+		size, _ := strconv.ParseFloat(pk.Size, 64)
+		bytesIn += size
 		f.pts = append(f.pts, float64(*at)*base)
 		if strings.Contains(pk.Flags, "K") {
 			f.keys = append(f.keys, float64(*at)*base)
@@ -178,8 +186,48 @@ func (f *Facts) readContainer(ctx context.Context) error {
 		n := float64(len(f.pts))
 		f.BitRate = 8 * bytesIn / (span * n / (n - 1))
 	}
+	if listed > 1 {
+		f.noteCut(s.NbFrames, s.Duration, firstTag(s.Tags, "DURATION"), listed, first, last)
+	}
 	f.SHA256, err = hashFiles(ctx, f.absolute)
 	return err
+}
+
+// noteCut compares what the container promises with the listed packets, hidden
+// ones included: a copy that was cut short has lost its end. An mp4 or avi says
+// how many frames it should have, a Matroska for how long it should run.
+func (f *Facts) noteCut(count, duration, tag string, listed int, first, last float64) {
+	span := last - first
+	step := span / float64(listed-1)
+	promised, _ := strconv.ParseFloat(duration, 64)
+	if promised == 0 {
+		promised = clock(tag) - first // it counts from 0, not from the first frame
+	}
+	n, _ := strconv.Atoi(count)
+	if f.Container == "avi" {
+		promised = float64(n) * step
+	}
+	if n > 0 && n <= listed || promised-span-step < math.Max(0.3, 4*step) {
+		return
+	}
+	f.cut = fmt.Sprintf("The file ends after %.2f s of %.2f s that it promises (as it plays): the recording or the copy was cut short. It was measured as far as it goes; copy it from the phone again.", span+step, promised)
+}
+
+// clock reads "00:00:04.000000000" as seconds; 0 where it cannot.
+func clock(s string) float64 {
+	parts := strings.Split(s, ":")
+	if len(parts) != 3 {
+		return 0
+	}
+	sum := 0.0
+	for _, p := range parts {
+		v, err := strconv.ParseFloat(p, 64)
+		if err != nil {
+			return 0
+		}
+		sum = 60*sum + v
+	}
+	return sum
 }
 
 func (f *Facts) noFrames() error {

@@ -18,12 +18,18 @@ func (f *Facts) deriveTimes() {
 		return
 	}
 	f.DurationS = f.Times[n-1]
+	if f.DurationS <= 0 {
+		return
+	}
 	f.TrueRate = float64(n-1) / f.DurationS
 	steps := make([]float64, n-1)
 	for i := range steps {
 		steps[i] = f.Times[i+1] - f.Times[i]
 	}
 	usual := median(steps)
+	if usual <= 0 {
+		usual = f.DurationS / float64(n-1)
+	}
 	var sum float64
 	kept := 0
 	for i, d := range steps {

@@ -173,10 +173,18 @@ func (s *videoSource) end() error {
 
 // Damage tells of the listed frames that did not come.
 func (s *videoSource) Damage() (float64, string) {
-	if len(s.holes) == 0 {
-		return math.NaN(), ""
-	}
 	f, n := s.facts, len(s.facts.Times)
+	switch {
+	case len(s.holes) == 0 && f.cut == "":
+		return math.NaN(), ""
+	case len(s.holes) == 0 || f.cut != "" && s.holes[0].end == n && n-s.holes[0].first <= 3:
+		// At a cut the last packets may be halves that cannot be decoded.
+		at := n - 1
+		if len(s.holes) > 0 {
+			at = max(s.holes[0].first-1, 0)
+		}
+		return f.Times[at], f.cut
+	}
 	first := s.holes[0]
 	at := f.Times[max(first.first-1, 0)]
 	if first.end == n {
