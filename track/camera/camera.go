@@ -135,12 +135,11 @@ func restHeight(r *rig.Rig) float64 {
 		return 0
 	}
 	b := r.Bobs[0]
-	p := r.FindPart(b.Part)
-	z := rig.XYZ(b.AtM)[2]
-	if p != nil && p.Upright {
-		z = -z
-	}
+	z, p := rig.XYZ(b.AtM)[2], r.FindPart(b.Part)
 	for n := 0; p != nil && n <= len(r.Parts); n++ {
+		if p.Upright { // a part's axes are those of its hanging state
+			z = -z
+		}
 		z += rig.XYZ(p.PivotM)[2]
 		p = r.FindPart(p.On)
 	}
