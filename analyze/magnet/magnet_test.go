@@ -311,3 +311,31 @@ func TestCheck(t *testing.T) {
 		}
 	}
 }
+
+// On the axis μ₀a²/(2(a²+z²)^{3/2}); elsewhere the law of Biot and Savart summed
+// over 2,000 pieces, which converges exponentially for a circle.
+func TestLoopField(t *testing.T) {
+	const a = 0.012
+	axis := Vec{0.3, -0.5, 0.9}.Unit()
+	for _, z := range []float64{0, 0.004, -0.03} {
+		got := LoopField(a, axis, axis.Scale(z)).Dot(axis)
+		near(t, "the field on the axis", got, Mu0*a*a/(2*math.Pow(a*a+z*z, 1.5)), 1e-12)
+	}
+	u := axis.Cross(Vec{X: 1}).Unit()
+	v := axis.Cross(u)
+	rnd := rand.New(rand.NewPCG(6, 6))
+	for range 20 {
+		p := randomVec(rnd).Scale(0.015)
+		var b Vec
+		const n = 2000
+		for i := range n {
+			s, c := math.Sincos(2 * math.Pi * float64(i) / n)
+			at, dl := u.Scale(a*c).Add(v.Scale(a*s)), v.Scale(c).Sub(u.Scale(s)).Scale(2*math.Pi*a/n)
+			d := p.Sub(at)
+			b = b.Add(dl.Cross(d).Scale(Mu0 / (4 * math.Pi) / math.Pow(d.Norm(), 3)))
+		}
+		if got := LoopField(a, axis, p); got.Sub(b).Norm() > 1e-9*b.Norm() {
+			t.Errorf("field at %v is %v, by Biot and Savart %v", p, got, b)
+		}
+	}
+}

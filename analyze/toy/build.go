@@ -78,6 +78,12 @@ func New(r *rig.Rig) (*Model, error) {
 			return nil, err
 		}
 	}
+	for i := range m.coils {
+		if c := &m.coils[i]; c.wound {
+			c.aux = m.nq + m.nv + m.naux
+			m.naux += 2
+		}
+	}
 	m.allAlone = true
 	for k := range m.bodies {
 		b := &m.bodies[k]

@@ -53,13 +53,12 @@ func (m *Model) addCoil(r *rig.Rig, i int, index map[string]int) error {
 	if c.magnet < 0 {
 		return fmt.Errorf("%s has no moving magnet to sense and push: add a [[magnet]] to the part that it drives", where)
 	}
-	c.winding = !k.KickJ.Set && !k.KickJ.Fit
-	if c.winding && (c.turns == 0 || c.radius == 0 || c.ohm == 0 || !k.SupplyV.Set) {
+	c.wound = !k.KickJ.Set && !k.KickJ.Fit
+	if c.wound && (c.turns == 0 || c.radius == 0 || c.ohm == 0 || !k.SupplyV.Set) {
 		return fmt.Errorf("%s says nothing of its kick: give kick_mJ, or turns, radius_mm, resistance_ohm and supply_V", where)
 	}
-	c.reach = c.radius
-	if c.reach == 0 {
-		c.reach = c.width
+	if c.wound && c.pulse == 0 {
+		c.pulse = defaultPulse
 	}
 	m.coils = append(m.coils, c)
 	return nil

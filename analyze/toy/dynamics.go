@@ -343,10 +343,10 @@ func (m *Model) solveTree(tr tree) error {
 }
 
 // derive is the right-hand side of the equations of motion for the solver.
-func (m *Model) derive(t float64, y, dy []float64) {
+func (m *Model) derive(_ float64, y, dy []float64) {
 	m.kinematics(y)
 	m.massMatrix()
-	m.forces(t, y, dy)
+	m.forces(dy)
 	m.bias(y)
 	if m.solve() != nil {
 		for i := range dy {

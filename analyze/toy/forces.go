@@ -4,10 +4,10 @@ import "math"
 
 // forces sums what magnets and coils do to the parts, and the rates of the
 // coils' quadratures in dy.
-func (m *Model) forces(t float64, y, dy []float64) {
+func (m *Model) forces(dy []float64) {
 	m.magnetForces()
 	for i := range m.coils {
-		m.coilForce(&m.coils[i], t, y, dy)
+		m.coilForce(&m.coils[i], dy)
 	}
 }
 
@@ -34,7 +34,7 @@ func (m *Model) velocity(k int, r vec) vec {
 	return b.vo.Add(b.w.Cross(r))
 }
 
-func (m *Model) coilForce(c *coilPart, t float64, y, dy []float64) {
+func (m *Model) coilForce(c *coilPart, dy []float64) {
 	g := &m.magnets[c.magnet]
 	if c.eddy != 0 {
 		// Drag right over the coil, fading with the distance from its place there.
@@ -43,7 +43,11 @@ func (m *Model) coilForce(c *coilPart, t float64, y, dy []float64) {
 		k := c.eddy / (c.arm * c.arm) * math.Exp(-over.Dot(over)/(c.eddyReach*c.eddyReach))
 		m.push(g.body, g.r, m.velocity(g.body, g.r).Scale(-k), vec{})
 	}
-	if c.pushing && !c.winding {
+	if c.wound {
+		m.windingForce(c, dy)
+		return
+	}
+	if c.pushing {
 		u := g.r.Sub(c.pushFrom).Dot(c.pushDir) / c.width
 		if u > 0 && u < 1 {
 			m.push(g.body, g.r, c.pushDir.Scale(c.pushEnergy*30/c.width*u*u*(1-u)*(1-u)), vec{})

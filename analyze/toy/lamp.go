@@ -30,7 +30,7 @@ func (m *Model) newLamp() *lamp {
 	}
 	b := &m.bodies[0]
 	for i := range m.coils {
-		if c := &m.coils[i]; c.eddy != 0 || c.width > 0 || c.winding {
+		if c := &m.coils[i]; c.eddy != 0 || c.width > 0 || c.wound {
 			return nil
 		}
 	}

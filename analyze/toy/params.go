@@ -180,6 +180,9 @@ func (m *Model) refresh() error {
 		if c.arm == 0 {
 			c.arm = g.r.Sub(m.bodies[g.body].p).Norm()
 		}
+		if c.wound {
+			c.share(g)
+		}
 		if c.reach = c.radius; c.reach == 0 {
 			c.reach = c.width
 		}
@@ -221,6 +224,9 @@ func (m *Model) Clone() *Model {
 		g.own, g.charges = append([]magnet.Charge(nil), g.own...), append([]magnet.Charge(nil), g.charges...)
 	}
 	c.coils = append([]coilPart(nil), m.coils...)
+	for i := range c.coils {
+		c.coils[i].points = append([]windingPoint(nil), c.coils[i].points...)
+	}
 	c.solver, c.events, c.params, c.tangentWork = nil, nil, nil, nil
 	c.workSpace()
 	copy(c.mass, m.mass)

@@ -54,6 +54,7 @@ type Event struct {
 	Part   int     // index of the part
 	Coil   int     // index of the coil for Kick and Refuse, else −1
 	Energy float64 // J that a kick gave
+	Charge float64 // A·s that it drew, of a coil given by its winding
 	Rising bool    // Pass: the shown angle grows
 }
 
@@ -78,6 +79,7 @@ type eventSlot uint8
 
 const (
 	slotCoil eventSlot = iota
+	slotArm
 	slotDry
 	slotPass
 	slotTurn
@@ -111,7 +113,12 @@ func (r *run) move(ctx context.Context, t0, t1 float64) error {
 	defer func() { m.free = true }()
 	r.listen()
 	for i := range m.coils {
-		m.coils[i].pushing = false
+		c := &m.coils[i]
+		c.pushing, c.pulsing, c.armed = false, false, false
+		if c.wound {
+			m.kinematics(r.y)
+			c.armed = m.approach(c) >= c.trigger
+		}
 	}
 	m.nStuck = 0
 	for k := range m.bodies {
@@ -136,10 +143,11 @@ func (r *run) move(ctx context.Context, t0, t1 float64) error {
 		}
 		var hits []ode.Hit
 		var err error
+		end := r.pulseEnd(t1)
 		if len(m.events) == 0 {
-			err = s.Step(t1)
+			err = s.Step(end)
 		} else {
-			hits, err = s.Advance(t1, m.events)
+			hits, err = s.Advance(end, m.events)
 		}
 		if err != nil {
 			copy(r.y, s.State())
@@ -155,9 +163,40 @@ func (r *run) move(ctx context.Context, t0, t1 float64) error {
 				return err
 			}
 		}
+		if end != t1 && s.Time() == end {
+			r.endPulses(end)
+		}
 	}
 	copy(r.y, s.State())
 	return nil
+}
+
+// pulseEnd is the end of the next pulse of a winding, or t1 when that is sooner.
+func (r *run) pulseEnd(t1 float64) float64 {
+	for i := range r.m.coils {
+		if c := &r.m.coils[i]; c.pulsing && c.until < t1 {
+			t1 = c.until
+		}
+	}
+	return t1
+}
+
+// endPulses switches off the windings whose pulse ends at t.
+func (r *run) endPulses(t float64) {
+	m, s := r.m, r.m.solver
+	copy(r.y, s.State())
+	for i := range m.coils {
+		c := &m.coils[i]
+		if !c.pulsing || c.until > t {
+			continue
+		}
+		c.pulsing = false
+		r.tell(Event{
+			T: t, Kind: Kick, Part: m.magnets[c.magnet].body, Coil: i,
+			Energy: r.y[c.aux+1] - c.work0, Charge: r.y[c.aux] - c.charge0,
+		})
+	}
+	s.Reset(t, r.y)
 }
 
 func sign(x float64) float64 {
@@ -181,7 +220,21 @@ func (r *run) listen() {
 	}
 	for i := range m.coils {
 		c := &m.coils[i]
-		if r.opt.Undriven || c.kick == 0 {
+		if r.opt.Undriven {
+			continue
+		}
+		if c.wound {
+			approach := func(_ float64, y []float64) float64 {
+				m.kinematics(y)
+				return m.approach(c)
+			}
+			add(slotCoil, i, ode.Event{G: approach, Direction: ode.Falling, Terminal: true})
+			add(slotArm, i, ode.Event{G: func(t float64, y []float64) float64 {
+				return approach(t, y) - c.trigger
+			}, Direction: ode.Rising})
+			continue
+		}
+		if c.kick == 0 {
 			continue
 		}
 		add(slotCoil, i, ode.Event{Terminal: true, G: func(_ float64, y []float64) float64 {
@@ -245,6 +298,8 @@ func (r *run) handle(hits []ode.Hit) error {
 			}
 			reset = true
 			r.coilEvent(h, w.k)
+		case slotArm:
+			m.coils[w.k].armed = !m.coils[w.k].pulsing
 		case slotDry:
 			if !reset {
 				copy(r.y, s.State())
@@ -275,6 +330,14 @@ func (r *run) coilEvent(h ode.Hit, i int) {
 	c := &m.coils[i]
 	g := &m.magnets[c.magnet]
 	m.kinematics(r.y)
+	if c.wound {
+		if c.armed && !c.pulsing {
+			m.fire(c, h.T, r.y)
+		} else if !c.pulsing {
+			r.tell(Event{T: h.T, Kind: Refuse, Part: g.body, Coil: i})
+		}
+		return
+	}
 	if c.pushing {
 		u := g.r.Sub(c.pushFrom).Dot(c.pushDir)
 		c.pushing = false

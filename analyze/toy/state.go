@@ -10,10 +10,11 @@ import (
 // A state is a []float64 of length StateLen: the coordinates of all parts (an
 // angle in rad; four numbers of a unit quaternion, w x y z, for a ball joint),
 // then their speeds (rad/s; three components in the part's own axes for a ball
-// joint).
+// joint), then for each coil given by its winding the charge that it drew (A·s)
+// and the work that it did (J) so far.
 
 // StateLen is the length of a state.
-func (m *Model) StateLen() int { return m.nq + m.nv }
+func (m *Model) StateLen() int { return m.nq + m.nv + m.naux }
 
 // Freedoms is the number of degrees of freedom.
 func (m *Model) Freedoms() int { return m.nv }

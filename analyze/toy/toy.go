@@ -112,11 +112,12 @@ type coilPart struct {
 	ohm, supply     float64
 	pulse, trigger  float64
 	capacity        float64
-	winding         bool // the push follows from a current, not from kick
-	pushing         bool // now
-	pushFrom        vec  // where the push began
-	pushDir         vec  // and where it points
-	pushEnergy      float64
+	wound           bool // the push follows from a current, not from kick
+	winding
+	pushing    bool // now
+	pushFrom   vec  // where the push began
+	pushDir    vec  // and where it points
+	pushEnergy float64
 }
 
 type bobPart struct {
@@ -140,11 +141,11 @@ type Model struct {
 	gravity       float64
 	starts        []rig.Start
 
-	nq, nv   int
-	params   []param
-	dirty    bool
-	trees    []tree
-	allAlone bool
+	nq, nv, naux int
+	params       []param
+	dirty        bool
+	trees        []tree
+	allAlone     bool
 
 	sA, sB               []vec // motion vectors of the degrees of freedom, world, about the origin
 	dofOf                []int // body of each degree of freedom
