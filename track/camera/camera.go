@@ -43,6 +43,9 @@ func New(r *rig.Rig, w, h int, seen *Sighting) (*Camera, error) {
 	if w < 8 || h < 8 {
 		return nil, fmt.Errorf("a picture of %d × %d pixels is too small to measure in", w, h)
 	}
+	if err := r.CheckScale(); err != nil {
+		return nil, err
+	}
 	c := &Camera{}
 	pz := 0.0
 	if r.Camera.FromAbove {

@@ -13,9 +13,6 @@ import (
 func (c *Camera) fromLength(r *rig.Rig, origin [2]float64, seen *Sighting) ([]track.Unsure, verticalFrom, error) {
 	none := verticalFrom{}
 	cal, cam, sc := &c.cal, r.Camera, r.Scale
-	if !sc.LengthM.Set {
-		return nil, none, fmt.Errorf("%s: there is no scale: add [scale] with length_mm and ends_px, or with target = the name of a printed target", r.Path)
-	}
 	s := setup{
 		w: cal.PictureW, h: cal.PictureH, length: sc.LengthM.V, depth: sc.DepthM.Or(0),
 		focal: cam.FocalPX.Or(0), origin: origin, pl: c.pl,
@@ -35,10 +32,8 @@ func (c *Camera) fromLength(r *rig.Rig, origin [2]float64, seen *Sighting) ([]tr
 		s.ends = [2][2]float64(sc.EndsPX)
 		uEnds = math.Sqrt2 * sc.EndsUPX.Or(uUsualEnd)
 		cal.ScaleFrom = "the rig's length between its two ends in the picture"
-	case sc.MarkLook != "":
-		return nil, none, errors.New("the two marks of the scale were not found in the picture: check mark_look, or give ends_px")
 	default:
-		return nil, none, fmt.Errorf("%s: [scale] gives a length but not where it is: add ends_px = [[u, v], [u, v]] or mark_look", r.Path)
+		return nil, none, errors.New("the two marks of the scale were not found in the picture: check mark_look, or give ends_px")
 	}
 	span := math.Hypot(s.ends[1][0]-s.ends[0][0], s.ends[1][1]-s.ends[0][1])
 	for _, e := range s.ends {

@@ -59,24 +59,20 @@ func Parse(name string, data []byte) (*Rig, error) {
 	return r, nil
 }
 
-// ForTracking tells what a rig lacks for following its bobs in a clip; a rig
-// for simulation needs neither bobs nor a scale. Errors name the remedy.
-func (r *Rig) ForTracking() error {
-	rep := &reporter{file: filepath.Base(r.Path)}
-	if len(r.Bobs) == 0 {
-		rep.say(0, "there is no [[bob]]: name at least one thing to follow, with its colour or look")
-	}
+// CheckScale tells what the rig's [scale] lacks for measuring in a picture; a rig
+// for simulation needs none. The error names the remedy.
+func (r *Rig) CheckScale() error {
+	say := func(text string) error { return Problem{File: filepath.Base(r.Path), Text: text} }
 	s := r.Scale
 	switch {
 	case s.Target != "" || (s.LengthM.Set && (len(s.EndsPX) == 2 || s.MarkLook != "")):
+		return nil
 	case s.LengthM.Set:
-		rep.say(0, "[scale] gives a length but not where it is: add ends_px = [[u, v], [u, v]], or mark_look for two marks that are found by themselves")
+		return say("[scale] gives a length but not where it is: add ends_px = [[u, v], [u, v]], or mark_look for two marks that are found by themselves")
 	case len(s.EndsPX) == 2 || s.MarkLook != "":
-		rep.say(0, "[scale] says where a length is but not how long it is: add length_mm")
-	default:
-		rep.say(0, "there is no scale: add [scale] with length_mm and ends_px, or with target = the name of a printed target")
+		return say("[scale] says where a length is but not how long it is: add length_mm")
 	}
-	return rep.err()
+	return say("there is no scale: add [scale] with length_mm and ends_px, or with target = the name of a printed target")
 }
 
 // XYZ turns a place or direction of a rig, [x, z] or [x, y, z], into x, y, z. A
