@@ -1,7 +1,13 @@
 package clip
 
 import (
+	"bytes"
+	"context"
+	"image"
+	"image/jpeg"
 	"math"
+	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 )
@@ -63,6 +69,54 @@ func TestFilmedInHighDynamicRangeOrInterlaced(t *testing.T) {
 	all := strings.Join(f.Warnings, "\n")
 	if !strings.Contains(all, "high dynamic range (HLG)") || !strings.Contains(all, "interlaced") {
 		t.Errorf("warnings %q", f.Warnings)
+	}
+}
+
+func TestPhotographsComeUpright(t *testing.T) {
+	// An 8 × 8 JPEG with an Exif block in front that says "turn by 90°".
+	var plain bytes.Buffer
+	if err := jpeg.Encode(&plain, image.NewGray(image.Rect(0, 0, 8, 4)), nil); err != nil {
+		t.Fatal(err)
+	}
+	for _, order := range []string{"MM", "II"} {
+		tiff := []byte(order + "\x00\x2a\x00\x00\x00\x08\x00\x01\x01\x12\x00\x03\x00\x00\x00\x01\x00\x06\x00\x00")
+		if order == "II" {
+			tiff = []byte(order + "\x2a\x00\x08\x00\x00\x00\x01\x00\x12\x01\x03\x00\x01\x00\x00\x00\x06\x00\x00\x00")
+		}
+		block := append([]byte("Exif\x00\x00"), tiff...)
+		var file bytes.Buffer
+		file.Write(plain.Bytes()[:2])
+		file.Write([]byte{0xff, 0xe1, 0, byte(len(block) + 2)})
+		file.Write(block)
+		file.Write(plain.Bytes()[2:])
+		dir := t.TempDir()
+		for _, n := range []string{"1.jpg", "2.jpg"} {
+			if err := os.WriteFile(filepath.Join(dir, n), file.Bytes(), 0o644); err != nil {
+				t.Fatal(err)
+			}
+		}
+		f, err := Inspect(context.Background(), dir, Options{FramesPerS: 30})
+		if err != nil {
+			t.Fatal(err)
+		}
+		src, err := Open(context.Background(), f)
+		if err != nil {
+			t.Fatal(err)
+		}
+		frame, err := src.Next(context.Background())
+		if err != nil {
+			t.Fatal(err)
+		}
+		if w, h := frame.Size(); f.RotationDeg != 90 || f.W != 4 || f.H != 8 || w != 4 || h != 8 {
+			t.Errorf("%s: %d°, %d × %d, frame %d × %d", order, f.RotationDeg, f.W, f.H, w, h)
+		}
+		// However it is cut, it must not fail.
+		for n := range file.Len() {
+			orientation(bytes.NewReader(file.Bytes()[:n]))
+		}
+	}
+	if got := orientation(bytes.NewReader(plain.Bytes())); got != 0 {
+		t.Errorf("a picture without Exif: orientation %d", got)
 	}
 }
 

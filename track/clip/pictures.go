@@ -96,6 +96,15 @@ func (f *Facts) readPictures(ctx context.Context, perS float64) error {
 	}
 	f.Container, f.Numbered, f.PixelFormat, f.NominalRate = "numbered pictures", true, "rgb", perS
 	f.W, f.H = f.StoredW, f.StoredH
+	if f.Codec == "jpeg" {
+		var mirror bool
+		if f.RotationDeg, mirror = jpegTurn(f.pictures[0]); mirror {
+			f.Warnings = append(f.Warnings, mirrorWarning)
+		}
+		if f.RotationDeg%180 == 90 {
+			f.W, f.H = f.H, f.W
+		}
+	}
 	f.SHA256, err = hashFiles(ctx, f.pictures...)
 	return err
 }
@@ -133,7 +142,9 @@ func openPictures(f *Facts) (Source, error) {
 	if len(f.pictures) == 0 {
 		return nil, errors.New("clip: these facts list no pictures; call Inspect first")
 	}
-	return &pictureSource{facts: f, frame: NewFrame(0, 0, f.StoredW, f.StoredH), at: math.NaN()}, nil
+	s := &pictureSource{facts: f, frame: NewFrame(0, 0, f.StoredW, f.StoredH), at: math.NaN()}
+	s.frame.RotationDeg = f.RotationDeg
+	return s, nil
 }
 
 func (s *pictureSource) Next(ctx context.Context) (*Frame, error) {

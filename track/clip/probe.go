@@ -124,7 +124,7 @@ func (f *Facts) readContainer(ctx context.Context) error {
 		}
 		turn = -d.Rotation
 		if mirrored(d.Matrix) {
-			f.Warnings = append(f.Warnings, "The clip is flagged as mirrored (a front camera?). It is measured as stored, so left and right may be exchanged.")
+			f.Warnings = append(f.Warnings, mirrorWarning)
 		}
 	}
 	if len(s.SideData) == 0 && s.Tags["rotate"] != "" {
@@ -310,6 +310,8 @@ func ratio(s string) float64 {
 	}
 	return a / b
 }
+
+const mirrorWarning = "The clip is flagged as mirrored (a front camera?). It is measured as stored, so left and right may be exchanged."
 
 // mirrored tells whether ffprobe's print of a display matrix reverses the
 // picture: the determinant of its upper left 2 × 2 is negative.
