@@ -79,7 +79,7 @@ its marks are watched for a base that rocks.`,
 }
 
 func inspect(ctx context.Context, path string, r *rig.Rig, frames int, meter *progress.Meter) (*inspected, error) {
-	facts, err := clip.Inspect(ctx, path, clip.Options{RateFactor: r.Camera.RateFactor.Or(1), FramesPerS: r.Camera.FramesPerS.Or(0)})
+	facts, err := clip.Inspect(ctx, path, clip.Options{RateFactor: r.Camera.TimeRatio(), FramesPerS: r.Camera.FramesPerS.Or(0)})
 	if err != nil {
 		return nil, err
 	}

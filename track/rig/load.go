@@ -1,6 +1,7 @@
 package rig
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
 	"io"
@@ -42,6 +43,7 @@ func Parse(name string, data []byte) (*Rig, error) {
 	if len(data) > maxBytes {
 		return nil, Problems{{File: name, Text: "this is larger than 1 MB: it is not a rig"}}
 	}
+	data = bytes.TrimPrefix(data, []byte("\xef\xbb\xbf")) // some editors begin a file with this mark
 	tree, lines, err := readTOML(name, data)
 	if err != nil {
 		return nil, err
@@ -73,6 +75,12 @@ func (r *Rig) CheckScale() error {
 		return say("[scale] says where a length is but not how long it is: add length_mm")
 	}
 	return say("there is no scale: add [scale] with length_mm and ends_px, or with target = the name of a printed target")
+}
+
+// TimeRatio is how many seconds of the clip's own time make one true second:
+// slow motion times the camera clock's known error.
+func (c Camera) TimeRatio() float64 {
+	return c.RateFactor.Or(1) * (1 + 1e-6*c.ClockPPM.Or(0))
 }
 
 // XYZ turns a place or direction of a rig, [x, z] or [x, y, z], into x, y, z. A

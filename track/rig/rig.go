@@ -60,7 +60,7 @@ type Camera struct {
 	ExposureS  Value        `rig:"exposure_ms,u=1,pos"`        // one frame's exposure, if known
 	RateFactor Value        `rig:"rate_factor,u=0,pos"`        // recorded frames/s over played frames/s
 	FramesPerS Value        `rig:"frames_per_s,u=0,pos"`       // numbered pictures only
-	ClockPPM   Value        `rig:"clock_ppm,u=50"`             // the camera clock's known error
+	ClockPPM   Value        `rig:"clock_ppm,u=50"`             // the camera clock's known error, + when it runs fast
 	DistanceM  Value        `rig:"distance_mm,rel_u=0.02,pos"` // lens to plane of motion
 	PlumbPX    [][2]float64 `rig:"plumb_px"`                   // two or more points of a true vertical, upright picture
 	PlumbUPX   Value        `rig:"plumb_reading_px,u=0,pos"`   // how well a plumb point was read (default 0.7 px)

@@ -189,6 +189,31 @@ func TestReadAndWrittenIsTheSameRig(t *testing.T) {
 	}
 }
 
+func TestTimeRatio(t *testing.T) {
+	if x := parse(t, "[camera]\nrate_factor = 8\nclock_ppm = 25").Camera.TimeRatio(); math.Abs(x-8.0002) > 1e-12 {
+		t.Errorf("eightfold slow motion with a clock 25 ppm fast gives %.9g, want 8.0002", x)
+	}
+	if x := parse(t, "").Camera.TimeRatio(); x != 1 {
+		t.Errorf("nothing said gives %g", x)
+	}
+}
+
+// What other editors leave behind: a byte order mark and carriage returns.
+func TestOtherEditors(t *testing.T) {
+	text := "\xef\xbb\xbf" + strings.ReplaceAll(whole(), "\n", "\r\n")
+	if r := parse(t, text); r.Name != "Lantern 07" || len(r.Bobs) != 2 {
+		t.Errorf("read as %+v", r)
+	}
+	_, err := Parse("lantern.toml", []byte(strings.Replace(text, "mass_g", "mass_q", 1)))
+	if err == nil || !strings.Contains(err.Error(), "line 29: key \"mass_q\"") {
+		t.Errorf("got %v", err)
+	}
+	utf16 := []byte{0xff, 0xfe, 'n', 0, 'a', 0}
+	if _, err := Parse("lantern.toml", utf16); err == nil || !strings.Contains(err.Error(), "not valid TOML") {
+		t.Errorf("got %v", err)
+	}
+}
+
 func TestCloneSharesNothing(t *testing.T) {
 	r := parse(t, whole())
 	c := r.Clone()

@@ -108,7 +108,7 @@ func (j *Job) follow(ctx context.Context) (*record.Record, *rig.Rig, error) {
 		Version: j.Version, Started: time.Now().UTC().Truncate(time.Second), Options: j.Options,
 		Rig: record.Rig{Name: r.Name, File: filepath.Base(j.RigPath), Text: string(text)},
 	}
-	facts, err := clip.Inspect(ctx, j.Clip, clip.Options{RateFactor: r.Camera.RateFactor.Or(1), FramesPerS: r.Camera.FramesPerS.Or(0)})
+	facts, err := clip.Inspect(ctx, j.Clip, clip.Options{RateFactor: r.Camera.TimeRatio(), FramesPerS: r.Camera.FramesPerS.Or(0)})
 	if err != nil {
 		return nil, nil, err
 	}
