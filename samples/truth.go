@@ -136,10 +136,12 @@ func (t *Take) Numbers(clip string) *Truth {
 }
 
 // smallSwing linearises a toy of one freedom about the rest nearest to hanging;
-// it takes m's dry friction away.
+// it takes m's dry friction and air drag away, which have no linear part.
 func smallSwing(m *toy.Model) (s Small, ok bool) {
-	if i, err := m.Index(m.Parts()[0] + ".friction.dry"); err == nil {
-		m.Set(i, 0)
+	for _, law := range []string{".friction.dry", ".friction.drag"} {
+		if i, err := m.Index(m.Parts()[0] + law); err == nil {
+			m.Set(i, 0)
+		}
 	}
 	y, dy := m.Rest(), make([]float64, m.StateLen())
 	acc := func(angle, rate float64) float64 {

@@ -34,9 +34,20 @@ type stage struct {
 	pool  sync.Pool // *desk
 }
 
-func (s *Scene) stage() *stage {
-	s.once.Do(func() { s.ready = newStage(s) })
+// place readies what the truth needs: camera and lamp.
+func (s *Scene) place() *stage {
+	s.placed.Do(func() { s.ready = newStage(s) })
 	return s.ready
+}
+
+// stage readies all that a picture needs.
+func (s *Scene) stage() *stage {
+	st := s.place()
+	s.drawn.Do(func() {
+		st.drawBack()
+		st.grain = newGrain(s)
+	})
+	return st
 }
 
 func newStage(s *Scene) *stage {
@@ -71,8 +82,6 @@ func newStage(s *Scene) *stage {
 		}
 	}
 	st.pool.New = func() any { return &desk{} }
-	st.drawBack()
-	st.grain = newGrain(s)
 	return st
 }
 

@@ -142,8 +142,8 @@ type Scene struct {
 	// Times, when not nil, are the frames' times in seconds (variable rate).
 	Times []float64
 
-	once  sync.Once
-	ready *stage
+	placed, drawn sync.Once
+	ready         *stage
 }
 
 // Frame is one rendered frame: Pix has 3 bytes (blue, green, red) per pixel,
@@ -186,7 +186,7 @@ func (s *Scene) Frame(i int) Frame {
 
 // Truth says where every marked bob is in the frame of time t.
 func (s *Scene) Truth(t float64) []Point {
-	st := s.stage()
+	st := s.place()
 	var out []Point
 	for i := range s.Bobs {
 		b := &s.Bobs[i]
