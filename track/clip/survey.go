@@ -91,9 +91,9 @@ func (s *Surveyor) thin(f *Frame) {
 			q := row[3*x : 3*x+3 : 3*x+3]
 			b, g, r := int(q[0]), int(q[1]), int(q[2])
 			grey := (b + 2*g + r) / 4
-			if max(b, g, r) >= 253 {
+			if grey >= 250 {
 				s.over++
-			} else if max(b, g, r) <= 4 {
+			} else if grey <= 4 {
 				s.under++
 			}
 			s.now[i] = uint8(grey)

@@ -54,6 +54,11 @@ func file(f *clip.Facts, s *clip.Survey) Advice {
 		if f.Codec == "jpeg" {
 			a.State, a.Do = Improve, "Write the pictures as png: jpg smears edges."
 		}
+		if min(f.W, f.H) < 700 {
+			a.State = Improve
+			a.Seen += fmt.Sprintf(" They have only %d × %d pixels.", f.W, f.H)
+			a.Do = strings.TrimSpace(a.Do + " Film with 1080 lines or more.")
+		}
 		return a
 	case s.Bars.Any():
 		a.State = Improve
