@@ -115,6 +115,12 @@ func Restore(cal track.Calibration) (*Camera, error) {
 	return c, nil
 }
 
+// The sources that a camera which is not square to the plane brings.
+const (
+	fromTilt = "the camera's tilt"
+	fromPan  = "the camera's pan"
+)
+
 // uUnknownReadout is the standard uncertainty of a read-out that the rig does not
 // give: phones take 5 to 30 ms (common practice, no source).
 const uUnknownReadout = 10e-3
@@ -330,4 +336,7 @@ func (c *Camera) budget() {
 		}
 	}
 	cal.UScale, cal.UVertical = math.Sqrt(total), math.Sqrt(vertical)
+	if askew := math.Hypot(math.Sqrt(sums[fromTilt]), math.Sqrt(sums[fromPan])); askew > 0.004 && askew > 0.7*cal.UScale {
+		c.caution(fmt.Sprintf("A camera that is a degree off square would change lengths by %.1f %%, more than all else does. Put the scale's length nearer to the bob, film from farther away, or use the printed target (lodeswing target).", 100*askew))
+	}
 }

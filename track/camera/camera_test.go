@@ -274,6 +274,12 @@ func TestWhatIsWrong(t *testing.T) {
 	if s := strings.Join(c.Cautions(), " "); !strings.Contains(s, "one of them is wrong") || !strings.Contains(s, "readout_ms") {
 		t.Errorf("cautions: %s", s)
 	}
+	for ends, far := range map[string]bool{"[[20, 60], [20, 600]]": true, "[[600, 100], [600, 600]]": false} {
+		c := solve(t, "[camera]\ndistance_mm = 800\n[scale]\nlength_mm = 300\nu_length_mm = 0.2\nends_px = "+ends, nil)
+		if said := strings.Contains(strings.Join(c.Cautions(), " "), "off square"); said != far {
+			t.Errorf("ends %s: caution %t, scale %v", ends, said, c.cal.ScaleShares)
+		}
+	}
 	if u, _ := c.ToPixel(0, -100, 0); !math.IsNaN(u) {
 		t.Error("a point behind the camera has a pixel")
 	}

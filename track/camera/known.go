@@ -131,8 +131,8 @@ func (c *Camera) fromLength(r *rig.Rig, origin [2]float64, seen *Sighting) ([]tr
 	default:
 		vary("the camera's distance", func(t *setup, k float64) { t.distance += k * cam.DistanceM.U })
 	}
-	vary("the camera's tilt", func(t *setup, k float64) { t.tilt += k * uTilt })
-	vary("the camera's pan", func(t *setup, k float64) { t.pan += k * uUsualAngle })
+	vary(fromTilt, func(t *setup, k float64) { t.tilt += k * uTilt })
+	vary(fromPan, func(t *setup, k float64) { t.pan += k * uUsualAngle })
 	if !cam.FromAbove {
 		vary("the vertical", func(t *setup, k float64) { t.roll += k * uRoll })
 	}
