@@ -13,7 +13,7 @@ import (
 // colour at half resolution (4:2:0 and the like), whose edges are soft and may
 // be shifted: then the luma is used unless it shows almost nothing. Blur and
 // ellipse are left uncertain, since the bob may be moving.
-func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled bool) (*Fitter, Fit) {
+func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, ball bool) (*Fitter, Fit) {
 	w, ok := projection(p, c, subsampled)
 	if !ok {
 		return nil, Fit{Why: "bob and wall do not differ"}
@@ -22,24 +22,45 @@ func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled bool
 	g := Guess{U: c.U, V: c.V, UPos: 0.1*c.R + 1}
 	coarse := math.Min(2.5, 0.25*c.R)
 	f.Shape.Blur, f.Shape.UBlur = coarse, 0.1
+	f.rough = 0.15
 	r := f.Fit(p, nil, g, nil, false)
 	if !r.OK {
 		return nil, r
 	}
 	f.Shape.R, f.Shape.UR = r.R, 0.06*r.R+0.3
 	f.Shape.UBlur, f.Shape.UE = coarse, 0.1
-	for range 2 {
-		g = Guess{U: r.U, V: r.V, UPos: 0.3}
+	if ball {
+		f.ball = 1
+		if w[0]*c.Blue+w[1]*c.Green+w[2]*c.Red < 0 {
+			f.ball = -1
+		}
+	}
+	f.light = [3]float64{0, 0, 10 * f.ball} // from the camera's side, to begin with
+	f.frames = 0
+	if r, ok = f.closeIn(p, r); !ok {
+		return nil, r
+	}
+	f.agree, f.agreeN = 1, 0
+	return f, r
+}
+
+// faults is how far the model is usually from a real outline, over the contrast.
+const faults = 0.01
+
+// closeIn fits again with everything free, from a coarse fit.
+func (f *Fitter) closeIn(p *clip.Patch, r Fit) (Fit, bool) {
+	for _, rough := range []float64{0.08, 0.03, faults} {
+		f.rough = rough
+		g := Guess{U: r.U, V: r.V, UPos: 0.3}
 		r = f.Fit(p, nil, g, nil, true)
 		if !r.OK {
-			return nil, r
+			return r, false
 		}
 		f.Shape.R, f.Shape.UR = r.R, 0.03*r.R+0.1
 		f.Shape.Blur, f.Shape.UBlur = r.Blur, 0.5*r.Blur
 		f.Shape.E1, f.Shape.E2, f.Shape.UE = r.E1, r.E2, 0.05
 	}
-	f.agree, f.agreeN, f.frames = 1, 0, 0
-	return f, r
+	return r, true
 }
 
 // projection returns weights of blue, green and red in whose sum bob and wall

@@ -5,7 +5,7 @@ import "math"
 // The everyday pass. An outline that is little smeared is, seen from any one
 // sector, a straight edge that can only move along its normal; so each pixel
 // adds to a small set of local sums (the edge, its smear, the bob's level, its
-// shading towards the camera, the wall's level), and the sums of a sector are
+// shading sideways and towards the camera, the wall's level), and the sums of a sector are
 // turned into those of the whole fit with the sector's direction. Residuals are
 // those of the full model; only their derivatives are taken at the sector's
 // middle, which costs under 1 % in efficiency and no bias.
@@ -15,6 +15,7 @@ const (
 	lEdge = iota
 	lSmear
 	lBob
+	lSide
 	lFront
 	lWall
 	lCount
@@ -54,6 +55,7 @@ func (m *model) quick(on *[pCount]bool) bool {
 
 // passQuick does what pass does, for models that are quick.
 func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, from [2]float64) {
+	f.odd = f.odd[:0]
 	sec := &f.sec
 	*sec = [sectors]sectorSums{}
 	du, dv := m.cu-from[0], m.cv-from[1]
@@ -68,6 +70,7 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 	ibob, iwall := 1/noise.bob, 1/noise.wall
 	zin, zout := flat+0.5*m.l*is, -flat-0.5*m.l*is
 	smeared := m.l > 0.02*m.s
+	least := misfit * (f0 - b0 - f.back) * (f0 - b0 - f.back)
 	var inSum, inN, outSum, outN, chi, n float64
 	for i := range f.px {
 		q := &f.px[i]
@@ -81,27 +84,44 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		if z > zin {
 			c := 1 - r2*ir*ir
 			nz := math.Sqrt(0.5 * (c + math.Sqrt(c*c+soft)))
-			res := float64(q.v) - f0 - fx*x - fy*y - fz*nz
-			w := weigh(res * res * ibob)
-			if w == 0 {
+			h, lit := m.lamp.light(fx*x + fy*y + fz*nz)
+			res := float64(q.v) - f0 - h
+			t := res * res * ibob
+			if t > 16 && res*res > least {
+				f.odd = append(f.odd, int32(i))
+			}
+			w := weigh(t)
+			if w == 0 || q.near {
 				continue
 			}
 			inSum += w * res * res
 			inN += w
 			w *= ibob
 			chi += w * res * res
-			wn := w * nz
+			nz *= lit
+			ws, wn := w*lit, w*nz
 			s.a[lBob][lBob] += w
+			s.a[lBob][lSide] += ws
 			s.a[lBob][lFront] += wn
+			s.a[lSide][lSide] += ws * lit
+			s.a[lSide][lFront] += ws * nz
 			s.a[lFront][lFront] += wn * nz
 			s.g[lBob] += w * res
+			s.g[lSide] += ws * res
 			s.g[lFront] += wn * res
 			continue
 		}
 		back := float64(q.wall) + b0 + bx*x + by*y
 		if z < zout {
 			res := float64(q.v) - back
-			w := weigh(res * res * iwall)
+			t := res * res * iwall
+			if t > 16 && res*res > least {
+				f.odd = append(f.odd, int32(i))
+			}
+			w := weigh(t)
+			if w == 0 || q.near {
+				continue
+			}
 			outSum += w * res * res
 			outN += w
 			w *= iwall
@@ -132,14 +152,22 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		}
 		c := 1 - (xm*xm+ym*ym)*ir*ir
 		nz := math.Sqrt(0.5 * (c + math.Sqrt(c*c+soft)))
-		front := f0 + fx*xm + fy*ym + fz*nz
+		h, lit := m.lamp.light(fx*xm + fy*ym + fz*nz)
+		front := f0 + h
 		step := front - back
 		res := float64(q.v) - back - alpha*step
 		beta := 1 - alpha
 		variance := noise.bob*alpha + noise.wall*beta
 		edgeJ := step * aR
 		steep := edgeJ * loose
-		w := weigh(res * res / (variance + steep*steep))
+		t := res * res / (variance + steep*steep)
+		if t > 16 && res*res > misfit*step*step {
+			f.odd = append(f.odd, int32(i))
+		}
+		w := weigh(t)
+		if q.near {
+			w = 0
+		}
 		iv := 1 / variance
 		info := edgeJ * edgeJ * iv
 		s.all += info
@@ -151,26 +179,38 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		w *= iv
 		chi += w * res * res
 		smearJ := step * aL
-		az := alpha * nz
-		we, wl, wa, wz, wb := w*edgeJ, w*smearJ, w*alpha, w*az, w*beta
-		s.a[lEdge][lEdge] += we * edgeJ
-		s.a[lEdge][lSmear] += we * smearJ
-		s.a[lEdge][lBob] += we * alpha
-		s.a[lEdge][lFront] += we * az
-		s.a[lEdge][lWall] += we * beta
-		s.a[lSmear][lSmear] += wl * smearJ
-		s.a[lSmear][lBob] += wl * alpha
-		s.a[lSmear][lFront] += wl * az
-		s.a[lSmear][lWall] += wl * beta
-		s.a[lBob][lBob] += wa * alpha
-		s.a[lBob][lFront] += wa * az
-		s.a[lBob][lWall] += wa * beta
+		as := alpha * lit
+		az := as * nz
+		we, wl, wa, ws, wz, wb := w*edgeJ, w*smearJ, w*alpha, w*as, w*az, w*beta
+		r := &s.a[lEdge]
+		r[lEdge] += we * edgeJ
+		r[lSmear] += we * smearJ
+		r[lBob] += we * alpha
+		r[lSide] += we * as
+		r[lFront] += we * az
+		r[lWall] += we * beta
+		r = &s.a[lSmear]
+		r[lSmear] += wl * smearJ
+		r[lBob] += wl * alpha
+		r[lSide] += wl * as
+		r[lFront] += wl * az
+		r[lWall] += wl * beta
+		r = &s.a[lBob]
+		r[lBob] += wa * alpha
+		r[lSide] += wa * as
+		r[lFront] += wa * az
+		r[lWall] += wa * beta
+		r = &s.a[lSide]
+		r[lSide] += ws * as
+		r[lFront] += ws * az
+		r[lWall] += ws * beta
 		s.a[lFront][lFront] += wz * az
 		s.a[lFront][lWall] += wz * beta
 		s.a[lWall][lWall] += wb * beta
 		s.g[lEdge] += we * res
 		s.g[lSmear] += wl * res
 		s.g[lBob] += wa * res
+		s.g[lSide] += ws * res
 		s.g[lFront] += wz * res
 		s.g[lWall] += wb * res
 	}
@@ -213,7 +253,7 @@ func (f *Fitter) spreadSectors(m *model, acc *sums) {
 // local tells which of a sector's sums each parameter of the fit moves; the blur
 // is held.
 var local = [pCount]int{
-	pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lBob, pFy: lBob, pFz: lFront,
+	pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lSide, pFy: lSide, pFz: lFront,
 	pB0: lWall, pBx: lWall, pBy: lWall, pE1: lEdge, pE2: lEdge,
 }
 

@@ -13,6 +13,10 @@ const notSeen = float32(math.MaxFloat32)
 // by how much the outline may still move, px.
 func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reach float64) {
 	f.px = f.px[:0]
+	f.flagW = p.W
+	if n := p.W * p.H; len(f.flag) < n {
+		f.flag = make([]bool, n)
+	}
 	out := m.r*(1+math.Abs(m.e1)+math.Abs(m.e2)) + 3*m.s + 3 + m.l/2 + reach
 	in := m.r*(1-math.Abs(m.e1)-math.Abs(m.e2)) - math.Min(3*m.s+2, 0.6*m.r) - m.l/2 - reach
 	box := f.Active.Intersect(p.Rect)
@@ -60,7 +64,7 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 			}
 			o := 3 * (u - p.Rect.Min.X)
 			px := pixel{
-				x: float32(float64(u) - m.cu), y: float32(y),
+				x: float32(float64(u) - m.cu), y: float32(y), at: int32((v-p.Rect.Min.Y)*p.W + u - p.Rect.Min.X),
 				v: float32(w0*float64(row[o]) + w1*float64(row[o+1]) + w2*float64(row[o+2])),
 			}
 			if wall != nil {
@@ -144,7 +148,7 @@ func covered(u, v float64, covers []Disc) bool {
 
 // sector numbers the direction of (x, y) without trigonometry: the diamond
 // angle runs evenly enough.
-func sector(x, y float32) int32 {
+func sector(x, y float32) int16 {
 	ax, ay := x, y
 	if ax < 0 {
 		ax = -ax
@@ -158,7 +162,7 @@ func sector(x, y float32) int32 {
 	} else {
 		a = 1 - a
 	}
-	k := int32(a * (sectors / 4))
+	k := int16(a * (sectors / 4))
 	if k < 0 {
 		return 0
 	}
@@ -168,8 +172,55 @@ func sector(x, y float32) int32 {
 	return k
 }
 
+// oddReach is how far around a pixel that fits badly its neighbours are left out,
+// px: as far as the lens smears the edge of what is there.
+const oddReach = 2
+
+// misfit is the square of the residual, over the contrast, that the model's own
+// shortcomings may leave at an edge without its being odd.
+const misfit = 0.12 * 0.12
+
+// markNear marks the pixels around those that fitted badly, for the next pass.
+// Where they lie all around the outline it is the model that is wrong, and
+// nothing is marked. It tells whether anything is.
+func (f *Fitter) markNear() bool {
+	var hit [sectors]bool
+	wide := 0
+	for _, i := range f.odd {
+		if k := f.px[i].sec; !hit[k] {
+			hit[k] = true
+			wide++
+		}
+	}
+	mark := len(f.odd) > 2 && wide <= sectors*5/12
+	set := func(v bool) {
+		for _, i := range f.odd {
+			at := int(f.px[i].at)
+			for dy := -oddReach; dy <= oddReach; dy++ {
+				for dx := -oddReach; dx <= oddReach; dx++ {
+					if k := at + dy*f.flagW + dx; dx*dx+dy*dy <= oddReach*oddReach+1 && k >= 0 && k < len(f.flag) {
+						f.flag[k] = v
+					}
+				}
+			}
+		}
+	}
+	if mark {
+		set(true)
+	}
+	for i := range f.px {
+		q := &f.px[i]
+		q.near = mark && f.flag[q.at]
+	}
+	if mark {
+		set(false)
+	}
+	return mark
+}
+
 // startLevels sets the levels of bob and wall from the medians well inside and
-// well outside the outline, and returns a first robust noise.
+// well outside the outline, given the bob's shading so far, and returns a first
+// robust noise.
 func (f *Fitter) startLevels(m *model) scatter {
 	mid := func(inside bool) (level, spread float64) {
 		f.ring = f.ring[:0]
@@ -183,7 +234,7 @@ func (f *Fitter) startLevels(m *model) scatter {
 			q := &f.px[i]
 			d2 := float64(q.x*q.x + q.y*q.y)
 			if inside && d2 < lim*lim {
-				f.ring = append(f.ring, float64(q.v))
+				f.ring = append(f.ring, float64(q.v)-m.shade(float64(q.x), float64(q.y)))
 			} else if !inside && d2 > lim*lim {
 				f.ring = append(f.ring, float64(q.v-q.wall))
 			}
@@ -195,7 +246,8 @@ func (f *Fitter) startLevels(m *model) scatter {
 	outside, uo := mid(false)
 	m.level[0], m.level[4] = inside, outside
 	m.level[5], m.level[6] = 0, 0
-	least := quantum(f.Weights)
+	rough := f.rough * (inside - outside)
+	least := quantum(f.Weights) + rough*rough
 	n := scatter{bob: ui*ui + least, wall: uo*uo + least}
 	// Shading and texture swell these medians' spread; what the fit finds later
 	// may be smaller, down to a third.
@@ -210,6 +262,7 @@ func quantum(w [3]float64) float64 {
 
 // pass goes once over the pixels: residuals, weights, normal equations.
 func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [2]float64, on *[pCount]bool) {
+	f.odd = f.odd[:0]
 	n := pBlur
 	if on[pBlur] || on[pE1] {
 		n = pCount
@@ -272,7 +325,13 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 			nz = alpha * math.Sqrt(0.5*(c+math.Sqrt(c*c+soft)))
 		}
 		xb, yb := x*ir, y*ir
-		bob := m.level[0]*alpha + m.level[1]*px + m.level[2]*py + m.level[3]*nz
+		bob := m.level[0] * alpha
+		lit := 1.0
+		if alpha > 1e-3 {
+			h := (m.level[1]*px + m.level[2]*py + m.level[3]*nz) / alpha
+			h, lit = m.lamp.light(h)
+			bob += alpha * h
+		}
 		back := float64(q.wall) + m.level[4] + m.level[5]*xb + m.level[6]*yb
 		res := float64(q.v) - bob - beta*back
 		front := bob
@@ -287,6 +346,12 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		steep := step * aR * loose
 		t := res * res / (variance + steep*steep)
 		w := weigh(t)
+		if t > 16 && res*res > misfit*step*step {
+			f.odd = append(f.odd, int32(i))
+		}
+		if q.near {
+			w = 0
+		}
 		info := step * step * aR * aR / variance
 		acc.all[q.sec] += info
 		if w == 0 {
@@ -304,14 +369,14 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		acc.chi += w * res * res
 		acc.n += w * variance
 
-		j[pU] = step*aU - (m.level[1]*alpha)*ir
-		j[pV] = step*aV - (m.level[2]*alpha)*ir
+		j[pU] = step*aU - m.level[1]*lit*alpha*ir
+		j[pV] = step*aV - m.level[2]*lit*alpha*ir
 		j[pR] = step * aR
 		j[pSmear] = step * aL
 		j[pF0] = alpha
-		j[pFx] = px
-		j[pFy] = py
-		j[pFz] = nz
+		j[pFx] = px * lit
+		j[pFy] = py * lit
+		j[pFz] = nz * lit
 		j[pB0] = beta
 		j[pBx] = beta * xb
 		j[pBy] = beta * yb

@@ -27,7 +27,7 @@ type Search struct {
 
 	w, h, step int
 	mask       []float32 // score of each cell
-	in         []bool
+	in, tmp    []bool
 	dist       []float32
 	stack      []int32
 	lumas      []float64
@@ -50,9 +50,60 @@ func (s *Search) Find(p *clip.Patch, area image.Rectangle, step int, wall *Wall,
 	n := s.w * s.h
 	s.mask, s.in, s.dist = grow(s.mask, n), grow(s.in, n), grow(s.dist, n)
 	s.paint(p, area, wall, before)
-	s.fillHoles()
-	s.distances()
-	return s.peaks(p, area)
+	// A rod or a string in front cuts a bob in two: gaps narrower than a part of
+	// its radius are closed. Without a known size several widths are tried.
+	widths := []int{1, 3, 6}
+	if s.RMin > 3 {
+		widths = []int{max(int(0.22*s.RMin/float64(step)+0.5), 1)}
+	}
+	var found []Candidate
+	for _, k := range widths {
+		for i, m := range s.mask {
+			s.in[i] = m >= 0.5
+		}
+		s.close(k)
+		s.fillHoles()
+		s.distances()
+		found = append(found, s.peaks(p, area)...)
+	}
+	return best(found)
+}
+
+// close closes gaps of up to 2k cells: a dilation followed by an erosion with a
+// square. Beyond the area counts as what is next to it.
+func (s *Search) close(k int) {
+	s.tmp = grow(s.tmp, len(s.in))
+	s.spread(k, true)
+	s.spread(k, false)
+}
+
+// spread makes every cell want where any cell within k, along rows and then
+// along columns, is want.
+func (s *Search) spread(k int, want bool) {
+	w, h := s.w, s.h
+	pass := func(src, dst []bool, n, lines, step, line int) {
+		for l := range lines {
+			o := l * line
+			last := -k - 1 // latest position of want
+			for i := range n {
+				if src[o+i*step] == want {
+					last = i
+				}
+				dst[o+i*step] = want == (i-last <= k)
+			}
+			last = n + k
+			for i := n - 1; i >= 0; i-- {
+				if src[o+i*step] == want {
+					last = i
+				}
+				if last-i <= k {
+					dst[o+i*step] = want
+				}
+			}
+		}
+	}
+	pass(s.in, s.tmp, w, h, 1, w)
+	pass(s.tmp, s.in, h, w, w, 1)
 }
 
 // ChooseStep returns the step that leaves a bob of the least expected radius at
@@ -113,9 +164,6 @@ func (s *Search) paint(p *clip.Patch, area image.Rectangle, wall *Wall, before [
 			}
 			s.mask[y*s.w+x] = float32(score)
 		}
-	}
-	for i, m := range s.mask {
-		s.in[i] = m >= 0.5
 	}
 }
 
@@ -287,7 +335,12 @@ func (s *Search) peaks(p *clip.Patch, area image.Rectangle) []Candidate {
 		s.describe(p, area, &c, cx, cy, r)
 		found = append(found, c)
 	}
-	// The same thing found from two peaks: keep the better.
+	return found
+}
+
+// best sorts candidates by their score and keeps the better of two that are the
+// same thing.
+func best(found []Candidate) []Candidate {
 	slices.SortStableFunc(found, func(a, b Candidate) int {
 		switch sa, sb := a.Score(), b.Score(); {
 		case sa > sb:

@@ -6,6 +6,7 @@ import (
 	"slices"
 
 	"lodeswing/track"
+	"lodeswing/track/shake"
 )
 
 // finish turns the samples' pixels into metres and gathers what is to be said.
@@ -22,7 +23,7 @@ func (f *follower) finish() *track.Track {
 	if f.expo.n >= 10 || f.expo.given {
 		out.Cal.ExposureS = f.expo.tau
 	}
-	steady := report.MovePX < 3*report.UMovePX || report.MovePX < 0.1
+	steady := !reliable(report) || report.MovePX < 3*report.UMovePX || report.MovePX < 0.1
 	moved := 0.0
 	corrected, uncorrected := 0, 0
 	for _, b := range f.bobs {
@@ -64,6 +65,19 @@ func (f *follower) finish() *track.Track {
 		out.Cautions = append(out.Cautions, words)
 	}
 	return out
+}
+
+// reliable tells whether the camera's motion was seen well enough to be taken
+// out: in nearly all frames, by patches that agree.
+func reliable(r *shake.Report) bool {
+	if r.Patches < 6 || 10*r.Lost > r.Seen || len(r.Motions) < 3 {
+		return false
+	}
+	var spread []float64
+	for i := range r.Motions {
+		spread = append(spread, r.Motions[i].Spread)
+	}
+	return median(spread) < 0.3
 }
 
 // toMidExposure takes out the way by which the middle of a smear lies off the

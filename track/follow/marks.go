@@ -43,7 +43,7 @@ func Marks(frame *clip.Frame, r *rig.Rig, subsampled bool) (*camera.Sighting, er
 	}
 	ends := &camera.Ends{}
 	for i, c := range found[:2] {
-		_, fit := detect.Acquire(&p, c, active, subsampled)
+		_, fit := detect.Acquire(&p, c, active, subsampled, false)
 		if !fit.OK {
 			return nil, fmt.Errorf("the scale's mark at [%.0f, %.0f] could not be fitted (%s): give [scale] ends_px instead of mark_look", c.U, c.V, fit.Why)
 		}

@@ -122,15 +122,3 @@ func circleOf(s []track.Sample) (cu, cv, r, rms float64) {
 	}
 	return cu, cv, r, math.Sqrt(rms)
 }
-
-func TestPhoneOverlay(t *testing.T) {
-	src := openShared(t, "phone-clip/weight-on-rod.mp4")
-	r, cam := solve(t, phoneRig, src.Facts().W, src.Facts().H)
-	tr, err := Follow(context.Background(), src, r, cam, Options{})
-	if err != nil {
-		t.Fatal(err)
-	}
-	if err := Overlay(context.Background(), src.Facts(), tr, "/tmp/trkB.R1JZ/ov.mp4", nil); err != nil {
-		t.Fatal(err)
-	}
-}

@@ -225,7 +225,7 @@ func (b *bob) startAt(before []*clip.Patch) *NotFound {
 
 // accept fits a candidate as this bob.
 func (b *bob) accept(c detect.Candidate) (why string) {
-	fitter, r := detect.Acquire(&b.f.whole, c, b.f.active, b.subsampled)
+	fitter, r := detect.Acquire(&b.f.whole, c, b.f.active, b.subsampled, b.rig.Ball)
 	if !r.OK {
 		return r.Why
 	}

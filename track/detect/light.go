@@ -1,0 +1,39 @@
+package detect
+
+import "math"
+
+// lamp tells how a bob's shading ends where the light does not reach: a ball's
+// brightness is that of its surroundings' light plus, on the lamp's side only,
+// the cosine of the angle to the lamp (Lambert). The turn is rounded off, since
+// lamps are not points.
+type lamp struct {
+	sign float64 // of light in the projection; 0: no far side (a flat thing)
+	soft float64 // levels²
+}
+
+// dim sets the lamp for the model from the bob's shading so far; it does not
+// change during a fit, lest its softness be used to imitate something else.
+func (m *model) dim(f *Fitter) {
+	a := 0.06*math.Min(norm3(f.light), 120) + 2
+	m.lamp = lamp{sign: f.ball, soft: a * a}
+}
+
+func norm3(v [3]float64) float64 { return math.Sqrt(v[0]*v[0] + v[1]*v[1] + v[2]*v[2]) }
+
+// light turns the cosine term h, in levels, into what is seen of it, and returns
+// the derivative.
+func (l *lamp) light(h float64) (seen, slope float64) {
+	if l.sign == 0 {
+		return h, 1
+	}
+	r := math.Sqrt(h*h + l.soft)
+	return 0.5 * (h + l.sign*r), 0.5 * (1 + l.sign*h/r)
+}
+
+// shade is what light adds at (x, y) px from the bob's middle, levels.
+func (m *model) shade(x, y float64) float64 {
+	x, y = x/m.r, y/m.r
+	nz := math.Sqrt(math.Max(1-x*x-y*y, 0))
+	h, _ := m.lamp.light(m.level[1]*x + m.level[2]*y + m.level[3]*nz)
+	return h
+}
