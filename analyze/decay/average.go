@@ -21,11 +21,12 @@ type averaged struct {
 
 // average computes q for every law that has weight and its mean over them.
 func (an *analysis) average(q quantity) averaged {
-	return an.averageOver(q, func(law) bool { return true })
+	return an.averageOver(q, func(law) bool { return true }, an.variance)
 }
 
-// averageOver is average over the laws that ok lets through.
-func (an *analysis) averageOver(q quantity, ok func(law) bool) averaged {
+// averageOver is average over the laws that ok lets through, with a variance of
+// one's choice.
+func (an *analysis) averageOver(q quantity, ok func(law) bool, variance func(k int, g []float64) float64) averaged {
 	type one struct{ w, v, variance float64 }
 	var all []one
 	total := 0.0
@@ -40,7 +41,7 @@ func (an *analysis) averageOver(q quantity, ok func(law) bool) averaged {
 			continue
 		}
 		g := gradient(q, f)
-		all = append(all, one{w, v, quadratic(g, an.cov[k])})
+		all = append(all, one{w, v, variance(k, g)})
 		total += w
 		for s := range an.shared {
 			common[s] += w * dot(g, an.gain(k, s))
@@ -68,6 +69,23 @@ func (an *analysis) averageOver(q quantity, ok func(law) bool) averaged {
 	}
 	a.u = math.Sqrt(sum)
 	return a
+}
+
+// variance is gᵀCg for the k-th law, from the noise; where the residuals are not
+// white, not below what the jackknife says.
+func (an *analysis) variance(k int, g []float64) float64 {
+	v := quadratic(g, an.cov[k])
+	if an.jack[k] != nil {
+		v = math.Max(v, quadratic(g, an.jack[k]))
+	}
+	return v
+}
+
+// uncertainty is the standard uncertainty of parameter j of the k-th law.
+func (an *analysis) uncertainty(k, j int) float64 {
+	g := make([]float64, an.fits[k].m.size())
+	g[j] = 1
+	return math.Sqrt(an.variance(k, g))
 }
 
 // addShare adds an independent share, merged with one of the same name.

@@ -100,6 +100,7 @@ type analysis struct {
 	shape    model           // the shape that was chosen; its law is unset
 	fits     []*fitted       // one per law
 	cov      [][]float64
+	jack     [][]float64 // covariances by jackknife, where the residuals are not white
 	weights  []float64
 	bics     []float64
 	noise    noise
@@ -288,11 +289,16 @@ func (an *analysis) work() error {
 		m.law = l
 		g := best
 		if l != best.m.law {
-			if g, err = an.data.fit(an.ctx, m, restart(best, m, amp), false); err != nil {
+			if g, err = an.fitLaw(m, best, amp); err != nil {
 				return err
 			}
 		}
 		an.fits = append(an.fits, g)
+		var j []float64
+		if an.noise.swing > coloured {
+			j = jackknife(g, jackGroups)
+		}
+		an.jack = append(an.jack, j)
 		an.cov = append(an.cov, an.noise.covariance(g))
 		an.bics = append(an.bics, an.bic(g))
 	}
@@ -307,6 +313,32 @@ func (an *analysis) work() error {
 		an.shared = append(an.shared, cut)
 	}
 	return nil
+}
+
+// coloured is how far the noise about the swing's frequency must exceed white
+// noise before uncertainties are also taken from the jackknife.
+const coloured = 1.3
+
+// fitLaw fits m from best. A law that is far off may lose the phase on the way;
+// it is then led along the decay bit by bit.
+func (an *analysis) fitLaw(m model, best *fitted, amp float64) (*fitted, error) {
+	start := restart(best, m, amp)
+	f, err := an.data.fit(an.ctx, m, start, false)
+	if err == nil && f.chi2 < 1000*best.chi2 {
+		return f, nil
+	}
+	if e := an.ctx.Err(); e != nil {
+		return nil, e
+	}
+	led, err2 := an.data.climb(an.ctx, m, start)
+	if err2 != nil {
+		return f, err
+	}
+	led, err2 = an.data.fit(an.ctx, m, led.p, false)
+	if err2 == nil && (err != nil || led.chi2 < f.chi2) {
+		return led, nil
+	}
+	return f, err
 }
 
 // follows returns an error when the motion plainly is no damped swing: the

@@ -87,8 +87,7 @@ func (an *analysis) stateAmplitude() float64 {
 
 func (an *analysis) lawFits(res *Result) {
 	for k, f := range an.fits {
-		n := f.m.size()
-		u := func(j int) float64 { return math.Sqrt(an.cov[k][j*n+j]) }
+		u := func(j int) float64 { return an.uncertainty(k, j) }
 		l := LawFit{Law: f.m.law.String(), BIC: an.bics[k], Weight: an.weights[k], ChiSquare: f.chi2 / (an.noise.sigma2 * an.noise.swing), Omega2: f.p[atK], UOmega2: u(atK)}
 		for _, w := range []struct {
 			l    law
@@ -101,7 +100,7 @@ func (an *analysis) lawFits(res *Result) {
 		}
 		q := zetaAt(res.Amplitude)
 		l.ZetaAtAmplitude = q(f.m, f.p)
-		l.U = math.Sqrt(quadratic(gradient(q, f), an.cov[k]))
+		l.U = math.Sqrt(an.variance(k, gradient(q, f)))
 		res.Laws = append(res.Laws, l)
 	}
 }
@@ -125,10 +124,10 @@ func (an *analysis) noteCautions(res *Result) {
 	}
 	level := math.Sqrt(an.noise.sigma2)
 	if level > 2 {
-		add("The residuals are %.1f times as large as the picture's noise lets expect; the uncertainties are widened by that.", level)
+		add("The residuals are %.3g times as large as the samples' own noise lets expect; the uncertainties are widened by that.", level)
 	}
 	if an.noise.swing > 1.3 {
-		add("The residuals are not white (the camera moves, the codec smears, or the model lacks something): uncertainties are widened by %.1f, as if %.0f of %d samples were independent.", math.Sqrt(an.noise.swing), an.noise.effective, res.Samples)
+		add("The residuals are not white (the camera moves, the codec smears, or the model lacks something): uncertainties are widened by at least %.1f, as if %.0f of %d samples were independent.", math.Sqrt(an.noise.swing), an.noise.effective, res.Samples)
 	}
 	if len(an.shape.powers) > 0 && an.opt.Restoring == Gravity {
 		add("The period changes with amplitude a little otherwise than a pendulum's: a cubic term is wanted. A pivot or a lens that is a little off does this.")
@@ -136,6 +135,12 @@ func (an *analysis) noteCautions(res *Result) {
 	if res.Swings < 3 {
 		add("Only %.1f swings were seen; a longer clip would say much more.", res.Swings)
 	}
+}
+
+// misfit tells whether the residuals are far above the noise of the samples, as
+// a local polynomial sees it, and not white: the model lacks something.
+func (an *analysis) misfit() bool {
+	return an.noise.swing > 2 && an.noise.sigma2 > 9*sq(math.Max(1, an.angle.NoiseRatio))
 }
 
 // motionFindings are period, damping and rest.
@@ -177,7 +182,10 @@ func (an *analysis) motionFindings(res *Result) []finding.Finding {
 		r.Cautions = append(r.Cautions, "Counted from the picture's own upright; no vertical was given.")
 	}
 	out = append(out, r)
-	amp := an.average(func(m model, p []float64) float64 { return m.amplitudeOf(p, p[atAngle], p[atRate], an.most) })
+	// Where the swing began is a matter of its first samples: leaving those out,
+	// as the jackknife does, says nothing of it.
+	amp := an.averageOver(func(m model, p []float64) float64 { return m.amplitudeOf(p, p[atAngle], p[atRate], an.most) },
+		func(law) bool { return true }, func(k int, g []float64) float64 { return quadratic(g, an.cov[k]) })
 	out = append(out, amp.finding("decay.amplitude_start", subject, "Amplitude at the start of the free decay", "rad", how))
 	return out
 }
@@ -195,7 +203,7 @@ func (an *analysis) lawFindings(res *Result) []finding.Finding {
 	}
 	text := "Friction is " + res.Law
 	if !res.Decided {
-		text = "The friction law is not decided"
+		text = "The friction law is not decided; " + res.Law + " fits best"
 	}
 	text += "; weights: " + strings.Join(seen, ", ") + "."
 	if res.Decided {
@@ -214,6 +222,9 @@ func (an *analysis) lawFindings(res *Result) []finding.Finding {
 		stmt.Kind = finding.Undecided
 		stmt.Text += " A longer clip, a larger release, or less noise would decide."
 	}
+	if an.misfit() {
+		stmt.Cautions = append(stmt.Cautions, "None of the seven laws follows the motion to within its noise; this one comes nearest. Friction may change with amplitude or time in another way.")
+	}
 	out := []finding.Finding{stmt}
 	keys := []string{"decay.viscous", "decay.drag", "decay.dry"}
 	names := []string{"Viscous friction over inertia", "Drag over inertia", "Dry friction over inertia"}
@@ -228,7 +239,7 @@ func (an *analysis) lawFindings(res *Result) []finding.Finding {
 			}
 		}
 		if has(top.m.law) && (res.Decided || inclusion > 0.95) {
-			x := an.averageOver(frictionOf(l), has)
+			x := an.averageOver(frictionOf(l), has, an.variance)
 			x = x.with("the camera's clock", clock[i]*an.angle.UClock*x.value)
 			f := x.finding(keys[i], subject, names[i], units[i], "fit; mean over the laws that have it, by their weight")
 			if o, err := top.m.orbitAt(top.p, an.ampStart); err == nil {
@@ -267,7 +278,7 @@ func (an *analysis) limitIn(top *fitted, l law, i int) limit {
 			continue
 		}
 		j := f.m.frictionAt(which)
-		v, u := f.p[j], math.Sqrt(an.cov[k][j*f.m.size()+j])
+		v, u := f.p[j], an.uncertainty(k, j)
 		hi := upper95(v, u)
 		lim.hi = math.Min(lim.hi, hi)
 		if f.m.law == l {
@@ -310,7 +321,7 @@ func (an *analysis) fitSummary(b int) finding.Fit {
 	names, units := f.m.names(), f.m.units()
 	s.Correlation = make([][]float64, n)
 	for i := range n {
-		s.Free = append(s.Free, finding.Parameter{Name: names[i], Value: f.p[i], U: math.Sqrt(an.cov[b][i*n+i]), Unit: units[i]})
+		s.Free = append(s.Free, finding.Parameter{Name: names[i], Value: f.p[i], U: an.uncertainty(b, i), Unit: units[i]})
 		s.Correlation[i] = make([]float64, n)
 		for j := range n {
 			s.Correlation[i][j] = an.cov[b][i*n+j] / math.Sqrt(an.cov[b][i*n+i]*an.cov[b][j*n+j])

@@ -32,23 +32,53 @@ func halfSwings(tp []series.Turning) []swing {
 	return out
 }
 
+// usualSwing is what half swings usually do: the part that is lost from one to
+// the next (hereabouts), and the scatter of a span and of a duration, seen in how
+// three in a row bend; a slow sway of the camera shows there, not in uSpan.
+type usualSwing struct{ loss, uSpan, uDuration float64 }
+
+func usualOf(sw []swing) usualSwing {
+	var u usualSwing
+	var spans, durations []float64
+	for i := 2; i < len(sw); i++ {
+		spans = append(spans, (sw[i-2].span-2*sw[i-1].span+sw[i].span)/math.Sqrt(6))
+		durations = append(durations, (sw[i-2].duration-2*sw[i-1].duration+sw[i].duration)/math.Sqrt(6))
+	}
+	if len(spans) > 4 {
+		u.uSpan = medianAbs(spans) / 0.6744897501960817
+		u.uDuration = medianAbs(durations) / 0.6744897501960817
+	}
+	return u
+}
+
+// lossAbout is the median part lost from one half swing to the next, over the
+// three before and the three after the step to i.
+func lossAbout(sw []swing, i int) float64 {
+	var losses []float64
+	for j := max(1, i-3); j <= min(len(sw)-1, i+3); j++ {
+		losses = append(losses, 1-sw[j].span/sw[j-1].span)
+	}
+	slices.Sort(losses)
+	return math.Max(0, losses[len(losses)/2])
+}
+
 // follows tells whether half swing b can come after a in a free decay: it is no
 // larger, not suddenly smaller than the loss so far allows, and lasts about as
 // long.
-func follows(a, b swing, usualLoss float64) bool {
-	u := 3 * math.Hypot(a.uSpan, b.uSpan)
+func follows(a, b swing, usual usualSwing) bool {
+	u := 3 * math.Hypot(math.Max(a.uSpan, usual.uSpan), math.Max(b.uSpan, usual.uSpan))
 	if b.from.T != a.to.T {
 		return false
 	}
 	if b.span > a.span+u {
 		return false
 	}
-	if b.span < a.span*(1-3*usualLoss-0.05)-u {
+	if b.span < a.span*(1-2*usual.loss-0.01)-u {
 		return false
 	}
 	ratio := b.duration / a.duration
 	// Small swings' turning points are known less well.
-	slack := 0.12 + 3*math.Hypot(a.from.UT+a.to.UT, b.from.UT+b.to.UT)/a.duration
+	slack := 0.12 + 3*math.Max(math.Hypot(a.from.UT+a.to.UT, b.from.UT+b.to.UT), 2*usual.uDuration)/a.duration
 	return ratio > 1-slack && ratio < 1+slack
 }
 
@@ -61,23 +91,16 @@ func longestRun(sw []swing) (run, bool) {
 	if len(sw) == 0 {
 		return run{}, false
 	}
-	// The usual loss per half swing: the median over neighbours that shrink.
-	var losses []float64
-	for i := 1; i < len(sw); i++ {
-		if l := 1 - sw[i].span/sw[i-1].span; l > 0 && l < 0.7 && sw[i].span > 6*sw[i].uSpan {
-			losses = append(losses, l)
-		}
-	}
-	usual := 0.1
-	if len(losses) > 0 {
-		slices.Sort(losses)
-		usual = losses[len(losses)/2]
-	}
+	usual := usualOf(sw)
 	best, bestInfo := run{}, 0.0
 	for i := 0; i < len(sw); {
 		j := i + 1
 		info := sw[i].span * sw[i].span * sw[i].duration
-		for j < len(sw) && follows(sw[j-1], sw[j], usual) {
+		for j < len(sw) {
+			usual.loss = lossAbout(sw, j)
+			if !follows(sw[j-1], sw[j], usual) {
+				break
+			}
 			info += sw[j].span * sw[j].span * sw[j].duration
 			j++
 		}
@@ -138,12 +161,17 @@ type block struct {
 	mean2    float64
 }
 
-// bad tells whether a block's residuals are larger than the noise by more than
-// chance: four standard deviations of their mean square beyond what is usual,
-// and by half at least.
-func (b block) bad(usual float64) bool {
+// level is what blocks' mean squares usually are, and how much their logarithms
+// scatter from block to block, which is more than chance where the noise is
+// slow (a camera that sways) or the model is not perfect.
+type level struct{ usual, scatter float64 }
+
+// bad tells whether a block's residuals are larger than usual by more than
+// chance: four standard deviations of its mean square, as white noise or the
+// scatter of all blocks lets expect, whichever is more.
+func (l level) bad(b block) bool {
 	n := float64(b.to - b.from)
-	return n > 0 && b.mean2 > usual*(1.5+4*math.Sqrt(2/n))
+	return n > 0 && math.Log(b.mean2/l.usual) > math.Max(math.Log(1.5+4*math.Sqrt(2/n)), 4*l.scatter)
 }
 
 // blocks cuts residuals into half swings. res and t belong together; offset is
@@ -163,15 +191,23 @@ func blocks(t, res []float64, offset int, half float64) []block {
 	return out
 }
 
-// usualLevel is the mean square residual that blocks usually have: the median
-// over blocks, and not below the noise that a local polynomial sees.
-func usualLevel(bs []block, noiseRatio float64) float64 {
+// levelOf is the level of blocks: the median of their mean squares, not below
+// the noise that a local polynomial sees, and the robust scatter of the logarithms.
+func levelOf(bs []block, noiseRatio float64) level {
 	x := make([]float64, len(bs))
 	for i, b := range bs {
-		x[i] = b.mean2
+		x[i] = math.Log(b.mean2 + 1e-300)
 	}
 	slices.Sort(x)
-	return math.Max(x[len(x)/2], noiseRatio*noiseRatio)
+	mid := x[len(x)/2]
+	for i := range x {
+		x[i] -= mid
+	}
+	l := level{usual: math.Max(math.Exp(mid), noiseRatio*noiseRatio)}
+	if len(bs) >= 8 {
+		l.scatter = medianAbs(x) / 0.6744897501960817
+	}
+	return l
 }
 
 // refine moves the ends of a stretch that was found by itself: it drops half
@@ -191,9 +227,14 @@ func (an *analysis) refine(st *stretch, m model) (*fitted, error) {
 		}
 		half := math.Pi / math.Sqrt(f.p[atK])
 		bs := blocks(s.t, f.resid, st.from, half)
-		usual := usualLevel(bs, a.NoiseRatio)
-		if round < 8 && st.drop(bs, usual, a) {
-			continue
+		usual := levelOf(bs, a.NoiseRatio)
+		if round < 8 {
+			if at, ok := pushAt(s.t, f, half); ok && st.split(s.t[at], a) {
+				continue
+			}
+			if st.drop(bs, usual, a) {
+				continue
+			}
 		}
 		moved := an.extendForward(st, f, usual, half)
 		if an.extendBackward(st, f, usual, half) {
@@ -207,34 +248,51 @@ func (an *analysis) refine(st *stretch, m model) (*fitted, error) {
 
 // drop shortens the stretch where its first or last half swing, or a push in
 // its middle, is not followed by the model. It tells whether it did.
-func (st *stretch) drop(bs []block, usual float64, a *series.Angle) bool {
+func (st *stretch) drop(bs []block, usual level, a *series.Angle) bool {
 	if len(bs) < minHalfSwings+1 {
 		return false
 	}
-	from, to := st.from, st.to
 	worst := -1
 	for i, b := range bs {
-		if b.bad(usual) && (worst < 0 || b.mean2 > bs[worst].mean2) {
+		if usual.bad(b) && (worst < 0 || b.mean2 > bs[worst].mean2) {
 			worst = i
 		}
 	}
 	if worst < 0 {
 		return false
 	}
-	// Keep the larger side: by information, that is by the half swings' squares.
+	at := bs[worst]
+	return st.keep(at.from, at.to, a)
+}
+
+// split parts the stretch at a time and keeps the larger side.
+func (st *stretch) split(at float64, a *series.Angle) bool {
+	i := st.from
+	for i < st.to && a.T[i] < at {
+		i++
+	}
+	// A few samples on either side are left out: the push takes a moment.
+	return st.keep(max(st.from, i-3), min(st.to, i+3), a)
+}
+
+// keep leaves out the samples cutFrom to cutTo and the smaller side of the rest,
+// by information, that is by the half swings' squares. It tells whether enough
+// is left.
+func (st *stretch) keep(cutFrom, cutTo int, a *series.Angle) bool {
+	from, to := st.from, st.to
 	left, right := 0.0, 0.0
-	at := (a.T[bs[worst].from] + a.T[bs[worst].to-1]) / 2
+	at := (a.T[cutFrom] + a.T[cutTo-1]) / 2
 	for _, w := range st.swings {
 		if w.at < at {
-			left += w.span * w.span
+			left += w.span * w.span * w.duration
 		} else {
-			right += w.span * w.span
+			right += w.span * w.span * w.duration
 		}
 	}
 	if left > right {
-		to = bs[worst].from
+		to = cutFrom
 	} else {
-		from = bs[worst].to
+		from = cutTo
 	}
 	var kept []swing
 	for _, w := range st.swings {
@@ -251,7 +309,7 @@ func (st *stretch) drop(bs []block, usual float64, a *series.Angle) bool {
 
 // extendForward takes in half swings after the end while the model foretells
 // them and they rise above the noise.
-func (an *analysis) extendForward(st *stretch, f *fitted, usual, half float64) bool {
+func (an *analysis) extendForward(st *stretch, f *fitted, usual level, half float64) bool {
 	a := an.angle
 	n := len(a.T) - st.to
 	if n <= 0 {
@@ -272,7 +330,7 @@ func (an *analysis) extendForward(st *stretch, f *fitted, usual, half float64) b
 			lo, hi = math.Min(lo, out[i-st.to]), math.Max(hi, out[i-st.to])
 		}
 		u := a.UAngle[b.from] * math.Max(1, a.NoiseRatio)
-		if b.bad(usual) || hi-lo < u {
+		if usual.bad(b) || hi-lo < u {
 			break
 		}
 		to = b.to
@@ -285,7 +343,7 @@ func (an *analysis) extendForward(st *stretch, f *fitted, usual, half float64) b
 // extendBackward takes in samples before the first while the model, run
 // backwards, meets them. Where it ends at something other than the record's
 // beginning, a thirtieth of a swing is left as a margin for the hand's last touch.
-func (an *analysis) extendBackward(st *stretch, f *fitted, usual, half float64) bool {
+func (an *analysis) extendBackward(st *stretch, f *fitted, usual level, half float64) bool {
 	a := an.angle
 	if st.from == 0 || an.backDone {
 		return false
@@ -300,11 +358,11 @@ func (an *analysis) extendBackward(st *stretch, f *fitted, usual, half float64) 
 	if err := newMover(f.m, false).run(f.p, a.T[st.from], times, out, nil, nil); err != nil {
 		return false
 	}
-	level := math.Sqrt(usual)
+	one := math.Sqrt(usual.usual)
 	good := 0
 	over := 0
 	for i := range times {
-		r := math.Abs(a.Angle[n-1-i]-out[i]) / a.UAngle[n-1-i] / level
+		r := math.Abs(a.Angle[n-1-i]-out[i]) / a.UAngle[n-1-i] / one
 		if r > 3.5 {
 			over++
 		} else {

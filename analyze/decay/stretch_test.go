@@ -104,7 +104,7 @@ func zetaOf(c1, amplitude float64) float64 {
 
 // A push in the middle, large or small, parts the clip: one side is used.
 func TestPushInTheMiddle(t *testing.T) {
-	for _, push := range []float64{1.0, 0.3, 0.1, -0.2} {
+	for _, push := range []float64{1.0, 0.3, 0.1, 0.03, -0.03, -0.1, -0.2, -0.5} {
 		rng := rand.New(rand.NewPCG(5, 12))
 		tr := truth{m: model{sine: true, law: viscous}, p: []float64{0.5, 0, 0, simK, 0.05}, dt: 1.0 / 60, n: 600}
 		_, first := tr.record(rng)
