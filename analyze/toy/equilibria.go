@@ -517,3 +517,47 @@ func (m *Model) damping(y []float64) []float64 {
 	}
 	return c
 }
+
+// Apart is how far two states' places are from each other: the greatest distance
+// in m of a centre of mass, a magnet or a mark on a part between the two. The
+// spin of a part about its own axis does not count.
+func (m *Model) Apart(y, z []float64) float64 {
+	a, b := m.landmarks(y), m.landmarks(z)
+	most := 0.0
+	for i := range a {
+		most = math.Max(most, a[i].Sub(b[i]).Norm())
+	}
+	return most
+}
+
+// Creep follows the falling potential energy from the place of y in small steps,
+// as a toy in syrup would, and returns the place at the bottom.
+func (m *Model) Creep(y []float64) []float64 {
+	m.prepare()
+	z := append([]float64(nil), y...)
+	for i := m.nq; i < len(z); i++ {
+		z[i] = 0
+	}
+	q, d := make([]float64, m.nv), make([]float64, m.nv)
+	trial := make([]float64, len(z))
+	u := m.potential(z)
+	for step := 0.02; step > 1e-5; {
+		m.statics(z, q)
+		size := norm(q)
+		if size == 0 {
+			break
+		}
+		for i := range d {
+			d[i] = q[i] * step / size
+		}
+		copy(trial, z)
+		m.move(trial, d)
+		if v := m.potential(trial); v < u {
+			copy(z, trial)
+			u = v
+		} else {
+			step /= 2
+		}
+	}
+	return z
+}
