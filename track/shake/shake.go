@@ -67,6 +67,8 @@ type Watch struct {
 	seen     int
 	lost     int // observed frames in which the background was not found
 	lastLost float64
+	farAgain float64 // when a search far and wide may be tried again, s
+	farPause float64
 	calm     Motion // where the background was when it last was at rest
 	restless int    // looks to go until the camera counts as still again
 	motions  []Motion
@@ -149,6 +151,7 @@ func (w *Watch) Observe(f *clip.Frame) {
 	} else if len(w.patches) > 0 {
 		w.lost++
 		w.lastLost = f.T
+		w.restless /= 2 // looking at every frame would not help
 	}
 	for _, k := range w.marks {
 		k.follow(f, w.last, &w.buf)
@@ -196,7 +199,12 @@ func (w *Watch) background(f *clip.Frame) (Motion, bool) {
 	best, ok := w.look(f, w.last, false)
 	// When it went far: coarsely first, from where it was and from where the
 	// whole picture fits best, then finely from there.
-	for try := 0; try < 2 && (!ok || 10*best.used < 6*len(w.patches)); try++ {
+	weak := func() bool { return !ok || 10*best.used < 6*len(w.patches) }
+	if weak() && f.T < w.farAgain {
+		// It has been searched for in vain, or is covered for good: not each time.
+		return w.settle(f, best, ok)
+	}
+	for try := 0; try < 2 && weak(); try++ {
 		guess := w.last
 		if try == 1 {
 			guess = similarity{}
@@ -209,7 +217,19 @@ func (w *Watch) background(f *clip.Frame) (Motion, bool) {
 		if fine, found := w.look(f, rough.similarity, false); found && (!ok || fine.used > best.used) {
 			best, ok = fine, true
 		}
+		if try == 1 && weak() {
+			w.farPause = math.Min(2*w.farPause+0.25, 4)
+			w.farAgain = f.T + w.farPause
+		}
 	}
+	if !weak() {
+		w.farPause = 0
+	}
+	return w.settle(f, best, ok)
+}
+
+// settle takes a fit as the frame's motion.
+func (w *Watch) settle(f *clip.Frame, best fitted, ok bool) (Motion, bool) {
 	if !ok {
 		return Motion{}, false
 	}

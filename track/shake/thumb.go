@@ -69,34 +69,52 @@ func (t *thumb) mask(avoid []image.Rectangle) {
 }
 
 // shift finds how far the picture of now moved against t, in pixels of the
-// picture, by the least mean of absolute differences, cut off so that things
-// that move by themselves count little.
+// picture: on every second place first, then about the best.
 func (t *thumb) shift(now *thumb) (du, dv float64) {
-	best := math.Inf(1)
-	for dy := -thumbReach; dy <= thumbReach; dy++ {
-		for dx := -thumbReach; dx <= thumbReach; dx++ {
-			sum, n := 0, 0
-			for y := max(2, 2-dy); y < min(t.h-2, t.h-2-dy); y += 2 {
-				here, there := y*t.w, (y+dy)*t.w+dx
-				for x := max(2, 2-dx); x < min(t.w-2, t.w-2-dx); x += 2 {
-					if !t.use[here+x] {
-						continue
-					}
-					d := int(t.g[here+x]) - int(now.g[there+x])
-					if d < 0 {
-						d = -d
-					}
-					sum += min(d, 60)
-					n++
-				}
-			}
-			if n < 50 {
-				continue
-			}
-			if m := float64(sum) / float64(n); m < best {
-				best, du, dv = m, float64(dx*thumbScale), float64(dy*thumbScale)
-			}
+	best, bx, by := math.Inf(1), 0, 0
+	try := func(dx, dy int) {
+		if m := t.miss(now, dx, dy, best); m < best {
+			best, bx, by = m, dx, dy
 		}
 	}
-	return du, dv
+	for dy := -thumbReach; dy <= thumbReach; dy += 2 {
+		for dx := -thumbReach; dx <= thumbReach; dx += 2 {
+			try(dx, dy)
+		}
+	}
+	cx, cy := bx, by
+	for dy := -1; dy <= 1; dy++ {
+		for dx := -1; dx <= 1; dx++ {
+			try(cx+dx, cy+dy)
+		}
+	}
+	return float64(bx * thumbScale), float64(by * thumbScale)
+}
+
+// miss is the mean of absolute differences at a shift, each cut off so that
+// things that move by themselves count little. It gives up, with more than
+// enough, once it cannot be less than enough.
+func (t *thumb) miss(now *thumb, dx, dy int, enough float64) float64 {
+	sum, n, most := 0, 0, (t.w/2)*(t.h/2)
+	for y := max(2, 2-dy); y < min(t.h-2, t.h-2-dy); y += 2 {
+		here, there := y*t.w, (y+dy)*t.w+dx
+		for x := max(2, 2-dx); x < min(t.w-2, t.w-2-dx); x += 2 {
+			if !t.use[here+x] {
+				continue
+			}
+			d := int(t.g[here+x]) - int(now.g[there+x])
+			if d < 0 {
+				d = -d
+			}
+			sum += min(d, 60)
+			n++
+		}
+		if float64(sum) > enough*float64(most) {
+			return math.Inf(1)
+		}
+	}
+	if n < 50 {
+		return math.Inf(1)
+	}
+	return float64(sum) / float64(n)
 }
