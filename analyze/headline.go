@@ -52,7 +52,7 @@ func decayWords(w *work, part string, decided bool, law string) string {
 		loss, u := 1-math.Exp(-f.Value), f.U*math.Exp(-f.Value)
 		at := ""
 		if _, after, ok := strings.Cut(f.Name, " at an amplitude of "); ok {
-			at = ", at " + after
+			at = ", at an amplitude of " + after
 		}
 		shown := finding.DisplayValue(100*loss, 100*u, "1")
 		fmt.Fprintf(&b, " Left alone it loses %s %% (± %s) of its swing each time%s", shown.Value, shown.U, at)
@@ -88,7 +88,9 @@ func whyNot(w *work, part string) string {
 		return ""
 	}
 	why := strings.TrimSuffix(f.Text, ".")
-	why = strings.TrimPrefix(why, "Not looked for: ")
+	for _, known := range []string{"Not looked for: ", "No free decay was found: "} {
+		why = strings.TrimPrefix(why, known)
+	}
 	return ": " + why
 }
 

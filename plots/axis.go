@@ -16,6 +16,9 @@ import (
 // place is the shown value, or the shown value's decimal logarithm.
 type axisScale struct {
 	label    string
+	name     string
+	unit     string  // shown
+	power    int     // of ten, that the label names
 	factor   float64 // shown = SI × factor
 	min, max float64 // places
 	log      bool
@@ -32,6 +35,19 @@ func (a axisScale) place(si float64) float64 {
 		return math.NaN()
 	}
 	return v
+}
+
+// as shows the axis in another's unit.
+func (a *axisScale) as(other *axisScale) {
+	k := other.factor / a.factor
+	a.factor, a.min, a.max = other.factor, a.min*k, a.max*k
+	a.label = axisLabel(a.name, other.unit, other.power)
+}
+
+// widen lets the axis span that much, about its middle.
+func (a *axisScale) widen(span float64) {
+	mid := (a.min + a.max) / 2
+	a.min, a.max = mid-span/2, mid+span/2
 }
 
 func (a axisScale) most(n int) axisScale {
@@ -75,13 +91,14 @@ func newScale(c *finding.Curve, first bool) axisScale {
 		lo, hi, least = 0, 1, 1
 	}
 	unit, factor := axis.Shown(math.Max(math.Abs(lo), math.Abs(hi)))
-	a := axisScale{factor: factor, log: axis.Log && least < math.Inf(1), count: 6}
+	a := axisScale{name: axis.Label, unit: unit, factor: factor, log: axis.Log && least < math.Inf(1), count: 6}
 	power := 0
 	if big := factor * math.Max(math.Abs(lo), math.Abs(hi)); !a.log && big > 0 && (big < 1e-3 || big >= 1e5) {
 		power = 3 * int(math.Floor(math.Log10(big)/3))
 		a.factor *= math.Pow10(-power)
 	}
-	a.label = axisLabel(axis.Label, unit, power)
+	a.power = power
+	a.label = axisLabel(a.name, unit, power)
 	lo, hi = lo*a.factor, hi*a.factor
 	if lo > hi { // a factor below zero
 		lo, hi = hi, lo

@@ -145,17 +145,19 @@ func newPanel(c *finding.Curve, low, bare bool) *panel {
 		a.axis.Tick.LineStyle = draw.LineStyle{Color: ink, Width: 0.5}
 		a.axis.LineStyle = draw.LineStyle{Color: ink, Width: 0.6}
 		a.axis.Padding = 4
-		a.axis.Min, a.axis.Max = a.s.min, a.s.max
-		a.axis.Tick.Marker = a.s
 	}
 	out := &panel{plot: p, height: mainHeight}
 	numbers := 7
 	switch {
 	case low:
 		out.height, numbers = lowHeight, 5
-	case square(c):
+	case sameUnit(c):
+		out.height = equalScales(&x, &y)
+		numbers = max(3, int(out.height/25))
+	case strings.Contains(c.Key, "phase"):
 		out.height, numbers = 0.9*width, 9
 	}
+	p.X.Min, p.X.Max, p.Y.Min, p.Y.Max = x.min, x.max, y.min, y.max
 	x, y = x.most(7), y.most(numbers)
 	p.X.Tick.Marker, p.Y.Tick.Marker = x, y
 	if bare {
@@ -181,9 +183,29 @@ func newPanel(c *finding.Curve, low, bare bool) *panel {
 	return out
 }
 
-// square tells whether both axes mean the same, so that neither may be pressed.
-func square(c *finding.Curve) bool {
-	return c.X.Unit == c.Y.Unit && c.X.Unit != "" && c.X.Unit != "1" || strings.Contains(c.Key, "phase")
+// sameUnit tells whether both axes mean the same, so that neither may be pressed.
+func sameUnit(c *finding.Curve) bool {
+	return c.X.Unit == c.Y.Unit && c.X.Unit != "" && c.X.Unit != "1" && !c.X.Log && !c.Y.Log
+}
+
+// equalScales gives both axes the same unit and widens the ranges so that a
+// length is as long along one as along the other. It returns the height of the
+// panel that this wants.
+func equalScales(x, y *axisScale) vg.Length {
+	if xs, ys := x.max-x.min, y.max-y.min; x.factor < y.factor || x.factor == y.factor && xs > ys {
+		y.as(x)
+	} else {
+		x.as(y)
+	}
+	const besides = 46 // about what numbers, labels and margins take of either side
+	room := float64(width - besides)
+	tall := math.Min(math.Max(room*(y.max-y.min)/(x.max-x.min), 60), float64(width))
+	if per := (x.max - x.min) / room; (y.max - y.min) < per*tall {
+		y.widen(per * tall)
+	} else {
+		x.widen((y.max - y.min) / tall * room)
+	}
+	return vg.Length(tall) + besides
 }
 
 // lattice is the faint lines behind the data, at the numbered ticks.

@@ -27,7 +27,7 @@ func browser(t *testing.T) context.Context {
 	if path == "" {
 		t.Skip("no Chromium here: the pages are not looked at (on Debian: apt install chromium)")
 	}
-	ctx, cancel := context.WithTimeout(t.Context(), time.Minute)
+	ctx, cancel := context.WithTimeout(t.Context(), 3*time.Minute) // long on a busy machine; a few seconds on an idle one
 	t.Cleanup(cancel)
 	ctx, cancel = chromedp.NewExecAllocator(ctx,
 		chromedp.ExecPath(path), chromedp.Headless, chromedp.NoSandbox, chromedp.DisableGPU, chromedp.NoFirstRun,

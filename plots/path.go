@@ -135,7 +135,7 @@ func overStill(r *record.Record, img image.Image, box image.Rectangle) drawing {
 					if len(piece) == 1 {
 						fillDots(cv, looks[i].ink, dotSize, piece)
 					} else {
-						cv.StrokeLines(style, thin(piece))
+						strokeLine(cv, style, thin(piece))
 					}
 				}
 			}

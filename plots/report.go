@@ -51,6 +51,7 @@ type row struct {
 	Value    string // with uncertainty and unit; or the words of a statement
 	Wide     bool   // Value is a sentence, and there is no interval
 	Interval string
+	Limit    bool // Interval is no interval but what the limit holds at
 	Method   string
 	Cautions []string
 }
@@ -73,9 +74,14 @@ type law struct {
 }
 
 type budget struct {
-	Name   string
-	Value  string
-	Shares []share
+	Subject string
+	Rows    []budgetLine
+}
+
+type budgetLine struct {
+	Name, U string
+	Shares  []share
+	Small   string // sources that hardly contribute
 }
 
 type share struct {
@@ -89,14 +95,19 @@ type fitOnPage struct {
 	Free, Held   []parameter
 	NotSeparable []string
 	Why          string
+	Quality      string
+	Warning      string
 }
+
+// fitNames are the fits' names in plain words.
+var fitNames = map[string]string{"decay.fit": "The free decay", "match.fit": "The model of the toy"}
 
 type parameter struct{ Name, Value string }
 
 // report makes report.html: one file that needs nothing else.
 func report(r *record.Record, figures []figureShown) ([]byte, error) {
 	p := page{
-		Title: r.Run.Rig.Name, Lead: r.Headline, Filmed: filmed(r), Safety: r.Safety, Cautions: r.Cautions,
+		Title: r.Run.Rig.Name, Lead: whole(r.Headline), Filmed: each(filmed(r), whole), Safety: r.Safety, Cautions: each(r.Cautions, whole),
 		Run: provenance(r), RigText: r.Run.Rig.Text,
 	}
 	if p.Title == "" {
@@ -111,7 +122,7 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 	p.Groups, p.HasU = groups(r.Findings)
 	for i, f := range figures {
 		// The SVG is our own drawing; every text in it was escaped there.
-		p.Figures = append(p.Figures, figureOnPage{i + 1, f.Title, f.Caption, template.HTML(f.SVG)})
+		p.Figures = append(p.Figures, figureOnPage{i + 1, f.Title, whole(f.Caption), template.HTML(f.SVG)})
 	}
 	for _, f := range r.Fits {
 		if len(f.Candidates) > 0 {
@@ -119,11 +130,7 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 		}
 		p.Fits = append(p.Fits, fitView(f))
 	}
-	for _, f := range r.Findings {
-		if f.Kind == finding.Measured && len(f.Budget) > 0 && f.U > 0 {
-			p.Budgets = append(p.Budgets, budgetView(f))
-		}
-	}
+	p.Budgets = budgets(r.Findings)
 	var b bytes.Buffer
 	if err := reportPage.Execute(&b, p); err != nil {
 		return nil, err
@@ -134,7 +141,7 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 // groups puts the findings under the part, bob or pair that they are about, in
 // the order in which they were found.
 func groups(all []finding.Finding) (out []group, hasU bool) {
-	index := map[string]int{}
+	index, lastMethod := map[string]int{}, map[int]string{}
 	for _, f := range all {
 		k, ok := index[f.Subject]
 		if !ok {
@@ -150,7 +157,7 @@ func groups(all []finding.Finding) (out []group, hasU bool) {
 		case finding.Undecided:
 			r.Value, r.Wide = "Not determined. "+f.Text, true
 		case finding.UpperLimit:
-			r.Value, r.Interval = tied(shown.String()), "with 95 % confidence"
+			r.Value, r.Interval, r.Limit = tied(shown.String()), "at 95 % confidence", true
 			if f.Text != "" {
 				r.Cautions = append([]string{f.Text}, r.Cautions...)
 			}
@@ -161,6 +168,11 @@ func groups(all []finding.Finding) (out []group, hasU bool) {
 				r.Cautions = append([]string{f.Text}, r.Cautions...)
 			}
 		}
+		if n := len(out[k].Rows); n > 0 && r.Method != "" && r.Method == lastMethod[k] {
+			r.Method = "as the row above"
+		} else {
+			lastMethod[k] = r.Method
+		}
 		out[k].Rows = append(out[k].Rows, r)
 	}
 	return out, hasU
@@ -169,6 +181,17 @@ func groups(all []finding.Finding) (out []group, hasU bool) {
 // tied keeps a number, its uncertainty and its unit on one line.
 func tied(s string) string {
 	return strings.ReplaceAll(strings.ReplaceAll(s, " ", "\u00a0"), "\u00a0×\u00a0", " ×\u00a0")
+}
+
+// whole keeps the sign for per cent with its number.
+func whole(s string) string { return strings.ReplaceAll(s, " %", "\u00a0%") }
+
+func each(all []string, f func(string) string) []string {
+	out := make([]string, len(all))
+	for i, s := range all {
+		out[i] = f(s)
+	}
+	return out
 }
 
 // weighed shows the laws that were tried, the likeliest first.
@@ -191,45 +214,87 @@ func weighed(f finding.Fit) laws {
 	return out
 }
 
-// budgetView shows what an uncertainty is made of, the largest share first.
-func budgetView(f finding.Finding) budget {
-	name := f.Name
-	if f.Subject != "" {
-		name += " (" + f.Subject + ")"
-	}
-	out := budget{Name: name, Value: f.Display().String()}
-	sum := 0.0
-	for _, s := range f.Budget {
-		sum += s.U * s.U
-	}
-	sorted := append([]finding.Share(nil), f.Budget...)
-	sort.SliceStable(sorted, func(i, j int) bool { return sorted[i].U > sorted[j].U })
-	for _, s := range sorted {
-		part := 0.0
-		if sum > 0 {
-			part = s.U * s.U / sum
+// budgets are the uncertainties' sources, under the part that they are about.
+func budgets(all []finding.Finding) []budget {
+	var out []budget
+	index := map[string]int{}
+	for _, f := range all {
+		if f.Kind != finding.Measured || len(f.Budget) == 0 || !(f.U > 0) {
+			continue
 		}
-		d := finding.DisplayValue(0, s.U, f.Unit)
-		u := d.U
-		if u == "" {
-			u = "0"
+		k, ok := index[f.Subject]
+		if !ok {
+			k = len(out)
+			index[f.Subject] = k
+			out = append(out, budget{Subject: f.Subject})
 		}
-		// The unit may differ from share to share; so each carries its own.
-		text := strings.TrimPrefix(d.String(), d.Value+" ± ")
-		if d.Power != 0 {
-			text = u + " × 10" + finding.Superscript(d.Power) + strings.TrimRight(" "+d.Unit, " ")
-		}
-		out.Shares = append(out.Shares, share{Source: s.Source, U: text, Percent: percent(part), Bar: bar(part)})
+		out[k].Rows = append(out[k].Rows, budgetRow(f))
 	}
 	return out
 }
 
+// budgetRow shows what an uncertainty is made of, the largest share first. What
+// is under a hundredth of the whole is only named.
+func budgetRow(f finding.Finding) budgetLine {
+	out := budgetLine{Name: f.Name, U: uncertainty(f.U, f.Unit)}
+	sum := 0.0
+	for _, s := range f.Budget {
+		sum += s.U * s.U
+	}
+	sorted := slices.Clone(f.Budget)
+	sort.SliceStable(sorted, func(i, j int) bool { return sorted[i].U > sorted[j].U })
+	var small []string
+	for _, s := range sorted {
+		if !(s.U > 0) || sum == 0 {
+			continue
+		}
+		part := s.U * s.U / sum
+		if part < 0.01 {
+			small = append(small, s.Source)
+			continue
+		}
+		out.Shares = append(out.Shares, share{Source: s.Source, U: uncertainty(s.U, f.Unit), Percent: percent(part), Bar: bar(part)})
+	}
+	if len(small) > 0 {
+		out.Small = strings.Join(small, ", ")
+	}
+	return out
+}
+
+// uncertainty writes a bare standard uncertainty with its unit.
+func uncertainty(u float64, unit string) string {
+	d := finding.DisplayValue(0, u, unit)
+	if d.U == "" {
+		return "0"
+	}
+	text := d.U
+	if d.Power != 0 {
+		text += " × 10" + finding.Superscript(d.Power)
+	}
+	switch d.Unit {
+	case "":
+		return tied(text)
+	case "°":
+		return text + "°"
+	}
+	return tied(text + " " + d.Unit)
+}
+
 func fitView(f finding.Fit) fitOnPage {
-	name := f.Key
+	name, ok := fitNames[f.Key]
+	if !ok {
+		name = f.Key
+	}
 	if f.Subject != "" {
-		name += " (" + f.Subject + ")"
+		name += ": " + f.Subject
 	}
 	out := fitOnPage{Name: name, NotSeparable: f.NotSeparable, Why: f.Why}
+	if !f.Converged {
+		out.Warning = "The fit did not come to an end; its numbers are to be doubted."
+	}
+	if f.DegreesOf > 0 {
+		out.Quality = fmt.Sprintf("χ² per degree of freedom: %s, with %d degrees of freedom.", strconv.FormatFloat(f.ChiSquare/float64(f.DegreesOf), 'g', 3, 64), f.DegreesOf)
+	}
 	for _, p := range f.Free {
 		out.Free = append(out.Free, parameter{p.Name, finding.DisplayValue(p.Value, p.U, p.Unit).String()})
 	}

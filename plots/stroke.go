@@ -1,13 +1,13 @@
 package plots
 
 import (
+	"image"
 	"image/color"
 	"math"
 
 	"gonum.org/v1/plot"
 	"gonum.org/v1/plot/vg"
 	"gonum.org/v1/plot/vg/draw"
-	"gonum.org/v1/plot/vg/vgimg"
 
 	"lodeswing/analyze/finding"
 )
@@ -72,7 +72,7 @@ func (s stroke) Plot(c draw.Canvas, p *plot.Plot) {
 				fillDots(c, s.look.ink, dotSize, piece)
 				continue
 			}
-			c.StrokeLines(s.look.line(), thin(piece))
+			strokeLine(c, s.look.line(), thin(piece))
 		}
 	}
 }
@@ -157,6 +157,19 @@ func thin(pts []vg.Point) []vg.Point {
 	return out
 }
 
+// strokeLine draws a long solid line in pieces: the time that the raster takes
+// for one shape grows with the square of how often it crosses a row.
+func strokeLine(c draw.Canvas, style draw.LineStyle, pts []vg.Point) {
+	const piece = 200
+	if len(style.Dashes) == 0 {
+		for len(pts) > piece {
+			c.StrokeLines(style, pts[:piece])
+			pts = pts[piece-1:]
+		}
+	}
+	c.StrokeLines(style, pts)
+}
+
 // band fills the area between two lines, piece by piece.
 func band(c draw.Canvas, ink color.NRGBA, lo, hi []vg.Point) {
 	ink.A = bandAlpha
@@ -213,16 +226,23 @@ func cloud(c draw.Canvas, ink color.NRGBA, size vg.Length, pts []vg.Point) {
 		fillDots(c, ink, size, kept)
 		return
 	}
-	const clear = 0
-	w, h := c.Max.X-c.Min.X, c.Max.Y-c.Min.Y
-	img := vgimg.NewWith(vgimg.UseWH(w, h), vgimg.UseDPI(pngDPI), vgimg.UseBackgroundColor(color.NRGBA{A: clear}))
-	inner := draw.New(img)
-	for i := range kept {
-		kept[i].X -= c.Min.X
-		kept[i].Y -= c.Min.Y
+	c.DrawImage(c.Rectangle, spots(c.Rectangle, ink, kept))
+}
+
+// spots is a picture of dots within r, clear between them.
+func spots(r vg.Rectangle, ink color.NRGBA, pts []vg.Point) image.Image {
+	scale := pngDPI / vg.Inch.Points()
+	w, h := int(math.Ceil(r.Size().X.Points()*scale)), int(math.Ceil(r.Size().Y.Points()*scale))
+	img := image.NewPaletted(image.Rect(0, 0, w, h), color.Palette{color.NRGBA{}, ink})
+	for _, p := range pts {
+		x, y := int((p.X-r.Min.X).Points()*scale), int((r.Max.Y-p.Y).Points()*scale)
+		for _, d := range [4]image.Point{{0, 0}, {1, 0}, {0, 1}, {1, 1}} {
+			if at := image.Pt(x+d.X, y+d.Y); at.In(img.Rect) {
+				img.SetColorIndex(at.X, at.Y, 1)
+			}
+		}
 	}
-	fillDots(inner, ink, 0.6, kept)
-	c.DrawImage(c.Rectangle, img.Image())
+	return img
 }
 
 // fillDots draws small squares as one shape, which keeps the file small.
