@@ -17,7 +17,8 @@ import (
 // Read reads a result folder back. The record holds the numbers that were
 // written, bit for bit. A folder that is not a result, that was written by a
 // newer program, or in which a listed file is missing or broken is an error
-// that names the file.
+// that names the file; only figures and report may be missing, since they can be
+// drawn again.
 func Read(dir string) (*Record, error) {
 	info, err := os.Stat(dir)
 	if errors.Is(err, fs.ErrNotExist) {
@@ -59,6 +60,9 @@ func Read(dir string) (*Record, error) {
 			continue
 		}
 		data, err := fs.ReadFile(fsys, res.Path)
+		if errors.Is(err, fs.ErrNotExist) && drawn(res.Path) {
+			continue
+		}
 		if errors.Is(err, fs.ErrNotExist) {
 			return nil, fmt.Errorf("%s is damaged: %s is on its list but not there; measure or analyze again", dir, res.Path)
 		}
@@ -79,6 +83,9 @@ func Read(dir string) (*Record, error) {
 	}
 	return rec, nil
 }
+
+// drawn tells whether a file can be drawn again from the others.
+func drawn(path string) bool { return path == "report.html" || strings.HasPrefix(path, "figures/") }
 
 // take takes one file of the folder into the record.
 func (r *Record) take(res resource, name string, data []byte, run *ran, figures map[string]int) (err error) {

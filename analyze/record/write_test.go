@@ -247,6 +247,25 @@ func TestWhatAKilledRunLeftIsClearedAfterADay(t *testing.T) {
 	}
 }
 
+func TestWhatCanBeDrawnAgainMayBeMissing(t *testing.T) {
+	dir := filepath.Join(t.TempDir(), "res")
+	if err := Write(t.Context(), dir, sampleRecord()); err != nil {
+		t.Fatal(err)
+	}
+	for _, name := range []string{"report.html", "figures/angle-arm.svg"} {
+		if err := os.Remove(filepath.Join(dir, name)); err != nil {
+			t.Fatal(err)
+		}
+	}
+	r, err := Read(dir)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if r.Report != nil || len(r.Figures) != 1 || r.Figures[0].SVG != nil || r.Figures[0].PNG == nil {
+		t.Errorf("report %q, figures %+v", r.Report, r.Figures)
+	}
+}
+
 func TestADamagedFolderIsRefusedInPlainWords(t *testing.T) {
 	dir := filepath.Join(t.TempDir(), "res")
 	for _, c := range []struct {
