@@ -116,8 +116,9 @@ func (m *Model) potential(y []float64) float64 {
 }
 
 // Equilibria looks for the toy's places of rest, stable and not, from a grid of
-// starts (one or two freedoms) or from 300 well spread ones (more), and returns
-// those it found, lowest energy first. Angles are sought within ±reach rad of
+// starts (one or two freedoms) or from up to 300 well spread ones (more; fewer
+// when 80 in a row find nothing new), and returns those it found, lowest energy
+// first. Angles are sought within ±reach rad of
 // hanging or standing (0: all round). Where a toy has a whole ring of equal
 // places (an axisymmetric lantern), one of them stands for all.
 func (m *Model) Equilibria(ctx context.Context, reach float64) ([]Equilibrium, error) {
@@ -130,9 +131,13 @@ func (m *Model) Equilibria(ctx context.Context, reach float64) ([]Equilibrium, e
 		reach = math.Pi
 	}
 	var found []Equilibrium
+	idle := 0
 	for i := range m.seeds() {
 		if err := ctx.Err(); err != nil {
 			return found, err
+		}
+		if idle++; idle > 80 && m.nv > 2 {
+			break
 		}
 		for _, toMinimum := range []bool{true, false} {
 			y := m.seed(i, reach)
@@ -142,6 +147,7 @@ func (m *Model) Equilibria(ctx context.Context, reach float64) ([]Equilibrium, e
 			e := m.classify(y)
 			if m.within(y, reach) && !m.alreadyIn(found, e) {
 				found = append(found, e)
+				idle = 0
 			}
 		}
 	}
@@ -238,7 +244,7 @@ func (m *Model) toRest(y []float64, toMinimum bool) bool {
 	u := m.potential(y)
 	var eig mat.EigenSym
 	lambda := 1e-3
-	for range 200 {
+	for range 100 {
 		m.stiffness(y, k)
 		if !eig.Factorize(k, true) {
 			return false
@@ -253,7 +259,7 @@ func (m *Model) toRest(y []float64, toMinimum bool) bool {
 			return true
 		}
 		improved := false
-		for range 30 {
+		for range 14 {
 			// The step in the eigenvectors' axes: downhill in energy, or towards
 			// zero force whatever the curvature's sign.
 			for i := range d {

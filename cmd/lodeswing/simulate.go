@@ -245,7 +245,7 @@ func (s *simulation) sweep(ctx context.Context, r *rig.Rig, ranges []sweep.Range
 func names(ranges []sweep.Range) string {
 	var out []string
 	for _, g := range ranges {
-		out = append(out, g.Name())
+		out = append(out, g.Words())
 	}
 	return strings.Join(out, " and ")
 }

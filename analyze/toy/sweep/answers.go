@@ -122,7 +122,7 @@ func (a *Answers) findRests(ctx context.Context, m *toy.Model, reach float64) er
 		rest := Rest{Stable: e.Stable, Energy: e.Energy, state: e.State}
 		for k := range m.Parts() {
 			angle, _ := m.Angle(e.State, k)
-			rest.Angles = append(rest.Angles, angle)
+			rest.Angles = append(rest.Angles, math.Round(angle*1e8)/1e8+0) // found to about that; +0 makes −0 plain
 		}
 		if e.Stable {
 			for _, mode := range m.Modes(e.State) {
@@ -177,7 +177,8 @@ func (a *Answers) readParts(m *toy.Model, o *toy.Motion) {
 // swing reads a one-axis part's turning points, which alternate.
 func (p *PartAnswer) swing(t, angle []float64, end float64) {
 	n := len(t)
-	if n >= 2 {
+	goesRound := func(i int) bool { return math.Abs(angle[i]-angle[i-1]) > 2*math.Pi }
+	if n >= 2 && !goesRound(1) {
 		p.First = math.Abs(angle[1]-angle[0]) / 2
 	}
 	late := 0
@@ -192,6 +193,11 @@ func (p *PartAnswer) swing(t, angle []float64, end float64) {
 	}
 	if (n-late)%2 == 0 {
 		late++ // whole swings
+	}
+	for i := late + 1; i < n; i++ {
+		if goesRound(i) {
+			return // not a swing
+		}
 	}
 	p.Period = 2 * (t[n-1] - t[late]) / float64(n-1-late)
 	width, centre := 0.0, 0.0
@@ -279,13 +285,26 @@ func (a *Answers) readRegime(m *toy.Model, o *toy.Motion) {
 			return
 		}
 	}
-	change := last/third - 1
+	second := mean(samples/4, samples/2) - (mean(samples/2, samples*3/4) - third)
+	driven := false
+	for _, e := range o.Events {
+		driven = driven || e.Kind == toy.Kick && e.T > o.T0+0.75*(o.T1-o.T0)
+	}
+	// A driven toy with several freedoms wanders in energy: only what goes one way
+	// for long is a trend. All others lose or gain steadily.
+	wanders := driven && m.Freedoms() > 1
+	trend := last/third - 1
+	if wanders && (third-second)*(last-third) < 0 {
+		trend = 0
+	}
+	slight := 0.02
+	if wanders {
+		slight = 0.1
+	}
 	switch {
-	case change < -0.02:
+	case trend < -slight:
 		a.Regime = Dying
-	case change > 0.02 && a.Kicks == 0:
-		a.Regime = Unknown
-	case change > 0.1:
+	case trend > slight && driven:
 		a.Regime = Growing
 	default:
 		a.Regime = Steady
@@ -426,7 +445,7 @@ func (a *Answers) words(seconds float64) string {
 	case Beating:
 		s = "The motion goes on with an amplitude that changes."
 		if !math.IsNaN(a.Exponent) {
-			s += " Neighbouring motions stay neighbours: it is regular."
+			s += " Over this time a small difference does not clearly grow, so it is regular or only slowly irregular; a longer motion would tell."
 		}
 	case Irregular:
 		s = fmt.Sprintf("The motion goes on irregularly: a small difference grows e-fold in %.2g s, so single positions cannot be told for long; averages and ranges can.", 1/a.Exponent)

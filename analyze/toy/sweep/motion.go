@@ -212,7 +212,9 @@ func (res *Result) number(key, subject, name, unit string, others []*member, of 
 		for _, x := range all {
 			sum += (x - v) * (x - v)
 		}
-		f.U = math.Sqrt(sum / float64(len(all)))
+		if f.U = math.Sqrt(sum / float64(len(all))); f.U < 1e-12*math.Abs(v) {
+			f.U = 0 // rounding
+		}
 		sort.Float64s(all)
 		f.Lo, f.Hi = math.Min(v, quantile(all, 0.025)), math.Max(v, quantile(all, 0.975))
 		f.Method = fmt.Sprintf("%s; interval of %d toys drawn from its uncertainties", byModel, len(all))
@@ -261,8 +263,10 @@ func (res *Result) findingsOf(r *rig.Rig, m *toy.Model, others []*member) {
 		}
 		for j := range a.Rests[i].Modes {
 			res.number("simulate.mode", fmt.Sprintf("%s, mode %d", name, j+1), "Frequency of small swings", "Hz", others, same(func(q *Rest) float64 {
-				if j < len(q.Modes) {
-					return q.Modes[j]
+				// Counted from the quickest: a drawn toy may lack a symmetry and so
+				// have a slow mode more.
+				if l := len(q.Modes) - len(a.Rests[i].Modes) + j; l >= 0 {
+					return q.Modes[l]
 				}
 				return math.NaN()
 			}))

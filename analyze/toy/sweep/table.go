@@ -94,8 +94,21 @@ func cell(x float64) string {
 	return strconv.FormatFloat(x, 'g', -1, 64)
 }
 
+// Words is the range's numbers as people say them: "moment of base magnet".
+func (g Range) Words() string {
+	var out []string
+	for _, a := range g.Addresses {
+		owner, quantity, ok := strings.Cut(a, ".")
+		if ok {
+			a = strings.NewReplacer(".", " ", "_", " ").Replace(quantity) + " of " + owner
+		}
+		out = append(out, a)
+	}
+	return strings.Join(out, " and ")
+}
+
 func (g Range) axis() finding.Axis {
-	a := finding.Axis{Label: g.Name(), Unit: g.SI, ShowUnit: g.Unit, ShowFactor: 1}
+	a := finding.Axis{Label: g.Words(), Unit: g.SI, ShowUnit: g.Unit, ShowFactor: 1}
 	for i, v := range g.Values {
 		if v != 0 {
 			a.ShowFactor = g.Shown[i] / v
@@ -135,7 +148,7 @@ func (t *Table) Curves() []finding.Curve {
 	g := t.Ranges[0]
 	var out []finding.Curve
 	for _, q := range []quantity{periodOf, amplitudeOf} {
-		c := finding.Curve{Key: "sweep-" + q.key, Title: q.title + " against " + g.Name(), Caption: q.caption, X: g.axis(), Y: q.axis}
+		c := finding.Curve{Key: "sweep-" + q.key, Title: q.title + " against " + g.Words(), Caption: q.caption, X: g.axis(), Y: q.axis}
 		for k, p := range t.Parts {
 			l := finding.Line{Name: p, Role: finding.Model, X: g.Values}
 			known := false
