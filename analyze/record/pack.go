@@ -51,6 +51,7 @@ type resource struct {
 	Dialect     *dialect   `json:"dialect,omitempty"`
 	Schema      *schema    `json:"schema,omitempty"`
 	Curve       *curveHead `json:"curve,omitempty"`
+	Cells       *gridHead  `json:"cells,omitempty"` // of the curve listed before it
 	Kept        bool       `json:"kept,omitempty"`
 }
 
@@ -194,6 +195,9 @@ func contents(r *Record) ([]content, error) {
 			},
 			write: func(w io.Writer) error { return writeCurve(w, c) },
 		})
+		if c.Grid != nil {
+			add(gridContent(c))
+		}
 	}
 	file("still.png", "One picture of the clip", r.Still)
 	for _, f := range r.Figures {

@@ -118,6 +118,11 @@ func (r *Record) take(res resource, name string, data []byte, run *ran, figures 
 		c := finding.Curve{Key: h.Key, Subject: h.Subject, Title: h.Title, Caption: h.Caption, X: h.X, Y: h.Y}
 		err = readCurve(in, name, &c)
 		r.Curves = append(r.Curves, c)
+	case res.Cells != nil:
+		var g *finding.Grid
+		if g, err = readGrid(in, name, res.Cells); err == nil && len(r.Curves) > 0 {
+			r.Curves[len(r.Curves)-1].Grid = g
+		}
 	case strings.HasPrefix(res.Path, "figures/"):
 		base := strings.TrimSuffix(path.Base(res.Path), path.Ext(res.Path))
 		k, ok := figures[base]
