@@ -61,9 +61,13 @@ func decayWords(w *work, part string, decided bool, law string) string {
 		}
 		b.WriteString(".")
 	}
-	if decided {
+	f := w.rec.Find("decay.law", part)
+	switch {
+	case decided && f != nil && len(f.Cautions) > 0:
+		fmt.Fprintf(&b, " Of the frictions tried, %s comes nearest, but does not explain all.", law)
+	case decided:
 		fmt.Fprintf(&b, " The friction is %s.", law)
-	} else {
+	default:
 		b.WriteString(" Which friction it is could not be decided.")
 	}
 	return strings.TrimSpace(b.String())

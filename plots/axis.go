@@ -73,6 +73,14 @@ func newScale(c *finding.Curve, first bool) axisScale {
 			}
 		}
 	}
+	if c.Grid != nil {
+		middles := c.Grid.Y
+		if first {
+			middles = c.Grid.X
+		}
+		from, to := edges(middles)
+		take([]float64{from, to})
+	}
 	residual := false
 	for i := range c.Lines {
 		l := &c.Lines[i]
@@ -114,6 +122,8 @@ func newScale(c *finding.Curve, first bool) axisScale {
 			m = 1
 		}
 		a.min, a.max = -1.08*m, 1.08*m
+	case c.Grid != nil:
+		a.min, a.max = lo, hi
 	default:
 		pad := 0.05 * (hi - lo)
 		if first {

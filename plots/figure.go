@@ -156,6 +156,8 @@ func newPanel(c *finding.Curve, low, bare bool) *panel {
 		numbers = max(3, int(out.height/25))
 	case strings.Contains(c.Key, "phase"):
 		out.height, numbers = 0.9*width, 9
+	case c.Grid != nil:
+		out.height, numbers = 0.75*width, 9
 	}
 	p.X.Min, p.X.Max, p.Y.Min, p.Y.Max = x.min, x.max, y.min, y.max
 	x, y = x.most(7), y.most(numbers)
@@ -165,7 +167,16 @@ func newPanel(c *finding.Curve, low, bare bool) *panel {
 		p.X.Tick.Marker = unlabelled{p.X.Tick.Marker}
 		out.height -= 20
 	}
-	p.Add(lattice{x, y})
+	if over := textWidth(p.Y.Label.Text, p.Y.Label.TextStyle.Font) / (out.height - besides); over > 1 {
+		p.Y.Label.TextStyle.Font.Size /= over // else gonum would press the panel
+	}
+	var g *cells
+	if c.Grid != nil {
+		g = newCells(c, x, y)
+		p.Add(g)
+	} else {
+		p.Add(lattice{x, y})
+	}
 	styles := looks(c)
 	for i := range c.Lines {
 		l := &c.Lines[i]
@@ -180,6 +191,10 @@ func newPanel(c *finding.Curve, low, bare bool) *panel {
 		}
 	}
 	out.legend = newLegend(c, styles)
+	if g != nil {
+		out.legend.key = newKey(g)
+		out.legend.height += out.legend.key.height()
+	}
 	return out
 }
 
@@ -187,6 +202,9 @@ func newPanel(c *finding.Curve, low, bare bool) *panel {
 func sameUnit(c *finding.Curve) bool {
 	return c.X.Unit == c.Y.Unit && c.X.Unit != "" && c.X.Unit != "1" && !c.X.Log && !c.Y.Log
 }
+
+// besides is about what numbers, label and margins take of a panel's side.
+const besides = vg.Length(46)
 
 // equalScales gives both axes the same unit and widens the ranges so that a
 // length is as long along one as along the other. It returns the height of the
@@ -197,7 +215,6 @@ func equalScales(x, y *axisScale) vg.Length {
 	} else {
 		x.as(y)
 	}
-	const besides = 46 // about what numbers, labels and margins take of either side
 	room := float64(width - besides)
 	tall := math.Min(math.Max(room*(y.max-y.min)/(x.max-x.min), 60), float64(width))
 	if per := (x.max - x.min) / room; (y.max - y.min) < per*tall {

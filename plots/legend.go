@@ -11,6 +11,7 @@ import (
 type legend struct {
 	items  []legendItem
 	height vg.Length
+	key    *key // what a grid's colours mean, below the items; nil for none
 }
 
 type legendItem struct {
@@ -52,6 +53,9 @@ func newLegend(c *finding.Curve, styles []look) legend {
 }
 
 func (l legend) draw(c draw.Canvas, top vg.Length) {
+	if l.key != nil {
+		l.key.draw(c, top-l.height+l.key.height())
+	}
 	style := textStyle(tickSize, false)
 	for _, it := range l.items {
 		y := top - vg.Length(it.row)*legendRow

@@ -117,7 +117,11 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 		}
 	}
 	if r.Run.Clip != nil {
-		p.Facts = r.Run.Clip.List()
+		for _, f := range r.Run.Clip.List() {
+			if f.Name != "sha256" && f.Name != "path" { // said above, and of no use elsewhere
+				p.Facts = append(p.Facts, f)
+			}
+		}
 	}
 	p.Groups, p.HasU = groups(r.Findings)
 	for i, f := range figures {
@@ -288,12 +292,15 @@ func fitView(f finding.Fit) fitOnPage {
 	if f.Subject != "" {
 		name += ": " + f.Subject
 	}
-	out := fitOnPage{Name: name, NotSeparable: f.NotSeparable, Why: f.Why}
+	out := fitOnPage{Name: name, NotSeparable: f.NotSeparable}
+	if why := strings.TrimSuffix(f.Why, "."); why != "" {
+		out.Why = "End of the search: " + why + "."
+	}
 	if !f.Converged {
 		out.Warning = "The fit did not come to an end; its numbers are to be doubted."
 	}
 	if f.DegreesOf > 0 {
-		out.Quality = fmt.Sprintf("χ² per degree of freedom: %s, with %d degrees of freedom.", strconv.FormatFloat(f.ChiSquare/float64(f.DegreesOf), 'g', 3, 64), f.DegreesOf)
+		out.Quality = fmt.Sprintf("χ² per degree of freedom: %s, with %d degrees of freedom.", finding.DisplayValue(f.ChiSquare/float64(f.DegreesOf), 0.05*f.ChiSquare/float64(f.DegreesOf), "1").Value, f.DegreesOf)
 	}
 	for _, p := range f.Free {
 		out.Free = append(out.Free, parameter{p.Name, finding.DisplayValue(p.Value, p.U, p.Unit).String()})

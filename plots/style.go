@@ -15,7 +15,7 @@ import (
 const (
 	width      = 4 * vg.Inch
 	mainHeight = 2.1 * vg.Inch // of a panel, axes included
-	lowHeight  = 1.15 * vg.Inch
+	lowHeight  = 1.5 * vg.Inch
 	gap        = vg.Length(6)
 	titleSize  = vg.Length(10.5)
 	labelSize  = vg.Length(9)

@@ -97,6 +97,9 @@ func scalar(v any) string {
 		}
 		return "no"
 	case float64:
+		if v < 1e-12 && v > -1e-12 {
+			v = 0 // rounding's dust
+		}
 		return strconv.FormatFloat(v, 'g', 7, 64)
 	}
 	return fmt.Sprint(v)
