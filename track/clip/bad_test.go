@@ -91,6 +91,13 @@ func TestNotAClip(t *testing.T) {
 			}
 		}
 	})
+	t.Run("facts made by hand", func(t *testing.T) {
+		for _, f := range []*clip.Facts{nil, {Times: []float64{0, 1}}, {Numbered: true}} {
+			if _, err := clip.Open(context.Background(), f); err == nil || !strings.Contains(err.Error(), "Inspect") {
+				t.Errorf("error %v", err)
+			}
+		}
+	})
 	t.Run("stopped", func(t *testing.T) {
 		ctx, cancel := context.WithCancel(context.Background())
 		cancel()

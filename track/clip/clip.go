@@ -119,6 +119,9 @@ func Open(ctx context.Context, facts *Facts) (Source, error) {
 	if facts == nil {
 		return nil, errors.New("clip: no facts given; call Inspect first")
 	}
+	if len(facts.pts) == 0 || len(facts.pts) != len(facts.Times) {
+		return nil, errors.New("clip: these facts are not from Inspect; call it first")
+	}
 	if facts.Numbered {
 		return openPictures(facts)
 	}

@@ -2,7 +2,6 @@ package clip
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"image"
 	_ "image/jpeg" // picture formats of a numbered folder
@@ -139,9 +138,6 @@ type pictureSource struct {
 }
 
 func openPictures(f *Facts) (Source, error) {
-	if len(f.pictures) == 0 {
-		return nil, errors.New("clip: these facts list no pictures; call Inspect first")
-	}
 	s := &pictureSource{facts: f, frame: NewFrame(0, 0, f.StoredW, f.StoredH), at: math.NaN()}
 	s.frame.RotationDeg = f.RotationDeg
 	return s, nil
