@@ -65,10 +65,22 @@ func (g *grey) at(u, v float64) float64 {
 
 // ring is the circle of 16 samples, radius 5, of the ChESS response, in order.
 var ring = [16][2]int{
-	{2, -5}, {0, -5}, {-2, -5}, {-4, -4},
-	{-5, -2}, {-5, 0}, {-5, 2}, {-4, 4},
-	{-2, 5}, {0, 5}, {2, 5}, {4, 4},
-	{5, 2}, {5, 0}, {5, -2}, {4, -4},
+	{2, -5},
+	{0, -5},
+	{-2, -5},
+	{-4, -4},
+	{-5, -2},
+	{-5, 0},
+	{-5, 2},
+	{-4, 4},
+	{-2, 5},
+	{0, 5},
+	{2, 5},
+	{4, 4},
+	{5, 2},
+	{5, 0},
+	{5, -2},
+	{4, -4},
 }
 
 const ringEdge = 6 // pixels at the border without a response
