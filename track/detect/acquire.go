@@ -22,7 +22,7 @@ func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, bal
 	g := Guess{U: c.U, V: c.V, UPos: 0.1*c.R + 1}
 	coarse := math.Min(2.5, 0.25*c.R)
 	f.Shape.Blur, f.Shape.UBlur = coarse, 0.1
-	f.rough = 0.15
+	f.rough, f.unlit = 0.15, true
 	r := f.Fit(p, nil, g, nil, false)
 	if !r.OK {
 		return nil, r
@@ -35,6 +35,7 @@ func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, bal
 			f.ball = -1
 		}
 	}
+	f.unlit = false
 	f.light = [3]float64{0, 0, 10 * f.ball} // from the camera's side, to begin with
 	f.frames = 0
 	if r, ok = f.closeIn(p, r); !ok {
@@ -72,12 +73,15 @@ func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok b
 	var noise [3][3]float64
 	var nNoise float64
 	row := 3 * p.W
-	for y := range p.H {
-		for x := range p.W {
-			d := math.Hypot(float64(x+p.Rect.Min.X)-c.U, float64(y+p.Rect.Min.Y)-c.V)
+	in2, from2, far := 0.64*c.R*c.R, (1.15*c.R+1)*(1.15*c.R+1), 1.6*c.R+4
+	box := image.Rect(int(c.U-far), int(c.V-far), int(c.U+far)+2, int(c.V+far)+2).Intersect(p.Rect).Sub(p.Rect.Min)
+	for y := box.Min.Y; y < box.Max.Y; y++ {
+		for x := box.Min.X; x < box.Max.X; x++ {
+			dx, dy := float64(x+p.Rect.Min.X)-c.U, float64(y+p.Rect.Min.Y)-c.V
+			d2 := dx*dx + dy*dy
 			o := y*row + 3*x
-			inside := d < 0.8*c.R
-			outside := d > 1.15*c.R+1 && d < 1.6*c.R+4
+			inside := d2 < in2
+			outside := d2 > from2 && d2 < far*far
 			if !inside && !outside {
 				continue
 			}

@@ -34,50 +34,6 @@ func edge(z float64) (cdf, pdf float64) {
 	return a[0] + f*(b[0]-a[0]), a[1] + f*(b[1]-a[1])
 }
 
-// gauss holds the nodes (as shares of the whole way, centred) and weights of
-// Gauss–Legendre quadrature for each number of nodes, made at start-up by
-// Newton's iteration on the Legendre polynomials (Golub & Welsch's values;
-// the iteration is the textbook one).
-const maxNodes = 48
-
-var gauss = func() (g [maxNodes + 1]struct{ x, w []float64 }) {
-	for n := 1; n <= maxNodes; n++ {
-		g[n].x, g[n].w = make([]float64, n), make([]float64, n)
-		for i := range n {
-			x := math.Cos(math.Pi * (float64(i) + 0.75) / (float64(n) + 0.5))
-			var d float64
-			for range 100 {
-				p0, p1 := 1.0, x
-				for k := 2; k <= n; k++ {
-					p0, p1 = p1, ((2*float64(k)-1)*x*p1-(float64(k)-1)*p0)/float64(k)
-				}
-				if n == 1 {
-					p0, p1 = 1, x
-				}
-				d = float64(n) * (x*p1 - p0) / (x*x - 1)
-				dx := p1 / d
-				x -= dx
-				if math.Abs(dx) < 1e-15 {
-					break
-				}
-			}
-			g[n].x[i] = x / 2
-			g[n].w[i] = 1 / ((1 - x*x) * d * d)
-		}
-	}
-	return g
-}()
-
-// nodesFor returns how many nodes resolve a smear of length l over an edge of
-// blur s to better than 1e-3 of the contrast; see the test.
-func nodesFor(l, s float64) int {
-	if l < 0.35*s {
-		return 1
-	}
-	n := int(math.Ceil(0.75*l/s)) + 1
-	return min(max(n, 2), maxNodes)
-}
-
 // edgeSmeared averages Φ(z + a·t) over t from −1/2 to 1/2: an edge that moved
 // by a blurs during the exposure. It returns the average, its derivative by z,
 // and its derivative by a, which is also the average of t·φ(z + a·t).

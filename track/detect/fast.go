@@ -5,7 +5,7 @@ import "math"
 // The everyday pass. An outline that is little smeared is, seen from any one
 // sector, a straight edge that can only move along its normal; so each pixel
 // adds to a small set of local sums (the edge, its smear, the bob's level, its
-// shading sideways and towards the camera, the wall's level), and the sums of a sector are
+// shading sideways and towards the camera, the wall's level and slope), and the sums of a sector are
 // turned into those of the whole fit with the sector's direction. Residuals are
 // those of the full model; only their derivatives are taken at the sector's
 // middle, which costs under 1 % in efficiency and no bias.
@@ -18,6 +18,7 @@ const (
 	lSide
 	lFront
 	lWall
+	lSlope
 	lCount
 )
 
@@ -25,6 +26,61 @@ type sectorSums struct {
 	a         [lCount][lCount]float64 // upper triangle
 	g         [lCount]float64
 	kept, all float64
+}
+
+// add adds one pixel of weight w and residual res. e, l, b, d, f, k, p are how
+// its value changes with the local parameters, in their order. Written out,
+// because this is where most of the time goes.
+func (s *sectorSums) add(w, res, e, l, b, d, f, k, p float64) {
+	r := &s.a[lEdge]
+	q := w * e
+	r[lEdge] += q * e
+	r[lSmear] += q * l
+	r[lBob] += q * b
+	r[lSide] += q * d
+	r[lFront] += q * f
+	r[lWall] += q * k
+	r[lSlope] += q * p
+	s.g[lEdge] += q * res
+	r = &s.a[lSmear]
+	q = w * l
+	r[lSmear] += q * l
+	r[lBob] += q * b
+	r[lSide] += q * d
+	r[lFront] += q * f
+	r[lWall] += q * k
+	r[lSlope] += q * p
+	s.g[lSmear] += q * res
+	r = &s.a[lBob]
+	q = w * b
+	r[lBob] += q * b
+	r[lSide] += q * d
+	r[lFront] += q * f
+	r[lWall] += q * k
+	r[lSlope] += q * p
+	s.g[lBob] += q * res
+	r = &s.a[lSide]
+	q = w * d
+	r[lSide] += q * d
+	r[lFront] += q * f
+	r[lWall] += q * k
+	r[lSlope] += q * p
+	s.g[lSide] += q * res
+	r = &s.a[lFront]
+	q = w * f
+	r[lFront] += q * f
+	r[lWall] += q * k
+	r[lSlope] += q * p
+	s.g[lFront] += q * res
+	r = &s.a[lWall]
+	q = w * k
+	r[lWall] += q * k
+	r[lSlope] += q * p
+	s.g[lWall] += q * res
+	r = &s.a[lSlope]
+	q = w * p
+	r[lSlope] += q * p
+	s.g[lSlope] += q * res
 }
 
 // directions of the sectors' middles, by the diamond angle that sector uses.
@@ -50,7 +106,7 @@ const flat = 3.3 // blurs from the outline beyond which a pixel shows bob or wal
 // quick tells whether the everyday pass is good for this model: a smear that is
 // short against the radius, and the blur held.
 func (m *model) quick(on *[pCount]bool) bool {
-	return !on[pBlur] && m.l <= 0.4*m.r
+	return !on[pBlur] && m.l <= 2*longestPiece*m.r
 }
 
 // passQuick does what pass does, for models that are quick.
@@ -59,51 +115,57 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 	sec := &f.sec
 	*sec = [sectors]sectorSums{}
 	du, dv := m.cu-from[0], m.cv-from[1]
-	is, ir := 1/m.s, 1/m.r
-	edgeR := m.r - m.s*m.s*0.5*ir
-	m11, m12, m22 := 1-m.e1, -m.e2, 1+m.e1
-	k11, k12, k21, k22 := 1-m.skew[0][0], -m.skew[0][1], -m.skew[1][0], 1-m.skew[1][1]
-	soft := 2 * m.s * ir
-	soft *= soft
+	o := m.outline()
+	ir := o.ir
 	f0, fx, fy, fz := m.level[0], m.level[1]*ir, m.level[2]*ir, m.level[3]
 	b0, bx, by := m.level[4], m.level[5]*ir, m.level[6]*ir
 	ibob, iwall := 1/noise.bob, 1/noise.wall
-	zin, zout := flat+0.5*m.l*is, -flat-0.5*m.l*is
-	smeared := m.l > 0.02*m.s
 	least := misfit * (f0 - b0 - f.back) * (f0 - b0 - f.back)
-	var inSum, inN, outSum, outN, chi, n float64
+	most := f.most
+	halfSmear := 0.5 * o.smear * ir
+	var inSum, inN, outSum, outN, chi, n, cost float64
+	var c coverage
 	for i := range f.px {
 		q := &f.px[i]
-		x, y := float64(q.x)-du, float64(q.y)-dv
-		x, y = k11*x+k12*y, k21*x+k22*y
-		xp, yp := m11*x+m12*y, m12*x+m22*y
+		x, y := o.straight(float64(q.x)-du, float64(q.y)-dv)
+		xp, yp := o.m11*x+o.m12*y, o.m12*x+o.m22*y
 		r2 := xp*xp + yp*yp
 		rho := math.Sqrt(r2)
-		z := (edgeR - rho) * is
+		far := rho * ir
 		s := &sec[q.sec]
-		if z > zin {
-			c := 1 - r2*ir*ir
-			nz := math.Sqrt(0.5 * (c + math.Sqrt(c*c+soft)))
+		d := o.edge - rho // inside is positive
+		reach := o.flat
+		if o.smear > 0 {
+			reach += halfSmear*math.Abs(x*o.mu+y*o.mv) + o.piece*halfSmear
+		}
+		if d > reach {
+			nz := 0.0 // far enough inside for the rounding off not to matter
+			if c := 1 - far*far; c > 0 {
+				nz = math.Sqrt(c)
+			}
 			h, lit := m.lamp.light(fx*x + fy*y + fz*nz)
 			res := float64(q.v) - f0 - h
-			t := res * res * ibob
-			if t > 16 && res*res > least {
+			r2 := res * res
+			cost += min(r2, most)
+			t := r2 * ibob
+			if t > 16 && r2 > least {
 				f.odd = append(f.odd, int32(i))
 			}
 			w := weigh(t)
 			if w == 0 || q.near {
 				continue
 			}
-			inSum += w * res * res
+			inSum += w * r2
 			inN += w
 			w *= ibob
-			chi += w * res * res
+			chi += w * r2
 			nz *= lit
-			ws, wn := w*lit, w*nz
+			side := lit * far
+			ws, wn := w*side, w*nz
 			s.a[lBob][lBob] += w
 			s.a[lBob][lSide] += ws
 			s.a[lBob][lFront] += wn
-			s.a[lSide][lSide] += ws * lit
+			s.a[lSide][lSide] += ws * side
 			s.a[lSide][lFront] += ws * nz
 			s.a[lFront][lFront] += wn * nz
 			s.g[lBob] += w * res
@@ -112,56 +174,49 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			continue
 		}
 		back := float64(q.wall) + b0 + bx*x + by*y
-		if z < zout {
+		if d < -reach {
 			res := float64(q.v) - back
-			t := res * res * iwall
-			if t > 16 && res*res > least {
+			r2 := res * res
+			cost += min(r2, most)
+			t := r2 * iwall
+			if t > 16 && r2 > least {
 				f.odd = append(f.odd, int32(i))
 			}
 			w := weigh(t)
 			if w == 0 || q.near {
 				continue
 			}
-			outSum += w * res * res
+			outSum += w * r2
 			outN += w
 			w *= iwall
-			chi += w * res * res
+			chi += w * r2
+			wf := w * far
 			s.a[lWall][lWall] += w
+			s.a[lWall][lSlope] += wf
+			s.a[lSlope][lSlope] += wf * far
 			s.g[lWall] += w * res
+			s.g[lSlope] += wf * res
 			continue
 		}
-		irho := 1 / rho
-		nx, ny := (m11*xp+m12*yp)*irho, (m12*xp+m22*yp)*irho
-		var alpha, aR, aL float64
-		xm, ym := x, y // middle of the part of the smear that covers this pixel
-		if smeared {
-			nm := nx*m.mu + ny*m.mv
-			a := m.l * nm * is
-			// The way across the smear bends the edge away by its sagitta.
-			zc := z - m.l*m.l*(1-nm*nm)*irho*is*(1.0/24)
-			var aA float64
-			alpha, aR, aA = edgeSmeared(zc, a)
-			aR *= is
-			aL = aA*nm*is - aR*m.l*(1-nm*nm)*irho*(1.0/12)
-			k := -0.5 * m.l * (1 - alpha) * min(max(a*(1.0/3), -1), 1)
-			xm += k * m.mu
-			ym += k * m.mv
+		if o.smear > 0 {
+			o.cover(x, y, &c)
 		} else {
-			alpha, aR = edge(z)
-			aR *= is
+			c.alpha, c.r = edge(d * o.is)
+			c.r *= o.is
+			c.x, c.y = x, y
 		}
-		c := 1 - (xm*xm+ym*ym)*ir*ir
-		nz := math.Sqrt(0.5 * (c + math.Sqrt(c*c+soft)))
-		h, lit := m.lamp.light(fx*xm + fy*ym + fz*nz)
-		front := f0 + h
-		step := front - back
-		res := float64(q.v) - back - alpha*step
-		beta := 1 - alpha
-		variance := noise.bob*alpha + noise.wall*beta
-		edgeJ := step * aR
+		nz := o.facing(c.x, c.y)
+		h, lit := m.lamp.light(fx*c.x + fy*c.y + fz*nz)
+		step := f0 + h - back
+		res := float64(q.v) - back - c.alpha*step
+		beta := 1 - c.alpha
+		variance := noise.bob*c.alpha + noise.wall*beta
+		edgeJ := step * c.r
 		steep := edgeJ * loose
-		t := res * res / (variance + steep*steep)
-		if t > 16 && res*res > misfit*step*step {
+		q2 := res * res
+		cost += min(q2, most)
+		t := q2 / (variance + steep*steep)
+		if t > 16 && q2 > misfit*step*step {
 			f.odd = append(f.odd, int32(i))
 		}
 		w := weigh(t)
@@ -177,57 +232,24 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		s.kept += w * info
 		n += w
 		w *= iv
-		chi += w * res * res
-		smearJ := step * aL
-		as := alpha * lit
-		az := as * nz
-		we, wl, wa, ws, wz, wb := w*edgeJ, w*smearJ, w*alpha, w*as, w*az, w*beta
-		r := &s.a[lEdge]
-		r[lEdge] += we * edgeJ
-		r[lSmear] += we * smearJ
-		r[lBob] += we * alpha
-		r[lSide] += we * as
-		r[lFront] += we * az
-		r[lWall] += we * beta
-		r = &s.a[lSmear]
-		r[lSmear] += wl * smearJ
-		r[lBob] += wl * alpha
-		r[lSide] += wl * as
-		r[lFront] += wl * az
-		r[lWall] += wl * beta
-		r = &s.a[lBob]
-		r[lBob] += wa * alpha
-		r[lSide] += wa * as
-		r[lFront] += wa * az
-		r[lWall] += wa * beta
-		r = &s.a[lSide]
-		r[lSide] += ws * as
-		r[lFront] += ws * az
-		r[lWall] += ws * beta
-		s.a[lFront][lFront] += wz * az
-		s.a[lFront][lWall] += wz * beta
-		s.a[lWall][lWall] += wb * beta
-		s.g[lEdge] += we * res
-		s.g[lSmear] += wl * res
-		s.g[lBob] += wa * res
-		s.g[lSide] += ws * res
-		s.g[lFront] += wz * res
-		s.g[lWall] += wb * res
+		chi += w * q2
+		lit *= c.alpha
+		s.add(w, res, edgeJ, step*c.l, c.alpha, lit*far, lit*nz, beta, beta*far)
 	}
 	acc.inSum, acc.inN, acc.outSum, acc.outN = inSum, inN, outSum, outN
+	acc.cost = cost
 	acc.chi, acc.n = chi, n+inN+outN
 	f.spreadSectors(m, acc)
 }
 
 // spreadSectors turns the sectors' sums into those of the whole fit.
 func (f *Fitter) spreadSectors(m *model, acc *sums) {
-	kb, kw := 1-1.5*m.s/m.r, 1+1.5*m.s/m.r
 	for k := range f.sec {
 		s := &f.sec[k]
 		acc.all[k], acc.kept[k] = s.all, s.kept
 		c, d := directions[k][0], directions[k][1]
 		mult := vector{
-			pU: c, pV: d, pR: 1, pSmear: 1, pF0: 1, pFx: kb * c, pFy: kb * d, pFz: 1, pB0: 1, pBx: kw * c, pBy: kw * d,
+			pU: c, pV: d, pR: 1, pSmear: 1, pF0: 1, pFx: c, pFy: d, pFz: 1, pB0: 1, pBx: c, pBy: d,
 			pE1: m.r * (c*c - d*d), pE2: m.r * 2 * c * d,
 		}
 		for i := range pCount {
@@ -254,7 +276,7 @@ func (f *Fitter) spreadSectors(m *model, acc *sums) {
 // is held.
 var local = [pCount]int{
 	pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lSide, pFy: lSide, pFz: lFront,
-	pB0: lWall, pBx: lWall, pBy: lWall, pE1: lEdge, pE2: lEdge,
+	pB0: lWall, pBx: lSlope, pBy: lSlope, pE1: lEdge, pE2: lEdge,
 }
 
 // weigh is the weight of a residual whose square over its variance is t: full

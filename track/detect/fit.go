@@ -12,7 +12,10 @@ const (
 	sectors   = 24   // of the outline, for what is hidden and for neighbouring residuals that agree
 	mostSteps = 12   // of Gauss–Newton; from a good prediction it takes one or two
 	mostPix   = 2400 // beyond, every second, third … pixel of the band is taken
-	leastBlur = 0.3  // px; a pixel's own width is √(1/12) = 0.29
+	// A step from this near ends so close to the minimum that a second one would
+	// not move the centre by a fiftieth of its uncertainty; see TestOneStep.
+	closeEnough = 0.1 // px
+	leastBlur   = 0.3 // px; a pixel's own width is √(1/12) = 0.29
 )
 
 // Fitter fits one bob in one projection of the colours, frame after frame. It
@@ -28,15 +31,20 @@ type Fitter struct {
 	agree  float64    // mean factor by which sectors' residuals exceed white noise's
 	agreeN float64
 	frames int
+	unlit  bool    // no shading is fitted (coarsely, while closing in)
 	rough  float64 // residuals that the model's known faults leave, over the contrast
 
-	px    []pixel
-	odd   []int32 // pixels (indices of px) that fitted badly in the last pass
-	flag  []bool  // of the patch: within oddReach of such a pixel
-	flagW int
-	sec   [sectors]sectorSums
-	ring  []float64
-	back  float64 // mean of the wall's picture behind the band, 0 where none is used
+	px                  []pixel
+	odd                 []int32 // pixels (indices of px) that fitted badly in the last pass
+	flag                []bool  // of the patch: within oddReach of such a pixel
+	flagW, flagU, flagV int     // the patch's width and corner
+	marked              bool    // some pixels are near odd ones
+	sec                 [sectors]sectorSums
+	sums                [2]sums
+	most                float64    // a residual² counts no more than this in a step's cost
+	oddAt               [][2]int16 // places that fitted badly in the last frame, px from the middle
+	ring                []float64
+	back                float64 // mean of the wall's picture behind the band, 0 where none is used
 }
 
 // Shape is what is known of a bob's outline: px, with standard uncertainties.
@@ -95,7 +103,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	on[pSmear] = g.USmear > 0 && smear > 0.6*s0
 	on[pBlur] = free
 	on[pE1], on[pE2] = r0 >= 6, r0 >= 6
-	if r0 < 6 {
+	if r0 < 6 || f.unlit {
 		on[pFx], on[pFy], on[pFz] = false, false, false
 		m.level[1], m.level[2], m.level[3] = 0, 0, 0
 	}
@@ -108,24 +116,47 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		return Fit{Why: "too few pixels in the picture"}
 	}
 	noise := f.startLevels(&m)
+	f.recallOdd(&m)
+	third := (m.level[0] - m.level[4] - f.back) / 3
+	f.most = 36*math.Max(noise.bob, noise.wall) + third*third
 	loose := math.Max(math.Hypot(g.UPos, math.Min(f.Shape.UR, 0.1*r0)), 0.05)
-	var acc sums
+	acc, spare := &f.sums[0], &f.sums[1]
 	var inv matrix
-	gathered := [2]float64{m.cu, m.cv}
-	ok := false
+	from := [2]float64{m.cu, m.cv} // middle of the gathering
+	var back model                 // where the last step was taken from
+	cost, damp := math.Inf(1), 0.0
 	for step := 0; step < mostSteps; step++ {
 		out.Steps = step + 1
-		acc = sums{}
+		*acc = sums{}
 		if m.quick(&on) {
-			f.passQuick(&m, &acc, &noise, loose, gathered)
+			f.passQuick(&m, acc, &noise, loose, from)
 		} else {
-			f.pass(&m, &acc, &noise, loose, gathered, &on)
+			f.pass(&m, acc, &noise, loose, from, &on)
 		}
-		if acc.n < 30 {
-			return Fit{Why: "hardly any of the outline agrees"}
+		m.addPriors(acc, &prior, &on)
+		odd := false
+		if acc.cost > 1.03*cost && damp < 1e4 {
+			// Worse than before the step: go back and take a shorter one
+			// (Levenberg 1944, Marquardt 1963).
+			m, damp = back, math.Max(8*damp, 0.05)
+			acc, spare = spare, acc
+		} else {
+			if acc.n < 30 {
+				return Fit{Why: "hardly any of the outline agrees"}
+			}
+			cost = acc.cost
+			if damp /= 8; damp < 1e-3 {
+				damp = 0
+			}
+			noise.update(acc)
+			odd = f.markNear()
 		}
-		m.addPriors(&acc, &prior, &on)
-		inv, ok = invert(&acc.a, &on)
+		a := acc.a
+		for i := range a {
+			a[i][i] *= 1 + damp
+		}
+		var ok bool
+		inv, ok = invert(&a, &on)
 		if !ok {
 			return Fit{Why: "the outline does not determine the centre"}
 		}
@@ -135,25 +166,29 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 				d[i] += inv[i][j] * acc.g[j]
 			}
 		}
+		back = m
 		shift := m.apply(&d, r0)
-		noise.update(&acc)
-		odd := f.markNear()
 		loose = math.Max(0.5*shift, 0.03)
-		if math.Hypot(m.cu-gathered[0], m.cv-gathered[1]) > 0.75+reach {
+		if math.Hypot(m.cu-from[0], m.cv-from[1]) > 0.75+reach {
 			f.gather(p, wall, &m, covers, 0.5)
-			gathered = [2]float64{m.cu, m.cv}
+			from = [2]float64{m.cu, m.cv}
 			if len(f.px) < 40 {
 				return Fit{Why: "too few pixels in the picture"}
 			}
+			cost = math.Inf(1)
 			continue
 		}
-		if shift < 0.04 && step > 0 || shift < 0.02 && !odd {
+		if damp == 0 && (shift < 0.04 && step > 0 || shift < closeEnough && !odd) {
 			break
 		}
+		if damp == 0 {
+			acc, spare = spare, acc
+		}
 	}
-	out.fill(&m, &inv, &acc, &noise, &on, f.back)
+	f.keepOdd(&m, from)
+	out.fill(&m, &inv, acc, &noise, &on, f.back)
 	out.Cut = f.cut(&m)
-	f.assess(&inv, &acc, &on)
+	f.assess(&inv, acc, &on)
 	f.frames++
 	// What the model cannot follow of a lit outline is no noise, and the same in
 	// all frames: rendered balls are off by half of this (TestFilmScenes in
@@ -266,6 +301,7 @@ type sums struct {
 	a            matrix
 	g            vector
 	chi, n       float64
+	cost         float64 // residuals², each at most f.most: what a step must not raise
 	inSum, inN   float64 // residuals² and pixels well inside the outline
 	outSum, outN float64
 	kept, all    [sectors]float64 // information on the outline that agrees, and all of it

@@ -8,26 +8,34 @@ import "math"
 // lamps are not points.
 type lamp struct {
 	sign float64 // of light in the projection; 0: no far side (a flat thing)
-	soft float64 // levels²
+	soft float64 // levels over which the turn is rounded off, either side
+	half float64 // 1/(2 soft)
 }
 
 // dim sets the lamp for the model from the bob's shading so far; it does not
 // change during a fit, lest its softness be used to imitate something else.
 func (m *model) dim(f *Fitter) {
-	a := 0.06*math.Min(norm3(f.light), 120) + 2
-	m.lamp = lamp{sign: f.ball, soft: a * a}
+	a := 0.1*math.Min(norm3(f.light), 120) + 3
+	m.lamp = lamp{sign: f.ball, soft: a, half: 0.5 / a}
 }
 
 func norm3(v [3]float64) float64 { return math.Sqrt(v[0]*v[0] + v[1]*v[1] + v[2]*v[2]) }
 
 // light turns the cosine term h, in levels, into what is seen of it, and returns
-// the derivative.
+// the derivative: the larger of h and 0, rounded off by a parabola.
 func (l *lamp) light(h float64) (seen, slope float64) {
 	if l.sign == 0 {
 		return h, 1
 	}
-	r := math.Sqrt(h*h + l.soft)
-	return 0.5 * (h + l.sign*r), 0.5 * (1 + l.sign*h/r)
+	x := h * l.sign
+	switch {
+	case x >= l.soft:
+		return h, 1
+	case x <= -l.soft:
+		return 0, 0
+	}
+	k := (x + l.soft) * l.half
+	return l.sign * 0.5 * k * (x + l.soft), k
 }
 
 // shade is what light adds at (x, y) px from the bob's middle, levels.

@@ -13,7 +13,7 @@ const notSeen = float32(math.MaxFloat32)
 // by how much the outline may still move, px.
 func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reach float64) {
 	f.px = f.px[:0]
-	f.flagW = p.W
+	f.flagW, f.flagU, f.flagV, f.marked = p.W, p.Rect.Min.X, p.Rect.Min.Y, false
 	if n := p.W * p.H; len(f.flag) < n {
 		f.flag = make([]bool, n)
 	}
@@ -28,24 +28,34 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 	if in > 0 {
 		in2 = in * in
 	}
-	w0, w1, w2 := f.Weights[0], f.Weights[1], f.Weights[2]
+	w0, w1, w2 := float32(f.Weights[0]), float32(f.Weights[1]), float32(f.Weights[2])
 	v0 := max(box.Min.Y, int(math.Ceil(m.cv-out)))
 	v1 := min(box.Max.Y-1, int(math.Floor(m.cv+out)))
 	if wall != nil && !wall.Useful() {
 		wall = nil
 	}
+	// Between these radii every pixel counts; beyond, where bob or wall show alone,
+	// every other one is enough for the levels.
+	edgeIn := float32(m.r - flat*m.s - reach - 1)
+	edgeOut := float32(m.r + flat*m.s + reach + 1)
+	mu, mv := float32(m.mu*m.l/(2*m.r)), float32(m.mv*m.l/(2*m.r))
 	known := 0
+	cu := float32(m.cu - float64(p.Rect.Min.X))
 	for v := v0; v <= v1; v++ {
-		y := float64(v) - m.cv
-		half := math.Sqrt(math.Max(out2-y*y, 0))
+		yd := float64(v) - m.cv
+		half := math.Sqrt(math.Max(out2-yd*yd, 0))
 		u0 := max(box.Min.X, int(math.Ceil(m.cu-half)))
 		u1 := min(box.Max.X-1, int(math.Floor(m.cu+half)))
 		hole0, hole1 := u1+1, u1
-		if y*y < in2 {
-			h := math.Sqrt(in2 - y*y)
+		if yd*yd < in2 {
+			h := math.Sqrt(in2 - yd*yd)
 			hole0, hole1 = int(math.Ceil(m.cu-h)), int(math.Floor(m.cu+h))
 		}
-		row := p.BGR[3*(v-p.Rect.Min.Y)*p.W:]
+		line := (v - p.Rect.Min.Y) * p.W
+		row := p.BGR[3*line : 3*(line+p.W)]
+		back, seen := wall.row(v, p.Rect.Min.X, p.W)
+		y := float32(yd)
+		y2 := y * y
 		// Every skip-th pixel, shifted from row to row by a step that is prime to
 		// most skips, so that no direction is favoured.
 		first := u0
@@ -59,23 +69,36 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 				}
 				continue
 			}
+			k := u - p.Rect.Min.X
+			x := float32(k) - cu
+			if (u+v)&1 != 0 && skip == 1 {
+				// The smear widens the edge along its direction only.
+				e := x*mu + y*mv
+				if e < 0 {
+					e = -e
+				}
+				r2, lo, hi := x*x+y2, max(edgeIn-e, 0), edgeOut+e
+				if r2 < lo*lo || r2 > hi*hi {
+					continue
+				}
+			}
 			if len(covers) > 0 && covered(float64(u), float64(v), covers) {
 				continue
 			}
-			o := 3 * (u - p.Rect.Min.X)
+			c := row[3*k : 3*k+3 : 3*k+3]
 			px := pixel{
-				x: float32(float64(u) - m.cu), y: float32(y), at: int32((v-p.Rect.Min.Y)*p.W + u - p.Rect.Min.X),
-				v: float32(w0*float64(row[o]) + w1*float64(row[o+1]) + w2*float64(row[o+2])),
+				x: x, y: y, at: int32(line + k), sec: sector(x, y),
+				v: w0*float32(c[0]) + w1*float32(c[1]) + w2*float32(c[2]),
 			}
 			if wall != nil {
-				if b, g, r, ok := wall.at(u, v); ok {
-					px.wall = float32(w0*b + w1*g + w2*r)
+				if seen != nil && seen[k] > 0 {
+					b := back[3*k : 3*k+3 : 3*k+3]
+					px.wall = (w0*float32(b[0]) + w1*float32(b[1]) + w2*float32(b[2])) * (1.0 / wallUnit)
 					known++
 				} else {
 					px.wall = notSeen
 				}
 			}
-			px.sec = sector(px.x, px.y)
 			f.px = append(f.px, px)
 		}
 	}
@@ -92,22 +115,20 @@ func (f *Fitter) chooseWall(m *model, known int) {
 	use := known > len(f.px)*7/10
 	if use {
 		r1 := m.r + 2*m.s + m.l/2
-		f.ring = f.ring[:0]
-		for i := range f.px {
-			q := &f.px[i]
-			if float64(q.x*q.x+q.y*q.y) > r1*r1 && q.wall != notSeen {
-				f.ring = append(f.ring, float64(q.v))
+		every := len(f.px)/500 + 1
+		outer := func(less float32) int {
+			f.ring = f.ring[:0]
+			for i := 0; i < len(f.px); i += every {
+				q := &f.px[i]
+				if float64(q.x*q.x+q.y*q.y) > r1*r1 && q.wall != notSeen {
+					f.ring = append(f.ring, float64(q.v-less*q.wall))
+				}
 			}
+			return len(f.ring)
 		}
-		n := len(f.ring)
+		n := outer(0)
 		plain := f.spread()
-		f.ring = f.ring[:0]
-		for i := range f.px {
-			q := &f.px[i]
-			if float64(q.x*q.x+q.y*q.y) > r1*r1 && q.wall != notSeen {
-				f.ring = append(f.ring, float64(q.v-q.wall))
-			}
-		}
+		outer(1)
 		use = n > 20 && f.spread() < 0.93*plain
 	}
 	if !use {
@@ -182,46 +203,101 @@ const misfit = 0.12 * 0.12
 
 // markNear marks the pixels around those that fitted badly, for the next pass.
 // Where they lie all around the outline it is the model that is wrong, and
-// nothing is marked. It tells whether anything is.
+// nothing is marked. It tells whether any is marked that was not before.
 func (f *Fitter) markNear() bool {
+	if len(f.odd) == 0 && !f.marked {
+		return false
+	}
 	var hit [sectors]bool
-	wide := 0
+	wide, fresh := 0, 0
 	for _, i := range f.odd {
-		if k := f.px[i].sec; !hit[k] {
-			hit[k] = true
+		q := &f.px[i]
+		if !hit[q.sec] {
+			hit[q.sec] = true
 			wide++
 		}
+		if !q.near {
+			fresh++
+		}
 	}
-	mark := len(f.odd) > 2 && wide <= sectors*5/12
-	set := func(v bool) {
-		for _, i := range f.odd {
-			at := int(f.px[i].at)
-			for dy := -oddReach; dy <= oddReach; dy++ {
-				for dx := -oddReach; dx <= oddReach; dx++ {
-					if k := at + dy*f.flagW + dx; dx*dx+dy*dy <= oddReach*oddReach+1 && k >= 0 && k < len(f.flag) {
-						f.flag[k] = v
-					}
-				}
+	if len(f.odd) <= 2 || wide > sectors*5/12 {
+		if f.marked {
+			f.marked = false
+			for i := range f.px {
+				f.px[i].near = false
+			}
+			return true
+		}
+		return false
+	}
+	for _, i := range f.odd {
+		f.flagAround(int(f.px[i].at), true)
+	}
+	f.readFlags()
+	for _, i := range f.odd {
+		f.flagAround(int(f.px[i].at), false)
+	}
+	return fresh > 2
+}
+
+// flagAround sets the flag of the patch's pixels within oddReach of one.
+func (f *Fitter) flagAround(at int, v bool) {
+	for dy := -oddReach; dy <= oddReach; dy++ {
+		for dx := -oddReach; dx <= oddReach; dx++ {
+			if k := at + dy*f.flagW + dx; dx*dx+dy*dy <= oddReach*oddReach+1 && k >= 0 && k < len(f.flag) {
+				f.flag[k] = v
 			}
 		}
 	}
-	if mark {
-		set(true)
-	}
+}
+
+// readFlags marks the band's pixels whose flag is set.
+func (f *Fitter) readFlags() {
+	f.marked = true
 	for i := range f.px {
 		q := &f.px[i]
-		q.near = mark && f.flag[q.at]
+		q.near = f.flag[q.at]
 	}
-	if mark {
-		set(false)
+}
+
+// keepOdd remembers where the outline did not agree: a rod that holds the bob
+// will be there in the next frame too.
+func (f *Fitter) keepOdd(m *model, from [2]float64) {
+	f.oddAt = f.oddAt[:0]
+	if !f.marked {
+		return
 	}
-	return mark
+	for _, i := range f.odd {
+		q := &f.px[i]
+		x, y := float64(q.x)+from[0]-m.cu, float64(q.y)+from[1]-m.cv
+		f.oddAt = append(f.oddAt, [2]int16{int16(math.Round(x)), int16(math.Round(y))})
+	}
+}
+
+// recallOdd marks the places of keepOdd around the model's centre.
+func (f *Fitter) recallOdd(m *model) {
+	f.marked = false
+	if len(f.oddAt) == 0 {
+		return
+	}
+	u, v := int(math.Round(m.cu))-f.flagU, int(math.Round(m.cv))-f.flagV
+	mark := func(on bool) {
+		for _, o := range f.oddAt {
+			if x, y := u+int(o[0]), v+int(o[1]); x >= 0 && x < f.flagW && y >= 0 {
+				f.flagAround(y*f.flagW+x, on)
+			}
+		}
+	}
+	mark(true)
+	f.readFlags()
+	mark(false)
 }
 
 // startLevels sets the levels of bob and wall from the medians well inside and
 // well outside the outline, given the bob's shading so far, and returns a first
 // robust noise.
 func (f *Fitter) startLevels(m *model) scatter {
+	every := len(f.px)/500 + 1
 	mid := func(inside bool) (level, spread float64) {
 		f.ring = f.ring[:0]
 		lim := m.r - 1.5*m.s - m.l/2
@@ -230,7 +306,7 @@ func (f *Fitter) startLevels(m *model) scatter {
 		} else {
 			lim = math.Max(lim, 0.5*m.r)
 		}
-		for i := range f.px {
+		for i := 0; i < len(f.px); i += every {
 			q := &f.px[i]
 			d2 := float64(q.x*q.x + q.y*q.y)
 			if inside && d2 < lim*lim {
@@ -263,88 +339,31 @@ func quantum(w [3]float64) float64 {
 // pass goes once over the pixels: residuals, weights, normal equations.
 func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [2]float64, on *[pCount]bool) {
 	f.odd = f.odd[:0]
-	n := pBlur
-	if on[pBlur] || on[pE1] {
-		n = pCount
-	}
 	du, dv := m.cu-from[0], m.cv-from[1]
-	nodes := nodesFor(m.l, m.s)
-	gx, gw := gauss[nodes].x, gauss[nodes].w
-	is, ir := 1/m.s, 1/m.r
-	// Rolling shutter: what is read later has moved on.
-	k11, k12, k21, k22 := 1-m.skew[0][0], -m.skew[0][1], -m.skew[1][0], 1-m.skew[1][1]
-	m11, m12, m22 := 1-m.e1, -m.e2, 1+m.e1
-	edgeR := m.r - 0.5*m.s*m.s*ir
-	far := m.r + edgeSpan*m.s
-	soft := 2 * m.s * ir // nz is rounded off over the edge's blur
-	soft *= soft
+	o := m.outline()
+	var c coverage
 	var j vector
 	for i := range f.px {
 		q := &f.px[i]
-		x, y := float64(q.x)-du, float64(q.y)-dv
-		x, y = k11*x+k12*y, k21*x+k22*y
-		var alpha, aU, aV, aR, aL, aS, aE1, aE2, px, py float64
-		for k, t := range gx {
-			xk, yk := x-t*m.l*m.mu, y-t*m.l*m.mv
-			xp, yp := m11*xk+m12*yk, m12*xk+m22*yk
-			r2 := xp*xp + yp*yp
-			if r2 > far*far {
-				continue
-			}
-			rho := math.Sqrt(r2)
-			z := (edgeR - rho) * is
-			cdf, pdf := edge(z)
-			cdf *= gw[k]
-			alpha += cdf
-			px += cdf * xk
-			py += cdf * yk
-			if pdf == 0 {
-				continue
-			}
-			d := gw[k] * pdf * is
-			irho := 1 / (rho + 1e-9)
-			nx, ny := (m11*xp+m12*yp)*irho, (m12*xp+m22*yp)*irho
-			aR += d
-			aU += d * nx
-			aV += d * ny
-			aL += d * (nx*m.mu + ny*m.mv) * t
-			if n == pCount {
-				aS -= d * z
-				aE1 += d * (xp*xk - yp*yk) * irho
-				aE2 += d * (xp*yk + yp*xk) * irho
-			}
-		}
-		beta := 1 - alpha
-		// px, py: where in the bob the covered part of the smear lies, times alpha.
-		px *= ir
-		py *= ir
+		x, y := o.straight(float64(q.x)-du, float64(q.y)-dv)
+		o.cover(x, y, &c)
+		beta := 1 - c.alpha
+		px, py := c.x*o.ir, c.y*o.ir
 		nz := 0.0
-		if alpha > 1e-3 {
-			mx, my := px/alpha, py/alpha
-			c := 1 - mx*mx - my*my
-			nz = alpha * math.Sqrt(0.5*(c+math.Sqrt(c*c+soft)))
+		if c.alpha > 1e-3 {
+			nz = o.facing(c.x, c.y)
 		}
-		xb, yb := x*ir, y*ir
-		bob := m.level[0] * alpha
-		lit := 1.0
-		if alpha > 1e-3 {
-			h := (m.level[1]*px + m.level[2]*py + m.level[3]*nz) / alpha
-			h, lit = m.lamp.light(h)
-			bob += alpha * h
-		}
+		h, lit := m.lamp.light(m.level[1]*px + m.level[2]*py + m.level[3]*nz)
+		front := m.level[0] + h
+		xb, yb := x*o.ir, y*o.ir
 		back := float64(q.wall) + m.level[4] + m.level[5]*xb + m.level[6]*yb
-		res := float64(q.v) - bob - beta*back
-		front := bob
-		if alpha > 0.05 {
-			front /= alpha
-		} else {
-			front = m.level[0]
-		}
 		step := front - back
+		res := float64(q.v) - back - c.alpha*step
 
-		variance := noise.bob*alpha + noise.wall*beta
-		steep := step * aR * loose
+		variance := noise.bob*c.alpha + noise.wall*beta
+		steep := step * c.r * loose
 		t := res * res / (variance + steep*steep)
+		acc.cost += min(res*res, f.most)
 		w := weigh(t)
 		if t > 16 && res*res > misfit*step*step {
 			f.odd = append(f.odd, int32(i))
@@ -352,51 +371,50 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		if q.near {
 			w = 0
 		}
-		info := step * step * aR * aR / variance
+		info := step * step * c.r * c.r / variance
 		acc.all[q.sec] += info
 		if w == 0 {
 			continue
 		}
 		acc.kept[q.sec] += w * info
-		if alpha > 0.97 {
+		if c.alpha > 0.97 {
 			acc.inSum += w * res * res
 			acc.inN += w
-		} else if alpha < 0.03 {
+		} else if c.alpha < 0.03 {
 			acc.outSum += w * res * res
 			acc.outN += w
 		}
+		acc.n += w
 		w /= variance
 		acc.chi += w * res * res
-		acc.n += w * variance
 
-		j[pU] = step*aU - m.level[1]*lit*alpha*ir
-		j[pV] = step*aV - m.level[2]*lit*alpha*ir
-		j[pR] = step * aR
-		j[pSmear] = step * aL
-		j[pF0] = alpha
+		lit *= c.alpha
+		j[pU] = step*c.u - m.level[1]*lit*o.ir
+		j[pV] = step*c.v - m.level[2]*lit*o.ir
+		j[pR] = step * c.r
+		j[pSmear] = step * c.l
+		j[pF0] = c.alpha
 		j[pFx] = px * lit
 		j[pFy] = py * lit
 		j[pFz] = nz * lit
 		j[pB0] = beta
 		j[pBx] = beta * xb
 		j[pBy] = beta * yb
-		if n == pCount {
-			j[pBlur] = step * aS
-			j[pE1] = step * aE1
-			j[pE2] = step * aE2
-		}
+		j[pBlur] = step * c.s
+		j[pE1] = step * c.e1
+		j[pE2] = step * c.e2
 		wr := w * res
 		score := &acc.score[q.sec]
-		for a := 0; a < n; a++ {
+		for a := range j {
 			ja := j[a]
-			if ja == 0 {
+			if ja == 0 || !on[a] {
 				continue
 			}
 			acc.g[a] += wr * ja
 			score[a] += wr * ja
 			ja *= w
 			row := &acc.a[a]
-			for b := a; b < n; b++ {
+			for b := a; b < pCount; b++ {
 				row[b] += ja * j[b]
 			}
 		}

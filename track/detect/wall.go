@@ -12,14 +12,14 @@ import (
 // memory however long the clip is.
 type Wall struct {
 	rect  image.Rectangle
-	mean  []uint16 // blue, green, red, in 1/128 level
+	mean  []uint16 // blue, green, red, in 1/256 level
 	n     []uint8  // how many frames the mean stands on; 0: not seen yet
 	seen  int
 	strip int
 }
 
 const (
-	wallUnit = 128
+	wallUnit = 256
 	wallMost = 60 // frames in the mean; later ones replace it slowly, as light drifts
 	wallStep = 24 // levels: a pixel that differs by more is taken for something passing
 )
@@ -42,6 +42,16 @@ func (w *Wall) at(u, v int) (b, g, r float64, ok bool) {
 	}
 	m := w.mean[3*i : 3*i+3]
 	return float64(m[0]) * (1.0 / wallUnit), float64(m[1]) * (1.0 / wallUnit), float64(m[2]) * (1.0 / wallUnit), true
+}
+
+// row returns the wall's means and counts behind n pixels of row v from u on,
+// nil where these are not all within its picture or w is nil.
+func (w *Wall) row(v, u, n int) (mean []uint16, seen []uint8) {
+	if w == nil || v < w.rect.Min.Y || v >= w.rect.Max.Y || u < w.rect.Min.X || u+n > w.rect.Max.X {
+		return nil, nil
+	}
+	i := (v-w.rect.Min.Y)*w.rect.Dx() + u - w.rect.Min.X
+	return w.mean[3*i : 3*(i+n)], w.n[i : i+n]
 }
 
 // Learn takes in the pixels of a patch that lie outside all bobs (each given
@@ -116,11 +126,20 @@ func (w *Wall) run(src []byte, at int) {
 		}
 		n = min(n+1, wallMost)
 		w.n[at] = uint8(n)
-		m[0] = uint16(int32(m[0]) + db/n)
-		m[1] = uint16(int32(m[1]) + dg/n)
-		m[2] = uint16(int32(m[2]) + dr/n)
+		k := share[n]
+		m[0] = uint16(int32(m[0]) + (db*k+1<<15)>>16)
+		m[1] = uint16(int32(m[1]) + (dg*k+1<<15)>>16)
+		m[2] = uint16(int32(m[2]) + (dr*k+1<<15)>>16)
 	}
 }
+
+// share holds 65536/n, rounded: a multiplication is quicker than a division.
+var share = func() (s [wallMost + 1]int32) {
+	for n := 1; n <= wallMost; n++ {
+		s[n] = int32((65536 + n/2) / n)
+	}
+	return s
+}()
 
 func abs32(x int32) int32 {
 	if x < 0 {

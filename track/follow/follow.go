@@ -203,7 +203,7 @@ func (f *follower) learnWall(frame *clip.Frame) {
 	}
 	for _, b := range f.bobs {
 		if b.lost == 0 && b.patch.W > 0 {
-			f.wall.Learn(&b.patch, f.discs, 4)
+			f.wall.Learn(&b.patch, f.discs, 8)
 		}
 	}
 }
