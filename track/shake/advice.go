@@ -102,7 +102,7 @@ func rate(f *clip.Facts) Advice {
 	case f.TrueRate < 45:
 		a.State, a.Do = Improve, "Film with 60 frames/s or more, so that a bob moves less between frames and is smeared less."
 	}
-	if f.RateFactor != 1 {
+	if math.Abs(f.RateFactor-1) > 1e-3 {
 		a.Seen += fmt.Sprintf(" Slow motion is undone by rate_factor %.4g.", f.RateFactor)
 	}
 	for _, w := range f.Warnings {
