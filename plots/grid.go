@@ -22,8 +22,14 @@ var shades = []color.NRGBA{
 
 // kinds are for cells that name one of a few things.
 var kinds = []color.NRGBA{
-	{0x56, 0xb4, 0xe9, 0xff}, {0xe6, 0x9f, 0x00, 0xff}, {0x00, 0x72, 0xb2, 0xff}, {0xf0, 0xe4, 0x42, 0xff},
-	{0x00, 0x9e, 0x73, 0xff}, {0xcc, 0x79, 0xa7, 0xff}, {0xd5, 0x5e, 0x00, 0xff}, {0x22, 0x22, 0x22, 0xff},
+	{0x56, 0xb4, 0xe9, 0xff},
+	{0xe6, 0x9f, 0x00, 0xff},
+	{0x00, 0x72, 0xb2, 0xff},
+	{0xf0, 0xe4, 0x42, 0xff},
+	{0x00, 0x9e, 0x73, 0xff},
+	{0xcc, 0x79, 0xa7, 0xff},
+	{0xd5, 0x5e, 0x00, 0xff},
+	{0x22, 0x22, 0x22, 0xff},
 }
 
 const shadeCount = 240
@@ -78,12 +84,7 @@ func (g *cells) level(z float64) float64 {
 
 // yesNo tells whether the cells say no more than 0 or 1, as in a recurrence plot.
 func (g *cells) yesNo() bool {
-	for _, v := range g.values {
-		if v != 0 && v != 1 {
-			return false
-		}
-	}
-	return g.values != nil && g.grid.Unit != "1"
+	return len(g.values) == 2 && g.values[0] == 0 && g.values[1] == 1
 }
 
 // palette has no colour first, for cells without a value.
@@ -91,13 +92,7 @@ func (g *cells) palette() color.Palette {
 	p := color.Palette{color.NRGBA{}}
 	switch {
 	case g.yesNo():
-		for _, v := range g.values {
-			c := background
-			if v == 1 {
-				c = ink
-			}
-			p = append(p, c)
-		}
+		p = append(p, background, ink)
 	case g.values != nil:
 		for i := range g.values {
 			p = append(p, kinds[i])
@@ -202,9 +197,6 @@ func newKey(g *cells) *key {
 		for _, v := range g.values {
 			k.names = append(k.names, strconv.FormatFloat(v, 'f', -1, 64))
 		}
-		if g.yesNo() {
-			k.names = nil
-		}
 		return k
 	}
 	if lo > hi {
@@ -237,6 +229,11 @@ func (k *key) draw(c draw.Canvas, top vg.Length) {
 		p.Line(vg.Point{X: x, Y: y - tickSize})
 		p.Close()
 		c.Fill(p)
+		if ink == color.Color(background) {
+			c.SetColor(guideGrey)
+			c.SetLineWidth(0.5)
+			c.Stroke(p)
+		}
 	}
 	palette := k.cells.palette()
 	switch {

@@ -187,15 +187,11 @@ func (b *Basins) Curves() []finding.Curve {
 	}
 	picture := finding.Curve{
 		Key: "basins", Title: "Which place of rest the toy falls into",
-		Caption: b.note + " The shade is the number of the place where it comes to rest, the battery out; the marks are those places.",
+		Caption: b.note + " The colour is the number of the place where it comes to rest, the battery out; the rings are those places.",
 		X:       b.Labels[0], Y: b.Labels[1],
 		Grid: &finding.Grid{X: b.X, Y: b.Y, Z: z, Label: "place of rest", Unit: "1"},
 	}
-	for i := range b.Rests {
-		picture.Lines = append(picture.Lines, finding.Line{
-			Name: fmt.Sprintf("place %d", i+1), Role: finding.Mark, X: b.marks[0][i : i+1], Y: b.marks[1][i : i+1],
-		})
-	}
+	picture.Lines = []finding.Line{{Name: "places of rest", Role: finding.Mark, X: b.marks[0], Y: b.marks[1]}}
 	return []finding.Curve{picture, {
 		Key: "basins-time", Title: "How long it takes until the place of rest is decided",
 		Caption: b.note + " Time until the toy has too little energy to leave the place that it will rest in.",
