@@ -75,10 +75,10 @@ func Prepare(ctx context.Context, r *rig.Rig, opt Options) (*Take, error) {
 	t := &Take{Rig: r, Frames: frames}
 	t.Encoding = film.Encoding{
 		HEVC: f.HEVC, MegabitPerS: f.MegabitPerS.Or(0), Lossless: opt.Clean,
-		RotationDeg: int(math.Round(f.TurnedRad.V * 180 / math.Pi)), RateFactor: r.Camera.RateFactor.Or(1),
+		RateFactor: r.Camera.RateFactor.Or(1),
 	}
-	if t.Encoding.RotationDeg%90 != 0 {
-		return nil, fmt.Errorf("a clip can be turned by 90, 180 or 270 degrees, not by %d: mend turned_deg in [film]", t.Encoding.RotationDeg)
+	if turned := f.TurnedRad.V * 180 / math.Pi; math.Abs(turned/90-math.Round(turned/90)) > 1e-9 {
+		return nil, fmt.Errorf("a clip can be turned by 90, 180 or 270 degrees, not by %g: mend turned_deg in [film]", turned)
 	}
 	until := seconds + 0.2
 	var times []float64

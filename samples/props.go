@@ -4,55 +4,94 @@ import (
 	"math"
 
 	"lodeswing/samples/film"
+	"lodeswing/track/rig"
 )
 
-// onPlane gives the point of the upright plane at depth y (m, away from the
-// camera) that appears at pixel px.
-func onPlane(c *film.Camera, px [2]float64, y float64) film.Vec {
+// sheet is the plane of motion, moved by depth metres towards the camera: upright
+// and square to y, or level where the toy is seen from above.
+type sheet struct {
+	origin, along, up film.Vec
+}
+
+func motionSheet(r *rig.Rig, o *motion, depth float64) sheet {
+	if !r.Camera.FromAbove {
+		return sheet{film.Vec{0, -depth, 0}, film.Vec{1, 0, 0}, film.Vec{0, 0, 1}}
+	}
+	// Level, at the height at which the first bob would rest.
+	y := o.model.Rest()
+	z := 0.0
+	if p := o.model.Positions(y, nil); len(p) > 0 {
+		z = p[0][2]
+	}
+	return sheet{film.Vec{0, 0, z + depth}, film.Vec{1, 0, 0}, film.Vec{0, 1, 0}}
+}
+
+func (p sheet) at(a, b float64) film.Vec {
+	var v film.Vec
+	for i := range v {
+		v[i] = p.origin[i] + a*p.along[i] + b*p.up[i]
+	}
+	return v
+}
+
+func (p sheet) direction(a, b float64) film.Vec {
+	var v film.Vec
+	for i := range v {
+		v[i] = a*p.along[i] + b*p.up[i]
+	}
+	return v
+}
+
+// seen gives where in the sheet the line of sight of pixel px meets it: metres
+// along and up.
+func (p sheet) seen(c *film.Camera, px [2]float64) (a, b float64) {
 	// Newton with differences: the map is smooth and nearly linear.
-	at := film.Vec{c.LookAt[0], y, c.LookAt[2]}
+	a, b = c.LookAt[0], c.LookAt[2]-p.origin[2]
 	const d = 1e-5
 	for range 20 {
-		u, v := c.Project(at)
-		ux, vx := c.Project(film.Vec{at[0] + d, y, at[2]})
-		uz, vz := c.Project(film.Vec{at[0], y, at[2] + d})
-		a, b, e, g := (ux-u)/d, (uz-u)/d, (vx-v)/d, (vz-v)/d
-		det := a*g - b*e
+		u, v := c.Project(p.at(a, b))
+		ua, va := c.Project(p.at(a+d, b))
+		ub, vb := c.Project(p.at(a, b+d))
+		ua, va, ub, vb = (ua-u)/d, (va-v)/d, (ub-u)/d, (vb-v)/d
+		det := ua*vb - va*ub
 		if det == 0 {
 			break
 		}
 		du, dv := px[0]-u, px[1]-v
-		at[0] += (du*g - dv*b) / det
-		at[2] += (a*dv - e*du) / det
+		a += (du*vb - dv*ub) / det
+		b += (ua*dv - va*du) / det
 	}
-	return at
+	return a, b
 }
 
 // ruler draws a stick with two round marks the rig's known length apart: where
-// the rig says that they are in the picture, else to the left of the toy.
+// the rig says that they are in the picture, else beside the toy.
 func (b *set) ruler() {
 	sc := &b.r.Scale
 	if !sc.LengthM.Set {
 		return
 	}
-	y := -sc.DepthM.Or(0)
-	p, dir := film.Vec{b.left - 0.09, y, b.bench + 0.06}, film.Vec{0, 0, 1}
+	p := motionSheet(b.r, b.o, sc.DepthM.Or(0))
+	from := [2]float64{b.left - 0.09, b.bench + 0.06}
+	dir := [2]float64{0, 1}
+	if b.r.Camera.FromAbove {
+		from[1] = -sc.LengthM.V / 2
+	}
 	if len(sc.EndsPX) == 2 {
-		p = onPlane(&b.s.Camera, sc.EndsPX[0], y)
-		q := onPlane(&b.s.Camera, sc.EndsPX[1], y)
-		n := math.Hypot(q[0]-p[0], q[2]-p[2])
-		dir = film.Vec{(q[0] - p[0]) / n, 0, (q[2] - p[2]) / n}
+		from[0], from[1] = p.seen(&b.s.Camera, sc.EndsPX[0])
+		a, h := p.seen(&b.s.Camera, sc.EndsPX[1])
+		n := math.Hypot(a-from[0], h-from[1])
+		dir = [2]float64{(a - from[0]) / n, (h - from[1]) / n}
 	}
 	length := sc.LengthM.V
-	side := film.Vec{dir[2], 0, -dir[0]}
 	mark, stick := markColour, stickColour
 	if sc.MarkLook == "light" {
 		mark, stick = stickColour, film.RGB{60, 62, 66}
 	}
 	const r = 0.004
 	b.s.Decals = append(b.s.Decals, film.Decal{
-		Centre: film.Vec{p[0] + dir[0]*length/2, y, p[2] + dir[2]*length/2},
-		Right:  side, Up: dir, HalfW: 0.008, HalfH: length/2 + 0.009,
+		Centre: p.at(from[0]+dir[0]*length/2, from[1]+dir[1]*length/2),
+		Right:  p.direction(dir[1], -dir[0]), Up: p.direction(dir[0], dir[1]), HalfW: 0.008, HalfH: length/2 + 0.009,
 		Paint: func(a, h float64) (film.RGB, float64) {
 			if math.Hypot(a, math.Abs(h)-length/2) < r {
 				return mark, 1
@@ -68,10 +107,11 @@ func (b *set) plumb() {
 	if len(px) < 2 || b.tilted() {
 		return
 	}
-	p, q := onPlane(&b.s.Camera, px[0], 0), onPlane(&b.s.Camera, px[len(px)-1], 0)
-	x := (p[0] + q[0]) / 2
-	low := min(p[2], q[2]) - 0.005
-	b.rod(film.RGB{40, 40, 44}, 0.0012, film.Vec{x, 0, max(p[2], q[2]) + 0.3}, film.Vec{x, 0, low})
+	p := motionSheet(b.r, b.o, 0)
+	xa, za := p.seen(&b.s.Camera, px[0])
+	xb, zb := p.seen(&b.s.Camera, px[len(px)-1])
+	x, low := (xa+xb)/2, min(za, zb)-0.005
+	b.rod(film.RGB{40, 40, 44}, 0.0012, film.Vec{x, 0, max(za, zb) + 0.3}, film.Vec{x, 0, low})
 	b.rod(film.RGB{150, 128, 70}, 0.008, film.Vec{x, 0, low}, film.Vec{x, 0, low - 0.018})
 }
 

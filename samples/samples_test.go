@@ -55,15 +55,19 @@ func TestEverySample(t *testing.T) {
 				t.Errorf("a bob comes within %.0f px of the picture's edge", edge)
 			}
 			if ends := r.Scale.EndsPX; len(ends) == 2 {
-				p, q := onPlane(&s.Camera, ends[0], -r.Scale.DepthM.V), onPlane(&s.Camera, ends[1], -r.Scale.DepthM.V)
-				off := math.Abs(math.Hypot(p[0]-q[0], p[2]-q[2])-r.Scale.LengthM.V) * s.Camera.PixelsPerM
+				p := motionSheet(r, take.motion, r.Scale.DepthM.V)
+				xa, za := p.seen(&s.Camera, ends[0])
+				xb, zb := p.seen(&s.Camera, ends[1])
+				off := math.Abs(math.Hypot(xa-xb, za-zb)-r.Scale.LengthM.V) * s.Camera.PixelsPerM
 				if off > 0.3 {
 					t.Errorf("the ruler's ends are %.2f px from %g mm apart", off, 1e3*r.Scale.LengthM.V)
 				}
 			}
 			if px := r.Camera.PlumbPX; len(px) == 2 {
-				p, q := onPlane(&s.Camera, px[0], 0), onPlane(&s.Camera, px[1], 0)
-				if off := math.Abs(p[0]-q[0]) * s.Camera.PixelsPerM; off > 0.5 {
+				p := motionSheet(r, take.motion, 0)
+				xa, _ := p.seen(&s.Camera, px[0])
+				xb, _ := p.seen(&s.Camera, px[1])
+				if off := math.Abs(xa-xb) * s.Camera.PixelsPerM; off > 0.5 {
 					t.Errorf("the plumb line leans by %.2f px", off)
 				}
 			}
@@ -176,8 +180,8 @@ func TestFilm(t *testing.T) {
 		if math.Abs(u-num(row[6])) > 2e-5 || math.Abs(v-num(row[7])) > 2e-5 {
 			t.Fatalf("frame %d: truth says (%s, %s), by hand (%.5f, %.5f)", i, row[6], row[7], u, v)
 		}
-		if late := num(row[1]) - float64(i)/60; math.Abs(late-0.009*v/179) > 2e-8 {
-			t.Fatalf("frame %d: the row's delay is %g s, want %g", i, late, 0.009*v/179)
+		if late := num(row[1]) - float64(i)/60; math.Abs(late-0.009*(v/179-0.5)) > 2e-8 {
+			t.Fatalf("frame %d: the row's delay is %g s, want %g", i, late, 0.009*(v/179-0.5))
 		}
 		if angle := math.Atan2(x, -z); math.Abs(angle-num(row[10])) > 1e-8 {
 			t.Fatalf("frame %d: angle %s, want %g", i, row[10], angle)

@@ -77,6 +77,7 @@ func camera(r *rig.Rig) film.Camera {
 		Width: int(f.WidthPX.Or(1280)), Height: int(f.HeightPX.Or(720)),
 		PixelsPerM: f.PixelsPerM.Or(1700), DistanceM: r.Camera.DistanceM.Or(1.2),
 		Tilt: r.Camera.TiltRad.Or(0), Roll: f.RollRad.Or(0),
+		Turned:   int(math.Round(f.TurnedRad.V * 180 / math.Pi)),
 		ReadoutS: r.Camera.ReadoutS.Or(0), ExposureS: r.Camera.ExposureS.Or(0), BlurPX: f.Blur.Or(0.8),
 	}
 	if r.Camera.FromAbove && !r.Camera.TiltRad.Set {
@@ -171,11 +172,11 @@ func (b *set) room() {
 		s.Wall.Table, s.Wall.Z, s.Wall.Level = true, low, film.RGB{186, 176, 160}
 		return
 	}
-	wide, wall := 4.0, s.Wall.Y
+	wide, wall, edge := 4.0, s.Wall.Y, -min(0.1, s.Camera.DistanceM/2)
 	s.Plates = append(
 		s.Plates,
-		film.Plate{Colour: benchTop, Corners: []film.Vec{{-wide, wall, low}, {wide, wall, low}, {wide, -0.1, low}, {-wide, -0.1, low}}},
-		film.Plate{Colour: benchFront, Corners: []film.Vec{{-wide, -0.1, low}, {wide, -0.1, low}, {wide, -0.1, low - 4}, {-wide, -0.1, low - 4}}},
+		film.Plate{Ground: true, Colour: benchTop, Corners: []film.Vec{{-wide, wall, low}, {wide, wall, low}, {wide, edge, low}, {-wide, edge, low}}},
+		film.Plate{Ground: true, Colour: benchFront, Corners: []film.Vec{{-wide, edge, low}, {wide, edge, low}, {wide, edge, low - 4}, {-wide, edge, low - 4}}},
 	)
 }
 

@@ -13,7 +13,9 @@ type view struct {
 	f                  float64 // px per unit of flat coordinate
 	cu, cv             float64
 	k1, k2             float64
-	w, h               int
+	w, h               int // of the stored picture
+	turned             int
+	fold               [2]float64 // radius beyond which the lens's polynomial would turn back, and its value there
 	// undo holds the flat coordinates of whole pixels from −pad to size−1+pad,
 	// row by row, for a lens with distortion; between them they are interpolated
 	// (error below 1e-4 px for any lens of a phone).
@@ -23,16 +25,27 @@ type view struct {
 
 // Project gives the pixel at which the world point p appears, in the upright
 // picture and without rolling shutter.
-func (c *Camera) Project(p Vec) (u, v float64) { return newView(c, false).project(p) }
+func (c *Camera) Project(p Vec) (u, v float64) {
+	w := newView(c, false)
+	return w.upright(w.project(p))
+}
 
 const pad = 16 // px around the picture that samples may reach
 
 // newView readies c; grid: to give the coordinates of many pixels.
 func newView(c *Camera, grid bool) *view {
-	w := &view{w: c.Width, h: c.Height, k1: c.K1, k2: c.K2}
+	w := &view{w: c.Width, h: c.Height, k1: c.K1, k2: c.K2, turned: ((c.Turned % 360) + 360) % 360}
 	w.cu, w.cv = float64(c.Width-1)/2, float64(c.Height-1)/2
 	if c.CentrePX != nil {
 		w.cu, w.cv = c.CentrePX[0], c.CentrePX[1]
+	}
+	switch right, bottom := float64(c.Width-1), float64(c.Height-1); w.turned {
+	case 90:
+		w.w, w.h, w.cu, w.cv = c.Height, c.Width, w.cv, right-w.cu
+	case 180:
+		w.cu, w.cv = right-w.cu, bottom-w.cv
+	case 270:
+		w.w, w.h, w.cu, w.cv = c.Height, c.Width, bottom-w.cv, w.cu
 	}
 	st, ct := math.Sincos(c.Tilt)
 	sp, cp := math.Sincos(c.Pan)
@@ -45,9 +58,22 @@ func newView(c *Camera, grid bool) *view {
 		w.right[i] = cr*right[i] - sr*down[i]
 		w.down[i] = sr*right[i] + cr*down[i]
 	}
+	minus := func(v Vec) Vec { return scale(v, -1) }
+	switch w.turned { // the sensor lies the other way
+	case 90:
+		w.right, w.down = w.down, minus(w.right)
+	case 180:
+		w.right, w.down = minus(w.right), minus(w.down)
+	case 270:
+		w.right, w.down = minus(w.down), w.right
+	}
 	w.ortho = c.DistanceM == 0
 	if w.ortho {
-		w.f, w.k1, w.k2 = c.PixelsPerM, 0, 0
+		w.k1, w.k2 = 0, 0
+	}
+	w.findFold()
+	if w.ortho {
+		w.f = c.PixelsPerM
 		w.eye = c.LookAt
 		return w
 	}
@@ -89,14 +115,43 @@ func (w *view) flatten(c Vec) (x, y float64) {
 	return c[0] / c[2], c[1] / c[2]
 }
 
-// lens gives the pixel of flat coordinates.
+// findFold looks for the radius at which r(1 + k1 r² + k2 r⁴) stops growing.
+func (w *view) findFold() {
+	w.fold[0] = math.Inf(1)
+	for r := 0.01; r < 5; r += 0.01 {
+		if r2 := r * r; 1+r2*(3*w.k1+5*r2*w.k2) <= 0 {
+			w.fold = [2]float64{r, r * (1 + r2*(w.k1+r2*w.k2))}
+			return
+		}
+	}
+}
+
+// upright gives the upright picture's pixel of the stored picture's.
+func (w *view) upright(u, v float64) (float64, float64) {
+	switch w.turned {
+	case 90:
+		return float64(w.h-1) - v, u
+	case 180:
+		return float64(w.w-1) - u, float64(w.h-1) - v
+	case 270:
+		return v, float64(w.w-1) - u
+	}
+	return u, v
+}
+
+// lens gives the stored pixel of flat coordinates. Far outside of any picture,
+// where the lens's polynomial would lead back into it, it goes on outwards.
 func (w *view) lens(x, y float64) (u, v float64) {
 	r2 := x*x + y*y
 	g := w.f * (1 + r2*(w.k1+r2*w.k2))
+	if r2 > w.fold[0]*w.fold[0] {
+		r := math.Sqrt(r2)
+		g = w.f * (w.fold[1] + (r-w.fold[0])*0.1) / r
+	}
 	return w.cu + g*x, w.cv + g*y
 }
 
-// project gives the pixel of a world point.
+// project gives the stored pixel of a world point.
 func (w *view) project(p Vec) (u, v float64) { return w.lens(w.flatten(w.toCamera(p))) }
 
 // undistort gives the flat coordinates of a pixel, by Newton on the radius.

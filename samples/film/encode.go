@@ -22,9 +22,6 @@ type Encoding struct {
 	HEVC        bool
 	MegabitPerS float64 // 0: 17 Mb/s × (pixels per second)/(1920·1080·60), at least 4
 	Lossless    bool    // full colour, every byte as rendered
-	// RotationDeg is how far a player turns the stored picture clockwise to show
-	// it upright: 0, 90, 180 or 270. The scene is the upright picture.
-	RotationDeg int
 	// RateFactor is recorded over played frames per second: above 1 the clip plays
 	// in slow motion, its times are the scene's times that factor longer, and
 	// the phone's tag with the capture rate is written. 0 means 1.
@@ -128,8 +125,8 @@ func (s *Scene) Encode(ctx context.Context, path string, frames int, e Encoding,
 	case ended != nil || sent != nil:
 		return fmt.Errorf("ffmpeg could not write %s: %s", path, lastLine(said.String(), errors.Join(ended, sent)))
 	}
-	if e.RotationDeg%360 != 0 {
-		if err := setRotation(part, e.RotationDeg); err != nil {
+	if turned := s.place().cam.turned; turned != 0 {
+		if err := setRotation(part, turned); err != nil {
 			return err
 		}
 	}
@@ -168,7 +165,7 @@ func lastLine(said string, err error) string {
 
 // arguments is ffmpeg's command line.
 func (s *Scene) arguments(e Encoding, path string) []string {
-	c := &s.Camera
+	w, h := s.place().cam.w, s.place().cam.h
 	factor := e.RateFactor
 	if factor == 0 {
 		factor = 1
@@ -176,18 +173,10 @@ func (s *Scene) arguments(e Encoding, path string) []string {
 	rate := fraction(s.FramesPerS / factor)
 	a := []string{
 		"-hide_banner", "-loglevel", "error", "-nostdin", "-y",
-		"-f", "rawvideo", "-pix_fmt", "bgr24", "-video_size", fmt.Sprintf("%dx%d", c.Width, c.Height),
+		"-f", "rawvideo", "-pix_fmt", "bgr24", "-video_size", fmt.Sprintf("%dx%d", w, h),
 		"-framerate", rate, "-i", "pipe:0",
 	}
 	var filters []string
-	switch ((e.RotationDeg % 360) + 360) % 360 {
-	case 90:
-		filters = append(filters, "transpose=cclock")
-	case 180:
-		filters = append(filters, "hflip,vflip")
-	case 270:
-		filters = append(filters, "transpose=clock")
-	}
 	if !e.Lossless {
 		filters = append(filters, "scale=out_color_matrix=bt709:out_range=tv,format=yuv420p")
 	}
@@ -201,7 +190,7 @@ func (s *Scene) arguments(e Encoding, path string) []string {
 	a = append(a, "-video_track_timescale", strconv.Itoa(ticksPerS))
 	mb := e.MegabitPerS
 	if mb == 0 {
-		mb = max(4, 17*float64(c.Width*c.Height)*s.FramesPerS/(1920*1080*60))
+		mb = max(4, 17*float64(w*h)*s.FramesPerS/(1920*1080*60))
 	}
 	// The rate that counts is per second of the clip as it plays.
 	kb := mb * 1000 / factor
@@ -279,7 +268,7 @@ func (s *Scene) pour(ctx context.Context, w io.Writer, frames int, progress func
 	for range workers {
 		go func() {
 			for t := range work {
-				s.Render(s.Time(t.i), t.pix)
+				s.renderStored(s.Time(t.i), t.pix)
 				close(t.done)
 			}
 		}()

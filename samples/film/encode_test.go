@@ -124,14 +124,21 @@ func TestEncodedTimes(t *testing.T) {
 	}
 }
 
-// A clip that is stored turned comes out upright in ffmpeg's own hands.
+// A clip that is stored turned comes out upright in ffmpeg's own hands, and is
+// the picture that an unturned sensor sees; its rolling shutter runs along the
+// sensor's rows.
 func TestRotation(t *testing.T) {
 	needFFmpeg(t)
-	s := tiny()
-	want := s.Frame(0).Pix
+	plain := tiny()
+	want := plain.Frame(0).Pix
 	for _, deg := range []int{0, 90, 180, 270} {
+		s := tiny()
+		s.Camera.Turned = deg
+		if got := s.Frame(0).Pix; !bytes.Equal(got, want) {
+			t.Errorf("turned by %d°: the sensor sees another picture", deg)
+		}
 		path := filepath.Join(t.TempDir(), "a.mp4")
-		if err := s.Encode(t.Context(), path, 3, Encoding{RotationDeg: deg, Lossless: true}, nil); err != nil {
+		if err := s.Encode(t.Context(), path, 3, Encoding{Lossless: true}, nil); err != nil {
 			t.Fatal(err)
 		}
 		got := upright(t, path)
@@ -146,8 +153,19 @@ func TestRotation(t *testing.T) {
 		if stored := facts.Streams[0].Width == 64; stored != (deg%180 != 0) {
 			t.Errorf("turned by %d°: stored %d × %d", deg, facts.Streams[0].Width, facts.Streams[0].Height)
 		}
+		// The stored first row is the upright picture's top row, right column, bottom
+		// row, left column.
+		s = tiny()
+		s.Camera.Turned, s.Camera.ReadoutS = deg, 0.012
+		p := s.Truth(0)[0]
+		share := map[int]float64{0: p.V / 63, 90: 1 - p.U/95, 180: 1 - p.V/63, 270: p.U / 95}[deg]
+		if math.Abs(p.T-0.012*(share-0.5)) > 1e-9 {
+			t.Errorf("turned by %d°: seen at %g s, want %g", deg, p.T, 0.012*(share-0.5))
+		}
 	}
-	if err := s.Encode(t.Context(), filepath.Join(t.TempDir(), "a.mp4"), 3, Encoding{RotationDeg: 45}, nil); err == nil {
+	s := tiny()
+	s.Camera.Turned = 45
+	if err := s.Encode(t.Context(), filepath.Join(t.TempDir(), "a.mp4"), 3, Encoding{}, nil); err == nil {
 		t.Error("a clip turned by 45° was written")
 	}
 }

@@ -2,6 +2,25 @@ package film
 
 import "math"
 
+// outline gives the box, px, around a polygon of flat coordinates, whose sides a
+// lens with distortion bows.
+func outline(w *view, xy [][2]float64) (u0, v0, u1, v1 float64) {
+	u0, v0, u1, v1 = math.Inf(1), math.Inf(1), math.Inf(-1), math.Inf(-1)
+	steps := 1
+	if w.k1 != 0 || w.k2 != 0 {
+		steps = 64
+	}
+	for i, a := range xy {
+		b := xy[(i+1)%len(xy)]
+		for k := range steps {
+			t := float64(k) / float64(steps)
+			u, v := w.lens(a[0]+t*(b[0]-a[0]), a[1]+t*(b[1]-a[1]))
+			u0, u1, v0, v1 = min(u0, u), max(u1, u), min(v0, v), max(v1, v)
+		}
+	}
+	return u0 - 2, v0 - 2, u1 + 2, v1 + 2
+}
+
 // plate is a fixed convex polygon.
 type plate struct {
 	p              *Plate
@@ -14,15 +33,12 @@ type plate struct {
 
 func (s *plate) aim(st *stage, _ []float64) {
 	s.cam = st.cam
-	s.u0, s.v0, s.u1, s.v1 = math.Inf(1), math.Inf(1), math.Inf(-1), math.Inf(-1)
 	area := 0.0
 	var xy [][2]float64
 	for _, p := range s.p.Corners {
 		c := st.cam.toCamera(p)
 		s.z += c[2] / float64(len(s.p.Corners))
 		x, y := s.cam.flatten(c)
-		u, v := s.cam.lens(x, y)
-		s.u0, s.u1, s.v0, s.v1 = min(s.u0, u), max(s.u1, u), min(s.v0, v), max(s.v1, v)
 		xy = append(xy, [2]float64{x, y})
 	}
 	for i, a := range xy {
@@ -38,14 +54,19 @@ func (s *plate) aim(st *stage, _ []float64) {
 		}
 	}
 	s.c = s.p.Colour
-	// A curved lens bows the sides.
-	s.u0, s.v0, s.u1, s.v1 = s.u0-pad, s.v0-pad, s.u1+pad, s.v1+pad
+	s.u0, s.v0, s.u1, s.v1 = outline(st.cam, xy)
 }
 
 func (s *plate) box() (u0, v0, u1, v1 float64) { return s.u0, s.v0, s.u1, s.v1 }
 func (s *plate) near(u, v, reach float64) bool { return true }
-func (s *plate) depth() float64                { return s.z }
-func (s *plate) smear() float64                { return 0 }
+func (s *plate) depth() float64 {
+	if s.p.Ground {
+		return math.Inf(1)
+	}
+	return s.z
+}
+
+func (s *plate) smear() float64 { return 0 }
 
 func (s *plate) draw(_ int, _ float64, l *line) {
 	if l.v < s.v0 || l.v > s.v1 {
@@ -89,15 +110,13 @@ func (s *picture) aim(st *stage, _ []float64) {
 	s.centre = st.cam.toCamera(s.d.Centre)
 	s.ex, s.ey = st.cam.turn(s.d.Right), st.cam.turn(s.d.Up)
 	s.n = cross(s.ex, s.ey)
-	s.u0, s.v0, s.u1, s.v1 = math.Inf(1), math.Inf(1), math.Inf(-1), math.Inf(-1)
-	for _, a := range []float64{-1, 1} {
-		for _, b := range []float64{-1, 1} {
-			c := add(s.centre, add(scale(s.ex, a*s.d.HalfW), scale(s.ey, b*s.d.HalfH)))
-			u, v := s.cam.lens(s.cam.flatten(c))
-			s.u0, s.u1, s.v0, s.v1 = min(s.u0, u), max(s.u1, u), min(s.v0, v), max(s.v1, v)
-		}
+	var xy [][2]float64
+	for _, k := range [][2]float64{{-1, -1}, {1, -1}, {1, 1}, {-1, 1}} {
+		c := add(s.centre, add(scale(s.ex, k[0]*s.d.HalfW), scale(s.ey, k[1]*s.d.HalfH)))
+		x, y := s.cam.flatten(c)
+		xy = append(xy, [2]float64{x, y})
 	}
-	s.u0, s.v0, s.u1, s.v1 = s.u0-pad, s.v0-pad, s.u1+pad, s.v1+pad
+	s.u0, s.v0, s.u1, s.v1 = outline(st.cam, xy)
 }
 
 func (s *picture) box() (u0, v0, u1, v1 float64) { return s.u0, s.v0, s.u1, s.v1 }

@@ -6,7 +6,7 @@ import (
 	"slices"
 )
 
-// Render draws the frame whose top row's exposure has its middle at t (s) into
+// Render draws the frame whose exposure has its middle, on the picture's middle row, at t (s) into
 // dst: 3·Width bytes per row, blue, green, red, as a camera gives them, noise
 // and rounding included. It panics if dst is too short. The same scene, t and
 // Seed give the same bytes.
@@ -14,8 +14,37 @@ func (s *Scene) Render(t float64, dst []byte) {
 	st := s.stage()
 	d := st.pool.Get().(*desk)
 	d.render(st, t)
-	st.grain.develop(d.frame, dst, s.Camera.Width, t)
+	if s.Camera.Turned == 0 {
+		st.grain.develop(d.frame, dst, st.cam.w, t)
+	} else {
+		d.bytes = resize(d.bytes, len(d.frame))
+		st.grain.develop(d.frame, d.bytes, st.cam.w, t)
+		turn(st.cam, d.bytes, dst)
+	}
 	st.pool.Put(d)
+}
+
+// renderStored is Render in the sensor's own orientation.
+func (s *Scene) renderStored(t float64, dst []byte) {
+	st := s.stage()
+	d := st.pool.Get().(*desk)
+	d.render(st, t)
+	st.grain.develop(d.frame, dst, st.cam.w, t)
+	st.pool.Put(d)
+}
+
+// turn copies the stored picture's pixels to their places in the upright one.
+func turn[T any](w *view, from, to []T) {
+	wide := w.w
+	if w.turned%180 != 0 {
+		wide = w.h
+	}
+	for y := range w.h {
+		for x := range w.w {
+			u, v := w.upright(float64(x), float64(y))
+			copy(to[3*(int(v)*wide+int(u)):][:3], from[3*(y*w.w+x):][:3])
+		}
+	}
 }
 
 // Levels is Render without noise and with 1/128 grey level instead of whole
@@ -24,9 +53,11 @@ func (s *Scene) Levels(t float64, dst []float32) {
 	st := s.stage()
 	d := st.pool.Get().(*desk)
 	d.render(st, t)
+	d.levels = resize(d.levels, len(d.frame))
 	for i, x := range d.frame {
-		dst[i] = float32(x) / level
+		d.levels[i] = float32(x) / level
 	}
+	turn(st.cam, d.levels, dst)
 	st.pool.Put(d)
 }
 
@@ -52,7 +83,7 @@ func (d *desk) render(st *stage, t float64) {
 	}
 	for _, b := range d.dirty {
 		for v := b.y0; v < b.y1; v++ {
-			i, j := 3*(v*c.Width+b.x0), 3*(v*c.Width+b.x1)
+			i, j := 3*(v*st.cam.w+b.x0), 3*(v*st.cam.w+b.x1)
 			copy(d.frame[i:j], st.calm[i:j])
 		}
 	}
@@ -63,9 +94,9 @@ func (d *desk) render(st *stage, t float64) {
 	if c.ExposureS == 0 {
 		shadowTimes = shadowTimes[1:2]
 	}
-	for y := 0; y < c.Height; y += tile {
-		for x := 0; x < c.Width; x += tile {
-			b := block{x, y, min(x+tile, c.Width), min(y+tile, c.Height)}
+	for y := 0; y < st.cam.h; y += tile {
+		for x := 0; x < st.cam.w; x += tile {
+			b := block{x, y, min(x+tile, st.cam.w), min(y+tile, st.cam.h)}
 			any := d.expose(st, b, st.halo, d.shapes, d.times)
 			d.shades = d.shades[:0]
 			if st.lamp.shadow > 0 {

@@ -47,18 +47,18 @@ func TestSmearIsSmooth(t *testing.T) {
 func TestRollingShutter(t *testing.T) {
 	for _, dir := range []Vec{{3, 0, 0}, {0, 0, 3}, {2, 0, -2}} {
 		s := plainScene(Camera{Width: 200, Height: 160, PixelsPerM: 1000, ReadoutS: 0.02}, Bob{
-			DiameterM: 0.03, Flat: true, At: func(t float64) Vec { return add(Vec{-0.02, 0, 0}, scale(dir, t-0.01)) },
+			DiameterM: 0.03, Flat: true, At: func(t float64) Vec { return add(Vec{-0.02, 0, 0}, scale(dir, t)) },
 		})
 		u, v, _ := centroid(s, 0)
 		q := s.Truth(0)[0]
-		delay := 0.02 * q.V / 159
+		delay := 0.02 * (q.V/159 - 0.5)
 		if math.Abs(q.T-delay) > 1e-9 {
 			t.Errorf("the row at v = %g is exposed at %g, not at %g", q.V, delay, q.T)
 		}
 		if math.Hypot(u-q.U, v-q.V) > 1e-3 {
 			t.Errorf("direction %v: centroid (%.4f, %.4f), truth (%.4f, %.4f)", dir, u, v, q.U, q.V)
 		}
-		early := s.Bobs[0].At(0)
+		early := s.Bobs[0].At(-0.01)
 		if moved := 1000 * math.Hypot(q.At[0]-early[0], q.At[2]-early[2]); moved < 10 {
 			t.Errorf("the read-out moved the bob by only %.1f px: nothing was tested", moved)
 		}

@@ -121,14 +121,14 @@ func (st *stage) vignette(u, v int) float32 {
 // drawBack draws wall, plates, decals and fixed rods.
 func (st *stage) drawBack() {
 	s := st.scene
-	c := &s.Camera
-	st.backW = c.Width + 2*rim
-	st.back = make([][4]float32, st.backW*(c.Height+2*rim))
-	tex := texture(s, st.backW, c.Height+2*rim)
-	for j := range c.Height + 2*rim {
+	w, h := st.cam.w, st.cam.h
+	st.backW = w + 2*rim
+	st.back = make([][4]float32, st.backW*(h+2*rim))
+	tex := texture(s, st.backW, h+2*rim)
+	for j := range h + 2*rim {
 		for i := range st.backW {
-			x := s.Wall.GradU*((float64(i-rim)+0.5)/float64(c.Width)-0.5) +
-				s.Wall.GradV*((float64(j-rim)+0.5)/float64(c.Height)-0.5)
+			u, v := st.cam.upright(float64(i-rim), float64(j-rim))
+			x := s.Wall.GradU*((u+0.5)/float64(s.Camera.Width)-0.5) + s.Wall.GradV*((v+0.5)/float64(s.Camera.Height)-0.5)
 			k := j*st.backW + i
 			if tex != nil {
 				x += float64(tex[k])
@@ -169,8 +169,8 @@ func (st *stage) drawBack() {
 			wg.Go(func() {
 				d := &desk{}
 				for y := range rows {
-					for x := -rim; x < c.Width+rim; x += tile {
-						b := block{x, y, min(x+tile, c.Width+rim), min(y+tile, c.Height+rim)}
+					for x := -rim; x < w+rim; x += tile {
+						b := block{x, y, min(x+tile, w+rim), min(y+tile, h+rim)}
 						if !d.expose(st, b, 0, fixed, []float64{0}) {
 							continue
 						}
@@ -184,18 +184,18 @@ func (st *stage) drawBack() {
 				}
 			})
 		}
-		for y := -rim; y < c.Height+rim; y += tile {
+		for y := -rim; y < h+rim; y += tile {
 			rows <- y
 		}
 		close(rows)
 		wg.Wait()
 		st.taps, st.fine = old, fine
 	}
-	st.calm = make([]uint16, 3*c.Width*c.Height)
+	st.calm = make([]uint16, 3*w*h)
 	d := &desk{}
-	for y := 0; y < c.Height; y += tile {
-		for x := 0; x < c.Width; x += tile {
-			b := block{x, y, min(x+tile, c.Width), min(y+tile, c.Height)}
+	for y := 0; y < h; y += tile {
+		for x := 0; x < w; x += tile {
+			b := block{x, y, min(x+tile, w), min(y+tile, h)}
 			d.clear(st, b, st.halo)
 			d.finish(st, b, nil, nil, st.calm)
 		}
@@ -213,6 +213,8 @@ type desk struct {
 	times  []float64
 	shades []*ball
 	frame  []uint16
+	bytes  []byte // the stored picture, where it is not the upright one
+	levels []float32
 	dirty  []block
 
 	line             line
@@ -387,7 +389,6 @@ func (d *desk) blur(st *stage, w, h, fw, fh int) {
 // finish lays d.out over the backdrop, darkened by the shadows of the given
 // balls at the given times, vignettes, sharpens, and writes the block into dst.
 func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst []uint16) {
-	c := &st.scene.Camera
 	m := d.margin
 	w := b.x1 - b.x0 + 2*m
 	h := b.y1 - b.y0 + 2*m
@@ -396,9 +397,9 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 		d.castShadows(st, b, w, h, shades, times)
 	}
 	for j := range h {
-		v := min(max(b.y0-m+j, -rim), c.Height+rim-1)
+		v := min(max(b.y0-m+j, -rim), st.cam.h+rim-1)
 		for i := range w {
-			u := min(max(b.x0-m+i, -rim), c.Width+rim-1)
+			u := min(max(b.x0-m+i, -rim), st.cam.w+rim-1)
 			p := &d.out[j*w+i]
 			q := &st.back[(v+rim)*st.backW+u+rim]
 			k := 1 - p[3]
@@ -415,7 +416,7 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 	}
 	for v := b.y0; v < b.y1; v++ {
 		i := (v-b.y0+m)*w + m
-		to := dst[3*(v*c.Width+b.x0) : 3*(v*c.Width+b.x1)]
+		to := dst[3*(v*st.cam.w+b.x0) : 3*(v*st.cam.w+b.x1)]
 		for u := range b.x1 - b.x0 {
 			p := d.lit[i+u]
 			if amount > 0 {

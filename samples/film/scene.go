@@ -45,8 +45,13 @@ type Camera struct {
 	Roll          float64 // rad; the picture's content turns clockwise by this angle
 	K1, K2        float64 // radial distortion in normalised coordinates: r_d = r(1 + K1 r² + K2 r⁴) (Brown 1966); pinhole only
 	CentrePX      *[2]float64
-	// ReadoutS is the rolling shutter's time from the top row to the bottom row:
-	// the exposure of row v has its middle at the frame's time + ReadoutS·v/(Height−1).
+	// Turned is how far the stored picture must be turned clockwise to be upright:
+	// 0, 90, 180 or 270 degrees. Width, Height and everything else here are the
+	// upright picture's; the sensor's rows, and so the rolling shutter, turn along.
+	Turned int
+	// ReadoutS is the rolling shutter's time from the sensor's first row to its
+	// last: the exposure of row v of h has its middle at the frame's time +
+	// ReadoutS·(v/(h−1) − ½).
 	ReadoutS  float64
 	ExposureS float64 // one row's exposure; 0: an instant
 	BlurPX    float64 // standard deviation of the lens's Gaussian blur, px; 0: 0.8. The pixel's aperture comes on top.
@@ -106,6 +111,7 @@ type Rod struct {
 type Plate struct {
 	Colour  RGB
 	Corners []Vec
+	Ground  bool // lies behind all else, whatever its depth; in the order given
 }
 
 // Decal is a fixed flat picture: a rectangle with Centre, half sizes along the
@@ -167,7 +173,7 @@ type Point struct {
 	Shown float64
 }
 
-// Time is frame i's time: the middle of the exposure of its top row.
+// Time is frame i's time: the middle of the exposure of its middle row.
 func (s *Scene) Time(i int) float64 {
 	if s.Times != nil {
 		return s.Times[i]
@@ -195,13 +201,15 @@ func (s *Scene) Truth(t float64) []Point {
 		}
 		p := Point{Name: b.Name}
 		p.T, p.At, p.U, p.V = st.centre(b, t)
+		p.U, p.V = st.cam.upright(p.U, p.V)
 		p.Shown = st.shown(i, p)
 		out = append(out, p)
 	}
 	return out
 }
 
-// centre solves T = t + row time of v(T): the row's delay depends on where the
+// centre gives when and where b's centre is seen, u and v in the stored picture.
+// It solves T = t + row time of v(T): the row's delay depends on where the
 // bob is, and where it is depends on the delay. The iteration contracts by the
 // ratio of the bob's speed to that of the shutter, so it ends after a few steps.
 func (st *stage) centre(b *Bob, t float64) (tt float64, at Vec, u, v float64) {
@@ -218,13 +226,13 @@ func (st *stage) centre(b *Bob, t float64) (tt float64, at Vec, u, v float64) {
 	return tt, at, u, v
 }
 
-// rowTime is the delay of row v after the frame's time.
+// rowTime is the delay of the stored picture's row v after the frame's time.
 func (st *stage) rowTime(v float64) float64 {
 	c := &st.scene.Camera
-	if c.ReadoutS == 0 || c.Height < 2 {
+	if c.ReadoutS == 0 || st.cam.h < 2 {
 		return 0
 	}
-	return c.ReadoutS * v / float64(c.Height-1)
+	return c.ReadoutS * (v/float64(st.cam.h-1) - 0.5)
 }
 
 // shown samples the bob's face on a sunflower pattern and counts the points that
@@ -241,7 +249,7 @@ func (st *stage) shown(i int, p Point) float64 {
 		q := Vec{c[0] + rho*math.Cos(phi), c[1] + rho*math.Sin(phi), c[2]}
 		x, y := st.cam.flatten(q)
 		u, v := st.cam.lens(x, y)
-		if u < -0.5 || v < -0.5 || u > float64(st.scene.Camera.Width)-0.5 || v > float64(st.scene.Camera.Height)-0.5 {
+		if u < -0.5 || v < -0.5 || u > float64(st.cam.w)-0.5 || v > float64(st.cam.h)-0.5 {
 			continue
 		}
 		hidden := false

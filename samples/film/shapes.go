@@ -298,12 +298,12 @@ type rod struct {
 
 func (s *rod) aim(st *stage, times []float64) {
 	s.cam = st.cam
-	late := st.rowTime(float64(st.scene.Camera.Height - 1))
+	first, last := st.rowTime(0), st.rowTime(float64(st.cam.h-1))
 	if s.r.Still {
-		late = 0
+		first, last = 0, 0
 	}
-	s.p.trace(st, s.r.From, times, 0, late)
-	s.q.trace(st, s.r.To, times, 0, late)
+	s.p.trace(st, s.r.From, times, first, last)
+	s.q.trace(st, s.r.To, times, first, last)
 	s.ends = s.ends[:0]
 	s.u0, s.v0, s.u1, s.v1 = math.Inf(1), math.Inf(1), math.Inf(-1), math.Inf(-1)
 	s.half = 0
@@ -328,10 +328,10 @@ func (s *rod) aim(st *stage, times []float64) {
 		}
 	}
 	s.u0, s.v0, s.u1, s.v1 = s.u0-s.half, s.v0-s.half, s.u1+s.half, s.v1+s.half
-	first, last := s.ends[1], s.ends[len(s.ends)-2]
+	begin, end := s.ends[1], s.ends[len(s.ends)-2]
 	s.moved = 0
 	for e := range 2 {
-		s.moved = max(s.moved, math.Hypot(first[e][0]-last[e][0], first[e][1]-last[e][1]))
+		s.moved = max(s.moved, math.Hypot(begin[e][0]-end[e][0], begin[e][1]-end[e][1]))
 	}
 	a, b := s.p.c[0][1], s.q.c[0][1]
 	xa, ya := s.cam.flatten(a)
