@@ -75,7 +75,7 @@ func (b *set) ruler() {
 	from := [2]float64{b.left - 0.09, b.bench + 0.06}
 	dir := [2]float64{0, 1}
 	if b.r.Camera.FromAbove {
-		from[1] = -sc.LengthM.V / 2
+		from[1] = -0.05 - sc.LengthM.V // clear of the stand, which is behind
 	}
 	if len(sc.EndsPX) == 2 {
 		from[0], from[1] = p.seen(&b.s.Camera, sc.EndsPX[0])

@@ -38,7 +38,7 @@ func prepare(t *testing.T, r *rig.Rig, opt Options) *Take {
 // the rig says of the picture (the ruler's ends, the plumb line) is where the
 // camera would see it.
 func TestEverySample(t *testing.T) {
-	for _, want := range []string{"buoys", "lantern", "lantern-magnet-out", "lantern-ball", "vanes", "beacon", "gull", "ferry"} {
+	for _, want := range []string{"buoys", "lantern", "lantern-magnet-out", "lantern-ball", "lantern-ball-above", "vanes", "beacon", "gull", "ferry"} {
 		t.Run(want, func(t *testing.T) {
 			r := open(t, want)
 			take := prepare(t, r, Options{})
