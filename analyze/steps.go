@@ -16,9 +16,17 @@ import (
 
 const degree = math.Pi / 180
 
-// mostLines is how many spectral lines are looked for in one motion; modes of
-// several bobs are told apart elsewhere.
-const mostLines = 4
+const (
+	// mostLines is how many spectral lines are looked for in one motion, and
+	// freeLines in a free decay, whose lines drift apart as the amplitude falls;
+	// modes of several bobs are told apart elsewhere.
+	mostLines = 4
+	freeLines = 2
+	// mostSamples is how many samples a spectrum is made of, at most; neighbours
+	// are averaged where there are more, since the search takes a minute for ten
+	// thousand.
+	mostSamples = 5000
+)
 
 // angles turns the track, or the tables, into angle series.
 func angles(_ context.Context, w *work) error {
@@ -60,14 +68,26 @@ func angles(_ context.Context, w *work) error {
 		if a.Pivot.From != "" && a.Pivot.R > 0 && !a.Pivot.Moves {
 			f := finding.Normal("series.radius", a.Part, fmt.Sprintf("Distance of “%s” from the pivot", a.Bob), a.Pivot.R, a.Pivot.UR, "m", a.Pivot.From)
 			if w.track != nil {
-				scale := w.track.Cal.UScale * a.Pivot.R
-				rest := math.Sqrt(math.Max(0, a.Pivot.UR*a.Pivot.UR-scale*scale))
-				f.Budget = []finding.Share{{Source: "pictures", U: rest}, {Source: "scale", U: scale}}
+				f.Budget = radiusBudget(a.Pivot, &w.track.Cal)
 			}
 			w.rec.Findings = append(w.rec.Findings, f)
 		}
 	}
 	return nil
+}
+
+// radiusBudget splits a distance's uncertainty into the pictures' share and what
+// each source of the scale's uncertainty does.
+func radiusBudget(p series.Pivot, cal *track.Calibration) []finding.Share {
+	scale := cal.UScale * p.R
+	out := []finding.Share{{Source: "pictures and the rig's dimensions", U: math.Sqrt(math.Max(0, p.UR*p.UR-scale*scale))}}
+	if len(cal.ScaleShares) == 0 {
+		return append(out, finding.Share{Source: "scale", U: scale})
+	}
+	for _, s := range cal.ScaleShares {
+		out = append(out, finding.Share{Source: "scale: " + s.Source, U: s.U * p.R})
+	}
+	return out
 }
 
 func fromTables(tables []record.Angles) ([]series.Angle, error) {
@@ -162,8 +182,7 @@ func spectra(ctx context.Context, w *work) error {
 		a := &w.angles[i]
 		told[a.Bob] = true
 		w.spectrum(a.Part, a.T, a.Angle, a.UAngle, spectrum.Options{
-			MaxLines: mostLines,
-			UClock:   a.UClock, Unit: "rad", Quantity: "angle", ShowUnit: "°", ShowFactor: 1 / degree,
+			UClock: a.UClock, Unit: "rad", Quantity: "angle", ShowUnit: "°", ShowFactor: 1 / degree,
 		})
 		if ctx.Err() != nil {
 			return ctx.Err()
@@ -183,8 +202,7 @@ func spectra(ctx context.Context, w *work) error {
 			t, x, u = append(t, s.T), append(x, s.X), append(u, ux)
 		}
 		w.spectrum(b.Name, t, x, u, spectrum.Options{
-			MaxLines: mostLines,
-			UClock:   w.track.Cal.UClock, UScale: w.track.Cal.UScale, Unit: "m", Quantity: "sideways motion", ShowUnit: "mm", ShowFactor: 1e3,
+			UClock: w.track.Cal.UClock, UScale: w.track.Cal.UScale, Unit: "m", Quantity: "sideways motion", ShowUnit: "mm", ShowFactor: 1e3,
 		})
 		if ctx.Err() != nil {
 			return ctx.Err()
@@ -199,6 +217,11 @@ func (w *work) tellsPart(b *track.Bob) bool {
 }
 
 func (w *work) spectrum(subject string, t, y, u []float64, opt spectrum.Options) {
+	opt.MaxLines = mostLines
+	if w.decaysFreely(subject) {
+		opt.MaxLines = freeLines
+	}
+	t, y, u, group := averaged(t, y, u)
 	s, err := spectrum.Compute(t, y, u, opt)
 	if err != nil {
 		w.undecided("spectrum.lines", subject, "Spectral lines", err.Error(), "spectrum on the true sample times")
@@ -212,7 +235,42 @@ func (w *work) spectrum(subject string, t, y, u []float64, opt spectrum.Options)
 		}
 		w.rec.Findings = append(w.rec.Findings, f)
 	}
-	w.rec.Curves = append(w.rec.Curves, s.Curve(subject))
+	c := s.Curve(subject)
+	if group > 1 {
+		c.Caption += fmt.Sprintf(" Neighbouring samples were averaged in groups of %d, so that nothing above %.3g Hz is shown.", group, 0.5/s.Step)
+	}
+	w.rec.Curves = append(w.rec.Curves, c)
+}
+
+// averaged makes at most mostSamples of a long series: means over groups of
+// neighbours, never across a gap.
+func averaged(t, y, u []float64) (at, ay, au []float64, group int) {
+	group = 1 + (len(t)-1)/mostSamples
+	if group == 1 {
+		return t, y, u, 1
+	}
+	steps := make([]float64, 0, len(t)-1)
+	for i := 1; i < len(t); i++ {
+		steps = append(steps, t[i]-t[i-1])
+	}
+	slices.Sort(steps)
+	longest := 2 * steps[len(steps)/2]
+	for i := 0; i < len(t); {
+		j := i + 1
+		for j < len(t) && j < i+group && t[j]-t[j-1] < longest {
+			j++
+		}
+		n := float64(j - i)
+		st, sy, sv := 0.0, 0.0, 0.0
+		for k := i; k < j; k++ {
+			st += t[k]
+			sy += y[k]
+			sv += u[k] * u[k]
+		}
+		at, ay, au = append(at, st/n), append(ay, sy/n), append(au, math.Sqrt(sv)/n)
+		i = j
+	}
+	return at, ay, au, group
 }
 
 func (w *work) decaysFreely(part string) bool {

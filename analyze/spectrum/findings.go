@@ -75,11 +75,10 @@ func (s *Spectrum) Curve(subject string) finding.Curve {
 	if quantity == "" {
 		quantity = "value"
 	}
-	var lx, ly, lo, hi []float64
+	var lx, ly []float64
 	for _, l := range s.Lines {
 		k := min(int(math.Round(l.Frequency/s.Freq[1])), len(s.Freq)-1)
 		lx, ly = append(lx, l.Frequency), append(ly, s.Amplitude[k])
-		lo, hi = append(lo, l.Frequency-1.96*l.UFrequency), append(hi, l.Frequency+1.96*l.UFrequency)
 	}
 	noise := make([]float64, len(s.Freq))
 	for k, b := range s.Background {
@@ -90,7 +89,7 @@ func (s *Spectrum) Curve(subject string) finding.Curve {
 		subject, s.Samples, s.To-s.From, s.Resolution)
 	if len(s.Lines) > 0 {
 		l := s.Lines[0]
-		caption += fmt.Sprintf(" The strongest line stands at (%.6g ± %.2g) Hz (standard uncertainty).", l.Frequency, l.UFrequency)
+		caption += " The strongest line stands at " + finding.DisplayValue(l.Frequency, l.UFrequency, "Hz").String() + " (standard uncertainty)."
 	}
 	return finding.Curve{
 		Key: "spectrum", Subject: subject, Title: "Spectrum of " + subject, Caption: caption,
@@ -99,7 +98,7 @@ func (s *Spectrum) Curve(subject string) finding.Curve {
 		Lines: []finding.Line{
 			{Name: "amplitude", Role: finding.Data, X: s.Freq[1:], Y: s.Amplitude[1:]},
 			{Name: "noise", Role: finding.Guide, X: s.Freq[1:], Y: noise[1:]},
-			{Name: "lines", Role: finding.Mark, X: lx, Y: ly, Lo: lo, Hi: hi},
+			{Name: "lines", Role: finding.Mark, X: lx, Y: ly},
 		},
 	}
 }
