@@ -38,6 +38,7 @@ Exit status: 0 done; 1 failed; 2 wrong use; 3 done, but the verdict is reject.`,
 	})
 	root.AddCommand(
 		measureCommand(),
+		trackCommand(),
 		analyzeCommand(),
 		plotCommand(),
 		inspectCommand(),

@@ -55,12 +55,12 @@ func (j *Job) Measure(ctx context.Context) (*record.Record, error) {
 	}
 	began := time.Now()
 	j.Meter.Start("analysing", 0, "")
-	full, err := analyze.Run(ctx, rec.Track, r, analyze.Options{})
+	full, err := analyze.Run(ctx, rec.Track, r, analyze.Options{Run: rec.Run, Still: rec.Still})
 	if err != nil {
 		return nil, err
 	}
 	j.Meter.End()
-	full.Run, full.Still, full.Kept = rec.Run, rec.Still, rec.Kept
+	full.Kept = rec.Kept
 	full.Run.Took("analyse", time.Since(began))
 	return full, j.finish(ctx, full)
 }
@@ -98,6 +98,9 @@ func (j *Job) follow(ctx context.Context) (*record.Record, *rig.Rig, error) {
 	}
 	r, err := rig.Load(j.RigPath)
 	if err != nil {
+		return nil, nil, err
+	}
+	if err := r.CheckScale(); err != nil {
 		return nil, nil, err
 	}
 	if err := record.CheckTarget(j.Out); err != nil {
