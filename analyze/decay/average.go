@@ -27,10 +27,11 @@ func (an *analysis) average(q quantity) averaged {
 // averageOver is average over the laws that ok lets through, with a variance of
 // one's choice.
 func (an *analysis) averageOver(q quantity, ok func(law) bool, variance func(k int, g []float64) float64) averaged {
-	type one struct{ w, v, variance float64 }
+	type one struct{ w, v, variance, random float64 }
 	var all []one
 	total := 0.0
-	common := make([]float64, len(an.shared))
+	common := make([]float64, len(an.sources))
+	shift := 0.0
 	for k, f := range an.fits {
 		w := an.weights[k]
 		if w < 1e-4 || !ok(f.m.law) {
@@ -41,11 +42,14 @@ func (an *analysis) averageOver(q quantity, ok func(law) bool, variance func(k i
 			continue
 		}
 		g := gradient(q, f)
-		all = append(all, one{w, v, variance(k, g)})
+		whole := variance(k, g)
+		systematic := math.Min(whole, quadratic(g, an.cov[k])-quadratic(g, an.bare[k]))
+		all = append(all, one{w, v, whole, whole - math.Max(0, systematic)})
 		total += w
-		for s := range an.shared {
-			common[s] += w * dot(g, an.gain(k, s))
+		for s := range an.sources {
+			common[s] += w * dot(g, an.gain(k, s)) * f.uCommon[s]
 		}
+		shift += w * g[atRest]
 	}
 	a := averaged{value: math.NaN()}
 	if total == 0 {
@@ -55,28 +59,44 @@ func (an *analysis) averageOver(q quantity, ok func(law) bool, variance func(k i
 	for _, o := range all {
 		a.value += o.w * o.v / total
 	}
-	var vr, vs float64
+	var vr, vs, vAll float64
 	for _, o := range all {
-		vr += o.w * o.variance / total
+		vr += o.w * o.random / total
+		vAll += o.w * o.variance / total
 		vs += o.w * (o.v - a.value) * (o.v - a.value) / total
 	}
 	a.random, a.spread = math.Sqrt(vr), math.Sqrt(vs)
-	sum := vr + vs
+	sum := vAll + vs
+	// The shared causes' part, parted in the proportion of what each does.
 	for s, c := range common {
-		c /= total
-		sum += c * c
-		a.addShare(an.shared[s].Source, math.Abs(c))
+		a.addShare(an.sources[s], math.Abs(c)/total)
+	}
+	parts := 0.0
+	for _, s := range a.shared {
+		parts += s.U * s.U
+	}
+	for i := range a.shared {
+		if parts > 0 {
+			a.shared[i].U *= math.Sqrt(math.Max(0, vAll-vr) / parts)
+		}
+	}
+	for _, s := range an.shifts {
+		u := math.Abs(s.D[0] * shift / total)
+		if u > 0 {
+			a.addShare(s.Source, u)
+			sum += u * u
+		}
 	}
 	a.u = math.Sqrt(sum)
 	return a
 }
 
-// variance is gᵀCg for the k-th law, from the noise; where the residuals are not
-// white, not below what the jackknife says.
+// variance is gᵀCg for the k-th law; where the residuals are not white, its
+// random part is not below what the jackknife says.
 func (an *analysis) variance(k int, g []float64) float64 {
 	v := quadratic(g, an.cov[k])
 	if an.jack[k] != nil {
-		v = math.Max(v, quadratic(g, an.jack[k]))
+		v += math.Max(0, quadratic(g, an.jack[k])-quadratic(g, an.bare[k]))
 	}
 	return v
 }
@@ -160,18 +180,18 @@ func gradient(q quantity, f *fitted) []float64 {
 }
 
 // gain is by how much one standard uncertainty of shared cause s moves the
-// parameters of law k: (JᵀJ)⁻¹Jᵀ·(D/u).
+// parameters of law k when it is not fitted: (JᵀJ)⁻¹Jᵀ·(D/u).
 func (an *analysis) gain(k, s int) []float64 {
-	if an.gains == nil {
-		an.gains = map[[2]int][]float64{}
-	}
 	if g := an.gains[[2]int{k, s}]; g != nil {
 		return g
+	}
+	if an.gains == nil {
+		an.gains = map[[2]int][]float64{}
 	}
 	f := an.fits[k]
 	n := f.m.size()
 	jtd := make([]float64, n)
-	for i, d := range an.shared[s].D {
+	for i, d := range an.data.common[s] {
 		x := d / an.data.u[i]
 		for j := range n {
 			jtd[j] += f.jac[i*n+j] * x
@@ -180,7 +200,7 @@ func (an *analysis) gain(k, s int) []float64 {
 	g := make([]float64, n)
 	for i := range n {
 		for j := range n {
-			g[i] += f.cov[i*n+j] * jtd[j]
+			g[i] += f.bare[i*n+j] * jtd[j]
 		}
 	}
 	an.gains[[2]int{k, s}] = g

@@ -4,9 +4,13 @@ import (
 	"context"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 
 	"lodeswing/analyze/finding"
+	"lodeswing/analyze/series"
+	"lodeswing/track"
+	"lodeswing/track/rig"
 )
 
 func byKey(t testing.TB, res *Result, key string) finding.Finding {
@@ -46,12 +50,91 @@ func draw(rng *rand.Rand) swinging {
 	return s
 }
 
-// Coverage of the 95 % intervals, pooled, and their width against the
-// Cramér–Rao bound of the true law.
+const (
+	uScale = 0.003 // relative
+	uClock = 50e-6 // relative
+	uRuler = 0.5e-3
+)
+
+// trackBound is the Cramér–Rao bound of a quantity from the positions of a bob at
+// distance r: pivot and radius are unknown too, and told by the positions' own
+// distances and by the rig's length.
+func (tr truth) trackBound(q quantity, r float64) float64 {
+	n := tr.m.size()
+	times := make([]float64, tr.n)
+	for i := range times {
+		times[i] = float64(i) * tr.dt
+	}
+	out, jac := make([]float64, tr.n), make([]float64, tr.n*n)
+	if err := newMover(tr.m, true).run(tr.p, 0, times, out, jac, nil); err != nil {
+		return math.NaN()
+	}
+	all := n + 3 // and pivot x, z, radius
+	info := make([]float64, all*all)
+	add := func(row []float64, u float64) {
+		for a, x := range row {
+			for b, y := range row {
+				info[a*all+b] += x * y / (u * u)
+			}
+		}
+	}
+	row := make([]float64, all)
+	for i := range tr.n {
+		sin, cos := math.Sincos(out[i])
+		copy(row, jac[i*n:(i+1)*n])
+		row[n], row[n+1], row[n+2] = -cos/r, -sin/r, 0
+		add(row, tr.sigma)
+		clear(row)
+		row[n], row[n+1], row[n+2] = -sin, cos, -1
+		add(row, tr.sigma*r)
+	}
+	clear(row)
+	row[n+2] = 1
+	add(row, math.Hypot(uRuler, uScale*r))
+	c := invert(info, all)
+	f := &fitted{m: tr.m, p: tr.p, cov: make([]float64, n*n)}
+	for i := range n {
+		copy(f.cov[i*n:(i+1)*n], c[i*all:])
+	}
+	return math.Sqrt(quadratic(gradient(q, f), f.cov))
+}
+
+// track films a truth: the bob's places in the plane of motion with the noise of
+// the picture, by a camera whose clock, scale and upright are off by their
+// standard uncertainties times chance, and a rig whose length is as good as a
+// ruler's.
+func (tr truth) track(t *testing.T, rng *rand.Rand, r float64) series.Angle {
+	t.Helper()
+	const uVertical = 2e-3
+	scale, clock, tilt := 1+uScale*rng.NormFloat64(), 1+uClock*rng.NormFloat64(), uVertical*rng.NormFloat64()
+	quiet := tr
+	quiet.sigma = 0
+	ts, ys := quiet.record(rng)
+	s := tr.sigma * r
+	b := track.Bob{Name: "bob", Part: "arm"}
+	for i := range ts {
+		sin, cos := math.Sincos(ys[i] + tilt)
+		b.Samples = append(b.Samples, track.Sample{
+			T: ts[i] * clock, X: scale * (0.02 + r*sin + s*rng.NormFloat64()), Z: scale * (0.05 - r*cos + s*rng.NormFloat64()),
+			Plane: track.Cov{AA: s * s, BB: s * s}, State: track.Seen,
+		})
+	}
+	cal := track.Calibration{MetresPerPixel: 4e-4, UScale: uScale, UClock: uClock, VerticalKnown: true, UVertical: uVertical, VerticalFrom: "plumb line"}
+	rg := &rig.Rig{Parts: []rig.Part{{Name: "arm", Joint: "hinge"}}, Bobs: []rig.Bob{{Name: "bob", Part: "arm", AtM: []float64{0, -r + uRuler*rng.NormFloat64()}}}}
+	as, err := series.FromTrack(&track.Track{Bobs: []track.Bob{b}, Cal: cal}, rg)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return as[0]
+}
+
+// Coverage of the 95 % intervals over simulated tracks, pooled, and their width
+// against the Cramér–Rao bound of the true law (for periods, with the clock's
+// share).
 func TestCoverage(t *testing.T) {
-	runs := 150
+	runs := 40
 	if *long {
-		runs = 1500
+		runs = 1200
 	}
 	rng := rand.New(rand.NewPCG(20, 26))
 	type tally struct {
@@ -68,7 +151,8 @@ func TestCoverage(t *testing.T) {
 	for range runs {
 		s := draw(rng)
 		tr := s.truth(rng)
-		res, err := Analyze(context.Background(), tr.angle(t, rng), Options{})
+		r := 0.15 + 0.25*rng.Float64()
+		res, err := Analyze(context.Background(), tr.track(t, rng, r), Options{})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -96,7 +180,11 @@ func TestCoverage(t *testing.T) {
 			if math.Abs(z) > 3.5 {
 				t.Logf("%s off by %.1f u: %+v law %v found %s; %v-%v of %v", k, z, s, tr.m.law, res.Law, res.FromS, res.ToS, float64(tr.n)*tr.dt)
 			}
-			c.ratio = append(c.ratio, f.U/tr.bound(q))
+			b := tr.trackBound(q, r)
+			if k != "decay.zeta" {
+				b = math.Hypot(b, uClock*want)
+			}
+			c.ratio = append(c.ratio, f.U/b)
 		}
 	}
 	in, all := 0, 0
@@ -107,16 +195,30 @@ func TestCoverage(t *testing.T) {
 		t.Logf("%-20s holds the truth in %.1f %% of %d; r.m.s. error %.3f u; width over the bound: median %.3f, mean %.3f, 90 %% %.3f, largest %.2f",
 			k, 100*float64(c.in)/float64(c.all), c.all, math.Sqrt(c.z2/float64(c.all)), r[len(r)/2], mean(r), r[len(r)*9/10], r[len(r)-1])
 	}
+	pooled := float64(in) / float64(all)
+	lo, hi := 0.93, 0.97
+	if !*long {
+		// Three standard deviations of a binomial count of so many clips.
+		slack := 3 * math.Sqrt(0.95*0.05/float64(runs))
+		lo, hi = 0.95-slack, 1
+	}
+	if pooled < lo || pooled > hi {
+		t.Errorf("pooled coverage %.3f, wanted %.3f to %.3f", pooled, lo, hi)
+	}
+	for _, k := range keys {
+		if m := mean(tallies[k].ratio); m > 1.2 || m < 0.9 {
+			t.Errorf("%s: intervals are %.2f × the bound's on average", k, m)
+		}
+	}
+	if lost > runs/50 {
+		t.Errorf("no decay was found in %d of %d clips", lost, runs)
+	}
 	t.Logf("pooled %.2f %% of %d; no decay found in %d of %d", 100*float64(in)/float64(all), all, lost, runs)
 }
 
 func sorted(x []float64) []float64 {
-	y := append([]float64(nil), x...)
-	for i := range y {
-		for j := i; j > 0 && y[j] < y[j-1]; j-- {
-			y[j], y[j-1] = y[j-1], y[j]
-		}
-	}
+	y := slices.Clone(x)
+	slices.Sort(y)
 	return y
 }
 

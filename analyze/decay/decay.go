@@ -96,16 +96,18 @@ type analysis struct {
 
 	st       stretch
 	data     *samples
-	shared   []series.Shared // cut to data
+	sources  []string        // of data.common
+	shifts   []series.Shared // what shifts all angles alike: D has one entry
 	shape    model           // the shape that was chosen; its law is unset
 	fits     []*fitted       // one per law
 	cov      [][]float64
+	bare     [][]float64 // cov, if the shared causes were known
 	jack     [][]float64 // covariances by jackknife, where the residuals are not white
 	weights  []float64
 	bics     []float64
 	noise    noise
-	limits   [3]limit // of the frictions that the chosen law lacks
 	gains    map[[2]int][]float64
+	limits   [3]limit // of the frictions that the chosen law lacks
 	turns    []turn
 	period   float64 // of small swings, s
 	ampStart float64
@@ -253,36 +255,41 @@ func (an *analysis) work() error {
 	freq := math.Sqrt(f.p[atK]) / (2 * math.Pi)
 	amp := an.midAmplitude()
 
+	an.splitShared(f)
+	// The noise, from the richest model.
+	richest := shapes[len(shapes)-1]
+	richest.law = viscous | drag | dry
+	g, err := an.data.fit(an.ctx, richest, restart(f, richest, amp), false)
+	if err != nil {
+		return err
+	}
+	an.noise = measureNoise(an.data.t, g, freq)
+	for i := range an.data.u {
+		an.data.u[i] *= an.noise.scale()
+	}
 	// The shape, with all three frictions.
-	var tried []*fitted
+	var best *fitted
 	for _, m := range shapes {
 		m.law = viscous | drag | dry
-		g, err := an.data.fit(an.ctx, m, restart(f, m, amp), false)
+		h, err := an.data.fit(an.ctx, m, restart(g, m, amp), false)
 		if err != nil {
 			if e := an.ctx.Err(); e != nil {
 				return e
 			}
 			continue
 		}
-		tried = append(tried, g)
-	}
-	if len(tried) == 0 {
-		return notFollowed{"the motion does not follow a damped swing about one rest"}
-	}
-	richest := tried[len(tried)-1]
-	an.noise = measureNoise(an.data.t, richest, freq)
-	best := tried[0]
-	for _, g := range tried[1:] {
-		if an.bic(g) < an.bic(best) {
-			best = g
+		if best == nil || an.bic(h) < an.bic(best) {
+			best = h
 		}
+	}
+	if best == nil {
+		return notFollowed{"the motion does not follow a damped swing about one rest"}
 	}
 	if err := an.follows(best); err != nil {
 		return err
 	}
 	an.shape = best.m
 	an.shape.law = 0
-	an.noise = measureNoise(an.data.t, best, freq)
 
 	for _, l := range laws {
 		m := an.shape
@@ -299,20 +306,84 @@ func (an *analysis) work() error {
 			j = jackknife(g, jackGroups)
 		}
 		an.jack = append(an.jack, j)
-		an.cov = append(an.cov, an.noise.covariance(g))
+		an.cov = append(an.cov, an.noise.widenRest(g.cov, m.size()))
+		an.bare = append(an.bare, an.noise.widenRest(g.bare, m.size()))
 		an.bics = append(an.bics, an.bic(g))
 	}
 	an.weights = bicWeights(an.bics)
+	return nil
+}
+
+// splitShared cuts the shared causes to the stretch. Those that change along the
+// motion go into the fit; those that only shift all angles say nothing but on
+// the rest angle and are added to it afterwards.
+func (an *analysis) splitShared(f *fitted) {
+	smooth := an.smoother(f)
 	for _, s := range an.angle.Shared {
-		cut := series.Shared{Source: s.Source}
+		var d []float64
+		lo, hi := math.Inf(1), math.Inf(-1)
 		for i := an.st.from; i < an.st.to; i++ {
 			if !an.skip[i] {
-				cut.D = append(cut.D, s.D[i])
+				d = append(d, s.D[i])
+				lo, hi = math.Min(lo, s.D[i]), math.Max(hi, s.D[i])
 			}
 		}
-		an.shared = append(an.shared, cut)
+		if hi-lo > 1e-6*math.Max(math.Abs(lo), math.Abs(hi)) {
+			an.data.common = append(an.data.common, smooth(d))
+			an.sources = append(an.sources, s.Source)
+		} else {
+			an.shifts = append(an.shifts, series.Shared{Source: s.Source, D: d[:1]})
+		}
 	}
-	return nil
+}
+
+// smoother returns a function that replaces what a shared cause does to each
+// sample by a smooth function of the fitted motion. As the series gives it, it was
+// computed from the measured angles: it carries their noise, and a fit that
+// weighs it against the same noise is drawn aside.
+func (an *analysis) smoother(f *fitted) func(d []float64) []float64 {
+	n := len(an.data.t)
+	angle := make([]float64, n)
+	mv := newMover(f.m, false)
+	mv.rates = make([]float64, n)
+	if err := mv.run(f.p, f.tRef, an.data.t, angle, nil, nil); err != nil {
+		return func(d []float64) []float64 { return d }
+	}
+	w := math.Sqrt(f.p[atK])
+	const size = 8
+	basis := make([]float64, n*size)
+	for i := range n {
+		s, c := math.Sincos(angle[i])
+		v := mv.rates[i] / w
+		copy(basis[i*size:], []float64{1, s, c - 1, s * s, v, v * s, v * (c - 1), v * s * s})
+	}
+	inverse, ok := normalInverse(basis, n, size)
+	return func(d []float64) []float64 {
+		if !ok {
+			return d
+		}
+		var right [size]float64
+		for i, x := range d {
+			for j := range size {
+				right[j] += basis[i*size+j] * x
+			}
+		}
+		out := make([]float64, n)
+		var left, all float64
+		for i := range n {
+			for j := range size {
+				for k := range size {
+					out[i] += basis[i*size+j] * inverse[j*size+k] * right[k]
+				}
+			}
+			left += sq(d[i] - out[i])
+			all += sq(d[i])
+		}
+		if left > 0.1*all {
+			return d // no function of the motion
+		}
+		return out
+	}
 }
 
 // coloured is how far the noise about the swing's frequency must exceed white
@@ -349,7 +420,7 @@ func (an *analysis) follows(f *fitted) error {
 		u := an.data.u[i]
 		rr += sq(r * u)
 		yy += sq(an.data.y[i] - f.p[atRest])
-		uu += u * u
+		uu += sq(u / an.noise.scale())
 	}
 	if rr > 9*uu*sq(math.Max(1, an.angle.NoiseRatio)) && rr > sq(0.02)*yy {
 		return notFollowed{fmt.Sprintf("between %.2f s and %.2f s the swing dies, but it does not follow a damped swing about one rest: what is left is %.2g %% of it. Another part may take and give energy, or a hand may be on it",
@@ -361,7 +432,7 @@ func (an *analysis) follows(f *fitted) error {
 // bic is χ² over the noise as it is, plus the price of the parameters: the
 // criterion for normal errors whose variance is known from the richest model.
 func (an *analysis) bic(f *fitted) float64 {
-	return f.chi2/(an.noise.sigma2*an.noise.swing) + float64(f.m.size())*math.Log(an.noise.effective)
+	return f.chi2 + float64(f.m.size())*math.Log(an.noise.effective)
 }
 
 func bicWeights(bics []float64) []float64 {

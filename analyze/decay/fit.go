@@ -13,6 +13,11 @@ import (
 type samples struct {
 	t, y, u []float64
 	tRef    float64 // where the model's start state stands
+	// common holds, per cause that all samples share (the pivot, the shutter), what
+	// one standard uncertainty of it does to each angle. The fit carries one number
+	// per cause, known beforehand as 0 ± 1, so that the motion itself may tell of it
+	// and the rest goes into every uncertainty.
+	common [][]float64
 }
 
 // head is the first n samples.
@@ -22,42 +27,59 @@ func (s *samples) head(n int) *samples {
 
 // fitted is one model fitted to samples.
 type fitted struct {
-	m     model
-	p     []float64
-	tRef  float64
-	resid []float64 // (angle − model)/u
-	jac   []float64 // ∂resid/∂p with the sign of the model: +∂model/∂p / u, row-major
-	chi2  float64
-	cov   []float64 // for residuals of unit variance, row-major; frictions' bounds taken as not there
-	sum   *lsq.Summary
+	m       model
+	p       []float64
+	tRef    float64
+	common  []float64 // what the fit made of the shared causes, in their standard uncertainties
+	uCommon []float64 // and how well it knows them
+	resid   []float64 // (angle − model)/u
+	jac     []float64 // +∂model/∂p / u, row-major
+	chi2    float64   // over samples and shared causes
+	cov     []float64 // of p, shared causes included, row-major; frictions' bounds taken as not there
+	bare    []float64 // of p, if the shared causes were known
+	sum     *lsq.Summary
 }
 
 // fit fits m to s from start by weighted nonlinear least squares. Frictions are
 // kept from being negative.
 func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool) (*fitted, error) {
-	n, size := len(s.t), m.size()
+	n, size, extra := len(s.t), m.size(), len(s.common)
+	if coarse {
+		extra = 0
+	}
+	all := size + extra
 	plain, grad := newMover(m, false), newMover(m, true)
-	out := make([]float64, n)
+	out, rows := make([]float64, n), make([]float64, n*size)
+	inf := math.Inf(1)
 	pr := lsq.Problem{
-		N: size, M: n, Names: m.names(),
-		Lo: slices.Repeat([]float64{math.Inf(-1)}, size), Hi: slices.Repeat([]float64{math.Inf(1)}, size),
+		N: all, M: n, Names: m.names(),
+		Lo: slices.Repeat([]float64{-inf}, all), Hi: slices.Repeat([]float64{inf}, all),
 		Scale: m.scales(start),
 		Residuals: func(p, r []float64) error {
-			if err := plain.run(p, s.tRef, s.t, out, nil, nil); err != nil {
+			if err := plain.run(p[:size], s.tRef, s.t, out, nil, nil); err != nil {
 				return err
 			}
 			for i := range r {
 				r[i] = (out[i] - s.y[i]) / s.u[i]
 			}
+			for k := range extra {
+				for i, d := range s.common[k] {
+					r[i] += p[size+k] * d / s.u[i]
+				}
+			}
 			return nil
 		},
 		Jacobian: func(p, j []float64) error {
-			if err := grad.run(p, s.tRef, s.t, out, j, nil); err != nil {
+			if err := grad.run(p[:size], s.tRef, s.t, out, rows, nil); err != nil {
 				return err
 			}
 			for i := range n {
+				w := 1 / s.u[i]
 				for c := range size {
-					j[i*size+c] /= s.u[i]
+					j[i*all+c] = rows[i*size+c] * w
+				}
+				for k := range extra {
+					j[i*all+size+k] = s.common[k][i] * w
 				}
 			}
 			return nil
@@ -69,6 +91,13 @@ func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool
 			pr.Lo[m.frictionAt(l)] = 0
 		}
 	}
+	start = slices.Clone(start)
+	for k := range extra {
+		pr.Names = append(pr.Names, fmt.Sprintf("shared cause %d", k+1))
+		pr.Scale = append(pr.Scale, 1)
+		pr.Prior = append(pr.Prior, lsq.Prior{Parameter: size + k, Value: 0, U: 1})
+		start = append(start, 0)
+	}
 	opt := lsq.Options{SigmaKnown: true, TolF: 1e-8, TolP: 1e-9, MaxIterations: 60}
 	if coarse {
 		opt.TolF, opt.MaxIterations = 1e-4, 25
@@ -77,11 +106,51 @@ func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool
 	if err != nil {
 		return nil, fmt.Errorf("decay: the fit of %s friction failed: %w", m.law, err)
 	}
-	f := &fitted{m: m, p: sum.P, tRef: s.tRef, resid: make([]float64, n), jac: sum.Jacobian, chi2: sum.ChiSquare, cov: sum.Cov, sum: sum}
+	f := &fitted{
+		m: m, p: sum.P[:size], common: sum.P[size:], uCommon: sum.U[size:], tRef: s.tRef,
+		resid: make([]float64, n), jac: make([]float64, n*size), chi2: sum.ChiSquare, cov: make([]float64, size*size), sum: sum,
+	}
 	for i, r := range sum.Residuals {
 		f.resid[i] = -r
+		copy(f.jac[i*size:(i+1)*size], sum.Jacobian[i*all:])
+	}
+	for i := range size {
+		copy(f.cov[i*size:(i+1)*size], sum.Cov[i*all:])
+	}
+	f.bare = f.cov
+	if extra > 0 {
+		if c, ok := normalInverse(f.jac, n, size); ok {
+			f.bare = c
+		}
 	}
 	return f, nil
+}
+
+// normalInverse is (JᵀJ)⁻¹ of n rows of size columns; ok is false where J lacks rank.
+func normalInverse(jac []float64, n, size int) ([]float64, bool) {
+	a := make([]float64, size*size)
+	for i := range n {
+		row := jac[i*size : (i+1)*size]
+		for j, x := range row {
+			for k, y := range row[:j+1] {
+				a[j*size+k] += x * y
+			}
+		}
+	}
+	c := make([]float64, size*size)
+	e := make([]float64, size)
+	for j := range size {
+		e[j] = 1
+		x, ok := solveSPD(slices.Clone(a), e)
+		if !ok {
+			return nil, false
+		}
+		e[j] = 0
+		for i := range size {
+			c[i*size+j] = x[i]
+		}
+	}
+	return c, true
 }
 
 // scales are the sizes of typical changes, for the search.

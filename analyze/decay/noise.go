@@ -121,22 +121,18 @@ func burg(x []float64, most int) (coef []float64, left float64) {
 	return coef, left
 }
 
-// covariance is f's covariance for the noise as it is.
-func (nz noise) covariance(f *fitted) []float64 {
-	n := f.m.size()
-	c := make([]float64, n*n)
-	for i := range n {
-		for j := range n {
-			w := nz.sigma2 * math.Sqrt(nz.factor(i)*nz.factor(j))
-			c[i*n+j] = w * f.cov[i*n+j]
-		}
-	}
-	return c
-}
+// scale is the factor on the samples' uncertainties that makes white noise of
+// what the motion's parameters see of it.
+func (nz noise) scale() float64 { return math.Sqrt(nz.sigma2 * nz.swing) }
 
-func (nz noise) factor(parameter int) float64 {
-	if parameter == atRest {
-		return nz.slow
+// widenRest is a covariance of samples so scaled, with the rest angle's own
+// factor: it sees the noise at low frequency instead.
+func (nz noise) widenRest(c []float64, size int) []float64 {
+	out := append([]float64(nil), c...)
+	w := math.Sqrt(nz.slow / nz.swing)
+	for i := range size {
+		out[i*size+atRest] *= w
+		out[atRest*size+i] *= w
 	}
-	return nz.swing
+	return out
 }

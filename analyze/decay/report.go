@@ -19,7 +19,7 @@ import (
 // comes of it.
 const decidedAt = 0.6
 
-var hides = [4]float64{1: 0.75, 2: 0.3}
+var hides = [4]float64{1: 0.9, 2: 0.3}
 
 const deg = math.Pi / 180
 
@@ -88,7 +88,7 @@ func (an *analysis) stateAmplitude() float64 {
 func (an *analysis) lawFits(res *Result) {
 	for k, f := range an.fits {
 		u := func(j int) float64 { return an.uncertainty(k, j) }
-		l := LawFit{Law: f.m.law.String(), BIC: an.bics[k], Weight: an.weights[k], ChiSquare: f.chi2 / (an.noise.sigma2 * an.noise.swing), Omega2: f.p[atK], UOmega2: u(atK)}
+		l := LawFit{Law: f.m.law.String(), BIC: an.bics[k], Weight: an.weights[k], ChiSquare: f.chi2, Omega2: f.p[atK], UOmega2: u(atK)}
 		for _, w := range []struct {
 			l    law
 			v, u *float64

@@ -140,7 +140,7 @@ func TestOtherRestoring(t *testing.T) {
 // Coloured noise: a camera that sways and a codec that smears. The intervals
 // must still hold the truth.
 func TestColouredNoise(t *testing.T) {
-	runs := 40
+	runs := 25
 	if *long {
 		runs = 400
 	}

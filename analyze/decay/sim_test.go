@@ -1,7 +1,6 @@
 package decay
 
 import (
-	"context"
 	"flag"
 	"math"
 	"math/rand/v2"
@@ -233,89 +232,4 @@ func (s swinging) truth(rng *rand.Rand) truth {
 		}
 	}
 	return truth{m: m, p: p, sigma: s.release * math.Pow(10, -s.db/20), dt: 1 / s.fps, n: int(s.duration * s.fps)}
-}
-
-// The confusion table of the friction laws, against design section 6.
-func TestConfusion(t *testing.T) {
-	runs := 12
-	if *long {
-		runs = 200
-	}
-	type row struct {
-		name   string
-		shares [3]float64
-	}
-	pure := []row{{"viscous", [3]float64{1, 0, 0}}, {"drag", [3]float64{0, 1, 0}}, {"dry", [3]float64{0, 0, 1}}}
-	mixed := []row{
-		{"viscous + drag", [3]float64{.5, .5, 0}},
-		{"viscous + dry", [3]float64{.5, 0, .5}},
-		{"drag + dry", [3]float64{0, .5, .5}},
-		{"viscous + drag 20 %", [3]float64{.8, .2, 0}},
-		{"viscous 20 % + drag", [3]float64{.2, .8, 0}},
-		{"viscous + dry 20 %", [3]float64{.8, 0, .2}},
-		{"viscous 20 % + dry", [3]float64{.2, 0, .8}},
-		{"drag + dry 20 %", [3]float64{0, .8, .2}},
-		{"drag 20 % + dry", [3]float64{0, .2, .8}},
-		{"viscous + drag + dry", [3]float64{.34, .33, .33}},
-		{"viscous + drag + dry 20 %", [3]float64{.4, .4, .2}},
-		{"viscous 20 % + drag + dry", [3]float64{.2, .4, .4}},
-		{"viscous + drag 20% + dry", [3]float64{.4, .2, .4}},
-	}
-	sloppy := []row{
-		{"viscous", [3]float64{1, 0, 0}},
-		{"drag", [3]float64{0, 1, 0}},
-		{"dry", [3]float64{0, 0, 1}},
-		{"viscous + drag", [3]float64{.5, .5, 0}},
-		{"viscous + dry", [3]float64{.5, 0, .5}},
-		{"drag + dry", [3]float64{0, .5, .5}},
-	}
-	sets := []struct {
-		rows         []row
-		logRatio, db float64
-		duration     float64
-		period       float64
-		release      float64
-	}{
-		{pure, 0.4, 30, 30, 1.0, 0.35},
-		{pure, 0.4, 30, 30, 0.6, 0.35},
-		{pure, 0.4, 30, 30, 1.0, 1.2},
-		{pure, 1.0, 30, 30, 1.0, 0.35},
-		{mixed, 0.7, 55, 30, 1.0, 0.35},
-		{mixed, 0.7, 55, 30, 1.0, 1.2},
-		{sloppy, 0.2, 30, 30, 1.0, 0.35},
-		{sloppy, 0.4, 20, 30, 1.0, 0.35},
-		{sloppy, 0.7, 30, 30, 1.0, 0.35},
-		{sloppy, 0.7, 40, 30, 1.0, 0.35},
-	}
-	for _, s := range sets {
-		for ri, r := range s.rows {
-			rng := rand.New(rand.NewPCG(uint64(ri), 7))
-			right, undecided, wrong, topRight := 0, 0, 0, 0
-			for range runs {
-				tr := swinging{s.period, s.release, r.shares, s.logRatio, s.db, s.duration, 60, true}.truth(rng)
-				res, err := Analyze(context.Background(), tr.angle(t, rng), Options{})
-				if err != nil {
-					t.Fatal(err)
-				}
-				if !res.Found {
-					t.Log(res.Findings[0].Text)
-					undecided++
-					continue
-				}
-				if res.Law == tr.m.law.String() {
-					topRight++
-				}
-				switch {
-				case !res.Decided:
-					undecided++
-				case res.Law == tr.m.law.String():
-					right++
-				default:
-					wrong++
-				}
-			}
-			t.Logf("T %.1f A0 %.2f ln %.1f %2.0f dB %-26s top right %5.1f %%  decided right %5.1f  not decided %5.1f  wrong %5.1f", s.period, s.release, s.logRatio, s.db, r.name,
-				100*float64(topRight)/float64(runs), 100*float64(right)/float64(runs), 100*float64(undecided)/float64(runs), 100*float64(wrong)/float64(runs))
-		}
-	}
 }
