@@ -17,15 +17,7 @@ func headline(w *work) string {
 			out = append(out, decayWords(w, d.Part, d.Decided, d.Law))
 		}
 	}
-	for i := range w.angles {
-		part := w.angles[i].Part
-		if w.rec.Find("decay.period_zero", part) != nil {
-			continue
-		}
-		if f := w.rec.Find("spectrum.line1.frequency", part); f != nil {
-			out = append(out, fmt.Sprintf("“%s” moves mainly at %s. No free decay could be read from this clip%s.", part, inWords(f), whyNot(w, part)))
-		}
-	}
+	out = append(out, frequencies(w)...)
 	if len(out) == 0 {
 		if w.track != nil {
 			n := 0
@@ -36,11 +28,44 @@ func headline(w *work) string {
 		}
 		return "No period or damping could be read from this table; the findings say why."
 	}
-	const most = 3
-	if n := len(out); n > most {
-		out = append(out[:most], fmt.Sprintf("%d more parts are in the findings.", n-most))
-	}
 	return strings.Join(out, " ")
+}
+
+// frequencies says how fast the parts move that no free decay explains, and why
+// none does.
+func frequencies(w *work) []string {
+	var moves, whys []string
+	for i := range w.angles {
+		part := w.angles[i].Part
+		if w.decaysFreely(part) {
+			continue
+		}
+		for n := 1; n <= mostLines; n++ {
+			if f := w.rec.Find(fmt.Sprintf("spectrum.line%d.frequency", n), part); f != nil {
+				moves = append(moves, fmt.Sprintf("“%s” mainly at %s", part, inWords(f)))
+				break
+			}
+		}
+		if why := whyNot(w, part); why != "" {
+			whys = append(whys, why)
+		}
+	}
+	if len(moves) == 0 {
+		return nil
+	}
+	const most = 6
+	if n := len(moves); n > most {
+		moves = append(moves[:most], fmt.Sprintf("%d more parts as the findings say", n-most))
+	}
+	out := []string{strings.Join(moves, "; ") + "."}
+	out[0] = strings.Replace(out[0], "” mainly at", "” moves mainly at", 1)
+	switch whys = distinct(whys); {
+	case len(whys) == 1:
+		out = append(out, "No free decay could be read: "+whys[0]+".")
+	case len(whys) > 1:
+		out = append(out, "No free decays could be read from this clip; the findings say why.")
+	}
+	return out
 }
 
 func decayWords(w *work, part string, decided bool, law string) string {
@@ -95,7 +120,7 @@ func whyNot(w *work, part string) string {
 	for _, known := range []string{"Not looked for: ", "No free decay was found: "} {
 		why = strings.TrimPrefix(why, known)
 	}
-	return ": " + why
+	return why
 }
 
 // safety is the usual cautions about what the rig says the toy is made of.

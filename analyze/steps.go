@@ -162,7 +162,7 @@ func (w *work) motion(a *series.Angle) {
 	u := a.UAngle[len(a.UAngle)/2]
 	w.rec.Curves = append(w.rec.Curves, finding.Curve{
 		Key: "angle", Subject: a.Part, Title: "Angle over time", X: finding.Axis{Label: "time", Unit: "s"}, Y: angle,
-		Caption: fmt.Sprintf("The measured angle; one sample's standard uncertainty is %s.", finding.DisplayValue(0, u, "rad").U+"°"),
+		Caption: fmt.Sprintf("The measured angle; one sample's standard uncertainty is %s.", finding.DisplayU(u, "rad")),
 		Lines:   []finding.Line{{Name: "measured", Role: finding.Data, X: t, Y: y}},
 	})
 	_, rate := a.Broken(a.Rate)
@@ -228,6 +228,9 @@ func (w *work) spectrum(subject string, t, y, u []float64, opt spectrum.Options)
 		return
 	}
 	for _, f := range s.Findings(subject) {
+		if n := lineOf(f.Key); n > 0 && n <= len(s.Lines) && !known(&s.Lines[n-1]) {
+			continue
+		}
 		// Of a free decay the fit tells all but the frequency better: its lines split
 		// and drift as the amplitude falls.
 		if w.decaysFreely(subject) && f.Key != "spectrum.line1.frequency" {
@@ -271,6 +274,16 @@ func averaged(t, y, u []float64) (at, ay, au []float64, group int) {
 		i = j
 	}
 	return at, ay, au, group
+}
+
+// known tells whether a line's frequency is known to better than a third: what is
+// not is a drift, or a rest that other lines left.
+func known(l *spectrum.Line) bool { return l.UFrequency < l.Frequency/3 }
+
+// lineOf is the number in a line's key, "spectrum.line2.frequency"; 0 for none.
+func lineOf(key string) (n int) {
+	_, _ = fmt.Sscanf(key, "spectrum.line%d.", &n) // no number, no line
+	return n
 }
 
 func (w *work) decaysFreely(part string) bool {

@@ -303,3 +303,31 @@ func TestThePathStandsWithoutAStillToo(t *testing.T) {
 		t.Errorf("error: %v", err)
 	}
 }
+
+func TestFiguresOfOnePartStandTogether(t *testing.T) {
+	r := swing()
+	c := func(key, subject string) finding.Curve { return finding.Curve{Key: key, Subject: subject} }
+	r.Curves = []finding.Curve{c("angle", "a"), c("angle", "b"), c("spectrum", "a"), c("spectrum", "b"), c("decay-fit", "b"), c("decay-residuals", "b"), c("angle", "a")}
+	if err := Draw(t.Context(), r); err != nil {
+		t.Fatal(err)
+	}
+	var got []string
+	for _, f := range r.Figures {
+		got = append(got, f.Name)
+	}
+	if s := strings.Join(got, " "); s != "path angle-a spectrum-a angle-a-2 angle-b spectrum-b decay-fit-b" {
+		t.Errorf("the figures are %s", s)
+	}
+}
+
+func TestANumberThatIsNotKnownSaysSo(t *testing.T) {
+	r := swing()
+	f := finding.Normal("x", "arm", "Mystery", math.NaN(), math.NaN(), "s", "how")
+	r.Findings = []finding.Finding{f}
+	if err := Draw(t.Context(), r); err != nil {
+		t.Fatal(err)
+	}
+	if !strings.Contains(string(r.Report), `<span class="value">not known</span>`) || strings.Contains(string(r.Report), "NaN") {
+		t.Error("an unknown number is not called so")
+	}
+}

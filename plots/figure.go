@@ -20,6 +20,7 @@ import (
 // drawing is one figure that can be drawn on any canvas of its size.
 type drawing struct {
 	name    string // of the file, without ending
+	subject string
 	title   string
 	caption string
 	w, h    vg.Length
@@ -67,7 +68,7 @@ func title(c *finding.Curve) string {
 // curveDrawing draws curves of one subject above each other, with a common
 // first axis where there are several.
 func curveDrawing(curves []*finding.Curve) drawing {
-	d := drawing{name: record.FileName(curves[0].Key, curves[0].Subject), title: title(curves[0]), w: width}
+	d := drawing{name: record.FileName(curves[0].Key, curves[0].Subject), subject: curves[0].Subject, title: title(curves[0]), w: width}
 	for _, c := range curves {
 		d.caption = strings.TrimSpace(d.caption + " " + c.Caption)
 	}

@@ -199,7 +199,7 @@ func pathCaption(t *track.Track) string {
 		fmt.Fprintf(&b, " “%s” was measured in %d of %d frames.", bob.Name, seen, len(bob.Samples))
 	}
 	if u := t.Cal.UScale; u > 0 {
-		fmt.Fprintf(&b, " Lengths carry a scale uncertainty of %s %%.", finding.DisplayValue(100*u, 100*u*0.5, "1").Value)
+		fmt.Fprintf(&b, " Lengths carry a scale uncertainty of %s %%.", finding.DisplayU(100*u, "1"))
 	}
 	return b.String()
 }

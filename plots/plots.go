@@ -8,6 +8,7 @@ package plots
 import (
 	"context"
 	"fmt"
+	"slices"
 
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/record"
@@ -63,8 +64,21 @@ var stacks = []struct{ upper, lower string }{
 	{"match-fit", "match-residuals"},
 }
 
+// bySubject puts drawings of the same part next to each other, parts in the order
+// in which they first come.
+func bySubject(all []drawing) {
+	order := map[string]int{}
+	for _, d := range all {
+		if _, ok := order[d.subject]; !ok {
+			order[d.subject] = len(order)
+		}
+	}
+	slices.SortStableFunc(all, func(a, b drawing) int { return order[a.subject] - order[b.subject] })
+}
+
 // compose lists a record's drawings in the order in which the report shows
-// them: where the bobs went, then the curves in the order of the analyses.
+// them: where the bobs went, then part by part the curves in the order of the
+// analyses.
 func compose(r *record.Record) ([]drawing, error) {
 	var all []drawing
 	if d, ok, err := pathDrawing(r); err != nil {
@@ -96,6 +110,7 @@ func compose(r *record.Record) ([]drawing, error) {
 		}
 		all = append(all, curveDrawing(panels))
 	}
+	bySubject(all)
 	names := map[string]int{}
 	for i := range all {
 		name := all[i].name

@@ -168,6 +168,9 @@ func groups(all []finding.Finding) (out []group, hasU bool) {
 		default:
 			r.Value, r.Interval = tied(shown.String()), shown.Interval()
 			hasU = hasU || shown.U != ""
+			if r.Value == "" {
+				r.Value = "not known"
+			}
 			if f.Text != "" {
 				r.Cautions = append([]string{f.Text}, r.Cautions...)
 			}
@@ -240,7 +243,7 @@ func budgets(all []finding.Finding) []budget {
 // budgetRow shows what an uncertainty is made of, the largest share first. What
 // is under a hundredth of the whole is only named.
 func budgetRow(f finding.Finding) budgetLine {
-	out := budgetLine{Name: f.Name, U: uncertainty(f.U, f.Unit)}
+	out := budgetLine{Name: f.Name, U: tied(finding.DisplayU(f.U, f.Unit))}
 	sum := 0.0
 	for _, s := range f.Budget {
 		sum += s.U * s.U
@@ -257,31 +260,12 @@ func budgetRow(f finding.Finding) budgetLine {
 			small = append(small, s.Source)
 			continue
 		}
-		out.Shares = append(out.Shares, share{Source: s.Source, U: uncertainty(s.U, f.Unit), Percent: percent(part), Bar: bar(part)})
+		out.Shares = append(out.Shares, share{Source: s.Source, U: tied(finding.DisplayU(s.U, f.Unit)), Percent: percent(part), Bar: bar(part)})
 	}
 	if len(small) > 0 {
 		out.Small = strings.Join(small, ", ")
 	}
 	return out
-}
-
-// uncertainty writes a bare standard uncertainty with its unit.
-func uncertainty(u float64, unit string) string {
-	d := finding.DisplayValue(0, u, unit)
-	if d.U == "" {
-		return "0"
-	}
-	text := d.U
-	if d.Power != 0 {
-		text += " × 10" + finding.Superscript(d.Power)
-	}
-	switch d.Unit {
-	case "":
-		return tied(text)
-	case "°":
-		return text + "°"
-	}
-	return tied(text + " " + d.Unit)
 }
 
 func fitView(f finding.Fit) fitOnPage {
@@ -337,7 +321,7 @@ func bar(share float64) int {
 
 // relative writes a relative uncertainty in per cent to two digits.
 func relative(u float64) string {
-	return finding.DisplayValue(0, 100*u, "1").U + " %"
+	return finding.DisplayU(100*u, "1") + " %"
 }
 
 // filmed says in sentences what was filmed and how well the picture is known.
@@ -392,7 +376,11 @@ func filmed(r *record.Record) []string {
 	}
 	switch {
 	case t.Cal.VerticalKnown && t.Cal.VerticalFrom != "":
-		out = append(out, fmt.Sprintf("Vertical: %s, known to %s.", t.Cal.VerticalFrom, finding.DisplayValue(0, t.Cal.UVertical, "rad").U+"°"))
+		s := "Vertical: " + t.Cal.VerticalFrom
+		if t.Cal.UVertical > 0 {
+			s += ", known to " + finding.DisplayU(t.Cal.UVertical, "rad")
+		}
+		out = append(out, s+".")
 	case t.Cal.PictureW > 0:
 		out = append(out, "Vertical: nothing in the picture shows it, so the picture's own upright was taken.")
 	}

@@ -139,6 +139,16 @@ func DisplayValue(value, u float64, si string) Shown {
 	return Normal("", "", "", value, u, si, "").Display()
 }
 
+// DisplayU writes a bare standard uncertainty of an SI unit with two digits and
+// its unit, as in "0.12 ms"; "0" where there is none.
+func DisplayU(u float64, si string) string {
+	s := DisplayValue(0, u, si)
+	if s.U == "" {
+		return "0"
+	}
+	return s.U + s.times() + s.unit()
+}
+
 // String is the value, its uncertainty and its unit, as in
 // "1.0634 ± 0.0012 s", "(3.10 ± 0.12) × 10⁻⁶" or "below 0.013 s".
 func (s Shown) String() string {

@@ -41,6 +41,24 @@ func TestAFindingIsShownAsPeopleReadIt(t *testing.T) {
 	}
 }
 
+func TestABareUncertaintyCarriesItsUnit(t *testing.T) {
+	for _, c := range []struct {
+		u    float64
+		unit string
+		want string
+	}{
+		{1.234e-4, "s", "0.12 ms"},
+		{4.72e-7, "rad", "2.7 × 10⁻⁵°"},
+		{0.012, "1", "0.012"},
+		{0, "s", "0"},
+		{math.NaN(), "s", "0"},
+	} {
+		if got := DisplayU(c.u, c.unit); got != c.want {
+			t.Errorf("%v %s is shown as %q, want %q", c.u, c.unit, got, c.want)
+		}
+	}
+}
+
 func TestEveryScaleStandsInOrderAndReachesZero(t *testing.T) {
 	for si, choices := range scales {
 		for i, c := range choices {
