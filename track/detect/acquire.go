@@ -14,11 +14,12 @@ import (
 // be shifted: then the luma is used unless it shows almost nothing. Blur and
 // ellipse are left uncertain, since the bob may be moving.
 func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, ball bool) (*Fitter, Fit) {
-	w, ok := projection(p, c, subsampled)
+	w, blocks, ok := projection(p, c, subsampled)
 	if !ok {
 		return nil, Fit{Why: "bob and wall do not differ"}
 	}
 	f := NewFitter(w, c.R, 0.12*c.R+1, active)
+	f.Blocks = blocks
 	g := Guess{U: c.U, V: c.V, UPos: 0.1*c.R + 1}
 	coarse := math.Min(2.5, 0.25*c.R)
 	f.Shape.Blur, f.Shape.UBlur = coarse, 0.1
@@ -66,8 +67,9 @@ func (f *Fitter) closeIn(p *clip.Patch, r Fit) (Fit, bool) {
 
 // projection returns weights of blue, green and red in whose sum bob and wall
 // differ most over the noise (Fisher's linear discriminant), scaled so that the
-// weights' sizes add up to one.
-func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok bool) {
+// weights' sizes add up to one. blocks says that it is one of
+// colour differences, which subsampled clips store once per 2 × 2 pixels.
+func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, blocks, ok bool) {
 	var in, out [3]float64
 	var nIn, nOut float64
 	var noise [3][3]float64
@@ -93,11 +95,12 @@ func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok b
 				sum[k] += float64(p.BGR[o+k])
 			}
 			*n++
-			// Differences of next neighbours hold the noise and little else.
-			if x+1 < p.W && y+1 < p.H {
+			// Differences of near pixels hold the noise and little else. They are taken
+			// two apart, because subsampled colour repeats itself in next neighbours.
+			if x+2 < p.W && y+2 < p.H {
 				var e [3]float64
 				for k := range 3 {
-					e[k] = (float64(p.BGR[o+k]) - float64(p.BGR[o+3+k])) / math.Sqrt2
+					e[k] = (float64(p.BGR[o+k]) - float64(p.BGR[o+6+k])) / math.Sqrt2
 				}
 				for i := range 3 {
 					for j := range 3 {
@@ -109,7 +112,7 @@ func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok b
 		}
 	}
 	if nIn < 5 || nOut < 5 || nNoise < 5 {
-		return w, false
+		return w, false, false
 	}
 	var diff [3]float64
 	size := 0.0
@@ -118,31 +121,33 @@ func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok b
 		size += math.Abs(diff[k])
 	}
 	if size < 3 {
-		return w, false
+		return w, false, false
 	}
 	luma := [3]float64{lumaB, lumaG, lumaR}
 	if subsampled {
-		dy := 0.0
+		var chroma [3]float64
+		dy := luma[0]*diff[0] + luma[1]*diff[1] + luma[2]*diff[2]
+		mean := (diff[0] + diff[1] + diff[2] - 3*dy) / 3
 		for k := range 3 {
-			dy += luma[k] * diff[k]
+			chroma[k] = diff[k] - dy - mean // no luma of a grey in it
 		}
-		// Chroma's edges are about twice as soft and its samples a quarter as many:
-		// it must differ several times as much to tell more.
-		chroma := 0.0
-		for k := range 3 {
-			chroma = math.Max(chroma, math.Abs(diff[k]-dy))
+		// How far a projection sees the bob through the noise.
+		clear := func(w [3]float64) float64 {
+			d, q := 0.0, 0.0
+			for i := range 3 {
+				d += w[i] * diff[i]
+				for j := range 3 {
+					q += w[i] * w[j] * noise[i][j] / nNoise
+				}
+			}
+			return math.Abs(d) / math.Sqrt(q+quantum(w)+0.25*(w[0]*w[0]+w[1]*w[1]+w[2]*w[2]))
 		}
-		if math.Abs(dy) > 12 || math.Abs(dy) > 0.25*chroma {
-			return luma, true
+		// Chroma's edges are twice as soft and its samples a quarter as many: it must
+		// stand out three times as far to tell more.
+		if chroma = unit(chroma); clear(chroma) > 3*clear(luma) {
+			return chroma, true, true
 		}
-		for k := range 3 {
-			w[k] = diff[k] - dy
-		}
-		mean := (w[0] + w[1] + w[2]) / 3
-		for k := range 3 {
-			w[k] -= mean // no luma of a grey in it
-		}
-		return unit(w), true
+		return luma, false, true
 	}
 	var a [3][4]float64
 	trace := (noise[0][0] + noise[1][1] + noise[2][2]) / nNoise / 3
@@ -157,9 +162,9 @@ func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, ok b
 	}
 	w, ok = solve3(a)
 	if !ok {
-		return luma, true
+		return luma, false, true
 	}
-	return unit(w), true
+	return unit(w), false, true
 }
 
 func unit(w [3]float64) [3]float64 {

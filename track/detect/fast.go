@@ -83,20 +83,11 @@ func (s *sectorSums) add(w, res, e, l, b, d, f, k, p float64) {
 	s.g[lSlope] += q * res
 }
 
-// directions of the sectors' middles, by the diamond angle that sector uses.
+// directions of the sectors' middles.
 var directions = func() (d [sectors][2]float64) {
 	for k := range d {
-		a := (float64(k) + 0.5) / (sectors / 4)
-		var x, y float64
-		if a < 2 {
-			x = 1 - a
-			y = 1 - math.Abs(x)
-		} else {
-			x = a - 3
-			y = -(1 - math.Abs(x))
-		}
-		h := math.Hypot(x, y)
-		d[k] = [2]float64{x / h, y / h}
+		y, x := math.Sincos(2 * math.Pi * (float64(k) + 0.5) / sectors)
+		d[k] = [2]float64{x, y}
 	}
 	return d
 }()
@@ -247,11 +238,7 @@ func (f *Fitter) spreadSectors(m *model, acc *sums) {
 	for k := range f.sec {
 		s := &f.sec[k]
 		acc.all[k], acc.kept[k] = s.all, s.kept
-		c, d := directions[k][0], directions[k][1]
-		mult := vector{
-			pU: c, pV: d, pR: 1, pSmear: 1, pF0: 1, pFx: c, pFy: d, pFz: 1, pB0: 1, pBx: c, pBy: d,
-			pE1: m.r * (c*c - d*d), pE2: m.r * 2 * c * d,
-		}
+		mult := m.multipliers(k)
 		for i := range pCount {
 			if i == pBlur {
 				continue
@@ -267,6 +254,46 @@ func (f *Fitter) spreadSectors(m *model, acc *sums) {
 					a, b = b, a
 				}
 				acc.a[i][j] += mult[i] * mult[j] * s.a[a][b]
+			}
+		}
+	}
+}
+
+// multipliers are by how much each parameter of the fit moves its local
+// parameter in sector k.
+func (m *model) multipliers(k int) vector {
+	c, d := directions[k][0], directions[k][1]
+	return vector{
+		pU: c, pV: d, pR: 1, pSmear: 1, pF0: 1, pFx: c, pFy: d, pFz: 1, pB0: 1, pBx: c, pBy: d,
+		pE1: m.r * (c*c - d*d), pE2: m.r * 2 * c * d,
+	}
+}
+
+// afterStep takes out of the sectors' scores what a step d has since put right,
+// to first order.
+func (f *Fitter) afterStep(m *model, acc *sums, d *vector) {
+	for k := range f.sec {
+		s := &f.sec[k]
+		mult := m.multipliers(k)
+		var move, g [lCount]float64
+		for i := range pCount {
+			if i != pBlur {
+				move[local[i]] += mult[i] * d[i]
+			}
+		}
+		for a := range lCount {
+			g[a] = s.g[a]
+			for b := range lCount {
+				if a <= b {
+					g[a] -= s.a[a][b] * move[b]
+				} else {
+					g[a] -= s.a[b][a] * move[b]
+				}
+			}
+		}
+		for i := range pCount {
+			if i != pBlur {
+				acc.score[k][i] = mult[i] * g[local[i]]
 			}
 		}
 	}

@@ -25,6 +25,9 @@ type Fitter struct {
 	Weights [3]float64
 	Shape   Shape
 	Active  image.Rectangle // where there is picture (black bars left out)
+	// Blocks says that 2 × 2 pixels share one sample (colour stored at half
+	// resolution): each block is taken once, at its middle.
+	Blocks bool
 
 	light  [3]float64 // Fx, Fy, Fz of the last good fit
 	ball   float64    // +1: its far side gets no light, as a ball's; −1: the same where light counts negative in the projection; 0: a flat thing's even shading
@@ -125,6 +128,8 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	from := [2]float64{m.cu, m.cv} // middle of the gathering
 	var back model                 // where the last step was taken from
 	cost, damp := math.Inf(1), 0.0
+	var d vector
+	shift := 0.0
 	for step := 0; step < mostSteps; step++ {
 		out.Steps = step + 1
 		*acc = sums{}
@@ -160,14 +165,14 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		if !ok {
 			return Fit{Why: "the outline does not determine the centre"}
 		}
-		var d vector
+		d = vector{}
 		for i := range d {
 			for j := range d {
 				d[i] += inv[i][j] * acc.g[j]
 			}
 		}
 		back = m
-		shift := m.apply(&d, r0)
+		shift = m.apply(&d, r0)
 		loose = math.Max(0.5*shift, 0.03)
 		if math.Hypot(m.cu-from[0], m.cv-from[1]) > 0.75+reach {
 			f.gather(p, wall, &m, covers, 0.5)
@@ -188,7 +193,13 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	f.keepOdd(&m, from)
 	out.fill(&m, &inv, acc, &noise, &on, f.back)
 	out.Cut = f.cut(&m)
-	f.assess(&inv, acc, &on)
+	switch {
+	case back.quick(&on):
+		f.afterStep(&back, acc, &d)
+		f.assess(&m, &inv, acc, &on)
+	case shift < 0.02:
+		f.assess(&m, &inv, acc, &on)
+	}
 	f.frames++
 	// What the model cannot follow of a lit outline is no noise, and the same in
 	// all frames: rendered balls are off by half of this (TestFilmScenes in

@@ -40,6 +40,10 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 	edgeOut := float32(m.r + flat*m.s + reach + 1)
 	mu, mv := float32(m.mu*m.l/(2*m.r)), float32(m.mv*m.l/(2*m.r))
 	known := 0
+	offset := float32(0)
+	if f.Blocks {
+		skip, offset = 2, 0.5
+	}
 	cu := float32(m.cu - float64(p.Rect.Min.X))
 	for v := v0; v <= v1; v++ {
 		yd := float64(v) - m.cv
@@ -54,12 +58,17 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 		line := (v - p.Rect.Min.Y) * p.W
 		row := p.BGR[3*line : 3*(line+p.W)]
 		back, seen := wall.row(v, p.Rect.Min.X, p.W)
-		y := float32(yd)
+		y := float32(yd) + offset
 		y2 := y * y
 		// Every skip-th pixel, shifted from row to row by a step that is prime to
 		// most skips, so that no direction is favoured.
 		first := u0
-		if skip > 1 {
+		if f.Blocks {
+			if v&1 != 0 {
+				continue
+			}
+			first += first & 1
+		} else if skip > 1 {
 			first += ((u0+v*((skip+1)/2|1))%skip + skip) % skip
 		}
 		for u := first; u <= u1; u += skip {
@@ -70,7 +79,7 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 				continue
 			}
 			k := u - p.Rect.Min.X
-			x := float32(k) - cu
+			x := float32(k) - cu + offset
 			if (u+v)&1 != 0 && skip == 1 {
 				// The smear widens the edge along its direction only.
 				e := x*mu + y*mv
@@ -167,8 +176,8 @@ func covered(u, v float64, covers []Disc) bool {
 	return false
 }
 
-// sector numbers the direction of (x, y) without trigonometry: the diamond
-// angle runs evenly enough.
+// sector numbers the direction of (x, y) without trigonometry: the diamond angle
+// runs evenly enough for a small table to turn it into equal sectors.
 func sector(x, y float32) int16 {
 	ax, ay := x, y
 	if ax < 0 {
@@ -183,15 +192,28 @@ func sector(x, y float32) int16 {
 	} else {
 		a = 1 - a
 	}
-	k := int16(a * (sectors / 4))
-	if k < 0 {
-		return 0
-	}
-	if k >= sectors {
-		return sectors - 1
-	}
-	return k
+	return sectorOf[int(a*sectorFine)&(4*sectorFine-1)]
 }
+
+const sectorFine = 256 // entries per quarter turn
+
+var sectorOf = func() (t [4 * sectorFine]int16) {
+	for i := range t {
+		a := (float64(i) + 0.5) / sectorFine
+		x := 1 - a
+		y := 1 - math.Abs(x)
+		if a >= 2 {
+			x = a - 3
+			y = math.Abs(x) - 1
+		}
+		turn := math.Atan2(y, x) / (2 * math.Pi)
+		if turn < 0 {
+			turn++
+		}
+		t[i] = int16(min(int(turn*sectors), sectors-1))
+	}
+	return t
+}()
 
 // oddReach is how far around a pixel that fits badly its neighbours are left out,
 // px: as far as the lens smears the edge of what is there.
@@ -421,13 +443,16 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 	}
 }
 
+// agreeReach is over how many px residuals are taken to agree, at most: a codec's
+// block.
+const agreeReach = 6.0
+
 // assess compares the scatter of the sectors' pulls on the centre with what
 // white residuals would give, and remembers the ratio: the clustered sandwich
 // of Liang & Zeger (Biometrika 73, 1986, 13–22), averaged over frames because
 // one frame has too few clusters.
-func (f *Fitter) assess(inv *matrix, acc *sums, on *[pCount]bool) {
+func (f *Fitter) assess(m *model, inv *matrix, acc *sums, on *[pCount]bool) {
 	var pulls [sectors][2]float64
-	var mean [2]float64
 	used, free := 0.0, 0.0
 	for _, yes := range on {
 		if yes {
@@ -443,30 +468,41 @@ func (f *Fitter) assess(inv *matrix, acc *sums, on *[pCount]bool) {
 			pulls[k][0] += inv[pU][i] * acc.score[k][i]
 			pulls[k][1] += inv[pV][i] * acc.score[k][i]
 		}
-		mean[0] += pulls[k][0]
-		mean[1] += pulls[k][1]
 	}
-	if used < 10 {
+	if used < sectors*2/3 {
 		return
 	}
-	// The last step is still in these residuals; each sector has its share of it.
-	mean[0] /= used
-	mean[1] /= used
-	meat := 0.0
-	for k := range sectors {
-		if acc.all[k] > 0 {
-			a, b := pulls[k][0]-mean[0], pulls[k][1]-mean[1]
-			meat += a*a + b*b
+	// Residuals agree over some pixels (a codec's blocks, a wall's grain): nearby
+	// sectors' pulls are multiplied as well, with Bartlett's weights (Newey & West,
+	// Econometrica 55, 1987, 703–708).
+	lags := min(int(agreeReach*sectors/(2*math.Pi*m.r)+0.5), sectors/6)
+	meat, expected := 0.0, 0.0
+	for l := 0; l <= lags; l++ {
+		w := 1 - float64(l)/float64(lags+1)
+		if l > 0 {
+			w *= 2
 		}
+		sum := 0.0
+		for k := range sectors {
+			o := (k + l) % sectors
+			sum += pulls[k][0]*pulls[o][0] + pulls[k][1]*pulls[o][1]
+		}
+		meat += w * sum
+		// The fit zeroes the residuals' sum around the outline and their first and
+		// second harmonics; so much is left of white ones.
+		c := math.Cos(2 * math.Pi * float64(l) / sectors)
+		left := -(1 + 2*c + 2*(2*c*c-1)) / sectors
+		if l == 0 {
+			left++
+		}
+		expected += w * c * left
 	}
 	scale := acc.chi / math.Max(acc.n-free, 1)
 	white := (inv[pU][pU] + inv[pV][pV]) * scale
-	// The fit itself zeroes the pulls' sum and their first and second harmonics,
-	// which costs about four of the clusters' freedoms.
-	ratio := meat / white * used / (used - 4)
+	ratio := math.Max(meat/white/expected, 0) * sectors / used
 	// One wild frame must not spoil the average.
-	if f.agreeN >= 3 {
-		ratio = math.Min(ratio, 4*f.agree)
+	if f.agreeN >= 5 {
+		ratio = math.Min(ratio, 5*f.agree+0.5)
 	}
 	f.agreeN = math.Min(f.agreeN+1, 40)
 	f.agree += (ratio - f.agree) / f.agreeN

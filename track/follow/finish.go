@@ -30,6 +30,7 @@ func (f *follower) finish() *track.Track {
 		if out.Cal.ExposureS > 0 {
 			toMidExposure(b.samples, out.Cal.ExposureS)
 		}
+		raiseToScatter(b.samples)
 		radius := 0.0
 		if b.rig.Ball && b.rig.DiameterM.Set {
 			radius = b.rig.DiameterM.V / 2

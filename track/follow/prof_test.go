@@ -29,7 +29,7 @@ func BenchmarkOwnWork(b *testing.B) {
 	f.facts.PixelFormat = "yuv420p"
 	var fr []*clip.Frame
 	for range n {
-		x, _ := f.Next(nil)
+		x, _ := f.Next(context.Background())
 		fr = append(fr, x.Clone())
 	}
 	r, cam := solve(b, threeRig, 1920, 1080)
