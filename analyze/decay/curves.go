@@ -3,6 +3,7 @@ package decay
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"lodeswing/analyze/finding"
 )
@@ -61,6 +62,12 @@ func (an *analysis) curves(res *Result) []finding.Curve {
 	mv.rates = make([]float64, n)
 	_ = mv.run(top.p, top.tRef, an.data.t, out, nil, nil)
 	res.ModelT, res.ModelAngle, res.ModelRate = an.data.t, out, mv.rates
+	// The drawn model runs on through gaps, as a swing and not as a chord.
+	full := unbroken(an.data.t)
+	drawn := make([]float64, len(full))
+	mv = newMover(top.m, false)
+	mv.rates = make([]float64, len(full))
+	_ = mv.run(top.p, top.tRef, full, drawn, nil, nil)
 
 	stride := 1 + (len(a.T)-1)/mostPoints
 	thin := func(name string, role finding.Role, t, y []float64) finding.Line {
@@ -74,7 +81,7 @@ func (an *analysis) curves(res *Result) []finding.Curve {
 	fit := finding.Curve{
 		Key: "decay-fit", Subject: subject, Title: "Angle and fitted free decay", X: timeAxis, Y: angleAxis,
 		Caption: fmt.Sprintf("Measured angle and the fitted swing with %s friction, from %.2f s to %.2f s.", res.Law, res.FromS, res.ToS),
-		Lines:   []finding.Line{thin("measured", finding.Data, allT, allY), thin("fit", finding.Model, an.data.t, out)},
+		Lines:   []finding.Line{thin("measured", finding.Data, allT, allY), thin("fit", finding.Model, full, drawn)},
 	}
 	r := make([]float64, n)
 	for i := range r {
@@ -97,8 +104,28 @@ func (an *analysis) curves(res *Result) []finding.Curve {
 		px, py = append(px, a.Angle[i]), append(py, a.Rate[i])
 	}
 	phase.Lines = append(phase.Lines, finding.Line{Name: "measured", Role: finding.Data, X: px, Y: py},
-		thin("fit", finding.Model, out, mv.rates))
+		thin("fit", finding.Model, drawn, mv.rates))
 	return []finding.Curve{fit, resid, an.envelopeCurve(res, top), an.periodCurve(), an.zetaCurve(res), phase}
+}
+
+// unbroken is t with times of its median step put into its gaps.
+func unbroken(t []float64) []float64 {
+	steps := make([]float64, len(t)-1)
+	for i := range steps {
+		steps[i] = t[i+1] - t[i]
+	}
+	slices.Sort(steps)
+	step := steps[len(steps)/2]
+	out := make([]float64, 0, len(t))
+	for i, at := range t {
+		if i > 0 {
+			for k, n := 1, int(math.Round((at-t[i-1])/step)); k < n; k++ {
+				out = append(out, t[i-1]+(at-t[i-1])*float64(k)/float64(n))
+			}
+		}
+		out = append(out, at)
+	}
+	return out
 }
 
 // envelopeCurve is the amplitude over time with the law of the largest weight
