@@ -100,7 +100,10 @@ func New(r *rig.Rig) (*Model, error) {
 	if err := m.refresh(); err != nil { // with the faces cut by those rules
 		return nil, err
 	}
-	return m, m.check()
+	if err := m.check(); err != nil {
+		return nil, err
+	}
+	return m, nil
 }
 
 func (m *Model) dofs() int { return len(m.dofOf) }

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"strings"
 	"testing"
 
 	"lodeswing/track/rig"
@@ -133,6 +134,7 @@ func TestMirrorImages(t *testing.T) {
 // on ball joints without gravity all of it.
 func TestMomentumOfAFreePair(t *testing.T) {
 	rnd := rand.New(rand.NewPCG(9, 10))
+	met := 0
 	for i := range 20 {
 		r := randomToy(rnd)
 		r.Gravity = number(0)
@@ -162,7 +164,9 @@ func TestMomentumOfAFreePair(t *testing.T) {
 		}
 		before := momentum(y)
 		if err := m.Run(context.Background(), 0, y, 0.6, Options{Tol: 1e-11}, nil, nil); err != nil {
-			t.Logf("toy %d: %v", i, err) // the two fell onto each other
+			if met++; !strings.Contains(err.Error(), "meet at") || met > 4 {
+				t.Errorf("pair %d: %v", i, err)
+			}
 			continue
 		}
 		if off := momentum(y).Sub(before).Norm() / before.Norm(); off > 1e-8 {
@@ -214,6 +218,7 @@ func TestForcesAreGradients(t *testing.T) {
 // Without friction the energy stays, whatever the tree, joints and magnets.
 func TestEnergyOfRandomToys(t *testing.T) {
 	rnd := rand.New(rand.NewPCG(1, 2))
+	met := 0 // toys whose magnets touch
 	for i := range 40 {
 		m, err := New(randomToy(rnd))
 		if err != nil {
@@ -224,7 +229,9 @@ func TestEnergyOfRandomToys(t *testing.T) {
 		scale := math.Abs(e0.Kinetic) + math.Abs(e0.Gravity) + math.Abs(e0.Spring) + math.Abs(e0.Magnetic)
 		o, err := m.Simulate(context.Background(), y, 3, Options{Tol: 1e-11})
 		if err != nil {
-			t.Errorf("toy %d: %v", i, err)
+			if met++; !strings.Contains(err.Error(), "meet at") || met > 4 {
+				t.Errorf("toy %d: %v", i, err)
+			}
 			continue
 		}
 		worst := 0.0

@@ -103,7 +103,9 @@ func (m *Model) Run(ctx context.Context, t0 float64, y []float64, t1 float64, op
 	if m.lamp = m.newLamp(); m.lamp != nil && !opt.general {
 		rhs = m.deriveLamp
 	}
-	m.solver = ode.New(m.StateLen(), rhs, ode.Options{RelTol: tol, AbsTol: tol, MaxStep: opt.MaxStep})
+	m.solver = ode.New(m.StateLen(), rhs, ode.Options{
+		RelTol: tol, AbsTol: tol, MaxStep: opt.MaxStep, MaxSteps: 100_000 + int(10_000*math.Abs(t1-t0)),
+	})
 	r := run{m: m, opt: opt, y: y, onStep: onStep, onHit: onHit, wasStuck: make([]bool, len(m.bodies))}
 	return r.move(ctx, t0, t1)
 }
@@ -153,6 +155,10 @@ func (r *run) move(ctx context.Context, t0, t1 float64) error {
 			copy(r.y, s.State())
 			return fmt.Errorf("the motion of %q could not be computed further: %w", m.Name, err)
 		}
+		if err := r.meeting(s); err != nil {
+			copy(r.y, s.State())
+			return err
+		}
 		if r.onStep != nil {
 			if err := r.onStep(s); err != nil {
 				return err
@@ -168,6 +174,29 @@ func (r *run) move(ctx context.Context, t0, t1 float64) error {
 		}
 	}
 	copy(r.y, s.State())
+	return nil
+}
+
+// touching in m is the distance at which two dipoles are taken to have met.
+const touching = 1e-3
+
+// meeting ends the motion where two magnets touch: the model knows no contact.
+func (r *run) meeting(s *ode.Solver) error {
+	m := r.m
+	if len(m.pairs) == 0 || m.lamp != nil && !r.opt.general {
+		return nil
+	}
+	m.kinematics(s.State())
+	for _, p := range m.pairs {
+		a, b := &m.magnets[p.a], &m.magnets[p.b]
+		d := b.r.Sub(a.r)
+		if d.Dot(d) > touching*touching && !(a.exact || b.exact) {
+			continue
+		}
+		if gap := m.faceGap(p); gap < touching && (gap < 0 || !a.exact || !b.exact) {
+			return fmt.Errorf("the magnets %q and %q of %q meet at t = %.4g s, and the model knows no contact: set them farther apart, make them weaker, or let the toy go more gently", a.name, b.name, m.Name, s.Time())
+		}
+	}
 	return nil
 }
 

@@ -138,3 +138,35 @@ func BenchmarkCylinders(b *testing.B) {
 	}
 	b.ReportMetric(20*float64(b.N)/b.Elapsed().Seconds(), "s/s")
 }
+
+// BenchmarkWorkshop is the speed of each toy of the harbour set, in simulated
+// seconds per second.
+func BenchmarkWorkshop(b *testing.B) {
+	files, err := filepath.Glob("../../samples/*.toml")
+	if err != nil || len(files) == 0 {
+		b.Fatal("no samples", err)
+	}
+	for _, f := range files {
+		b.Run(strings.TrimSuffix(filepath.Base(f), ".toml"), func(b *testing.B) {
+			r, err := rig.Load(f)
+			if err != nil {
+				b.Fatal(err)
+			}
+			m := mustNew(b, r)
+			start, err := m.Start()
+			if err != nil {
+				b.Fatal(err)
+			}
+			best := math.Inf(1)
+			for b.Loop() {
+				best = quickest(b, func() {
+					y := append([]float64(nil), start...)
+					if err := m.Run(context.Background(), 0, y, 30, Options{Tol: 1e-8}, nil, nil); err != nil {
+						b.Fatal(err)
+					}
+				})
+			}
+			b.ReportMetric(30/best, "s/s")
+		})
+	}
+}

@@ -1,0 +1,67 @@
+package toy
+
+import "math"
+
+// Displace moves the state y by the small deviation d of length 2·Freedoms: first
+// the degrees of freedom in rad (a ball joint: a turn about its part's own axes),
+// then the speeds in rad/s. What the coils drew so far stays.
+func (m *Model) Displace(y, d []float64) {
+	m.move(y, d[:m.nv])
+	for i := range m.nv {
+		y[m.nq+i] += d[m.nv+i]
+	}
+}
+
+// Deviation is the inverse of Displace: what leads from the state a to b, written
+// to d.
+func (m *Model) Deviation(a, b, d []float64) {
+	for k := range m.bodies {
+		c := &m.bodies[k]
+		if c.joint != ball {
+			d[c.v] = b[c.q] - a[c.q]
+			continue
+		}
+		// The turn a⁻¹·b, by its rotation vector in the part's own axes.
+		p, q := a[c.q:c.q+4], b[c.q:c.q+4]
+		w := p[0]*q[0] + p[1]*q[1] + p[2]*q[2] + p[3]*q[3]
+		x := p[0]*q[1] - p[1]*q[0] - p[2]*q[3] + p[3]*q[2]
+		y := p[0]*q[2] + p[1]*q[3] - p[2]*q[0] - p[3]*q[1]
+		z := p[0]*q[3] - p[1]*q[2] + p[2]*q[1] - p[3]*q[0]
+		if w < 0 {
+			w, x, y, z = -w, -x, -y, -z
+		}
+		s := math.Sqrt(x*x + y*y + z*z)
+		k := 2.0
+		if w > 0 {
+			k = 2 / w
+		}
+		if s > 1e-8 {
+			k = 2 * math.Atan2(s, w) / s
+		}
+		d[c.v], d[c.v+1], d[c.v+2] = k*x, k*y, k*z
+	}
+	for i := range m.nv {
+		d[m.nv+i] = b[m.nq+i] - a[m.nq+i]
+	}
+}
+
+// Aux is how many numbers at a state's end are quadratures: charge and work of
+// the coils given by their winding.
+func (m *Model) Aux() int { return m.naux }
+
+// NearCoil tells whether in state y some coil may be pushing, or about to: its
+// magnet is within twice the reach of the push. A motion must not be cut there.
+func (m *Model) NearCoil(y []float64) bool {
+	m.prepare()
+	m.kinematics(y)
+	for i := range m.coils {
+		c := &m.coils[i]
+		g := &m.magnets[c.magnet]
+		d := g.r.Sub(c.at)
+		over := d.Sub(c.axis.Scale(d.Dot(c.axis)))
+		if reach := 2*c.width + 2*c.reach; over.Norm() < reach && d.Norm() < over.Norm()+3*(c.reach+c.width) {
+			return true
+		}
+	}
+	return false
+}
