@@ -2,6 +2,7 @@ package samples
 
 import (
 	"math"
+	"strings"
 
 	"lodeswing/samples/film"
 	"lodeswing/track/rig"
@@ -85,8 +86,11 @@ func (b *set) ruler() {
 	}
 	length := sc.LengthM.V
 	mark, stick := markColour, stickColour
-	if sc.MarkLook == "light" {
+	switch {
+	case sc.MarkLook == "light":
 		mark, stick = stickColour, film.RGB{60, 62, 66}
+	case strings.HasPrefix(sc.MarkLook, "#"):
+		mark = hex(sc.MarkLook)
 	}
 	const r = 0.004
 	b.s.Decals = append(b.s.Decals, film.Decal{

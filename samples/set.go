@@ -6,6 +6,7 @@ import (
 	"math"
 	"slices"
 	"strconv"
+	"strings"
 
 	"lodeswing/samples/film"
 	"lodeswing/track/rig"
@@ -97,24 +98,25 @@ func camera(r *rig.Rig) film.Camera {
 }
 
 // colour reads "#rrggbb" or gives what a look stands for.
-func colour(b *rig.Bob) (film.RGB, error) {
+func colour(b *rig.Bob) film.RGB {
 	switch {
 	case b.Look == "dark":
-		return film.RGB{34, 34, 38}, nil
+		return film.RGB{34, 34, 38}
 	case b.Look == "light":
-		return film.RGB{244, 243, 238}, nil
+		return film.RGB{244, 243, 238}
 	case b.Look != "":
-		return film.RGB{120, 96, 80}, nil
+		return film.RGB{120, 96, 80}
 	}
-	var c film.RGB
-	for i := range 3 {
-		x, err := strconv.ParseUint(b.Colour[1+2*i:3+2*i], 16, 8)
-		if err != nil {
-			return c, fmt.Errorf("[[bob]] %q: the colour %q is not like \"#b8261f\"", b.Name, b.Colour)
-		}
-		c[i] = float64(x)
+	return hex(b.Colour)
+}
+
+// hex reads "#rrggbb", whose form the rig's reader has checked.
+func hex(s string) (c film.RGB) {
+	x, err := strconv.ParseUint(strings.TrimPrefix(s, "#"), 16, 32)
+	if err != nil {
+		return film.RGB{128, 128, 128}
 	}
-	return c, nil
+	return film.RGB{float64(x >> 16 & 255), float64(x >> 8 & 255), float64(x & 255)}
 }
 
 func (b *set) bobs() error {
@@ -123,17 +125,13 @@ func (b *set) bobs() error {
 		if !k.DiameterM.Set {
 			return fmt.Errorf("[[bob]] %q has no diameter_mm: the film maker must know how large to draw it", k.Name)
 		}
-		c, err := colour(k)
-		if err != nil {
-			return err
-		}
 		at := rig.XYZ(k.AtM)
 		gloss := 0.0
 		if b.r.Film.Glossy {
 			gloss = 0.7
 		}
 		b.s.Bobs = append(b.s.Bobs, film.Bob{
-			Name: k.Name, Colour: c, DiameterM: k.DiameterM.V, Gloss: gloss,
+			Name: k.Name, Colour: colour(k), DiameterM: k.DiameterM.V, Gloss: gloss,
 			Flat: k.BallSet && !k.Ball, At: b.o.point(b.o.part(k.Part), at),
 		})
 	}
