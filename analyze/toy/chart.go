@@ -50,7 +50,7 @@ func (m *Model) Deviation(a, b, d []float64) {
 func (m *Model) Aux() int { return m.naux }
 
 // NearCoil tells whether in state y some coil may be pushing, or about to: its
-// magnet is within twice the reach of the push. A motion must not be cut there.
+// magnet is within the reach of the push. A motion must not be cut there.
 func (m *Model) NearCoil(y []float64) bool {
 	m.prepare()
 	m.kinematics(y)
@@ -59,7 +59,14 @@ func (m *Model) NearCoil(y []float64) bool {
 		g := &m.magnets[c.magnet]
 		d := g.r.Sub(c.at)
 		over := d.Sub(c.axis.Scale(d.Dot(c.axis)))
-		if reach := 2*c.width + 2*c.reach; over.Norm() < reach && d.Norm() < over.Norm()+3*(c.reach+c.width) {
+		reach := 1.3*c.width + 1e-3
+		if c.wound {
+			reach = 2 * c.radius
+		}
+		if c.kick == 0 && !c.wound {
+			continue
+		}
+		if over.Norm() < reach {
 			return true
 		}
 	}

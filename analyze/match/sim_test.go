@@ -1,0 +1,152 @@
+package match
+
+import (
+	"context"
+	"flag"
+	"math"
+	"math/rand/v2"
+	"testing"
+
+	"lodeswing/analyze/ode"
+	"lodeswing/analyze/toy"
+	"lodeswing/samples"
+	"lodeswing/track"
+	"lodeswing/track/camera"
+	"lodeswing/track/rig"
+)
+
+var long = flag.Bool("long", false, "also the long Monte Carlo runs")
+
+// take says how a clip is simulated.
+type take struct {
+	seconds float64
+	noise   float64 // px
+	seed    uint64
+	plane   bool // a track without its camera
+	clip    *rig.Clip
+	start   []rig.Start
+}
+
+// simulate makes the track of a rig's toy: its own motion, the camera of the rig
+// as it stands, rolling shutter, noise.
+func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
+	t.Helper()
+	v, err := variant(r, o.clip)
+	if err != nil {
+		t.Fatal(err)
+	}
+	m, err := toy.New(v)
+	if err != nil {
+		t.Fatal(err)
+	}
+	start := o.start
+	if start == nil {
+		start = r.Start
+	}
+	y, err := m.StartFrom(start)
+	if err != nil {
+		t.Fatal(err)
+	}
+	c := r.Clone()
+	if c.Scale.MarkLook != "" { // marks that nobody looks for here
+		c.Scale.MarkLook = ""
+		c.Scale.EndsPX = [][2]float64{{500, 300}, {500 + 1000*c.Scale.LengthM.V*c.Film.PixelsPerM.V/1000, 300}}
+	}
+	w, h := int(r.Film.WidthPX.Or(1280)), int(r.Film.HeightPX.Or(720))
+	cam, err := camera.New(c, w, h, nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	cal := cam.Calibration()
+	if o.plane {
+		cal.Lens = track.Pinhole{}
+	}
+	rate := r.Film.FramesPerS.Or(60)
+	n := int(o.seconds * rate)
+	path, err := m.Simulate(context.Background(), y, o.seconds+1, toy.Options{Tol: 1e-11, Undriven: o.clip != nil && !o.clip.Battery})
+	if err != nil {
+		t.Fatal(err)
+	}
+	rnd := rand.New(rand.NewPCG(o.seed, 1))
+	tr := &track.Track{Cal: cal, BrokeAt: math.NaN()}
+	var pos [][3]float64
+	state := m.Rest()
+	for b, name := range m.Bobs() {
+		q := v.Bobs[b]
+		radius := 0.0
+		if q.Ball && q.DiameterM.Set {
+			radius = q.DiameterM.V / 2
+		}
+		bob := track.Bob{Name: name, Part: q.Part}
+		for i := range n {
+			at := float64(i)/rate + cal.ReadoutS/2
+			var u, w float64
+			tt := at
+			for range 4 {
+				path.At(tt, state)
+				pos = m.Positions(state, pos)
+				u, w = cam.BobToPixel(pos[b][0], pos[b][1]-q.DepthM.Or(0), pos[b][2], radius)
+				tt = at + cam.RowTime(u, w)
+			}
+			s := track.Sample{Frame: i, T: tt, State: track.Seen}
+			s.U, s.V = u+o.noise*rnd.NormFloat64(), w+o.noise*rnd.NormFloat64()
+			s.Pixel = track.Cov{AA: o.noise * o.noise, BB: o.noise * o.noise}
+			var j [2][2]float64
+			s.X, s.Z, j = cam.BobToPlane(s.U, s.V, radius, q.DepthM.Or(0))
+			s.Plane = s.Pixel.Through(j)
+			bob.Samples = append(bob.Samples, s)
+		}
+		tr.Bobs = append(tr.Bobs, bob)
+	}
+	return tr
+}
+
+var _ = ode.Options{}
+
+func sample(t testing.TB, name string) *rig.Rig {
+	t.Helper()
+	r, err := samples.Open(name)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return r
+}
+
+// wrong returns the rig with every start of what is to be fitted multiplied.
+func wrong(r *rig.Rig, factor float64) *rig.Rig {
+	c := r.Clone()
+	for _, n := range c.Numbers() {
+		if n.Value.Fit {
+			n.Value.V *= factor
+		}
+	}
+	return c
+}
+
+func check(t *testing.T, r *rig.Rig, res *Result) {
+	t.Helper()
+	for _, e := range res.Estimates {
+		n, err := r.Find(e.Address)
+		if err != nil || !n.Value.Set {
+			t.Logf("%-40s %12.6g ± %.2g %s", e.Address, e.Value, e.U, e.Unit)
+			continue
+		}
+		off := (e.Value - n.Value.V) / e.U
+		t.Logf("%-40s %12.6g ± %.2g %s, truth %.6g, off %.2f u", e.Address, e.Value, e.U, e.Unit, n.Value.V, off)
+		if e.Asked && !(math.Abs(off) < 3) {
+			t.Errorf("%s: off by %.1f standard uncertainties", e.Address, off)
+		}
+	}
+}
+
+func TestLanternFromWrongStarts(t *testing.T) {
+	r := sample(t, "lantern")
+	tr := simulate(t, r, take{seconds: 25, noise: 0.05, seed: 1})
+	for _, factor := range []float64{1, 3, 1.0 / 3} {
+		res, err := Run(context.Background(), []Clip{{Track: tr}}, wrong(r, factor), Options{Log: t.Logf})
+		if err != nil {
+			t.Fatal(err)
+		}
+		check(t, r, res)
+	}
+}

@@ -1,0 +1,322 @@
+package match
+
+import (
+	"fmt"
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+)
+
+// path gives where one watched thing was between its samples, by a local cubic
+// through the samples around the moment.
+type path struct {
+	t, a, b []float64
+}
+
+func (k *clipData) paths() []path {
+	out := make([]path, len(k.watched))
+	for i := range k.obs {
+		o := &k.obs[i]
+		p := &out[o.who]
+		p.t, p.a, p.b = append(p.t, o.t), append(p.a, o.a), append(p.b, o.b)
+	}
+	return out
+}
+
+// localHalf is how many samples on either side a local cubic takes.
+const localHalf = 4
+
+// at returns the place at time t; ok is false in gaps and far outside.
+func (p *path) at(t float64, step float64) (a, b float64, ok bool) {
+	lo, hi := 0, len(p.t)
+	for lo < hi {
+		m := (lo + hi) / 2
+		if p.t[m] < t {
+			lo = m + 1
+		} else {
+			hi = m
+		}
+	}
+	from, to := max(lo-localHalf, 0), min(lo+localHalf+1, len(p.t))
+	for from < to && p.t[from] < t-(localHalf+2)*step {
+		from++
+	}
+	for from < to && p.t[to-1] > t+(localHalf+2)*step {
+		to--
+	}
+	n := to - from
+	if n < 4 || p.t[from] > t+1.5*step || p.t[to-1] < t-1.5*step {
+		return 0, 0, false
+	}
+	degree := 3
+	if n < 7 {
+		degree = 2
+	}
+	x := mat.NewDense(n, degree+1, nil)
+	y := mat.NewDense(n, 2, nil)
+	for i := range n {
+		u := (p.t[from+i] - t) / step
+		v := 1.0
+		for j := range degree + 1 {
+			x.Set(i, j, v)
+			v *= u
+		}
+		y.Set(i, 0, p.a[from+i])
+		y.Set(i, 1, p.b[from+i])
+	}
+	var c mat.Dense
+	if c.Solve(x, y) != nil {
+		return 0, 0, false
+	}
+	return c.At(0, 0), c.At(0, 1), true
+}
+
+// step is the usual time between samples of one bob.
+func (k *clipData) step() float64 {
+	p := k.paths()
+	if len(p) == 0 || len(p[0].t) < 2 {
+		return 1.0 / 60
+	}
+	var d []float64
+	for i := 1; i < len(p[0].t); i++ {
+		d = append(d, p[0].t[i]-p[0].t[i-1])
+	}
+	return median(d)
+}
+
+// poser finds the toy's pose from where its bobs are.
+type poser struct {
+	k   *clipData
+	see viewer
+}
+
+// residuals of a pose: the watched things at places (a, b).
+func (s *poser) residuals(y []float64, want [][2]float64, have []bool, out []float64) {
+	i := 0
+	for w := range s.k.watched {
+		if !have[w] {
+			continue
+		}
+		at := s.k.pose(s.k.model, y, w)
+		a, b := s.see.project(w, s.see.world(&at, w))
+		out[i] = want[w][0] - a
+		if s.k.dims == 2 {
+			out[i+1] = want[w][1] - b
+		}
+		i += s.k.dims
+	}
+}
+
+// solve moves the pose y (speeds are left alone) to where the bobs are, by damped
+// Gauss–Newton steps, and returns the r.m.s. distance left.
+func (s *poser) solve(y []float64, want [][2]float64, have []bool, rounds int) float64 {
+	m := s.k.model
+	nv := m.Freedoms()
+	rows := 0
+	for _, h := range have {
+		if h {
+			rows += s.k.dims
+		}
+	}
+	if rows == 0 {
+		return math.Inf(1)
+	}
+	r0, r1 := make([]float64, rows), make([]float64, rows)
+	d := make([]float64, 2*nv)
+	cost := func(r []float64) float64 {
+		sum := 0.0
+		for _, x := range r {
+			sum += x * x
+		}
+		return sum
+	}
+	s.residuals(y, want, have, r0)
+	c0 := cost(r0)
+	lambda := 1e-6
+	z := make([]float64, len(y))
+	for range rounds {
+		j := mat.NewDense(rows+nv, nv, nil)
+		rhs := mat.NewVecDense(rows+nv, nil)
+		size := 0.0
+		for v := range nv {
+			copy(z, y)
+			for i := range d {
+				d[i] = 0
+			}
+			d[v] = 1e-5
+			m.Displace(z, d)
+			s.residuals(z, want, have, r1)
+			for i := range rows {
+				g := (r0[i] - r1[i]) / 1e-5
+				j.Set(i, v, g)
+				size = math.Max(size, math.Abs(g))
+			}
+		}
+		for v := range nv {
+			j.Set(rows+v, v, math.Sqrt(lambda)*size+1e-9*size)
+		}
+		for i := range rows {
+			rhs.SetVec(i, r0[i])
+		}
+		var step mat.VecDense
+		if step.SolveVec(j, rhs) != nil {
+			break
+		}
+		copy(z, y)
+		most := 0.0
+		for v := range nv {
+			d[v] = math.Max(-0.5, math.Min(0.5, step.AtVec(v)))
+			most = math.Max(most, math.Abs(d[v]))
+		}
+		m.Displace(z, d)
+		s.residuals(z, want, have, r1)
+		if c1 := cost(r1); c1 < c0 {
+			copy(y, z)
+			c0 = c1
+			copy(r0, r1)
+			lambda *= 0.1
+			if most < 1e-9 {
+				break
+			}
+		} else if lambda *= 10; lambda > 1e3 {
+			break
+		}
+	}
+	return math.Sqrt(c0 / float64(rows))
+}
+
+// starts finds the toy's states at moments about every span seconds, where the
+// bobs are seen, and cuts the clip there.
+func (f *fitter) starts(c int, span float64) error {
+	k := &f.clips[c]
+	step := k.step()
+	paths := k.paths()
+	p := f.values()
+	f.apply(c, k.model, p)
+	s := &poser{k: k, see: f.viewer(c, p)}
+	m := k.model
+	nv := m.Freedoms()
+	want, have := make([][2]float64, len(k.watched)), make([]bool, len(k.watched))
+	look := func(t float64) bool {
+		all := true
+		for w := range k.watched {
+			want[w][0], want[w][1], have[w] = paths[w].at(t, step)
+			all = all && have[w]
+		}
+		return all
+	}
+	first, last := k.obs[0].t, k.obs[len(k.obs)-1].t
+	y := m.Rest()
+	found := false
+	var times []float64
+	var states [][]float64
+	before, after := make([]float64, len(y)), make([]float64, len(y))
+	d := make([]float64, 2*nv)
+	h := 1.5 * step
+	for t := first; t < last-3*step; {
+		if !look(t) {
+			t += step
+			continue
+		}
+		if !found {
+			if err := s.first(y, want, have); err != nil {
+				return err
+			}
+			found = true
+		} else {
+			s.solve(y, want, have, 30)
+		}
+		copy(before, y)
+		copy(after, y)
+		t0, t1 := t, t
+		if t-h >= first && look(t-h) {
+			s.solve(before, want, have, 10)
+			t0 = t - h
+		}
+		if look(t + h) {
+			s.solve(after, want, have, 10)
+			t1 = t + h
+		}
+		z := append([]float64(nil), y...)
+		for i := range nv {
+			z[len(y)-f.auxOf(c)-nv+i] = 0
+		}
+		if t1 > t0 {
+			m.Deviation(before, after, d)
+			for i := range nv {
+				d[nv+i], d[i] = d[i]/(t1-t0), 0
+			}
+			m.Displace(z, d)
+		}
+		if f.hasCoilNear(c, z) {
+			t += step
+			continue
+		}
+		m.Normalise(z)
+		times, states = append(times, t), append(states, z)
+		// On to the next: carried along by the speeds, a frame at a time, so that a
+		// turning part is not lost.
+		next := math.Min(t+span, last)
+		for t < next-step/2 {
+			t += step
+			if look(t) {
+				s.solve(y, want, have, 6)
+			}
+		}
+	}
+	if len(times) == 0 {
+		return fmt.Errorf("no moment of the clip%s shows all bobs for long enough", k.its(""))
+	}
+	f.cut(c, times, states)
+	return nil
+}
+
+// first finds the pose without knowing one before.
+func (s *poser) first(y []float64, want [][2]float64, have []bool) error {
+	m := s.k.model
+	best, keep := math.Inf(1), append([]float64(nil), y...)
+	nv := m.Freedoms()
+	d := make([]float64, 2*nv)
+	const turns = 12
+	n := 1
+	for range min(nv, 2) {
+		n *= turns
+	}
+	for i := range n {
+		z := m.Rest()
+		for j := range d {
+			d[j] = 0
+		}
+		left := i
+		for v := range min(nv, 2) {
+			x := 2 * math.Pi * float64(left%turns) / turns
+			left /= turns
+			if !m.OneAxis(0) {
+				x = 0.3 * (x - math.Pi)
+			}
+			if x > math.Pi {
+				x -= 2 * math.Pi
+			}
+			d[v] = x
+		}
+		m.Displace(z, d)
+		c := s.solve(z, want, have, 60)
+		if c < 0.98*best { // the first, smallest turn wins a draw
+			best = c
+			copy(keep, z)
+		}
+	}
+	copy(y, keep)
+	if math.IsInf(best, 1) {
+		return fmt.Errorf("the bobs' first places cannot be those of the rig's toy")
+	}
+	return nil
+}
+
+// auxOf is how many numbers of a clip's state are not places or speeds.
+func (f *fitter) auxOf(c int) int { return f.clips[c].model.Aux() }
+
+func (f *fitter) hasCoilNear(c int, y []float64) bool {
+	k := &f.clips[c]
+	return !k.undriven && k.model.NearCoil(y)
+}
