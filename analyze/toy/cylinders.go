@@ -128,41 +128,75 @@ func (m *Model) pairForces(p *pair) float64 {
 type Bias struct {
 	First, Second string
 	Distance      float64 // m, between centres with the toy at rest
-	Force         float64 // the pair's force at rest over that of dipoles of the same moments, less 1
-	// Exact tells that the model reckons with the cylinders, so that the bias is
-	// none of its own; else it would be one if these dimensions were given.
+	Force         float64 // the pair's force over that of dipoles of the same moments, less 1
+	// Exact tells that both are given as cylinders, which the model reckons with:
+	// Force is then of the toy at rest. Else it is what two coaxial NdFeB discs of
+	// these moments, half as high as wide, would do: the bias of the model itself.
 	Exact   bool
 	Caution string // plain words, empty where the dipoles are good to 1 %
 }
 
-// DipoleBias compares, for every pair of which both are given as cylinders, the
-// force on the toy at rest with that of dipoles in their centres.
+// usualRemanence in T is that of the discs that stand for magnets of which only
+// the moment is given (common practice, no source).
+const usualRemanence = 1.25
+
+// disc is an NdFeB disc of the moment m, half as high as wide.
+func disc(m float64) magnet.Cylinder {
+	radius := math.Cbrt(math.Abs(m) * magnet.Mu0 / usualRemanence / math.Pi)
+	return magnet.Cylinder{Radius: radius, Height: radius, Remanence: usualRemanence}
+}
+
+// DipoleBias compares every near pair of magnets with dipoles in their centres.
 func (m *Model) DipoleBias() []Bias {
 	m.prepare()
 	m.kinematics(m.Rest())
 	var out []Bias
 	for _, p := range m.pairs {
 		a, b := &m.magnets[p.a], &m.magnets[p.b]
-		if !a.exact || !b.exact {
-			continue
-		}
 		d := b.r.Sub(a.r)
-		_, f, _ := magnet.ChargesPair(a.charges, b.charges)
-		_, fd, _, _ := magnet.DipolePair(a.m, b.m, d)
-		size := fd.Norm()
-		if size == 0 {
-			continue
-		}
-		o := Bias{First: a.name, Second: b.name, Distance: d.Norm(), Force: f.Dot(fd)/(size*size) - 1, Exact: true}
-		if math.Abs(o.Force) > 0.01 {
-			more := "more"
-			if o.Force < 0 {
-				more = "less"
+		o := Bias{First: a.name, Second: b.name, Distance: d.Norm(), Exact: a.exact && b.exact}
+		if o.Exact {
+			_, f, _ := magnet.ChargesPair(a.charges, b.charges)
+			_, fd, _, _ := magnet.DipolePair(a.m, b.m, d)
+			size := fd.Norm()
+			if size == 0 {
+				continue
 			}
-			o.Caution = fmt.Sprintf("%q and %q, %.3g mm apart at rest, push %.2g %% %s than dipoles of their moments: a dipole fit of them comes out wrong by about half of that in each moment",
-				o.First, o.Second, 1e3*o.Distance, 100*math.Abs(o.Force), more)
+			o.Force = f.Dot(fd)/(size*size) - 1
+		} else {
+			c, e := disc(a.moment), disc(b.moment)
+			if a.exact {
+				c = a.cyl
+			}
+			if b.exact {
+				e = b.cyl
+			}
+			if a.moment == 0 || b.moment == 0 || o.Distance < (c.Height+e.Height)/2*1.05 {
+				continue
+			}
+			o.Force = magnet.DipoleBias(c, e, o.Distance)
 		}
+		o.say()
 		out = append(out, o)
 	}
 	return out
+}
+
+// say puts a bias of more than 1 % into words.
+func (o *Bias) say() {
+	if math.Abs(o.Force) <= 0.01 {
+		return
+	}
+	more := "more"
+	if o.Force < 0 {
+		more = "less"
+	}
+	percent := fmt.Sprintf("%.2g %% %s", 100*math.Abs(o.Force), more)
+	if o.Exact {
+		o.Caution = fmt.Sprintf("%q and %q, %.3g mm apart at rest, push %s than dipoles of their moments. The model reckons with that; a fit of dipoles would come out wrong by about half of it in each moment",
+			o.First, o.Second, 1e3*o.Distance, percent)
+		return
+	}
+	o.Caution = fmt.Sprintf("%q and %q, %.3g mm apart at rest, are taken as dipoles; NdFeB discs of their moments would push about %s. Give cylinder = { diameter_mm, height_mm, remanence_T } for small gaps",
+		o.First, o.Second, 1e3*o.Distance, percent)
 }

@@ -125,3 +125,27 @@ func TestGullsSteadyAmplitude(t *testing.T) {
 		}
 	}
 }
+
+// Eddy drag right over the coil is its number times the angular speed, and fades
+// as a Gaussian of the radius to the side.
+func TestEddyDrag(t *testing.T) {
+	r := kicked()
+	r.Parts[0].Friction.Viscous = number(0)
+	r.Coils = []rig.Coil{{AtM: []float64{0, -0.29}, KickJ: number(0), Eddy: number(3e-4), RadiusM: number(0.012)}}
+	m := mustNew(t, r)
+	dy, y := make([]float64, 2), m.Rest()
+	const inertia = 0.1 * 0.25 * 0.25
+	for _, x := range []float64{0, 0.006, 0.02} {
+		angle := math.Asin(x / 0.27)
+		var rate [2]float64
+		for i, speed := range []float64{1.5, -1.5} {
+			m.SetAngle(y, 0, angle, speed)
+			m.Derive(y, dy)
+			rate[i] = dy[1]
+		}
+		got := -(rate[0] - rate[1]) / 3 * inertia
+		if want := 3e-4 * math.Exp(-x*x/(0.012*0.012)); math.Abs(got/want-1) > 1e-10 {
+			t.Errorf("%g m aside: drag %.10g N·m·s, want %.10g", x, got, want)
+		}
+	}
+}

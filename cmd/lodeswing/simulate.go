@@ -227,7 +227,7 @@ func (s *simulation) sweep(ctx context.Context, r *rig.Rig, ranges []sweep.Range
 	}
 	rec := s.rec
 	rec.Curves, rec.Findings, rec.Cautions = t.Curves(), t.Findings(r), sweep.Assumed(r)
-	rec.Headline = fmt.Sprintf("%d motions of %s, with %s varied.", t.Done, s.name, names(ranges))
+	rec.Headline = fmt.Sprintf("Simulated, not measured: %d motions of %s, with %s varied.", t.Done, s.name, names(ranges))
 	s.cutShort(stopped, t.Done, len(t.Answers), "values")
 	if err := s.keep("sweep.csv", t.WriteCSV); err != nil {
 		return nil, nil, err
@@ -263,7 +263,7 @@ func (s *simulation) basins(ctx context.Context, r *rig.Rig) (print func(io.Writ
 	}
 	rec := s.rec
 	rec.Curves, rec.Findings, rec.Cautions = b.Curves(), b.Findings(m.Parts()), sweep.Assumed(r)
-	rec.Headline = fmt.Sprintf("%d releases of %s, which has %d stable places of rest.", b.Done, s.name, len(b.Rests))
+	rec.Headline = fmt.Sprintf("Simulated, not measured: %d releases of %s, which has %d stable places of rest.", b.Done, s.name, len(b.Rests))
 	s.cutShort(stopped, b.Done, len(b.Into), "releases")
 	return s.printFindings, stopped, nil
 }
@@ -317,7 +317,7 @@ func (s *simulation) printFindings(w io.Writer) error {
 			subject = s.name
 		}
 		if f.Text != "" {
-			if f.Text != s.rec.Headline {
+			if !strings.HasSuffix(s.rec.Headline, f.Text) {
 				fmt.Fprintf(t, "%s\t%s\n", f.Name, f.Text)
 			}
 			continue

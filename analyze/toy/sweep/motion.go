@@ -106,7 +106,7 @@ func Motion(ctx context.Context, r *rig.Rig, opt Options) (*Result, error) {
 	res.findingsOf(r, m, others)
 	res.curvesOf(m, first, others, times)
 	res.Passes = ledger(m, motion)
-	res.Headline = first.a.words(seconds)
+	res.Headline = "Simulated, not measured. " + first.a.words(seconds)
 	return res, nil
 }
 
