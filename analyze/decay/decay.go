@@ -50,6 +50,8 @@ type Options struct {
 	// known best.
 	AmplitudeRad float64
 	Gravity      GravityInfo
+
+	pulls []*pull // how base magnets bend the law, where the rig's geometry tells
 }
 
 // Result is what a free decay tells. When no free decay was found, Findings
@@ -231,6 +233,9 @@ func (o Options) shapes() []model {
 	case Spring:
 		return []model{{}, {powers: []int{3}}, {powers: []int{3, 5}}}
 	case Magnets:
+		if len(o.pulls) > 0 {
+			return []model{{sine: true, pulls: o.pulls}, {sine: true, pulls: o.pulls, powers: []int{3}}}
+		}
 		return []model{{}, {powers: []int{3}}, {powers: []int{3, 5}}, {powers: []int{2, 3}}, {powers: []int{2, 3, 4, 5}}}
 	}
 	return []model{{sine: true}, {sine: true, powers: []int{3}}}

@@ -162,6 +162,9 @@ func (m model) scales(p []float64) []float64 {
 	for i := range m.powers {
 		s[atShape+i] = 0.1 / ipow(a, m.powers[i]-1)
 	}
+	for i := range m.pulls {
+		s[atShape+len(m.powers)+i] = 0.1
+	}
 	for i, l := range frictions {
 		if m.law&l != 0 {
 			s[m.frictionAt(l)] = []float64{0.01 * w, 0.01 / a, 0.01 * w * w * a}[i]
@@ -179,6 +182,11 @@ func restart(from *fitted, to model, a float64) []float64 {
 	for i, e := range to.powers {
 		if k := slices.Index(from.m.powers, e); k >= 0 {
 			p[atShape+i] = from.p[atShape+k]
+		}
+	}
+	for i, h := range to.pulls {
+		if k := slices.Index(from.m.pulls, h); k >= 0 {
+			p[atShape+len(to.powers)+i] = from.p[atShape+len(from.m.powers)+k]
 		}
 	}
 	o, err := from.m.orbitAt(from.p, a)

@@ -74,6 +74,9 @@ func OptionsFor(r *rig.Rig, part, bob string, clip *rig.Clip) Options {
 			o.NoDecay = fmt.Sprintf("%s sits on %s, which moves and trades energy with it", part, p.On)
 		}
 	}
+	if o.Restoring == Magnets {
+		o.pulls = pullsOf(acting, p)
+	}
 	o.Gravity = gravityInfo(acting, p, bob, pulled)
 	return o
 }

@@ -29,13 +29,14 @@ func (l law) String() string {
 
 // model is δ̈ = −k·f(δ) − c₁δ̇ − c₂|δ̇|δ̇ − τ₀ sgn δ̇ with δ the angle from rest,
 // all per unit inertia: k in s⁻², c₁ in s⁻¹, c₂ in rad⁻¹, τ₀ in rad s⁻².
-// f(δ) = sin δ, or δ, plus β·δᵐ for each of powers.
+// f(δ) = sin δ, or δ, plus β·δᵐ for each of powers, plus β·h(δ) for each of pulls.
 //
 // Its parameters are δ and δ̇ at the reference time, the rest angle, k, the β,
 // and the law's frictions in the order viscous, drag, dry.
 type model struct {
 	sine   bool
 	powers []int
+	pulls  []*pull
 	law    law
 }
 
@@ -48,13 +49,26 @@ const (
 	atShape // the first β, or the first friction
 )
 
-func (m model) size() int { return atShape + len(m.powers) + m.law.count() }
+func (m model) size() int { return m.atFriction() + m.law.count() }
+
+// atFriction is the place of the first friction.
+func (m model) atFriction() int { return atShape + len(m.powers) + len(m.pulls) }
+
+// even tells whether the potential is the same on both sides of rest.
+func (m model) even() bool {
+	for _, e := range m.powers {
+		if e%2 == 0 {
+			return false
+		}
+	}
+	return true
+}
 
 func (l law) count() int { return int(l&1 + l>>1&1 + l>>2&1) }
 
 // frictionAt is the place of a friction that the law has.
 func (m model) frictionAt(which law) int {
-	return atShape + len(m.powers) + (m.law & (which - 1)).count()
+	return m.atFriction() + (m.law & (which - 1)).count()
 }
 
 // friction reads one friction from p, 0 where the law lacks it.
@@ -71,6 +85,9 @@ func (m model) names() []string {
 	for _, e := range m.powers {
 		n = append(n, shapeName(e))
 	}
+	for _, h := range m.pulls {
+		n = append(n, h.name)
+	}
 	for _, l := range []law{viscous, drag, dry} {
 		if m.law&l != 0 {
 			n = append(n, l.String()+" friction")
@@ -83,6 +100,9 @@ func (m model) units() []string {
 	n := []string{"rad", "rad/s", "rad", "s⁻²"}
 	for _, e := range m.powers {
 		n = append(n, shapeUnit(e))
+	}
+	for range m.pulls {
+		n = append(n, "1")
 	}
 	for i, l := range []law{viscous, drag, dry} {
 		if m.law&l != 0 {
@@ -108,6 +128,12 @@ func (m model) restoring(p []float64, d float64) (f, slope float64) {
 		f += b * low * d
 		slope += b * float64(e) * low
 	}
+	for i, h := range m.pulls {
+		b := p[atShape+len(m.powers)+i]
+		hf, hs := h.at(d)
+		f += b * hf
+		slope += b * hs
+	}
 	return f, slope
 }
 
@@ -128,6 +154,9 @@ func (m model) potential(p []float64, d float64) float64 {
 	}
 	for i, e := range m.powers {
 		v += p[atShape+i] * ipow(d, e+1) / float64(e+1)
+	}
+	for i, h := range m.pulls {
+		v += p[atShape+len(m.powers)+i] * h.potential(d)
 	}
 	return p[atK] * v
 }
@@ -188,6 +217,11 @@ func (mv *mover) rhs(_ float64, y, dy []float64) {
 	at := 2 * (atShape - 1)
 	for _, e := range m.powers {
 		ds[at+1] -= p[atK] * ipow(d, e)
+		at += 2
+	}
+	for _, h := range m.pulls {
+		hf, _ := h.at(d)
+		ds[at+1] -= p[atK] * hf
 		at += 2
 	}
 	if m.law&viscous != 0 {

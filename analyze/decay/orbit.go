@@ -37,12 +37,8 @@ func (m model) orbitAt(p []float64, amplitude float64) (orbit, error) {
 	if !(amplitude > 0) {
 		return o, errNoOrbit
 	}
-	even := true
-	for _, e := range m.powers {
-		even = even && e%2 == 1
-	}
 	force := func(d float64) float64 { f, _ := m.restoring(p, d); return p[atK] * f }
-	if !even {
+	if !m.even() {
 		// The centre for which both turning points have the same energy (Newton).
 		for i := 0; ; i++ {
 			hi, lo := o.centre+amplitude, o.centre-amplitude
@@ -105,6 +101,9 @@ func (m model) drop(p []float64, d, hi, lo float64) float64 {
 			sum += ipow(to, j) * ipow(d, n-1-j)
 		}
 		v += p[atShape+i] * (to - d) * sum / float64(n)
+	}
+	for i, h := range m.pulls {
+		v += p[atShape+len(m.powers)+i] * (h.potential(to) - h.potential(d))
 	}
 	return p[atK] * v
 }

@@ -143,6 +143,16 @@ func (an *analysis) misfit() bool {
 	return an.noise.swing > 2 && an.noise.sigma2 > 9*sq(math.Max(1, an.angle.NoiseRatio))
 }
 
+// unseenRest tells whether the small swing would be a guess: a magnet acts, the
+// rig does not say where, and the swing did not become small.
+func (an *analysis) unseenRest() bool {
+	return an.opt.Restoring == Magnets && len(an.shape.pulls) == 0 && an.ampEnd > smallSwing*an.ampStart && an.ampEnd > 5*deg
+}
+
+// smallSwing is the part of the first amplitude down to which a swing must be
+// seen before the smooth law is trusted to hold at rest (common practice, no source).
+const smallSwing = 0.25
+
 // motionFindings are period, damping and rest.
 func (an *analysis) motionFindings(res *Result) []finding.Finding {
 	subject := an.angle.Part
@@ -156,8 +166,13 @@ func (an *analysis) motionFindings(res *Result) []finding.Finding {
 		return x.with("the camera's clock", clock*x.value)
 	}
 	var out []finding.Finding
-	out = append(out, timed(periodZero).finding("decay.period_zero", subject, "Period of small swings", "s",
-		how+"; without damping, which would lengthen it by ζ²/2"))
+	zero := timed(periodZero).finding("decay.period_zero", subject, "Period of small swings", "s",
+		how+"; without damping, which would lengthen it by ζ²/2")
+	if an.unseenRest() {
+		zero = finding.Finding{Key: zero.Key, Subject: subject, Name: zero.Name, Unit: "s", Kind: finding.Undecided, Method: how,
+			Text: fmt.Sprintf("A magnet acts, and the swing was seen only down to %.3g°: how it pulls nearer to rest this clip does not show. Film on until the swing is small, or give at_mm and axis of the magnets in the rig.", an.ampEnd/deg)}
+	}
+	out = append(out, zero)
 	out = append(out, timed(periodAt(res.Amplitude)).finding("decay.period_at", subject, "Period at an amplitude of "+at, "s", how))
 	k := an.average(func(_ model, p []float64) float64 { return p[atK] })
 	out = append(out, k.with("the camera's clock", 2*clock*k.value).finding("decay.omega_squared", subject, "Stiffness over inertia, ω₀²", "s⁻²", how))

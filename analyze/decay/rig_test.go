@@ -127,7 +127,14 @@ func TestOtherRestoring(t *testing.T) {
 			t.Errorf("%s: nothing found", c.name)
 			continue
 		}
-		near(t, byKey(t, r, "decay.period_zero"), t0, 3)
+		if c.o == Magnets {
+			// Nothing tells how a magnet pulls within the swings that were seen.
+			if z := byKey(t, r, "decay.period_zero"); z.Kind != finding.Undecided {
+				t.Errorf("%s: small swings were made up: %+v", c.name, z)
+			}
+		} else {
+			near(t, byKey(t, r, "decay.period_zero"), t0, 3)
+		}
 		near(t, byKey(t, r, "decay.period_at"), periodAt(r.Amplitude)(m, p), 3)
 		near(t, byKey(t, r, "decay.zeta"), zetaAt(r.Amplitude)(m, p), 3)
 		near(t, byKey(t, r, "decay.rest_angle"), 0.03, 3.5)
