@@ -75,6 +75,10 @@ func (f *follower) start(ctx context.Context, frame *clip.Frame) error {
 		avoid = append(avoid, image.Rect(int(r.U)-m, int(r.V)-m, int(r.U)+m, int(r.V)+m))
 	}
 	f.wall.Learn(&f.whole, f.discs, 1)
+	for _, p := range f.scouted {
+		f.wall.Learn(p, nil, 1) // what is behind the bobs now; what passes is forgotten again
+	}
+	f.scouted = nil
 	f.watch = shake.New(f.facts, f.rig.Marks, avoid)
 	if f.watch.Wants(frame.Index) {
 		f.watch.Observe(frame)
