@@ -89,12 +89,13 @@ type fitter struct {
 	rate, angle float64 // typical speed (rad/s) and size of the motion (rad)
 	bind        float64 // rad, how far the ends of stretches may be apart; +Inf: they are free
 	tol         float64
+	exact       bool // all derivatives by central differences
 	scatter     float64
 	chi2        float64
 	converged   bool
 	why         string
 	cautions    []string
-	final       system
+	final       *system
 	growth      float64 // 1/s, of small deviations
 }
 

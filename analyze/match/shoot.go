@@ -154,7 +154,7 @@ func (f *fitter) stateStep(v, nv int) float64 {
 	if v < nv {
 		return 1e-5
 	}
-	return 1e-5 * f.omega()
+	return 1e-5 * f.omega() // rad/s
 }
 
 // omega is the motion's typical angular frequency, rad/s.
@@ -247,7 +247,9 @@ func (f *fitter) shootAll(ctx context.Context, p []float64, slopes, all bool) er
 }
 
 // slopes fills the derivatives of one segment by central differences; nuisance
-// parameters, which move little, by one-sided ones.
+// parameters by one-sided ones until the last steps, where all must be exact: what
+// scales inertia, weight, moments and friction alike is felt by nothing, and an
+// error of a derivative would pass for a response.
 func (f *fitter) slopes(ctx context.Context, s *shot, c int, g *segment, p []float64, all bool) error {
 	m := s.m
 	nv := m.Freedoms()
@@ -321,12 +323,15 @@ func (f *fitter) slopes(ctx context.Context, s *shot, c int, g *segment, p []flo
 			continue
 		}
 		h := q.step(p[j])
+		if f.exact {
+			h *= 2
+		}
 		set := func(x float64) {
 			for _, t := range q.targets[c] {
 				m.Set(t.index, t.base+t.coef*x)
 			}
 		}
-		two := !q.nuisance && p[j]-h >= q.lo
+		two := (f.exact || !q.nuisance) && p[j]-h >= q.lo
 		set(p[j] + h)
 		err := s.run(ctx, g, g.y, up, nil, nil, ends[0])
 		if err == nil && two {
