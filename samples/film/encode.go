@@ -22,6 +22,11 @@ type Encoding struct {
 	HEVC        bool
 	MegabitPerS float64 // 0: 17 Mb/s × (pixels per second)/(1920·1080·60), at least 4
 	Lossless    bool    // full colour, every byte as rendered
+	// ColourLeft puts the halved colour samples over the left pixel of each pair, as
+	// H.264 has it where a clip says nothing, instead of between the two. ffmpeg and
+	// OpenCV take them to lie between, and then show colour, not brightness, half a
+	// pixel too far to the right: phones do either.
+	ColourLeft bool
 	// RateFactor is recorded over played frames per second: above 1 the clip plays
 	// in slow motion, its times are the scene's times that factor longer, and
 	// the phone's tag with the capture rate is written. 0 means 1.
@@ -178,7 +183,13 @@ func (s *Scene) arguments(e Encoding, path string) []string {
 	}
 	var filters []string
 	if !e.Lossless {
-		filters = append(filters, "scale=out_color_matrix=bt709:out_range=tv,format=yuv420p")
+		// Without accurate_rnd ffmpeg takes a short way that samples colour from every
+		// other row and rounds brightness down.
+		site := 128 // in 1/256 pixel
+		if e.ColourLeft {
+			site = 0
+		}
+		filters = append(filters, fmt.Sprintf("scale=out_color_matrix=bt709:out_range=tv:out_h_chr_pos=%d:flags=bicubic+accurate_rnd,format=yuv420p", site))
 	}
 	if e.Jitter != nil {
 		filters = append(filters, "settb=1/90000,setpts="+e.Jitter.expression(factor))

@@ -211,6 +211,36 @@ func TestCodecsKeepThePlace(t *testing.T) {
 	}
 }
 
+// Colour sampled on the left shifts what differs in colour alone, and nothing else.
+func TestColourLeft(t *testing.T) {
+	needFFmpeg(t)
+	for _, left := range []bool{false, true} {
+		s := tiny()
+		s.Wall.GradU, s.Wall.Level = 0, RGB{200, 128, 40}
+		// An edge between two colours of one brightness (BT.709): 0.2126 R + 0.0722 B.
+		s.Plates = []Plate{{Colour: RGB{166, 128, 140}, Corners: []Vec{{0, 0.1, -1}, {1, 0.1, -1}, {1, 0.1, 1}, {0, 0.1, 1}}}}
+		s.Bobs[0].Unmarked, s.Bobs[0].At = true, still(Vec{-0.03, 0, 0.02})
+		path := filepath.Join(t.TempDir(), "a.mp4")
+		if err := s.Encode(t.Context(), path, 1, Encoding{ColourLeft: left, MegabitPerS: 50}, nil); err != nil {
+			t.Fatal(err)
+		}
+		row := upright(t, path)[3*96*50:]
+		first, last := float64(row[3*30]), float64(row[3*65])
+		edge := 29.5
+		for u := 30; u < 66; u++ {
+			edge += (float64(row[3*u]) - last) / (first - last)
+		}
+		want := 47.5 // world x = 0
+		if left {
+			want = 48
+		}
+		t.Logf("left %v: the blue edge lies at %.2f px", left, edge)
+		if math.Abs(edge-want) > 0.15 {
+			t.Errorf("left %v: the blue edge lies at %.2f px, want %.1f", left, edge, want)
+		}
+	}
+}
+
 // A stopped or failed encoding leaves nothing, and what was there stays.
 func TestWholeOrNotAtAll(t *testing.T) {
 	needFFmpeg(t)
