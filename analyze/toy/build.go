@@ -179,7 +179,7 @@ func (m *Model) addBody(r *rig.Rig, p *rig.Part, parent int) error {
 	case "hinge", "":
 		b.joint, b.axis = hinge, vec{Y: -1}
 	case "pin":
-		b.joint, b.axis = pin, vec{Y: 1}
+		b.joint, b.axis = pin, vec{Y: -1}
 		if p.Flat {
 			b.axis = vec{Z: 1}
 		}

@@ -76,13 +76,10 @@ func (m *Model) kinematics(y []float64) {
 
 // turn is the rotation of a one-axis joint by an angle.
 func (b *body) turn(angle float64) rotation {
-	switch {
-	case b.flat:
+	if b.flat {
 		return aboutZ(angle)
-	case b.joint == hinge:
-		return aboutY(-angle)
 	}
-	return aboutY(angle)
+	return aboutY(-angle)
 }
 
 // swing is kinematics for a part alone on the base on a hinge or pin. It writes
@@ -93,10 +90,7 @@ func (b *body) swing(angle, speed float64) {
 	if b.flat {
 		r.xx, r.xy, r.yx, r.yy = cos, -sin, sin, cos
 	} else {
-		if b.joint == hinge {
-			sin = -sin
-		}
-		r.xx, r.xz, r.zx, r.zz = cos, sin, -sin, cos
+		r.xx, r.xz, r.zx, r.zz = cos, -sin, sin, cos
 	}
 	b.w, b.vo = b.axis.Scale(speed), b.arm.Scale(speed)
 	b.c = b.p.Add(r.mul(b.centre))
@@ -239,13 +233,12 @@ func (m *Model) jointTorque(k int, angle, speed float64) float64 {
 		}
 	}
 	if b.rate != 0 || b.cubic != 0 {
+		d := b.sprung(angle)
+		pull := (b.rate + b.cubic*d*d) * d
 		if b.stands {
-			d := math.Pi - angle - b.restRad
-			tau += (b.rate + b.cubic*d*d) * d
-		} else {
-			d := angle - b.restRad
-			tau -= (b.rate + b.cubic*d*d) * d
+			pull = -pull
 		}
+		tau -= pull
 	}
 	return tau
 }

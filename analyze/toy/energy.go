@@ -1,5 +1,7 @@
 package toy
 
+import "math"
+
 // Energies are a toy's energies in J. Gravity is zero where every centre of mass
 // is at the world's origin, Spring where the springs are relaxed, Magnetic where
 // the magnets are far apart.
@@ -20,13 +22,25 @@ func (m *Model) Energy(y []float64) Energies {
 		e.Kinetic += b.kinetic()
 		e.Gravity += b.mass * m.gravity * b.c.Z
 		if b.joint != ball && (b.rate != 0 || b.cubic != 0) {
-			d, _ := m.Angle(y, k)
-			d -= b.restRad
-			e.Spring += 0.5*b.rate*d*d + 0.25*b.cubic*d*d*d*d
+			e.Spring += b.springEnergy(y[b.q])
 		}
 	}
 	e.Magnetic = m.magneticEnergy()
 	return e
+}
+
+// sprung is how far the joint's spring is wound, in rad in the sense in which the
+// part's angle is shown.
+func (b *body) sprung(angle float64) float64 {
+	if b.stands {
+		angle = math.Pi - angle
+	}
+	return angle - b.restRad
+}
+
+func (b *body) springEnergy(angle float64) float64 {
+	d := b.sprung(angle)
+	return 0.5*b.rate*d*d + 0.25*b.cubic*d*d*d*d
 }
 
 // kinetic is the part's kinetic energy as kinematics set it.
@@ -55,9 +69,7 @@ func (m *Model) PartEnergies(y, dst []float64) {
 		b := &m.bodies[k]
 		dst[k] = b.kinetic() + b.mass*m.gravity*b.c.Z
 		if b.joint != ball {
-			d, _ := m.Angle(y, k)
-			d -= b.restRad
-			dst[k] += 0.5*b.rate*d*d + 0.25*b.cubic*d*d*d*d
+			dst[k] += b.springEnergy(y[b.q])
 		}
 	}
 }

@@ -28,12 +28,10 @@ func (m *Model) Rest() []float64 {
 
 func (m *Model) restInto(y []float64) {
 	for k := range m.bodies {
-		b := &m.bodies[k]
-		switch {
-		case b.joint == ball:
+		if b := &m.bodies[k]; b.joint == ball {
 			y[b.q] = 1
-		case b.stands:
-			y[b.q] = math.Pi
+		} else {
+			m.SetAngle(y, k, 0, 0)
 		}
 	}
 }
@@ -53,17 +51,22 @@ func (m *Model) Start() ([]float64, error) { return m.StartFrom(m.starts) }
 // StartFrom is the state that the given starts describe.
 func (m *Model) StartFrom(starts []rig.Start) ([]float64, error) {
 	y := m.Rest()
+	of := make([]*rig.Start, len(m.bodies))
 	for i := range starts {
-		s := &starts[i]
-		k, err := m.Part(s.Part)
+		k, err := m.Part(starts[i].Part)
 		if err != nil {
 			return nil, fmt.Errorf("[[start]]: %w", err)
 		}
-		b := &m.bodies[k]
-		if b.joint == ball {
-			m.SetBall(y, k, s.AngleRad.V, s.AzimuthRad.V, s.RateRadS.V, s.AzimuthRateRadS.V, s.SpinRadS.V)
-		} else {
+		of[k] = &starts[i]
+	}
+	for k, s := range of { // carriers come before what they carry
+		switch {
+		case m.bodies[k].joint != ball && s == nil:
+			m.SetAngle(y, k, 0, 0)
+		case m.bodies[k].joint != ball:
 			m.SetAngle(y, k, s.AngleRad.V, s.RateRadS.V)
+		case s != nil:
+			m.SetBall(y, k, s.AngleRad.V, s.AzimuthRad.V, s.RateRadS.V, s.AzimuthRateRadS.V, s.SpinRadS.V)
 		}
 	}
 	return y, nil
@@ -91,18 +94,36 @@ func (m *Model) Part(name string) (int, error) {
 // OneAxis tells whether part k is on a hinge or pin and so has one angle.
 func (m *Model) OneAxis(k int) bool { return m.bodies[k].joint != ball }
 
+// carried is how far the carriers of part k have turned about its own axis, and
+// how fast: what an angle to the vertical holds beside the joint's own.
+func (m *Model) carried(y []float64, k int) (angle, rate float64) {
+	axis := m.bodies[k].axis
+	for up := m.bodies[k].parent; up >= 0; up = m.bodies[up].parent {
+		u := &m.bodies[up]
+		if u.joint == ball || u.axis != axis {
+			break
+		}
+		angle += y[u.q]
+		rate += y[m.nq+u.v]
+	}
+	return angle, rate
+}
+
 // SetAngle gives part k, on a hinge or pin, its shown angle in rad and rate in
-// rad/s, relative to what it is on.
+// rad/s. They count from where the part would rest, also when it rides on
+// another: what carries it must be set before. (On a ball joint's part, or on one
+// that turns about another axis, they are relative to that.)
 func (m *Model) SetAngle(y []float64, k int, angle, rate float64) {
 	b := &m.bodies[k]
 	if b.stands {
 		angle, rate = math.Pi-angle, -rate
 	}
-	y[b.q], y[m.nq+b.v] = angle, rate
+	by, at := m.carried(y, k)
+	y[b.q], y[m.nq+b.v] = angle-by, rate-at
 }
 
-// Angle returns the shown angle in rad of part k and its rate in rad/s, relative
-// to what it is on. For a ball joint it is the angle between its long axis and
+// Angle returns the shown angle in rad of part k and its rate in rad/s, counted as
+// SetAngle does. For a ball joint it is the angle between its long axis and
 // hanging, never negative.
 func (m *Model) Angle(y []float64, k int) (angle, rate float64) {
 	b := &m.bodies[k]
@@ -110,7 +131,8 @@ func (m *Model) Angle(y []float64, k int) (angle, rate float64) {
 		angle, _, rate, _, _ = m.Ball(y, k)
 		return angle, rate
 	}
-	angle, rate = y[b.q], y[m.nq+b.v]
+	by, at := m.carried(y, k)
+	angle, rate = y[b.q]+by, y[m.nq+b.v]+at
 	if b.stands {
 		return math.Pi - angle, -rate
 	}

@@ -8,11 +8,12 @@
 // J, N·m. World axes: x right in the picture, y away from the camera, z up.
 //
 // A part is described in its own axes as it hangs, its pivot at their origin; a
-// standing part too (its head at negative z), turned by π when it stands. A
-// hinge turns about −y, so that a hanging part swings towards +x at a positive
-// angle; a pin turns about +y, or about +z where the rig says flat. Angles that
-// people see are zero where an unmagnetised part would rest: Angle returns the
-// hinge angle θ of a hanging part and π − θ of a standing one.
+// standing part too (its head at negative z), turned by π when it stands. Hinges
+// and pins turn about −y, so that what hangs swings towards +x at a positive angle,
+// or about +z where the rig says flat: counter-clockwise in the picture either way.
+// Angles that people see are to the vertical, also of a part that rides on
+// another, and zero where an unmagnetised part would rest: Angle returns θ of a
+// hanging part and π − θ of a standing one.
 //
 // Equations of motion: the mass matrix by composite rigid bodies and the bias
 // forces by the recursive Newton-Euler scheme, in spatial vectors about the
