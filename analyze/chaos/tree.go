@@ -105,17 +105,44 @@ func (t *tree) halve(from, to, mid int32, axis int) {
 // nearest returns the state nearest to q (a state at index self) that is at least
 // band away in time, and its distance; −1 when there is none.
 func (t *tree) nearest(q []float64, self, band int) (best int, distance float64) {
-	best, d2 := -1, math.Inf(1)
-	var look func(n int32)
-	look = func(n int32) {
-		nd := &t.nodes[n]
+	if n := t.some(q, 1, self, band); len(n) == 1 {
+		return n[0].i, n[0].d
+	}
+	return -1, math.Inf(1)
+}
+
+// neighbour is a state and its distance.
+type neighbour struct {
+	i int
+	d float64
+}
+
+// some returns the n states nearest to q (a state at index self), nearest first,
+// that are at least band away from it in time.
+func (t *tree) some(q []float64, n, self, band int) []neighbour {
+	list := make([]neighbour, 0, n+1) // d holds squares until the end
+	limit := math.Inf(1)
+	var look func(at int32)
+	look = func(at int32) {
+		nd := &t.nodes[at]
 		if nd.axis < 0 {
 			for _, i := range t.order[nd.from:nd.to] {
 				if gap := int(i) - self; gap < band && gap > -band {
 					continue
 				}
-				if s := square(q, t.v.State(int(i))); s < d2 {
-					best, d2 = int(i), s
+				s := square(q, t.v.State(int(i)))
+				if s >= limit {
+					continue
+				}
+				list = append(list, neighbour{int(i), s})
+				for k := len(list) - 1; k > 0 && list[k].d < list[k-1].d; k-- {
+					list[k], list[k-1] = list[k-1], list[k]
+				}
+				if len(list) > n {
+					list = list[:n]
+				}
+				if len(list) == n {
+					limit = list[n-1].d
 				}
 			}
 			return
@@ -126,41 +153,15 @@ func (t *tree) nearest(q []float64, self, band int) (best int, distance float64)
 			first, second = second, first
 		}
 		look(first)
-		if away*away < d2 {
+		if away*away < limit {
 			look(second)
 		}
 	}
 	look(0)
-	return best, math.Sqrt(d2)
-}
-
-// within appends to dst the states nearer to q than radius and at least band
-// away from self in time.
-func (t *tree) within(q []float64, radius float64, self, band int, dst []int) []int {
-	var look func(n int32)
-	look = func(n int32) {
-		nd := &t.nodes[n]
-		if nd.axis < 0 {
-			for _, i := range t.order[nd.from:nd.to] {
-				if gap := int(i) - self; gap < band && gap > -band {
-					continue
-				}
-				if square(q, t.v.State(int(i))) <= radius*radius {
-					dst = append(dst, int(i))
-				}
-			}
-			return
-		}
-		away := q[nd.axis] - nd.split
-		if away <= radius {
-			look(nd.left)
-		}
-		if away >= -radius {
-			look(nd.left + 1)
-		}
+	for k := range list {
+		list[k].d = math.Sqrt(list[k].d)
 	}
-	look(0)
-	return dst
+	return list
 }
 
 func square(a, b []float64) float64 {
