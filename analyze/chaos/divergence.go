@@ -159,7 +159,7 @@ type stretch struct {
 // straight looks for the stretch of the smoothed curve that is straight: after
 // the first half period (in which distances turn into the direction that grows),
 // below saturation, with a slope that changes by less than a fifth from end to
-// end. Among all such the one with the greatest growth is taken. A growth below
+// end (where there is none, by less than two fifths). Among all such the one with the greatest growth is taken. A growth below
 // e, or shorter than a period and a half, is no exponential growth.
 func (d *Divergence) straight(period, step float64) (stretch, bool) {
 	n := len(d.Smooth)
@@ -177,19 +177,9 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 		last++
 	}
 	least := max(int(math.Ceil(1.5*period)), 3)
-	var best stretch
-	gain := 0.0
-	grid := max(1, (last-first)/60)
-	for from := first; from <= last-least; from += grid {
-		for to := from + least; to <= last; to += grid {
-			slope, bend := d.bend(from, to)
-			if slope <= 0 || math.Abs(bend) > 0.2*slope {
-				continue
-			}
-			if g := slope * float64(to-from) * step; g > gain {
-				gain, best = g, stretch{from: from, to: to}
-			}
-		}
+	best, gain := d.longest(first, last, least, 0.2)
+	if gain < 1 { // noise bends the lower end up
+		best, gain = d.longest(first, last, least, 0.4)
 	}
 	switch {
 	case d.Plateau-start < 0.7:
@@ -205,6 +195,25 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 	b, _ := line(d.After, d.Smooth, best.from+third, best.to)
 	best.doubt = math.Abs(a-b) / 2
 	return best, true
+}
+
+// longest is the stretch between first and last, of least samples or more, with
+// the greatest growth among those whose slope changes by less than bent of
+// itself.
+func (d *Divergence) longest(first, last, least int, bent float64) (best stretch, gain float64) {
+	grid := max(1, (last-first)/60)
+	for from := first; from <= last-least; from += grid {
+		for to := from + least; to <= last; to += grid {
+			slope, bend := d.bend(from, to)
+			if slope <= 0 || math.Abs(bend) > bent*slope {
+				continue
+			}
+			if g := slope * (d.After[to] - d.After[from]); g > gain {
+				gain, best = g, stretch{from: from, to: to}
+			}
+		}
+	}
+	return best, gain
 }
 
 // bend returns the slope of the smoothed curve over from … to and by how much it
