@@ -20,7 +20,10 @@ type Delay struct {
 // MutualInformation chooses the delay at the first minimum of the average mutual
 // information between a series and itself later (A. M. Fraser and H. L. Swinney,
 // Physical Review A 33 (1986) 1134), up to most samples; where there is none, at
-// the first fall below 1/e of its start. Bins hold equal numbers of samples and
+// the first fall below 1/e of its start. Where the autocorrelation crosses zero
+// before that, its crossing is taken: of a nearly pure swing the information's
+// minimum can lie near half a period, where the values tell nothing new. Bins hold
+// equal numbers of samples and
 // the bias of so many bins is taken out. NaNs are left out.
 func MutualInformation(x []float64, step float64, most int) (*Delay, error) {
 	most = min(most, len(x)/3)
@@ -52,6 +55,9 @@ func MutualInformation(x []float64, step float64, most int) (*Delay, error) {
 		d.Information = append(d.Information, information(bin, lag, bins, joint))
 	}
 	d.Samples, d.Why = firstMinimum(d.Information)
+	if zero := firstZero(x, d.Samples); zero > 0 {
+		d.Samples, d.Why = zero, "first zero of the autocorrelation, which comes before the mutual information's first minimum"
+	}
 	d.S = float64(d.Samples) * step
 	return d, nil
 }
@@ -79,6 +85,24 @@ func information(bin []int, lag, bins int, joint []float64) float64 {
 		}
 	}
 	return info - float64((bins-1)*(bins-1))/(2*n)
+}
+
+// firstZero is the lag at which the autocorrelation first crosses zero, if that is
+// before lag most; else 0.
+func firstZero(x []float64, most int) int {
+	mean, _ := meanSD(x)
+	for lag := 1; lag < most; lag++ {
+		sum := 0.0
+		for i := 0; i+lag < len(x); i++ {
+			if p := (x[i] - mean) * (x[i+lag] - mean); !math.IsNaN(p) {
+				sum += p
+			}
+		}
+		if sum <= 0 {
+			return lag
+		}
+	}
+	return 0
 }
 
 func firstMinimum(info []float64) (at int, why string) {

@@ -2,14 +2,12 @@ package chaos
 
 import (
 	"context"
-	"flag"
 	"math"
 	"testing"
 
 	"lodeswing/analyze/ode"
 )
 
-var long = flag.Bool("long", false, "run the full Monte Carlo counts")
 
 // The systems of the literature.
 
