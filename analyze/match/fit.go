@@ -68,13 +68,16 @@ func (f *fitter) fit(ctx context.Context) error {
 	}
 	f.bind = math.Max(f.gaps(), 1e-6)
 	for f.bind > finalBind {
-		f.bind = math.Max(f.bind/10, finalBind)
+		f.bind /= 100
+		if f.bind < 10*finalBind {
+			f.bind = finalBind
+		}
 		if err := f.descend(ctx, 6, 1e-2, false); err != nil {
 			return err
 		}
 		f.opt.log("bound to %.1g rad: r.m.s. residual %.4g", f.bind, f.rms())
 	}
-	if err := f.descend(ctx, 30, 1e-5, false); err != nil {
+	if err := f.descend(ctx, 30, 1e-4, false); err != nil {
 		return err
 	}
 	f.reweigh()
@@ -172,7 +175,7 @@ func split(address string) (owner, what string) {
 // are fresh in each step, else only in the first.
 func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh bool) error {
 	p := f.values()
-	if err := f.shootAll(ctx, p, true, true); err != nil {
+	if err := f.shootAll(ctx, p, true, false); err != nil {
 		return err
 	}
 	now, _, _ := f.merit(p)
@@ -257,24 +260,27 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 // the sum of squares by next to nothing. It does not ask whether each step lowers
 // it: near the optimum the integration's own error hides that.
 func (f *fitter) polish(ctx context.Context) error {
-	const rounds, enough = 8, 1e-3
+	const rounds, enough = 10, 1e-3
 	p := f.values()
 	f.converged, f.exact = false, true
 	tol := f.tol
 	f.tol = 1e-11 // an integration's scatter over a difference's step must be small
 	defer func() { f.exact, f.tol = false, tol }()
-	var fall float64
-	for range rounds {
-		if err := f.shootAll(ctx, p, true, true); err != nil {
+	var fall, before float64
+	fresh := true
+	for round := range rounds {
+		// The derivatives are found anew only where the steps are not small at once.
+		if err := f.shootAll(ctx, p, fresh, fresh); err != nil {
 			return err
 		}
 		f.final = f.solveChain(p, 0, true)
-		fall = f.final.foreseen()
+		before, fall = fall, f.final.foreseen()
 		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g", f.rms(), f.gaps(), fall)
 		if fall < enough*math.Max(1, f.scatter*f.scatter) {
 			f.converged, f.why = true, fmt.Sprintf("one more step is foreseen to lower the sum of squares by only %.1g", fall)
 			break
 		}
+		fresh = fall > 10 || round > 0 && !fresh && fall > 0.1*before
 		p = f.stepped(p, f.final.step)
 		for c := range f.clips {
 			k := &f.clips[c]
@@ -286,6 +292,10 @@ func (f *fitter) polish(ctx context.Context) error {
 		f.setValues(p)
 	}
 	if !f.converged {
+		if err := f.shootAll(ctx, p, true, true); err != nil {
+			return err
+		}
+		f.final = f.solveChain(p, 0, true)
 		f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall)
 	}
 	f.chi2, _, _ = f.merit(p)

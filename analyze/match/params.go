@@ -47,6 +47,7 @@ type param struct {
 	which   int      // source of the camera
 	tied    []string // addresses that take this value
 	held    bool
+	gauge   bool // the prior only keeps what nothing determines from drifting
 }
 
 // target is a number of a clip's model that a parameter sets: base + coef·value.
@@ -109,6 +110,7 @@ func (f *fitter) buildParams() error {
 		b.magnetPlace(&b.r.Magnets[i], ball)
 	}
 	b.seen()
+	b.gauge()
 	f.params = b.out
 	for i := range f.params {
 		p := &f.params[i]
@@ -118,6 +120,31 @@ func (f *fitter) buildParams() error {
 		p.value = math.Min(math.Max(p.value, p.lo), p.hi)
 	}
 	return nil
+}
+
+// gauge keeps near their start what may be determined only together with others:
+// several free moments, and an inertia that nobody knows.
+func (b *builder) gauge() {
+	moments := 0
+	for i := range b.out {
+		if b.out[i].moment() && b.out[i].asked {
+			moments++
+		}
+	}
+	for i := range b.out {
+		p := &b.out[i]
+		if !p.asked || p.prior || p.value == 0 {
+			continue
+		}
+		if p.moment() && moments > 1 || strings.HasSuffix(p.address, ".inertia") {
+			p.prior, p.gauge, p.mean, p.u = true, true, p.value, math.Abs(p.value)
+		}
+	}
+}
+
+// moment tells whether the parameter is the strength of magnets.
+func (p *param) moment() bool {
+	return p.role == byModel && (strings.HasSuffix(p.address, ".moment") && !strings.Contains(p.address, "weight") || strings.HasSuffix(p.address, ".remanence"))
 }
 
 func (b *builder) add(p param) *param {

@@ -6,8 +6,8 @@ import (
 	"math"
 	"math/rand/v2"
 	"testing"
+	"time"
 
-	"lodeswing/analyze/ode"
 	"lodeswing/analyze/toy"
 	"lodeswing/samples"
 	"lodeswing/track"
@@ -101,8 +101,6 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 	return tr
 }
 
-var _ = ode.Options{}
-
 func sample(t testing.TB, name string) *rig.Rig {
 	t.Helper()
 	r, err := samples.Open(name)
@@ -132,10 +130,26 @@ func check(t *testing.T, r *rig.Rig, res *Result) {
 			continue
 		}
 		off := (e.Value - n.Value.V) / e.U
-		t.Logf("%-40s %12.6g ± %.2g %s, truth %.6g, off %.2f u", e.Address, e.Value, e.U, e.Unit, n.Value.V, off)
+		t.Logf("%-40s %12.6g ± %.2g (pictures %.2g) %s, truth %.6g, off %.2f u", e.Address, e.Value, e.U, e.UPicture, e.Unit, n.Value.V, off)
 		if e.Asked && !(math.Abs(off) < 3) {
 			t.Errorf("%s: off by %.1f standard uncertainties", e.Address, off)
 		}
+	}
+}
+
+func TestToys(t *testing.T) {
+	for _, name := range []string{"lantern", "buoys", "gull", "vanes", "ferry", "lantern-ball", "beacon"} {
+		t.Run(name, func(t *testing.T) {
+			r := sample(t, name)
+			tr := simulate(t, r, take{seconds: 20, noise: 0.05, seed: 1})
+			began := time.Now()
+			res, err := Run(context.Background(), []Clip{{Track: tr}}, r, Options{Log: t.Logf})
+			if err != nil {
+				t.Fatal(err)
+			}
+			t.Logf("%s in %v", name, time.Since(began))
+			check(t, r, res)
+		})
 	}
 }
 
