@@ -109,9 +109,22 @@ func (d *desk) render(st *stage, t float64) {
 			if !any && len(d.shades) == 0 {
 				continue
 			}
-			d.finish(st, b, d.shades, shadowTimes, d.frame)
-			d.dirty = append(d.dirty, b)
+			keep := b
+			if len(d.shades) == 0 {
+				keep = d.touch.reached(b, st.halo)
+			}
+			d.finish(st, b, keep, d.shades, shadowTimes, d.frame)
+			d.dirty = append(d.dirty, keep)
 		}
+	}
+}
+
+// reached is the part of block b within halo px of t, whose origin is b's with a
+// margin of halo.
+func (t block) reached(b block, halo int) block {
+	return block{
+		max(b.x0, b.x0+t.x0-2*halo), max(b.y0, b.y0+t.y0-2*halo),
+		min(b.x1, b.x0+t.x1), min(b.y1, b.y0+t.y1),
 	}
 }
 

@@ -201,3 +201,25 @@ func TestSameBytes(t *testing.T) {
 		t.Error("another seed gives the same picture")
 	}
 }
+
+// Only what moves is rendered anew: a worker that has rendered other frames
+// gives the same picture as a fresh one.
+func TestOnlyWhatMovesIsDrawn(t *testing.T) {
+	small := func() *Scene {
+		s := demoLike()
+		s.Camera.Width, s.Camera.Height, s.Camera.PixelsPerM = 480, 270, 712
+		s.Noise, s.Sharpening = Noise{}, 0.5
+		return s
+	}
+	used, x, y := small(), make([]float32, 3*480*270), make([]float32, 3*480*270)
+	for i := range 6 {
+		at := 0.11 * float64(i)
+		used.Levels(at, x)
+		small().Levels(at, y)
+		for k := range x {
+			if x[k] != y[k] {
+				t.Fatalf("at %g s the level at (%d, %d) is %g after other frames and %g at first", at, k/3%480, k/3/480, x[k], y[k])
+			}
+		}
+	}
+}

@@ -28,6 +28,9 @@ type stage struct {
 	// sharpening; it extends rim px beyond the picture.
 	back  [][4]float32 // and what share of the pixel is fixed things, not wall
 	backW int
+	// fade is the part of the light lost by vignetting, for columns and for rows from
+	// −rim on; the two add.
+	fade [2][]float32
 	// calm is the finished picture with nothing moving, in 1/128 grey level.
 	calm  []uint16
 	grain *grain
@@ -107,20 +110,22 @@ func (st *stage) setTaps(fine int) {
 	}
 }
 
-// vignette is the share of light that reaches pixel (u, v).
-func (st *stage) vignette(u, v int) float32 {
-	k := st.scene.Wall.Vignette
-	if k == 0 {
-		return 1
+// setFade tabulates the vignetting: it grows with the square of the distance
+// from the middle, to Wall.Vignette in the corners.
+func (st *stage) setFade() {
+	for axis, n := range [2]int{st.cam.w, st.cam.h} {
+		st.fade[axis] = make([]float32, n+2*rim)
+		for i := range st.fade[axis] {
+			x := (float64(i-rim) - float64(n-1)/2) / float64(n)
+			st.fade[axis][i] = float32(st.scene.Wall.Vignette * 2 * x * x)
+		}
 	}
-	x := (float64(u) - float64(st.cam.w-1)/2) / float64(st.cam.w)
-	y := (float64(v) - float64(st.cam.h-1)/2) / float64(st.cam.h)
-	return float32(1 - k*2*(x*x+y*y))
 }
 
 // drawBack draws wall, plates, decals and fixed rods.
 func (st *stage) drawBack() {
 	s := st.scene
+	st.setFade()
 	w, h := st.cam.w, st.cam.h
 	st.backW = w + 2*rim
 	st.back = make([][4]float32, st.backW*(h+2*rim))
@@ -197,7 +202,7 @@ func (st *stage) drawBack() {
 		for x := 0; x < w; x += tile {
 			b := block{x, y, min(x+tile, w), min(y+tile, h)}
 			d.clear(st, b, st.halo)
-			d.finish(st, b, nil, nil, st.calm)
+			d.finish(st, b, b, nil, nil, st.calm)
 		}
 	}
 }
@@ -220,6 +225,7 @@ type desk struct {
 	line             line
 	sum              [][4]float32 // fine samples of a block, summed over sub-exposures
 	spans            [][2]int
+	touch            block        // of d.out's pixels, margin included: what is not empty
 	side             [][4]float32 // blurred along the rows
 	sides            [][2]int
 	out              [][4]float32 // blurred both ways: pixels of the block and its margin
@@ -338,6 +344,7 @@ func (d *desk) blur(st *stage, w, h, fw, fh int) {
 	fine, n := st.fine, len(st.taps)
 	d.side = resize(d.side, w*fh)
 	d.sides = resize(d.sides, fh)
+	d.touch = block{w, h, 0, 0}
 	for j := range fh {
 		lo, hi := d.spans[j][0], d.spans[j][1]
 		if lo >= hi {
@@ -347,6 +354,9 @@ func (d *desk) blur(st *stage, w, h, fw, fh int) {
 		// Pixel i takes samples i·fine … i·fine+n−1.
 		i0, i1 := max(0, (lo-n)/fine), min(w, (hi-1)/fine+1)
 		d.sides[j] = [2]int{i0, i1}
+		t := &d.touch
+		t.x0, t.x1 = min(t.x0, i0), max(t.x1, i1)
+		t.y0, t.y1 = min(t.y0, max(0, (j-n)/fine)), max(t.y1, min(h, j/fine+1))
 		row := d.sum[j*fw : (j+1)*fw]
 		for i := i0; i < i1; i++ {
 			a, b := max(lo, i*fine), min(hi, i*fine+n)
@@ -386,19 +396,21 @@ func (d *desk) blur(st *stage, w, h, fw, fh int) {
 	}
 }
 
-// finish lays d.out over the backdrop, darkened by the shadows of the given
-// balls at the given times, vignettes, sharpens, and writes the block into dst.
-func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst []uint16) {
+// finish lays d.out, which holds the block b and its margin, over the backdrop,
+// darkened by the shadows of the given balls at the given times, vignettes,
+// sharpens, and writes the part keep of the block into dst.
+func (d *desk) finish(st *stage, b, keep block, shades []*ball, times []float64, dst []uint16) {
 	m := d.margin
-	w := b.x1 - b.x0 + 2*m
-	h := b.y1 - b.y0 + 2*m
+	w, h := b.x1-b.x0+2*m, b.y1-b.y0+2*m
+	i0, i1 := keep.x0-b.x0, keep.x1-b.x0+2*m // with the margin that sharpening needs
+	j0, j1 := keep.y0-b.y0, keep.y1-b.y0+2*m
 	d.lit = resize(d.lit, w*h)
 	if len(shades) > 0 {
 		d.castShadows(st, b, w, h, shades, times)
 	}
-	for j := range h {
+	for j := j0; j < j1; j++ {
 		v := min(max(b.y0-m+j, -rim), st.cam.h+rim-1)
-		for i := range w {
+		for i := i0; i < i1; i++ {
 			u := min(max(b.x0-m+i, -rim), st.cam.w+rim-1)
 			p := &d.out[j*w+i]
 			q := &st.back[(v+rim)*st.backW+u+rim]
@@ -406,18 +418,18 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 			if len(shades) > 0 && k > 0 {
 				k *= 1 - (1-q[3])*(1-d.shadowAt(w, i, j)) // shadows fall on the wall alone
 			}
-			g := st.vignette(u, v)
+			g := 1 - st.fade[0][u+rim] - st.fade[1][v+rim]
 			d.lit[j*w+i] = [3]float32{(p[0] + k*q[0]) * g, (p[1] + k*q[1]) * g, (p[2] + k*q[2]) * g}
 		}
 	}
 	amount := float32(st.scene.Sharpening)
 	if amount > 0 {
-		d.smooth(st, w, h)
+		d.smooth(st, w, h, i0, i1, j0, j1)
 	}
-	for v := b.y0; v < b.y1; v++ {
-		i := (v-b.y0+m)*w + m
-		to := dst[3*(v*st.cam.w+b.x0) : 3*(v*st.cam.w+b.x1)]
-		for u := range b.x1 - b.x0 {
+	for v := keep.y0; v < keep.y1; v++ {
+		i := (v-b.y0+m)*w + keep.x0 - b.x0 + m
+		to := dst[3*(v*st.cam.w+keep.x0) : 3*(v*st.cam.w+keep.x1)]
+		for u := range keep.x1 - keep.x0 {
 			p := d.lit[i+u]
 			if amount > 0 {
 				q := &d.smoothed[i+u]
@@ -434,15 +446,16 @@ func (d *desk) finish(st *stage, b block, shades []*ball, times []float64, dst [
 
 func fixed(x float32) uint16 { return uint16(min(max(x, 0), 255)*level + 0.5) }
 
-// smooth convolves d.lit, w × h, with the sharpening's kernel into d.smoothed;
-// the outermost st.halo pixels are left undefined.
-func (d *desk) smooth(st *stage, w, h int) {
+// smooth convolves the part [i0, i1) × [j0, j1) of d.lit, w × h, with the
+// sharpening's kernel into d.smoothed; the outermost st.halo pixels of the part
+// are left undefined.
+func (d *desk) smooth(st *stage, w, h, i0, i1, j0, j1 int) {
 	m := st.halo
 	d.across = resize(d.across, w*h)
 	d.smoothed = resize(d.smoothed, w*h)
-	for j := range h {
+	for j := j0; j < j1; j++ {
 		row := d.lit[j*w : (j+1)*w]
-		for i := m; i < w-m; i++ {
+		for i := i0 + m; i < i1-m; i++ {
 			var s [3]float32
 			for k, t := range st.soft {
 				q := &row[i+k-m]
@@ -453,12 +466,12 @@ func (d *desk) smooth(st *stage, w, h int) {
 			d.across[j*w+i] = s
 		}
 	}
-	for j := m; j < h-m; j++ {
-		to := d.smoothed[j*w : (j+1)*w]
+	for j := j0 + m; j < j1-m; j++ {
+		to := d.smoothed[j*w+i0+m : j*w+i1-m]
 		clear(to)
 		for k, t := range st.soft {
-			row := d.across[(j+k-m)*w : (j+k-m+1)*w]
-			for i := m; i < w-m; i++ {
+			row := d.across[(j+k-m)*w+i0+m : (j+k-m)*w+i1-m]
+			for i := range row {
 				to[i][0] += t * row[i][0]
 				to[i][1] += t * row[i][1]
 				to[i][2] += t * row[i][2]
