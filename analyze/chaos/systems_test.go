@@ -8,7 +8,6 @@ import (
 	"lodeswing/analyze/ode"
 )
 
-
 // The systems of the literature.
 
 // logistic is x → r·x(1 − x).
