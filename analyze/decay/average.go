@@ -24,6 +24,16 @@ func (an *analysis) average(q quantity) averaged {
 	return an.averageOver(q, func(law) bool { return true }, an.variance)
 }
 
+// withShape is average with what one more term in the restoring law would change.
+func (an *analysis) withShape(q quantity) averaged {
+	a := an.average(q)
+	if f := an.richer; f != nil {
+		top := an.fits[an.best()]
+		a = a.with("the shape of the restoring law", q(f.m, f.p)-q(top.m, top.p))
+	}
+	return a
+}
+
 // averageOver is average over the laws that ok lets through, with a variance of
 // one's choice.
 func (an *analysis) averageOver(q quantity, ok func(law) bool, variance func(k int, g []float64) float64) averaged {
@@ -121,7 +131,7 @@ func (a *averaged) addShare(source string, u float64) {
 
 // with adds one more independent share to the uncertainty.
 func (a averaged) with(source string, u float64) averaged {
-	if u == 0 || math.IsNaN(u) {
+	if u == 0 || math.IsNaN(u) || math.IsNaN(a.value) {
 		return a
 	}
 	a.shared = slices.Clone(a.shared)

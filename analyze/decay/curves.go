@@ -55,7 +55,7 @@ var (
 func (an *analysis) curves(res *Result) []finding.Curve {
 	a := an.angle
 	subject := a.Part
-	top := an.fits[an.best()]
+	top := an.fits[an.law]
 	n := len(an.data.t)
 	out := make([]float64, n)
 	mv := newMover(top.m, false)
@@ -153,7 +153,7 @@ func (an *analysis) envelopeCurve(res *Result, top *fitted) finding.Curve {
 	}
 	out, jac := make([]float64, len(times)), make([]float64, len(times)*n)
 	_ = newMover(top.m, true).run(top.p, top.tRef, times, out, jac, nil)
-	b := an.best()
+	b := an.law
 	for i, w := range an.turns {
 		// At a turning point the time's own uncertainty does not move the angle.
 		g := jac[i*n : (i+1)*n]
@@ -181,7 +181,7 @@ func (an *analysis) envelopeCurve(res *Result, top *fitted) finding.Curve {
 
 // rival is the pure law that comes nearest to the chosen law, −1 for none.
 func (an *analysis) rival() int {
-	b, r := an.best(), -1
+	b, r := an.law, -1
 	for k, l := range laws {
 		if k != b && l.count() == 1 && (r < 0 || an.bics[k] < an.bics[r]) {
 			r = k

@@ -21,6 +21,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/series"
@@ -105,10 +106,12 @@ type analysis struct {
 	cov      [][]float64
 	bare     [][]float64 // cov, if the shared causes were known
 	jack     [][]float64 // covariances by jackknife, where the residuals are not white
+	richer   *fitted     // the best law with one more term in the restoring law; nil for a pendulum
 	weights  []float64
 	bics     []float64
 	noise    noise
 	gains    map[[2]int][]float64
+	law      int      // index of the law that is named
 	limits   [3]limit // of the frictions that the chosen law lacks
 	turns    []turn
 	period   float64 // of small swings, s
@@ -164,7 +167,8 @@ func Analyze(ctx context.Context, a series.Angle, opt Options) (*Result, error) 
 		return res, nil
 	}
 	if err != nil {
-		return nil, err
+		res.none(fmt.Sprintf("between %.2f s and %.2f s the swing dies, but no damped swing could be fitted to it (%v)", a.T[an.st.from], a.T[an.st.to-1], err))
+		return res, nil
 	}
 	an.report(res)
 	return res, nil
@@ -316,7 +320,27 @@ func (an *analysis) work() error {
 		an.bics = append(an.bics, an.bic(g))
 	}
 	an.weights = bicWeights(an.bics)
+	an.fitRicher(amp)
 	return nil
+}
+
+// fitRicher fits the best law once more with one term more in the restoring law,
+// where that is not known to be a pendulum's: how much a number moves shows what
+// the choice of terms is worth.
+func (an *analysis) fitRicher(amp float64) {
+	top := an.fits[an.best()]
+	if top.m.sine {
+		return // gravity's law, and the magnets' by the rig's geometry, are not series cut short
+	}
+	m := top.m
+	next := 3
+	if n := len(m.powers); n > 0 {
+		next = m.powers[n-1] + 2
+	}
+	m.powers = append(slices.Clone(m.powers), next)
+	if f, err := an.data.fit(an.ctx, m, restart(top, m, amp), false); err == nil && f.sum.Converged {
+		an.richer = f
+	}
 }
 
 // splitShared cuts the shared causes to the stretch. Those that change along the

@@ -1,6 +1,7 @@
 package decay
 
 import (
+	"errors"
 	"math"
 
 	"lodeswing/analyze/ode"
@@ -113,7 +114,9 @@ func (m model) units() []string {
 }
 
 func shapeName(e int) string { return "stiffness term of power " + string(rune('0'+e)) }
-func shapeUnit(e int) string { return "rad⁻" + []string{"", "", "¹", "²", "³", "⁴"}[e] }
+func shapeUnit(e int) string {
+	return "rad⁻" + []string{"", "", "¹", "²", "³", "⁴", "⁵", "⁶"}[e]
+}
 
 // restoring is f and f' at d.
 func (m model) restoring(p []float64, d float64) (f, slope float64) {
@@ -178,6 +181,12 @@ type mover struct {
 // tolerance of the integration per step, relative; it leaves periods good to
 // 1e-8, a thousandth of what the best clip can tell.
 const tolerance = 1e-8
+
+// farthest is the angle from rest, rad, beyond which a trial of the fit is given
+// up: a restoring law with a polynomial may let the part run away.
+const farthest = 50
+
+var errRunaway = errors.New("with these parameters the part runs away from its rest")
 
 func newMover(m model, grad bool) *mover {
 	mv := &mover{m: m, grad: grad}
@@ -287,10 +296,14 @@ func (mv *mover) run(p []float64, tRef float64, times, out, jac []float64, turn 
 	for next < len(times) && times[next] == tRef {
 		emit(mv.y)
 	}
-	for next < len(times) && !stuck {
+	most := 2000 + 2*len(times)
+	for steps := 0; next < len(times) && !stuck; steps++ {
 		hits, err := mv.solver.Advance(end, mv.event)
 		if err != nil {
 			return err
+		}
+		if steps > most || math.Abs(mv.solver.State()[0]) > farthest {
+			return errRunaway
 		}
 		now := mv.solver.Time()
 		for next < len(times) && (forward && times[next] <= now || !forward && times[next] >= now) {

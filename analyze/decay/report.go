@@ -40,9 +40,11 @@ func (an *analysis) report(res *Result) {
 	res.Found = true
 	res.FromS, res.ToS, res.Samples = an.data.t[0], an.data.t[len(an.data.t)-1], len(an.data.t)
 	b := an.best()
+	an.envelope(an.fits[b])
+	b = an.simplify(b)
+	an.law = b
 	top := an.fits[b]
 	an.period = periodZero(top.m, top.p)
-	an.envelope(top)
 	res.AmplitudeStart, res.AmplitudeEnd = an.ampStart, an.ampEnd
 	res.Swings = an.swings
 	res.Amplitude = an.stateAmplitude()
@@ -52,7 +54,7 @@ func (an *analysis) report(res *Result) {
 	res.Cautions = append(res.Cautions, an.cautions...)
 	an.noteCautions(res)
 	res.Findings = append(res.Findings, an.motionFindings(res)...)
-	res.Findings = append(res.Findings, an.lawFindings(res)...)
+	res.Findings = append(res.Findings, an.lawFindings(res, b)...)
 	res.Findings = append(res.Findings, an.gravityCheck())
 	for i := range res.Findings {
 		if res.Findings[i].Subject == "" {
@@ -162,22 +164,27 @@ func (an *analysis) motionFindings(res *Result) []finding.Finding {
 	at := fmt.Sprintf("%.3g°", res.Amplitude/deg)
 
 	timed := func(q quantity) averaged {
-		x := an.average(q)
+		x := an.withShape(q)
 		return x.with("the camera's clock", clock*x.value)
 	}
 	var out []finding.Finding
 	zero := timed(periodZero).finding("decay.period_zero", subject, "Period of small swings", "s",
 		how+"; without damping, which would lengthen it by ζ²/2")
 	if an.unseenRest() {
-		zero = finding.Finding{Key: zero.Key, Subject: subject, Name: zero.Name, Unit: "s", Kind: finding.Undecided, Method: how,
-			Text: fmt.Sprintf("A magnet acts, and the swing was seen only down to %.3g°: how it pulls nearer to rest this clip does not show. Film on until the swing is small, or give at_mm and axis of the magnets in the rig.", an.ampEnd/deg)}
+		zero = finding.Finding{
+			Key: zero.Key, Subject: subject, Name: zero.Name, Unit: "s", Kind: finding.Undecided, Method: how,
+			Text: fmt.Sprintf("A magnet acts, and the swing was seen only down to %.3g°: how it pulls nearer to rest this clip does not show. Film on until the swing is small, or give at_mm and axis of the magnets in the rig.", an.ampEnd/deg),
+		}
 	}
 	out = append(out, zero)
 	out = append(out, timed(periodAt(res.Amplitude)).finding("decay.period_at", subject, "Period at an amplitude of "+at, "s", how))
-	k := an.average(func(_ model, p []float64) float64 { return p[atK] })
+	if an.opt.Restoring != Gravity && an.ampEnd > 0.3*an.ampStart {
+		out[0].Cautions = append(out[0].Cautions, fmt.Sprintf("Drawn out from amplitudes above %.2g° to none; a clip that runs on to smaller swings would be surer.", an.ampEnd/deg))
+	}
+	k := an.withShape(func(_ model, p []float64) float64 { return p[atK] })
 	out = append(out, k.with("the camera's clock", 2*clock*k.value).finding("decay.omega_squared", subject, "Stiffness over inertia, ω₀²", "s⁻²", how))
 
-	z := an.average(zetaAt(res.Amplitude))
+	z := an.withShape(zetaAt(res.Amplitude))
 	out = append(out, z.finding("decay.zeta", subject, "Damping ratio ζ at an amplitude of "+at, "1", mean))
 	out = append(out, z.through(func(z float64) float64 { return 1 / (2 * z) }).finding("decay.q", subject, "Quality factor Q at an amplitude of "+at, "1", "1/(2ζ); "+mean))
 	out = append(out, z.through(func(z float64) float64 { return 2 * math.Pi * z / math.Sqrt(1-z*z) }).
@@ -186,7 +193,7 @@ func (an *analysis) motionFindings(res *Result) []finding.Finding {
 		key, name string
 		a         float64
 	}{{"decay.zeta_start", "Damping ratio ζ at the first swing", an.ampStart}, {"decay.zeta_end", "Damping ratio ζ at the last swing", an.ampEnd}} {
-		x := an.average(zetaAt(e.a))
+		x := an.withShape(zetaAt(e.a))
 		if !math.IsNaN(x.value) && e.a > 0 {
 			out = append(out, x.finding(e.key, subject, fmt.Sprintf("%s (%.3g°)", e.name, e.a/deg), "1", mean))
 		}
@@ -206,9 +213,8 @@ func (an *analysis) motionFindings(res *Result) []finding.Finding {
 }
 
 // lawFindings are the friction law, its coefficients and the upper limits.
-func (an *analysis) lawFindings(res *Result) []finding.Finding {
+func (an *analysis) lawFindings(res *Result, b int) []finding.Finding {
 	subject := an.angle.Part
-	b := an.best()
 	top := an.fits[b]
 	var seen []string
 	for i, l := range laws {
@@ -308,11 +314,54 @@ func (an *analysis) limitIn(top *fitted, l law, i int) limit {
 	return lim
 }
 
+// negligible is the share of the loss at the first swing below which a friction
+// is not worth a law of its own.
+const negligible = 0.01
+
+// simplify takes out of law b the frictions that are surely negligible, and
+// returns the simpler law.
+func (an *analysis) simplify(b int) int {
+	f := an.fits[b]
+	o, err := f.m.orbitAt(f.p, an.ampStart)
+	if err != nil {
+		return b
+	}
+	lost := 2 * math.Pi * o.amplitude * o.slope * f.m.zeta(f.p, o)
+	left := f.m.law
+	for i, l := range frictions {
+		if f.m.law&l == 0 {
+			continue
+		}
+		j := f.m.frictionAt(l)
+		if left != l && upper95(f.p[j], an.uncertainty(b, j))*o.loss[i] < negligible*lost {
+			left &^= l
+		}
+	}
+	for k, l := range laws {
+		if l == left {
+			return k
+		}
+	}
+	return b
+}
+
+// weightOf is the weight of law b together with those that only add frictions
+// that are surely negligible in them.
+func (an *analysis) weightOf(b int) float64 {
+	w := an.weights[b]
+	for k, l := range laws {
+		if k != b && l&laws[b] == laws[b] && an.weights[k] > 1e-3 && an.simplify(k) == b {
+			w += an.weights[k]
+		}
+	}
+	return w
+}
+
 // decide finds the limits of the frictions that law b lacks, and tells whether
 // it may be called the law.
 func (an *analysis) decide(b int) bool {
 	top := an.fits[b]
-	decided := an.weights[b] >= decidedAt
+	decided := an.weightOf(b) >= decidedAt
 	for i, l := range frictions {
 		if top.m.law&l != 0 {
 			continue

@@ -108,6 +108,8 @@ func (b *builder) angle(bob *track.Bob) *Angle {
 	}
 	a.Gaps = bobGaps(bob)
 	switch {
+	case b.rig.Camera.FromAbove && part.Joint == "ball":
+		b.fromAbove(a, part, bob, usable)
 	case part.On != "" && part.On != "base":
 		if on := b.bobsOn(part.Name); len(on) >= 2 {
 			if bob != on[0] {
@@ -176,6 +178,10 @@ func (f frameOf) turn(dx, dz float64) (angle, tx, tz float64) {
 func (b *builder) byPivot(a *Angle, part *rig.Part, bob *track.Bob, usable []track.Sample) {
 	rb := b.rigBob(bob.Name)
 	c, from, cautions, err := b.pivot(part, rb, usable)
+	if err != nil && part.Joint == "ball" {
+		a.Problem = fmt.Sprintf("the pivot of the ball joint %q is not known: %v", part.Name, err)
+		return
+	}
 	if err != nil {
 		a.Problem = fmt.Sprintf("the pivot of %q is not known: %v. Give scale.origin_px and the part's pivot_mm, or the bob's at_mm, or film a larger swing", part.Name, err)
 		return
@@ -240,45 +246,34 @@ func (b *builder) pivot(part *rig.Part, rb *rig.Bob, usable []track.Sample) (cir
 		}
 	}
 	ball := part.Joint == "ball"
-	if ball && pr.ux > 0 {
-		// A ball joint's bob fills a disc of the picture: no circle to fit.
-		c := circle{x: pr.x, z: pr.z}
-		c.cov[0], c.cov[4] = pr.ux*pr.ux, pr.uz*pr.uz
-		for _, s := range usable {
-			c.r = math.Max(c.r, math.Hypot(s.X-c.x, s.Z-c.z))
-		}
-		c.cov[8] = pr.ux * pr.ux
-		for _, s := range usable {
-			c.scatter += math.Pow(math.Hypot(s.X-c.x, s.Z-c.z)-c.r, 2) / float64(len(usable))
-		}
-		c.scatter = math.Sqrt(c.scatter)
-		return c, "the rig's pivot", nil, nil
+	if ball {
+		return ballPivot(usable, pr)
 	}
 	free, err := fitCircle(usable, prior{})
 	if err == nil && math.Sqrt(free.cov[8]) > longArc*free.r {
 		err = errShortArc
 	}
 	if pr.ux == 0 && pr.ur == 0 {
-		return free, "circle through the track", b.circleCautions(free, err, ball), err
+		return free, "circle through the track", circleCautions(free, err), err
 	}
 	both, bothErr := fitCircle(usable, pr)
 	if bothErr != nil {
-		return free, "circle through the track", b.circleCautions(free, err, ball), err
+		return free, "circle through the track", circleCautions(free, err), err
 	}
 	if err == nil {
 		if c := disagree(free, pr); c != "" {
-			return free, "circle through the track", append(b.circleCautions(free, nil, ball), c), nil
+			return free, "circle through the track", append(circleCautions(free, nil), c), nil
 		}
 	}
 	from := "circle through the track, with the rig's dimensions"
 	if err != nil || math.Sqrt(free.cov[8]) > 3*math.Sqrt(both.cov[8]) {
 		from = "the rig's dimensions, and the arc of the track as far as it bends"
 	}
-	return both, from, b.circleCautions(both, nil, ball), nil
+	return both, from, circleCautions(both, nil), nil
 }
 
-func (b *builder) circleCautions(c circle, err error, ball bool) []string {
-	if err != nil || ball {
+func circleCautions(c circle, err error) []string {
+	if err != nil {
 		return nil
 	}
 	if c.scatter > 0.015*c.r {

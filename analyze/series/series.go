@@ -9,7 +9,9 @@
 // Angles are those of design section 4: zero where an unmagnetised part would
 // rest (hanging, or standing upright), positive towards +x in both; a pin turns
 // positive from hanging towards +x and is unwrapped over full turns. They are
-// angles to the vertical, also for a part that is hinged to another part.
+// angles to the vertical, also for a part that is hinged to another part. A ball
+// joint gives the angle of its picture in the plane of motion, or, filmed from
+// above, its tilt to the right; each says so in a caution.
 //
 // What is random from sample to sample (the picture's noise) is in UAngle and
 // URate. What is common to all samples (pivot, vertical, rolling shutter) is in

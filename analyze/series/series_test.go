@@ -1,6 +1,7 @@
 package series
 
 import (
+	"flag"
 	"math"
 	"math/rand/v2"
 	"strings"
@@ -9,6 +10,8 @@ import (
 	"lodeswing/track"
 	"lodeswing/track/rig"
 )
+
+var long = flag.Bool("long", false, "run the full Monte Carlo counts")
 
 // swingAngle is a damped swing whose rate is known in closed form; with a third
 // harmonic, as a large swing has.
@@ -52,7 +55,11 @@ func TestHangingBob(t *testing.T) {
 	const px, pz, r, w = 0.03, 0.11, 0.28, 5.6
 	rng := rand.New(rand.NewPCG(1, 1))
 	inA, inR, all, pulls := 0, 0, 0, 0.0
-	for range 20 {
+	runs := 20
+	if *long {
+		runs = 500
+	}
+	for range runs {
 		tr := &track.Track{Cal: knownCal(), Bobs: []track.Bob{film(rng, "lamp", "arm", 600, 1.0/60, 0.1e-3, func(s float64) (float64, float64) {
 			a, _ := swingAngle(s, 1.2, w)
 			return px + r*math.Sin(a), pz - r*math.Cos(a)
@@ -77,11 +84,11 @@ func TestHangingBob(t *testing.T) {
 		}
 	}
 	fa, fr := float64(inA)/float64(all), float64(inR)/float64(all)
-	t.Logf("95 %% intervals hold the angle in %.1f %%, the rate in %.1f %% of %d samples; pivot and radius off by %.2f u r.m.s.", 100*fa, 100*fr, all, math.Sqrt(pulls/20))
+	t.Logf("95 %% intervals hold the angle in %.1f %%, the rate in %.1f %% of %d samples; pivot and radius off by %.2f u r.m.s.", 100*fa, 100*fr, all, math.Sqrt(pulls/float64(runs)))
 	if fa < 0.92 || fa > 0.985 || fr < 0.92 || fr > 0.985 {
 		t.Errorf("coverage of angle %.3f, of rate %.3f", fa, fr)
 	}
-	if q := math.Sqrt(pulls / 20); q < 0.6 || q > 1.4 {
+	if q := math.Sqrt(pulls / float64(runs)); q < 0.6 || q > 1.4 {
 		t.Errorf("pivot's uncertainty: r.m.s. pull %.2f", q)
 	}
 }
