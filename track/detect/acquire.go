@@ -37,13 +37,23 @@ func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, bal
 		}
 	}
 	f.unlit = false
-	f.light = [3]float64{0, 0, 10 * f.ball} // from the camera's side, to begin with
-	f.frames = 0
+	f.forget()
+	f.slow[2].mean = 10 * f.ball // from the camera's side, to begin with
 	if r, ok = f.closeIn(p, r); !ok {
 		return nil, r
 	}
 	f.agree, f.agreeN = 1, 0
+	f.loosen()
 	return f, r
+}
+
+// loosen keeps the values of the slow quantities but not the trust in them: they
+// were found while the outline was not yet.
+func (f *Fitter) loosen() {
+	for i := range f.slow {
+		q := &f.slow[i]
+		q.u, q.walk = 30, 1
+	}
 }
 
 // faults is how far the model is usually from a real outline, over the contrast.
@@ -61,6 +71,7 @@ func (f *Fitter) closeIn(p *clip.Patch, r Fit) (Fit, bool) {
 		f.Shape.R, f.Shape.UR = r.R, 0.03*r.R+0.1
 		f.Shape.Blur, f.Shape.UBlur = r.Blur, 0.5*r.Blur
 		f.Shape.E1, f.Shape.E2, f.Shape.UE = r.E1, r.E2, 0.05
+		f.loosen()
 	}
 	return r, true
 }

@@ -9,9 +9,10 @@ import (
 )
 
 const (
-	sectors   = 24   // of the outline, for what is hidden and for neighbouring residuals that agree
-	mostSteps = 12   // of Gauss–Newton; from a good prediction it takes one or two
-	mostPix   = 2400 // beyond, every second, third … pixel of the band is taken
+	sectors    = 24   // of the outline, for what is hidden and for neighbouring residuals that agree
+	mostSteps  = 12   // of Gauss–Newton; from a good prediction it takes one or two
+	mostEdge   = 5000 // pixels at the edge; of more, every second, third … is taken
+	enoughFlat = 400  // pixels that show bob or wall alone
 	// A step from this near ends so close to the minimum that a second one would
 	// not move the centre by a fiftieth of its uncertainty; see TestOneStep.
 	closeEnough = 0.1 // px
@@ -29,9 +30,11 @@ type Fitter struct {
 	// resolution): each block is taken once, at its middle.
 	Blocks bool
 
-	light  [3]float64 // Fx, Fy, Fz of the last good fit
-	ball   float64    // +1: its far side gets no light, as a ball's; −1: the same where light counts negative in the projection; 0: a flat thing's even shading
-	agree  float64    // mean factor by which sectors' residuals exceed white noise's
+	// slow is what is remembered of Fx, Fy, Fz, Lit, Bx and By.
+	slow   [6]memory
+	onWall bool    // the last fit used the wall's picture
+	ball   float64 // +1: its far side gets no light, as a ball's; −1: the same where light counts negative in the projection; 0: a flat thing's even shading
+	agree  float64 // mean factor by which sectors' residuals exceed white noise's
 	agreeN float64
 	frames int
 	unlit  bool    // no shading is fitted (coarsely, while closing in)
@@ -71,11 +74,23 @@ type pixel struct {
 // NewFitter returns a Fitter for a bob of about radius r px that is seen in the
 // projection weights of blue, green and red.
 func NewFitter(weights [3]float64, r, ur float64, active image.Rectangle) *Fitter {
-	return &Fitter{
+	f := &Fitter{
 		Weights: weights,
 		Shape:   Shape{R: r, UR: ur, Blur: 1, UBlur: 0.4, UE: 0.05},
 		Active:  active, agree: 1, rough: faults,
 	}
+	f.forget()
+	return f
+}
+
+// forget sets the slow quantities to what is known before anything is seen: that
+// they stay within the range of a byte.
+func (f *Fitter) forget() {
+	for i := range f.slow {
+		f.slow[i] = memory{u: 80, walk: 1}
+	}
+	f.slow[3].u = 15
+	f.slow[4].u, f.slow[5].u = 30, 30
 }
 
 // Agreement returns the factor, averaged over frames, by which the variance of
@@ -96,7 +111,9 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		m.mu, m.mv = g.SmearU/smear, g.SmearV/smear
 	}
 	m.l = smear
-	copy(m.level[1:4], f.light[:])
+	for i, k := range slowly {
+		m.level[k-pF0] = f.slow[i].mean
+	}
 	m.dim(f)
 
 	var on [pCount]bool
@@ -107,10 +124,10 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	on[pBlur] = free
 	on[pE1], on[pE2] = r0 >= 6, r0 >= 6
 	if r0 < 6 || f.unlit {
-		on[pFx], on[pFy], on[pFz] = false, false, false
-		m.level[1], m.level[2], m.level[3] = 0, 0, 0
+		on[pFx], on[pFy], on[pFz], on[pLit] = false, false, false, false
+		m.level = [levels]float64{}
 	}
-	prior := f.priors(g, smear)
+	on[pLit] = on[pFz] && f.ball != 0
 
 	var out Fit
 	reach := math.Min(2.5*g.UPos, 0.4*r0)
@@ -118,9 +135,10 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	if len(f.px) < 40 {
 		return Fit{Why: "too few pixels in the picture"}
 	}
+	prior := f.priors(g, smear)
 	noise := f.startLevels(&m)
 	f.recallOdd(&m)
-	third := (m.level[0] - m.level[4] - f.back) / 3
+	third := (m.at(pF0) - m.at(pB0) - f.back) / 3
 	f.most = 36*math.Max(noise.bob, noise.wall) + third*third
 	loose := math.Max(math.Hypot(g.UPos, math.Min(f.Shape.UR, 0.1*r0)), 0.05)
 	acc, spare := &f.sums[0], &f.sums[1]
@@ -204,14 +222,12 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	// What the model cannot follow of a lit outline is no noise, and the same in
 	// all frames: rendered balls are off by half of this (TestFilmScenes in
 	// track/follow).
-	faulty := m.s * (0.004 + 0.025*norm3([3]float64(m.level[1:4]))/math.Max(math.Abs(out.Contrast), 1))
+	faulty := m.s * (0.004 + 0.025*f.shading()/math.Max(math.Abs(out.Contrast), 1))
 	out.Cov.AA = out.Cov.AA*f.agree + faulty*faulty
 	out.Cov.AB *= f.agree
 	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty
 	out.judge(f, &m)
-	if out.OK {
-		copy(f.light[:], m.level[1:4])
-	}
+	f.remember(&m, &inv, &on, &out)
 	return out
 }
 
@@ -220,8 +236,25 @@ type model struct {
 	cu, cv, r, s, l, e1, e2 float64
 	mu, mv                  float64 // direction of the smear
 	skew                    [2][2]float64
-	level                   [7]float64 // F0 Fx Fy Fz B0 Bx By
+	level                   [levels]float64 // from pF0 on
 	lamp                    lamp
+}
+
+// at returns one of the levels.
+func (m *model) at(p int) float64 { return m.level[p-pF0] }
+
+// slowly lists the parameters that Fitter.slow remembers.
+var slowly = [6]int{pFx, pFy, pFz, pLit, pBx, pBy}
+
+// remember learns the slow quantities from a fit.
+func (f *Fitter) remember(m *model, inv *matrix, on *[pCount]bool, out *Fit) {
+	for i, k := range slowly {
+		if on[k] && out.OK && !out.Cut && out.Visible > 0.7 {
+			f.slow[i].learn(m.at(k), math.Sqrt(inv[k][k]))
+		} else {
+			f.slow[i].pass()
+		}
+	}
 }
 
 func (m *model) get() (v vector) {
@@ -265,17 +298,15 @@ func (f *Fitter) priors(g Guess, smear float64) (p prior) {
 	if g.USmear > 0 {
 		set(pSmear, smear, g.USmear)
 	}
-	// Shading changes little from frame to frame; at first all that is known is
-	// that it stays within the range of a byte.
-	u := 80.0
-	if f.frames > 0 {
-		u = 10
+	if used := f.back != 0; used != f.onWall {
+		// The slope behind the bob is that of the wall, or what the wall's picture
+		// leaves of it.
+		f.onWall = used
+		f.slow[4], f.slow[5] = memory{u: 30, walk: 1}, memory{u: 30, walk: 1}
 	}
-	for i, v := range f.light {
-		set(pFx+i, v, u)
+	for i, k := range slowly {
+		set(k, f.slow[i].mean, f.slow[i].before())
 	}
-	set(pBx, 0, 30)
-	set(pBy, 0, 30)
 	set(pBlur, f.Shape.Blur, math.Max(f.Shape.UBlur, 0.02))
 	set(pE1, f.Shape.E1, math.Max(f.Shape.UE, 1e-3))
 	set(pE2, f.Shape.E2, math.Max(f.Shape.UE, 1e-3))
@@ -342,8 +373,8 @@ func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]b
 		out.UE = math.Sqrt(math.Max(inv[pE1][pE1], inv[pE2][pE2]))
 	}
 	out.E1, out.E2 = m.e1, m.e2
-	out.Level = m.level[0] + 0.4*m.level[3]
-	out.Contrast = out.Level - m.level[4] - back
+	out.Level = m.at(pF0) + m.shade(0.9*m.r, 0)/2 + m.shade(-0.9*m.r, 0)/2
+	out.Contrast = out.Level - m.at(pB0) - back
 	out.Noise = math.Sqrt(math.Max((n.bob+n.wall)/2*scale, 0))
 	out.Pixels = int(acc.n)
 	seen, most := 0.0, 0.0

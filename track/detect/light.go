@@ -15,11 +15,15 @@ type lamp struct {
 // dim sets the lamp for the model from the bob's shading so far; it does not
 // change during a fit, lest its softness be used to imitate something else.
 func (m *model) dim(f *Fitter) {
-	a := 0.1*math.Min(norm3(f.light), 120) + 3
+	a := 0.1*math.Min(f.shading(), 120) + 3
 	m.lamp = lamp{sign: f.ball, soft: a, half: 0.5 / a}
 }
 
-func norm3(v [3]float64) float64 { return math.Sqrt(v[0]*v[0] + v[1]*v[1] + v[2]*v[2]) }
+// shading is the size of the bob's shading, levels.
+func (f *Fitter) shading() float64 {
+	x, y, z := f.slow[0].mean, f.slow[1].mean, f.slow[2].mean
+	return math.Sqrt(x*x + y*y + z*z)
+}
 
 // light turns the cosine term h, in levels, into what is seen of it, and returns
 // the derivative: the larger of h and 0, rounded off by a parabola.
@@ -42,6 +46,6 @@ func (l *lamp) light(h float64) (seen, slope float64) {
 func (m *model) shade(x, y float64) float64 {
 	x, y = x/m.r, y/m.r
 	nz := math.Sqrt(math.Max(1-x*x-y*y, 0))
-	h, _ := m.lamp.light(m.level[1]*x + m.level[2]*y + m.level[3]*nz)
+	h, _ := m.lamp.light(m.at(pFx)*x + m.at(pFy)*y + m.at(pFz)*nz + m.at(pLit))
 	return h
 }

@@ -20,10 +20,12 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 	out := m.r*(1+math.Abs(m.e1)+math.Abs(m.e2)) + 3*m.s + 3 + m.l/2 + reach
 	in := m.r*(1-math.Abs(m.e1)-math.Abs(m.e2)) - math.Min(3*m.s+2, 0.6*m.r) - m.l/2 - reach
 	box := f.Active.Intersect(p.Rect)
-	skip := 1
-	if n := math.Pi * (out*out - math.Max(in, 0)*math.Max(in, 0)); n > mostPix {
-		skip = int(n/mostPix) + 1
-	}
+	// Pixels at the edge all count, up to a number that is enough for any purpose;
+	// of those that show bob or wall alone some hundreds are enough for the levels.
+	atEdge := 2 * math.Pi * m.r * (2*flat*m.s + 2 + 2*reach + 2/math.Pi*m.l)
+	skip := int(atEdge/mostEdge) + 1
+	area := math.Pi * (out*out - math.Max(in, 0)*math.Max(in, 0))
+	sparse := min(max(int((area-atEdge)/enoughFlat), 2), 8)
 	in2, out2 := 0.0, out*out
 	if in > 0 {
 		in2 = in * in
@@ -34,8 +36,6 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 	if wall != nil && !wall.Useful() {
 		wall = nil
 	}
-	// Between these radii every pixel counts; beyond, where bob or wall show alone,
-	// every other one is enough for the levels.
 	edgeIn := float32(m.r - flat*m.s - reach - 1)
 	edgeOut := float32(m.r + flat*m.s + reach + 1)
 	mu, mv := float32(m.mu*m.l/(2*m.r)), float32(m.mv*m.l/(2*m.r))
@@ -60,6 +60,7 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 		back, seen := wall.row(v, p.Rect.Min.X, p.W)
 		y := float32(yd) + offset
 		y2 := y * y
+		sparseRow := v * (sparse/2 + 1)
 		// Every skip-th pixel, shifted from row to row by a step that is prime to
 		// most skips, so that no direction is favoured.
 		first := u0
@@ -80,7 +81,7 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 			}
 			k := u - p.Rect.Min.X
 			x := float32(k) - cu + offset
-			if (u+v)&1 != 0 && skip == 1 {
+			if skip == 1 && (u+sparseRow)%sparse != 0 {
 				// The smear widens the edge along its direction only.
 				e := x*mu + y*mv
 				if e < 0 {
@@ -334,7 +335,7 @@ func (f *Fitter) startLevels(m *model) scatter {
 			if inside && d2 < lim*lim {
 				f.ring = append(f.ring, float64(q.v)-m.shade(float64(q.x), float64(q.y)))
 			} else if !inside && d2 > lim*lim {
-				f.ring = append(f.ring, float64(q.v-q.wall))
+				f.ring = append(f.ring, float64(q.v-q.wall)-(m.at(pBx)*float64(q.x)+m.at(pBy)*float64(q.y))/m.r)
 			}
 		}
 		level = median(f.ring)
@@ -342,8 +343,7 @@ func (f *Fitter) startLevels(m *model) scatter {
 	}
 	inside, ui := mid(true)
 	outside, uo := mid(false)
-	m.level[0], m.level[4] = inside, outside
-	m.level[5], m.level[6] = 0, 0
+	m.level[0], m.level[pB0-pF0] = inside, outside
 	rough := f.rough * (inside - outside)
 	least := quantum(f.Weights) + rough*rough
 	n := scatter{bob: ui*ui + least, wall: uo*uo + least}
@@ -375,10 +375,10 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		if c.alpha > 1e-3 {
 			nz = o.facing(c.x, c.y)
 		}
-		h, lit := m.lamp.light(m.level[1]*px + m.level[2]*py + m.level[3]*nz)
-		front := m.level[0] + h
+		h, lit := m.lamp.light(m.at(pFx)*px + m.at(pFy)*py + m.at(pFz)*nz + m.at(pLit))
+		front := m.at(pF0) + h
 		xb, yb := x*o.ir, y*o.ir
-		back := float64(q.wall) + m.level[4] + m.level[5]*xb + m.level[6]*yb
+		back := float64(q.wall) + m.at(pB0) + m.at(pBx)*xb + m.at(pBy)*yb
 		step := front - back
 		res := float64(q.v) - back - c.alpha*step
 
@@ -411,14 +411,15 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		acc.chi += w * res * res
 
 		lit *= c.alpha
-		j[pU] = step*c.u - m.level[1]*lit*o.ir
-		j[pV] = step*c.v - m.level[2]*lit*o.ir
+		j[pU] = step*c.u - m.at(pFx)*lit*o.ir
+		j[pV] = step*c.v - m.at(pFy)*lit*o.ir
 		j[pR] = step * c.r
 		j[pSmear] = step * c.l
 		j[pF0] = c.alpha
 		j[pFx] = px * lit
 		j[pFy] = py * lit
 		j[pFz] = nz * lit
+		j[pLit] = lit
 		j[pB0] = beta
 		j[pBx] = beta * xb
 		j[pBy] = beta * yb

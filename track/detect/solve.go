@@ -14,6 +14,7 @@ const (
 	pFx           // bob: shading to the right ...
 	pFy           // ... downwards ...
 	pFz           // ... and towards the camera, as a matt ball is lit
+	pLit          // bob: how far beyond the lamp's horizon light reaches
 	pB0           // wall: level, on top of what is known of it
 	pBx           // wall: slope
 	pBy           //
@@ -22,6 +23,9 @@ const (
 	pE2           // ellipse: longer along the diagonals
 	pCount
 )
+
+// levels are the parameters from pF0 to pBy.
+const levels = pBy - pF0 + 1
 
 type (
 	vector [pCount]float64
