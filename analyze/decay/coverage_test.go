@@ -132,7 +132,7 @@ func (tr truth) track(t *testing.T, rng *rand.Rand, r float64) series.Angle {
 // against the Cramér–Rao bound of the true law (for periods, with the clock's
 // share).
 func TestCoverage(t *testing.T) {
-	runs := 40
+	runs := 30
 	if *long {
 		runs = 1200
 	}

@@ -226,6 +226,9 @@ func (an *analysis) lawFindings(res *Result, b int) []finding.Finding {
 	if !res.Decided {
 		text = "The friction law is not decided; " + res.Law + " fits best"
 	}
+	if laws[b] != laws[an.best()] {
+		text += fmt.Sprintf("; what the fit of %s friction adds takes less than 1 %% of the loss", laws[an.best()])
+	}
 	text += "; weights: " + strings.Join(seen, ", ") + "."
 	if res.Decided {
 		for i, l := range frictions {

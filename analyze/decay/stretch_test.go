@@ -6,6 +6,7 @@ import (
 	"math/rand/v2"
 	"strings"
 	"testing"
+	"time"
 
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/series"
@@ -161,6 +162,28 @@ func TestNoFreeDecay(t *testing.T) {
 	if r.Found || !strings.Contains(r.Findings[0].Text, "coil") || r.Findings[0].Kind != finding.Undecided {
 		t.Errorf("%+v", r.Findings)
 	}
+}
+
+// A part whose magnets let it turn over, and beats: trials of the fit in which it
+// runs away must end, and the answer is words.
+func TestRunaway(t *testing.T) {
+	rng := rand.New(rand.NewPCG(5, 17))
+	y := make([]float64, 1800)
+	for i := range y {
+		s := float64(i) / 60
+		y[i] = math.Exp(-0.05*s)*(2.2*math.Sin(3.1*s)+0.9*math.Sin(4.7*s)) + 3*math.Tanh(10-s)
+	}
+	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
+	defer cancel()
+	a := clipOf(t, rng, 0.002, y)
+	r, err := Analyze(ctx, a, Options{Restoring: Magnets})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if r.Found {
+		t.Errorf("a free decay from %.2f s to %.2f s was made of it", r.FromS, r.ToS)
+	}
+	t.Log(r.Findings[0].Text)
 }
 
 // Lost frames, and samples on the wrong thing.
