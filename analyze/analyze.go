@@ -42,6 +42,7 @@ var analyses = []analysis{
 	{"angles", "series.angles", "Angle", angles},
 	{"free decay", "decay.free_decay", "Free decay", decays},
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
+	{"matching", "match.fit", "Model matched to the motion", matching},
 }
 
 type analysis struct {

@@ -84,6 +84,7 @@ type fitter struct {
 	opt    Options
 	clips  []clipData
 	params []param
+	source []Clip // as they were given
 	nv     int
 
 	rate, angle float64 // typical speed (rad/s) and size of the motion (rad)
@@ -100,7 +101,7 @@ type fitter struct {
 }
 
 func prepare(clips []Clip, r *rig.Rig, opt Options) (*fitter, error) {
-	f := &fitter{rig: r, opt: opt, tol: 1e-9, scatter: 1}
+	f := &fitter{rig: r, opt: opt, source: clips, tol: 1e-9, scatter: 1}
 	for i := range clips {
 		k, err := f.clip(&clips[i], len(clips) > 1)
 		if err != nil {

@@ -36,6 +36,19 @@ const firstSpan = 0.2
 
 // fit finds the optimum.
 func (f *fitter) fit(ctx context.Context) error {
+	if err := f.approach(ctx); err != nil {
+		return err
+	}
+	f.reweigh()
+	if err := f.polish(ctx); err != nil {
+		return err
+	}
+	f.opt.log("final: r.m.s. residual %.6g, %s", f.rms(), f.why)
+	return nil
+}
+
+// approach brings free stretches together into one motion near the optimum.
+func (f *fitter) approach(ctx context.Context) error {
 	f.bind = math.Inf(1)
 	for c := range f.clips {
 		span := math.Max(firstSpan, 12*f.clips[c].step())
@@ -77,15 +90,7 @@ func (f *fitter) fit(ctx context.Context) error {
 		}
 		f.opt.log("bound to %.1g rad: r.m.s. residual %.4g", f.bind, f.rms())
 	}
-	if err := f.descend(ctx, 30, 1e-4, false); err != nil {
-		return err
-	}
-	f.reweigh()
-	if err := f.polish(ctx); err != nil {
-		return err
-	}
-	f.opt.log("final: r.m.s. residual %.6g, %s", f.rms(), f.why)
-	return nil
+	return f.descend(ctx, 30, 1e-4, false)
 }
 
 // finalBind is how far the ends of stretches may be apart in the end, rad: far

@@ -1,6 +1,9 @@
 package toy
 
-import "math"
+import (
+	"context"
+	"math"
+)
 
 // Displace moves the state y by the small deviation d of length 2·Freedoms: first
 // the degrees of freedom in rad (a ball joint: a turn about its part's own axes),
@@ -71,4 +74,40 @@ func (m *Model) NearCoil(y []float64) bool {
 		}
 	}
 	return false
+}
+
+// MagnetPlace is where a magnet's centre is in state y, m; ok is false for a name
+// that the toy does not have.
+func (m *Model) MagnetPlace(y []float64, name string) (at [3]float64, ok bool) {
+	m.prepare()
+	m.kinematics(y)
+	for i := range m.magnets {
+		if g := &m.magnets[i]; g.name == name {
+			return [3]float64{g.r.X, g.r.Y, g.r.Z}, true
+		}
+	}
+	return at, false
+}
+
+// TorqueWithoutMagnets is the torque in N·m that gravity and spring give the first
+// part, on a hinge, at rest at the shown angle, in the sense of that angle.
+func (m *Model) TorqueWithoutMagnets(angle float64) float64 {
+	m.prepare()
+	y := m.Rest()
+	m.SetAngle(y, 0, angle, 0)
+	m.kinematics(y)
+	m.massMatrix()
+	for k := range m.bodies {
+		m.bodies[k].extN, m.bodies[k].extF = vec{}, vec{}
+	}
+	m.bias(y)
+	if m.bodies[0].stands {
+		return -m.rhs[0]
+	}
+	return m.rhs[0]
+}
+
+// Move moves the state y by a time in s, in place.
+func (m *Model) Move(y []float64, by float64, undriven bool) error {
+	return m.Run(context.Background(), 0, y, by, Options{Undriven: undriven}, nil, nil)
 }

@@ -1,0 +1,137 @@
+package match
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"sort"
+	"strings"
+
+	"lodeswing/analyze/finding"
+)
+
+// A fit whose residuals are this many times the pictures' noise does not fit.
+const plainMisfit = 3.0
+
+// fine gives states of a clip, a few per stretch.
+func (f *fitter) fine(c int) (times []float64, states [][]float64) {
+	k := &f.clips[c]
+	for i := range k.segments {
+		g := &k.segments[i]
+		const parts = 12
+		y := append([]float64(nil), g.y...)
+		for p := range parts {
+			times, states = append(times, g.t0+(g.t1-g.t0)*float64(p)/parts), append(states, append([]float64(nil), y...))
+			if err := k.model.Move(y, (g.t1-g.t0)/parts, k.undriven); err != nil {
+				break
+			}
+		}
+	}
+	return times, states
+}
+
+// misfit looks at the residuals and, where the model plainly does not fit, for a
+// magnet that is reversed or missing. It returns a caution for every number; empty
+// where the model fits.
+func (r *reporter) misfit(ctx context.Context) string {
+	s := r.res.Scatter
+	text := fmt.Sprintf("The residuals are %.2f times what the pictures' noise lets expect; from one frame to the next they correlate by %.2f.", s, r.j.lag1)
+	switch {
+	case s < 1.5:
+		text += " The model fits."
+	case s < plainMisfit:
+		text += " The model fits nearly; the uncertainties are widened accordingly."
+	default:
+		text += " The model does not fit."
+	}
+	r.add(finding.Finding{Key: "match.residuals", Name: "Does the model fit", Kind: finding.Statement, Unit: "1", Text: text, Method: r.say})
+	if s < plainMisfit {
+		return ""
+	}
+	caution := fmt.Sprintf("The model does not fit the motion (residuals %.1f times the pictures' noise): this number is that of the best wrong model.", s)
+	r.res.Cautions = append(r.res.Cautions, caution)
+	if r.opt.Quick {
+		return caution
+	}
+	if cause := r.causes(ctx); cause != "" {
+		r.add(finding.Finding{Key: "match.cause", Name: "Likely cause", Kind: finding.Statement, Unit: "1", Text: cause, Method: "the same clip matched with each magnet reversed and taken out in turn"})
+		r.res.Cautions = append(r.res.Cautions, cause)
+	}
+	return caution
+}
+
+// causes matches the clips with each magnet reversed or taken out, and names what
+// fits clearly better.
+func (r *reporter) causes(ctx context.Context) string {
+	type trial struct {
+		names []string
+		what  string
+		rms   float64
+	}
+	var all []trial
+	now := math.Sqrt(r.j.chi2 / float64(r.j.rows))
+	for i := range r.rig.Magnets {
+		name := r.rig.Magnets[i].Name
+		for _, what := range []string{"reversed", "missing"} {
+			c := r.rig.Clone()
+			if what == "reversed" {
+				for k := range c.Magnets[i].Axis {
+					c.Magnets[i].Axis[k] *= -1
+				}
+			} else {
+				c.Magnets = append(c.Magnets[:i:i], c.Magnets[i+1:]...)
+				for g := range c.Fit.Equal {
+					var keep []string
+					for _, a := range c.Fit.Equal[g] {
+						if owner, _ := split(a); owner != name {
+							keep = append(keep, a)
+						}
+					}
+					c.Fit.Equal[g] = keep
+				}
+				for a := range c.Fit.Bounds {
+					if owner, _ := split(a); owner == name {
+						delete(c.Fit.Bounds, a)
+					}
+				}
+			}
+			clips := r.source
+			o := r.opt
+			o.Quick, o.Log = true, nil
+			f, err := prepare(clips, c, o)
+			if err != nil {
+				continue
+			}
+			if err := f.quick(ctx); err != nil {
+				if ctx.Err() != nil {
+					return ""
+				}
+				continue
+			}
+			all = append(all, trial{[]string{name}, what, f.rms()})
+		}
+	}
+	if len(all) == 0 {
+		return ""
+	}
+	sort.Slice(all, func(a, b int) bool { return all[a].rms < all[b].rms })
+	best := all[0]
+	if !(best.rms < 0.5*now) {
+		return "Neither a reversed nor a missing magnet explains it. Look for a part that touches, a loose joint, a magnet that is not in the rig, or a wrong scale."
+	}
+	var same []string
+	for _, t := range all {
+		if t.rms < 1.2*best.rms+0.1 {
+			for _, n := range t.names {
+				same = append(same, fmt.Sprintf("“%s” is %s", n, t.what))
+			}
+		}
+	}
+	if len(same) == 1 {
+		return fmt.Sprintf("The motion fits (residuals %.1f times the noise) if %s.", best.rms, same[0])
+	}
+	return fmt.Sprintf("The motion fits (residuals %.1f times the noise) if either %s; this clip cannot say which.", best.rms, strings.Join(same, " or "))
+}
+
+// quick fits only as far as is needed to judge a cause.
+func (f *fitter) quick(ctx context.Context) error { return f.approach(ctx) }
