@@ -47,7 +47,9 @@ type Pivot struct {
 }
 
 // Shared is what one standard uncertainty of something common to all samples
-// does to each angle. Different Shared of one Angle are independent.
+// does to each angle. Different Shared of one Angle are independent. D is computed
+// from the measured angles and carries a trace of their noise: a fit that frees a
+// cause must smooth D along the motion first, as decay does, or it is biased.
 type Shared struct {
 	Source string    // plain words
 	D      []float64 // rad, length of T
