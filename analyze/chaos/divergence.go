@@ -29,9 +29,9 @@ type Divergence struct {
 	// what it is.
 	Found bool
 	Why   string
-	// Curve is the middle logarithm of the distance (relative to the states' spread)
+	// LogDistance is the middle logarithm of the distance (relative to the states' spread)
 	// at the times After, in s; Smooth is the same without the ripple of one period.
-	After, Curve, Smooth []float64
+	After, LogDistance, Smooth []float64
 	From, To             float64 // s, the straight stretch
 	Level                float64 // of the straight line at After = 0
 	Plateau              float64 // logarithm at which the distances saturate
@@ -72,11 +72,11 @@ func Diverge(v recurrence.Vectors, opt DivergenceOptions) (*Divergence, error) {
 	}
 	f.follow(2000, f.enough(spread))
 	d.Pairs = f.pairs
-	d.Curve = f.curve(-1, spread)
-	for k := range d.Curve {
+	d.LogDistance = f.curve(-1, spread)
+	for k := range d.LogDistance {
 		d.After = append(d.After, float64(k)*v.Step)
 	}
-	d.Smooth = smoothOver(d.Curve, opt.Period)
+	d.Smooth = smoothOver(d.LogDistance, opt.Period)
 	s, ok := d.straight(opt.Period, v.Step)
 	if !ok {
 		return d, nil
