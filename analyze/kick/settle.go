@@ -1,0 +1,343 @@
+package kick
+
+import (
+	"context"
+	"errors"
+	"math"
+	"slices"
+)
+
+// plain is the friction with which states are found out: enough to follow any
+// mixture over a clip.
+const plain = viscous | dry
+
+// settle finds the vertical, what the coil did at each pass, and the fits.
+func (l *ledger) settle(ctx context.Context) error {
+	l.setAside()
+	for range 2 {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		s, ok := l.fit(plain, nil, -1)
+		if !ok {
+			return errors.New("kick: the balance of the passes cannot be solved; look at the turning points in the angle's figure")
+		}
+		l.upright(s)
+	}
+	if l.unknown() {
+		l.findOff(ctx)
+	}
+	l.findOdd()
+	if err := ctx.Err(); err != nil {
+		return err
+	}
+	return l.weigh()
+}
+
+// setAside makes Odd, for the time being, of passes whose gain is far from that
+// of the passes before and after in the same direction: a push would bend every
+// fit that holds it.
+func (l *ledger) setAside() {
+	var off, all []float64
+	for i := range l.rows {
+		var near []float64
+		for _, d := range [...]int{-4, -2, 0, 2, 4} {
+			if j := i + d; j >= 0 && j < len(l.rows) && l.rows[j].clip == l.rows[i].clip {
+				near = append(near, l.rows[j].net())
+			}
+		}
+		slices.Sort(near)
+		d := math.Abs(l.rows[i].net() - near[len(near)/2])
+		off, all = append(off, d), append(all, d)
+	}
+	slices.Sort(all)
+	usual := 1.4826 * all[len(all)/2]
+	for i := range l.rows {
+		r := &l.rows[i]
+		if !r.fixed && off[i] > 8*math.Max(usual, math.Sqrt(r.vFrom+r.vTo)) && off[i] > 0.002*(r.before+r.after) {
+			r.state = Odd
+		}
+	}
+}
+
+// takeBack gives passes that were set aside the state that fits them.
+func (l *ledger) takeBack() {
+	s, ok := l.fit(plain, nil, -1)
+	if !ok || s.kicks == 0 || !(s.beta[0] > 0) {
+		return
+	}
+	k := s.beta[0]
+	for i := range l.rows {
+		r := &l.rows[i]
+		if r.state != Odd {
+			continue
+		}
+		for _, to := range [...]State{Kicked, Missed, Double} {
+			if math.Abs(s.resid[i]-to.share()*k) < math.Max(0.25*k, 4*math.Sqrt(r.vFrom+r.vTo)) {
+				r.state = to
+				break
+			}
+		}
+	}
+}
+
+// upright moves each clip's vertical to where the fit puts it. What is known of
+// it beforehand then holds for the sum of both steps, so it is only moved as far
+// as the data ask for well within that.
+func (l *ledger) upright(s *solution) {
+	moved := false
+	for c := range l.clips {
+		j := s.size - len(l.clips) + c
+		d := -s.beta[j]
+		if math.Abs(d) > 1e-7 && math.Abs(l.rest[c]+d) < 3*l.uRest[c] && math.Sqrt(s.cov[j*s.size+j]) < 0.5*l.uRest[c] {
+			l.rest[c] += d
+			moved = true
+		}
+	}
+	if moved {
+		l.enter()
+	}
+}
+
+// unknown tells whether nobody said where the coil was off.
+func (l *ledger) unknown() bool {
+	return !slices.ContainsFunc(l.rows, func(r row) bool { return r.state == Off })
+}
+
+// leastOff is how many passes without a kick make a stretch with the coil off.
+const leastOff = 6
+
+// findOff looks for a stretch at either end of the first clip in which the coil
+// gave nothing: the battery was taken out, or put in, while the phone ran.
+func (l *ledger) findOff(ctx context.Context) {
+	n := 0
+	for n < len(l.rows) && l.rows[n].clip == 0 {
+		n++
+	}
+	if n < 2*leastOff {
+		return
+	}
+	all, ok := l.fit(plain, nil, -1)
+	if !ok {
+		return
+	}
+	was := make([]State, n)
+	for i := range was {
+		was[i] = l.rows[i].state
+	}
+	set := func(from, to int) {
+		for i := range n {
+			l.rows[i].state = was[i]
+			if i >= from && i < to && !l.rows[i].fixed {
+				l.rows[i].state = Off
+			}
+		}
+	}
+	type cut struct{ from, to int }
+	best, bestCut := all.logL, cut{}
+	try := func(c cut) {
+		loses := 0.0
+		for i := c.from; i < c.to; i++ {
+			loses += l.rows[i].net()
+		}
+		if loses >= 0 || ctx.Err() != nil {
+			return
+		}
+		set(c.from, c.to)
+		if s, ok := l.fit(plain, nil, -1); ok && s.kicks == 1 && s.logL > best && s.beta[0] > 5*math.Sqrt(s.cov[0]*s.widen()) {
+			best, bestCut = s.logL, c
+		}
+	}
+	stride := max(1, n/40)
+	for j := leastOff; j <= n-leastOff; j += stride {
+		try(cut{0, j})
+		try(cut{j, n})
+	}
+	if stride > 1 && bestCut != (cut{}) {
+		for d := -stride + 1; d < stride; d++ {
+			c := bestCut
+			if c.from == 0 {
+				c.to = min(max(c.to+d, leastOff), n-leastOff)
+			} else {
+				c.from = min(max(c.from+d, leastOff), n-leastOff)
+			}
+			try(c)
+		}
+	}
+	const sure = 12 // in log likelihood, for one more unknown and the choice among n places
+	if best-all.logL < sure+math.Log(float64(2*n)) {
+		bestCut = cut{}
+	}
+	set(bestCut.from, bestCut.to)
+}
+
+// findOdd looks for single passes that gained much less or more than the others.
+func (l *ledger) findOdd() {
+	l.takeBack()
+	for range 10 {
+		s, ok := l.fit(plain, nil, -1)
+		if !ok || s.kicks == 0 {
+			return
+		}
+		// A robust scale of the kicked passes' residuals.
+		var abs []float64
+		for i := range l.rows {
+			if l.rows[i].state == Kicked {
+				abs = append(abs, math.Abs(s.resid[i]))
+			}
+		}
+		if len(abs) < leastPasses {
+			return
+		}
+		slices.Sort(abs)
+		scale := 1.4826 * abs[len(abs)/2]
+		worst, at := 0.0, -1
+		for i := range l.rows {
+			r := &l.rows[i]
+			if r.state != Kicked || r.fixed {
+				continue
+			}
+			u := math.Sqrt(r.vFrom + r.vTo)
+			if z := math.Abs(s.resid[i]) / math.Max(scale, u); z > math.Max(6, worst) {
+				worst, at = z, i
+			}
+		}
+		if at < 0 {
+			break
+		}
+		// All that are nearly as far out on the same side are taken together.
+		side := math.Copysign(1, s.resid[at])
+		limit := 0.6 * math.Abs(s.resid[at])
+		for i := range l.rows {
+			if r := &l.rows[i]; r.state == Kicked && !r.fixed && s.resid[i]*side > math.Max(limit, 5*scale) {
+				if side < 0 {
+					r.state = Missed
+				} else {
+					r.state = Double
+				}
+			}
+		}
+		l.confirm()
+	}
+	l.splitTwo()
+}
+
+// confirm makes Odd of passes that are neither without a kick nor with two.
+func (l *ledger) confirm() {
+	for range 3 {
+		s, ok := l.fit(plain, nil, -1)
+		if !ok || s.kicks == 0 {
+			return
+		}
+		k := s.beta[0]
+		changed := false
+		for i := range l.rows {
+			r := &l.rows[i]
+			if (r.state == Missed || r.state == Double) && math.Abs(s.resid[i]) > math.Max(0.3*k, 4*math.Sqrt(r.vFrom+r.vTo)) {
+				r.state, changed = Odd, true
+			}
+		}
+		if !changed {
+			return
+		}
+	}
+}
+
+// splitTwo looks for a coil that fires at some passes only, in no order: the
+// changes then fall into two heaps, and no middle one is the usual.
+func (l *ledger) splitTwo() {
+	one, ok := l.fit(plain, nil, -1)
+	if !ok || one.kicks == 0 {
+		return
+	}
+	was := make([]State, len(l.rows))
+	for i := range l.rows {
+		was[i] = l.rows[i].state
+	}
+	s := one
+	for range 12 {
+		changed := false
+		for i := range l.rows {
+			r := &l.rows[i]
+			if r.fixed || r.state != Kicked && r.state != Missed {
+				continue
+			}
+			// what this pass gained beyond a pass without a kick
+			gain := s.resid[i] + r.state.share()*s.beta[0]
+			mid := s.beta[0] / 2
+			if s == one {
+				gain, mid = s.resid[i], 0 // first: below or above the mean
+			}
+			to := Kicked
+			if gain < mid {
+				to = Missed
+			}
+			if to != r.state {
+				r.state, changed = to, true
+			}
+		}
+		next, ok := l.fit(plain, nil, -1)
+		if !ok || next.kicks == 0 {
+			break
+		}
+		s = next
+		if !changed {
+			break
+		}
+	}
+	kicked := 0
+	for i := range l.rows {
+		if l.rows[i].state == Kicked {
+			kicked++
+		}
+	}
+	clear := s.kicks == 1 && kicked >= 3 && s.sigma < 0.15*s.beta[0]
+	if !clear || s.logL-one.logL < 10+float64(len(l.rows))*math.Ln2 {
+		for i := range l.rows {
+			l.rows[i].state = was[i]
+		}
+	}
+}
+
+// weigh fits all mixtures of frictions and weighs them by the Bayesian
+// information criterion (G. Schwarz, Annals of Statistics 6, 1978). Frictions
+// that would give energy are left out.
+func (l *ledger) weigh() error {
+	l.laws, l.weighs = nil, nil
+	least := math.Inf(1)
+	var bics []float64
+	for w := viscous; w <= viscous|drag|dry; w++ {
+		s, ok := l.fit(w, nil, -1)
+		if !ok {
+			continue
+		}
+		bad := false
+		for j := range 3 {
+			if k := s.frictionAt(j); w.has(j) && s.beta[k] < -math.Sqrt(s.cov[k*s.size+k]*s.widen()) {
+				bad = true
+			}
+		}
+		if bad {
+			continue
+		}
+		bic := -2*s.logL + float64(s.size)*math.Log(float64(len(l.rows)))
+		l.laws, bics = append(l.laws, s), append(bics, bic)
+		least = math.Min(least, bic)
+	}
+	if len(l.laws) == 0 {
+		return errors.New("kick: no friction that takes energy explains the passes; look whether the part was touched")
+	}
+	sum := 0.0
+	for i, b := range bics {
+		w := math.Exp(-(b - least) / 2)
+		l.weighs = append(l.weighs, w)
+		sum += w
+		if b == least {
+			l.best = l.laws[i]
+		}
+	}
+	for i := range l.weighs {
+		l.weighs[i] /= sum
+	}
+	return nil
+}
