@@ -20,6 +20,7 @@ import (
 
 	"lodeswing/analyze/decay"
 	"lodeswing/analyze/finding"
+	"lodeswing/analyze/kick"
 	"lodeswing/analyze/record"
 	"lodeswing/analyze/series"
 	"lodeswing/track"
@@ -33,6 +34,9 @@ type Options struct {
 	Run record.Run
 	// Still is one picture of the clip as PNG, for the record.
 	Still []byte
+	// BatteryOut, when set, is the result of a clip of the same unit whose coil was
+	// without its battery: it tells what friction alone takes.
+	BatteryOut *record.Record
 	// Step, when set, is called with each analysis's name before it runs.
 	Step func(name string)
 }
@@ -42,6 +46,7 @@ var analyses = []analysis{
 	{"angles", "series.angles", "Angle", angles},
 	{"free decay", "decay.free_decay", "Free decay", decays},
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
+	{"kicks", "kick.ledger", "Energy ledger", kicks},
 	{"matching", "match.fit", "Model matched to the motion", matching},
 }
 
@@ -62,6 +67,8 @@ type work struct {
 
 	angles []series.Angle // one per part that gave an angle
 	decays []*decay.Result
+	kicks  []*kick.Result
+	out    *record.Record // of the battery-out clip; nil when there is none
 }
 
 // Run analyses a track. r may be nil: the track is then taken as bobs that each
@@ -87,6 +94,7 @@ func run(ctx context.Context, w *work, opt Options) (*record.Record, error) {
 	if w.rig == nil {
 		w.rig = &rig.Rig{}
 	}
+	w.out = opt.BatteryOut
 	w.rec = &record.Record{Run: opt.Run, Track: w.track, Still: opt.Still, Safety: safety(w.rig)}
 	if w.rec.Run.Rig.Name == "" {
 		w.rec.Run.Rig.Name = w.rig.Name

@@ -17,6 +17,11 @@ func headline(w *work) string {
 			out = append(out, decayWords(w, d.Part, d.Decided, d.Law))
 		}
 	}
+	for _, k := range w.kicks {
+		if words := kickWords(w, k); words != "" {
+			out = append(out, words)
+		}
+	}
 	out = append(out, frequencies(w)...)
 	if len(out) == 0 {
 		if w.track != nil {

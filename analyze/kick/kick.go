@@ -20,6 +20,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"slices"
 
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/series"
@@ -50,6 +51,8 @@ type Options struct {
 	// Well, when set, is the potential energy in J against the angle (rad, to the
 	// vertical), where springs or magnets act beside gravity. It needs Inertia.
 	Well func(angle float64) float64
+	// Absent says which frictions the part is known not to have: viscous, air drag, dry.
+	Absent [3]bool
 	// Sensed is the least rate in rad/s at the lowest point that fires the coil; 0: unknown.
 	Sensed float64
 	// Coil is how people call the coil that kicks.
@@ -59,6 +62,31 @@ type Options struct {
 	// are the rig's.
 	Battery          func(amplitude float64) (charge float64, err error)
 	Capacity, Supply float64
+}
+
+// Parts names the parts that the rig's coils kick, each once.
+func Parts(r *rig.Rig) []string {
+	var out []string
+	for i := range r.Coils {
+		c := &r.Coils[i]
+		part, nearest := c.Part, math.Inf(1)
+		at := rig.XYZ(c.AtM)
+		for j := range r.Magnets {
+			m := &r.Magnets[j]
+			if c.Part != "" || m.Part == "" || m.Part == rig.Base {
+				continue
+			}
+			// Places in the parts' own axes are near enough to choose between parts.
+			p := rig.XYZ(m.AtM)
+			if d := math.Hypot(math.Hypot(p[0]-at[0], p[1]-at[1]), p[2]-at[2]); d < nearest {
+				part, nearest = m.Part, d
+			}
+		}
+		if part != "" && !slices.Contains(out, part) {
+			out = append(out, part)
+		}
+	}
+	return out
 }
 
 // OptionsFor takes what a rig knows of a part. clip is the rig's entry of the
@@ -101,6 +129,13 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 	}
 	if o.Coil == "" {
 		o.Coil = "the coil"
+	}
+	f := p.Friction
+	for j, v := range [3]rig.Value{f.Viscous, f.Drag, f.Dry} {
+		o.Absent[j] = v.Known() && v.V == 0
+	}
+	if o.Absent == [3]bool{true, true, true} {
+		o.Absent = [3]bool{}
 	}
 	o.weigh(r, p)
 	if p.Upright || series.Pulled(r, part) != "" && bends(r, p) {

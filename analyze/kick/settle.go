@@ -56,6 +56,14 @@ func (l *ledger) setAside() {
 		r := &l.rows[i]
 		if !r.fixed && off[i] > 8*math.Max(usual, math.Sqrt(r.vFrom+r.vTo)) && off[i] > 0.002*(r.before+r.after) {
 			r.state = Odd
+			// A hand bends the turning points on both sides as well.
+			if off[i] > 40*math.Max(usual, math.Sqrt(r.vFrom+r.vTo)) && off[i] > 0.1*(r.before+r.after) {
+				for j := max(0, i-1); j <= min(len(l.rows)-1, i+1); j++ {
+					if l.rows[j].clip == r.clip && !l.rows[j].fixed {
+						l.rows[j].state, l.rows[j].fixed = Odd, true
+					}
+				}
+			}
 		}
 	}
 }
@@ -69,7 +77,7 @@ func (l *ledger) takeBack() {
 	k := s.beta[0]
 	for i := range l.rows {
 		r := &l.rows[i]
-		if r.state != Odd {
+		if r.state != Odd || r.fixed {
 			continue
 		}
 		for _, to := range [...]State{Kicked, Missed, Double} {
@@ -307,6 +315,9 @@ func (l *ledger) weigh() error {
 	least := math.Inf(1)
 	var bics []float64
 	for w := viscous; w <= viscous|drag|dry; w++ {
+		if l.absent(w) {
+			continue
+		}
 		s, ok := l.fit(w, nil, -1)
 		if !ok {
 			continue
@@ -340,4 +351,14 @@ func (l *ledger) weigh() error {
 		l.weighs[i] /= sum
 	}
 	return nil
+}
+
+// absent tells whether a mixture holds a friction that the rig says is not there.
+func (l *ledger) absent(w law) bool {
+	for j, no := range l.opt.Absent {
+		if no && w.has(j) {
+			return true
+		}
+	}
+	return false
 }

@@ -100,7 +100,7 @@ func TestKickAgainstTheModel(t *testing.T) {
 		sep    bool
 	}{
 		{"start-up", 0.14, []phase{{seconds: 30}}, Constant, true},
-		{"push", 0.40, []phase{{seconds: 8}, {seconds: 22, push: 1.2}}, Constant, true},
+		{"push", 0.40, []phase{{seconds: 8}, {seconds: 22, push: 2.2}}, Constant, true},
 		{"battery out", 0.42, []phase{{seconds: 20}, {seconds: 10, off: true}}, CoilOff, true},
 		{"battery in", 0.5, []phase{{seconds: 7, off: true}, {seconds: 23}}, CoilOff, true},
 	} {

@@ -1,0 +1,92 @@
+package analyze
+
+import (
+	"context"
+	"fmt"
+	"slices"
+	"strings"
+
+	"lodeswing/analyze/finding"
+	"lodeswing/analyze/kick"
+	"lodeswing/analyze/record"
+	"lodeswing/analyze/series"
+)
+
+// kicks keeps the energy ledger of each part that a coil kicks.
+func kicks(ctx context.Context, w *work) error {
+	for _, part := range kick.Parts(w.rig) {
+		i := slices.IndexFunc(w.angles, func(a series.Angle) bool { return a.Part == part })
+		if i < 0 {
+			continue // said where its angle was looked for
+		}
+		clips := []kick.Clip{{Angle: w.angles[i]}}
+		if w.clip != nil {
+			clips[0].Off = !w.clip.Battery
+		}
+		if d := w.rig.Decay; !clips[0].Off && (d.FromS.Set || d.ToS.Set) {
+			a := &w.angles[i]
+			clips[0].OffFromS, clips[0].OffToS = d.FromS.Or(a.T[0]), d.ToS.Or(a.T[len(a.T)-1])
+		}
+		if w.out != nil {
+			second, err := without(w.out, part)
+			if err != nil {
+				w.undecided("kick.battery_out", part, "Battery-out clip", err.Error(), "loss of the same unit with the coil off")
+			} else {
+				clips = append(clips, kick.Clip{Angle: second, Off: true})
+			}
+		}
+		res, err := kick.Analyze(ctx, clips, kick.OptionsFor(w.rig, part, w.clip))
+		if ctx.Err() != nil {
+			return ctx.Err()
+		}
+		if err != nil {
+			w.undecided("kick.ledger", part, "Energy ledger", err.Error(), "balance of energy between turning points")
+			continue
+		}
+		w.kicks = append(w.kicks, res)
+		w.rec.Findings = append(w.rec.Findings, res.Findings...)
+		w.rec.Fits = append(w.rec.Fits, res.Fits...)
+		w.rec.Curves = append(w.rec.Curves, res.Curves...)
+		w.caution(part, res.Cautions...)
+		for _, p := range res.Passes {
+			if p.Clip == 0 {
+				w.rec.Passes = append(w.rec.Passes, record.Pass{
+					Part: part, T: p.T, Energy: p.Before, UEnergy: p.UBefore, Kick: p.Kick, UKick: p.UKick, Loss: p.Loss, ULoss: p.ULoss,
+				})
+			}
+		}
+	}
+	return nil
+}
+
+// without takes a part's angle from the result of its battery-out clip.
+func without(out *record.Record, part string) (series.Angle, error) {
+	for _, a := range out.Angles {
+		if a.Part == part {
+			all, err := fromTables([]record.Angles{a})
+			if err != nil {
+				return series.Angle{}, err
+			}
+			return all[0], nil
+		}
+	}
+	return series.Angle{}, fmt.Errorf("the battery-out result holds no angle of %q", part)
+}
+
+// kickWords says in a sentence or two what the ledger tells of a part.
+func kickWords(w *work, res *kick.Result) string {
+	var b strings.Builder
+	k, l := w.rec.Find("kick.energy", res.Part), w.rec.Find("kick.loss", res.Part)
+	switch {
+	case k != nil && k.Kind == finding.Measured:
+		fmt.Fprintf(&b, "The coil gives “%s” %s at each kick; %s takes %s per pass at %.3g°.", res.Part, inWords(k), "friction", inWords(l), res.Amplitude/degree)
+	case k != nil:
+		fmt.Fprintf(&b, "A coil kicks “%s”; this clip cannot tell kick and friction apart.", res.Part)
+	case l != nil && l.Kind == finding.Measured:
+		fmt.Fprintf(&b, "With the coil off, friction takes %s from “%s” per pass at %.3g°.", inWords(l), res.Part, res.Amplitude/degree)
+	}
+	if s := w.rec.Find("kick.steady_amplitude", res.Part); s != nil && s.Kind == finding.Measured {
+		fmt.Fprintf(&b, " Kick and friction are equal at %s.", inWords(s))
+	}
+	return b.String()
+}
