@@ -58,6 +58,7 @@ Times are seconds, rising; an empty cell is a gap.`,
 	cmd.Flags().StringVar(&a.part, "part", "", "the `name` of the part whose angles a table holds that names none")
 	cmd.Flags().BoolVar(&f.json, "json", false, "print the findings as JSON, for machines")
 	cmd.Flags().BoolVarP(&f.quiet, "quiet", "q", false, "no progress")
+	addBatteryOut(cmd, &a.batteryOut)
 	_ = cmd.MarkFlagFilename("rig", "toml") // completion only
 	_ = cmd.MarkFlagDirname("out")
 	return cmd
@@ -66,6 +67,7 @@ Times are seconds, rising; an empty cell is a gap.`,
 // again analyses what was measured before.
 type again struct {
 	rigPath, part string
+	batteryOut    string
 	meter         *progress.Meter
 }
 
@@ -106,6 +108,11 @@ func (a *again) analyze(ctx context.Context, path, out string) (*record.Record, 
 	run.Options["analyzed"] = filepath.Base(filepath.Clean(path))
 	a.meter.Start("analysing", 0, "")
 	opt := analyze.Options{Run: run, Still: in.old.Still}
+	if a.batteryOut != "" {
+		if opt.BatteryOut, err = record.Read(a.batteryOut); err != nil {
+			return nil, "", fmt.Errorf("the battery-out result: %w", err)
+		}
+	}
 	var rec *record.Record
 	if in.track != nil {
 		rec, err = analyze.Run(ctx, in.track, r, opt)

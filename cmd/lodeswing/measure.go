@@ -24,6 +24,7 @@ when the new one is complete.
 CLIP is a video file (mp4, mov, mkv, webm, avi) or a folder of numbered pictures.`,
 		Example: `  lodeswing measure swing.mp4 --rig swing.toml
   lodeswing measure swing.mp4 --rig swing.toml --out unit-07 --overlay
+  lodeswing measure gull.mp4 --rig gull.toml --battery-out gull-off-result
   lodeswing measure swing.mp4 --rig swing.toml --json | jq '.findings[0]'`,
 		Args: exactly(1, "one clip"),
 		RunE: func(cmd *cobra.Command, args []string) error {
@@ -39,12 +40,19 @@ CLIP is a video file (mp4, mov, mkv, webm, avi) or a folder of numbered pictures
 		},
 	}
 	f.add(cmd)
+	addBatteryOut(cmd, &f.batteryOut)
 	return cmd
+}
+
+// addBatteryOut adds the flag that names what tells friction from kick.
+func addBatteryOut(cmd *cobra.Command, folder *string) {
+	cmd.Flags().StringVar(folder, "battery-out", "", "the result `folder` of the same unit filmed with its battery out, which tells kick from friction")
+	_ = cmd.MarkFlagDirname("battery-out") // completion only
 }
 
 // jobFlags are the flags of the commands that follow a clip.
 type jobFlags struct {
-	rig, out             string
+	rig, out, batteryOut string
 	overlay, json, quiet bool
 }
 
@@ -67,7 +75,7 @@ func (f *jobFlags) job(cmd *cobra.Command, clip string) (*job.Job, error) {
 		out = job.OutFor(clip)
 	}
 	return &job.Job{
-		Clip: clip, RigPath: f.rig, Out: out, Overlay: f.overlay, Version: version,
+		Clip: clip, RigPath: f.rig, Out: out, Overlay: f.overlay, BatteryOut: f.batteryOut, Version: version,
 		Options: map[string]string{"command": cmd.Name(), "clip": filepath.Base(clip), "rig": filepath.Base(f.rig), "overlay": fmt.Sprint(f.overlay)},
 		Meter:   progress.New(cmd.ErrOrStderr(), f.quiet),
 	}, nil

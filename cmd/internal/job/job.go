@@ -34,10 +34,13 @@ type Job struct {
 	RigPath string
 	Out     string // the result folder
 	Overlay bool   // also a clip that shows what was followed
-	Version string // of the program, for the record
-	Options map[string]string
-	Meter   *progress.Meter
-	Say     io.Writer // plain sentences about what is being done; nil: none
+	// BatteryOut is the result folder of a clip of the same unit with the coil's
+	// battery out; empty for none.
+	BatteryOut string
+	Version    string // of the program, for the record
+	Options    map[string]string
+	Meter      *progress.Meter
+	Say        io.Writer // plain sentences about what is being done; nil: none
 }
 
 // OutFor is the result folder's name where the user gives none: beside the
@@ -49,13 +52,20 @@ func OutFor(clipPath string) string {
 
 // Measure does it all: track, analyse, draw, report, write.
 func (j *Job) Measure(ctx context.Context) (*record.Record, error) {
+	var off *record.Record
+	if j.BatteryOut != "" {
+		var err error
+		if off, err = record.Read(j.BatteryOut); err != nil {
+			return nil, fmt.Errorf("the battery-out result: %w", err)
+		}
+	}
 	rec, r, err := j.follow(ctx)
 	if err != nil {
 		return nil, err
 	}
 	began := time.Now()
 	j.Meter.Start("analysing", 0, "")
-	full, err := analyze.Run(ctx, rec.Track, r, analyze.Options{Run: rec.Run, Still: rec.Still})
+	full, err := analyze.Run(ctx, rec.Track, r, analyze.Options{Run: rec.Run, Still: rec.Still, BatteryOut: off})
 	if err != nil {
 		return nil, err
 	}
