@@ -24,6 +24,7 @@ import (
 	"slices"
 
 	"lodeswing/analyze/finding"
+	"lodeswing/analyze/lsq"
 	"lodeswing/analyze/series"
 )
 
@@ -347,10 +348,22 @@ func (an *analysis) fitRicher(amp float64) {
 // noise before uncertainties are also taken from the jackknife.
 const coloured = 1.3
 
+// hopeless is how many times the best law's sum of squares a law may leave before
+// it is given up.
+const hopeless = 5
+
 // fitLaw fits m from best. A law that is far off may lose the phase on the way;
 // it is then led along the decay bit by bit.
 func (an *analysis) fitLaw(m model, best *fitted, amp float64) (*fitted, error) {
 	start := restart(best, m, amp)
+	if len(m.pulls) > 0 {
+		// In a magnet's narrow valley a law that cannot fit would be searched for
+		// long: what it reaches in a few steps is enough to tell that it is hopeless.
+		f, err := an.data.search(an.ctx, m, start, true, lsq.Options{SigmaKnown: true, TolF: 1e-6, MaxIterations: 12})
+		if err == nil && f.chi2 > hopeless*best.chi2 {
+			return f, nil
+		}
+	}
 	f, err := an.data.fit(an.ctx, m, start, false)
 	if err == nil && f.chi2 < 1000*best.chi2 {
 		return f, nil

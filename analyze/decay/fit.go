@@ -43,8 +43,23 @@ type fitted struct {
 // fit fits m to s from start by weighted nonlinear least squares. Frictions are
 // kept from being negative.
 func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool) (*fitted, error) {
+	opt := lsq.Options{SigmaKnown: true, TolF: 1e-8, TolP: 1e-9, MaxIterations: 60}
+	switch {
+	case len(m.pulls) > 0:
+		// A magnet's law has a long narrow valley: a coarse search stops early there
+		// and leaves residuals that look like a push.
+		opt.MaxIterations = 200
+	case coarse:
+		opt.TolF, opt.MaxIterations = 1e-4, 25
+	}
+	return s.search(ctx, m, start, !coarse, opt)
+}
+
+// search is fit with options of one's choice; shared tells whether the causes
+// that all samples share are carried.
+func (s *samples) search(ctx context.Context, m model, start []float64, shared bool, opt lsq.Options) (*fitted, error) {
 	n, size, extra := len(s.t), m.size(), len(s.common)
-	if coarse {
+	if !shared {
 		extra = 0
 	}
 	all := size + extra
@@ -97,10 +112,6 @@ func (s *samples) fit(ctx context.Context, m model, start []float64, coarse bool
 		pr.Scale = append(pr.Scale, 1)
 		pr.Prior = append(pr.Prior, lsq.Prior{Parameter: size + k, Value: 0, U: 1})
 		start = append(start, 0)
-	}
-	opt := lsq.Options{SigmaKnown: true, TolF: 1e-8, TolP: 1e-9, MaxIterations: 60}
-	if coarse {
-		opt.TolF, opt.MaxIterations = 1e-4, 25
 	}
 	sum, err := lsq.Solve(ctx, pr, start, opt)
 	if err != nil {

@@ -182,6 +182,10 @@ type mover struct {
 // 1e-8, a thousandth of what the best clip can tell.
 const tolerance = 1e-8
 
+// pullTolerance is that of a magnet's law, in whose long narrow valley the search
+// would otherwise be held up by the integration's own roughness.
+const pullTolerance = 1e-11
+
 // farthest is the angle from rest, rad, beyond which a trial of the fit is given
 // up: a restoring law with a polynomial may let the part run away.
 const farthest = 50
@@ -194,12 +198,16 @@ func newMover(m model, grad bool) *mover {
 	if grad {
 		n += 2 * (m.size() - 1) // the rest angle only shifts
 	}
+	tol := tolerance
+	if len(m.pulls) > 0 {
+		tol = pullTolerance
+	}
 	tols := make([]float64, n)
-	tols[0], tols[1] = tolerance, tolerance
+	tols[0], tols[1] = tol, tol
 	for i := 2; i < n; i++ {
 		tols[i] = math.Inf(1) // derivatives follow the motion's own steps
 	}
-	mv.solver = ode.New(n, mv.rhs, ode.Options{RelTol: tolerance, AbsTols: tols})
+	mv.solver = ode.New(n, mv.rhs, ode.Options{RelTol: tol, AbsTols: tols})
 	mv.y, mv.at = make([]float64, n), make([]float64, n)
 	mv.event = []ode.Event{{G: func(_ float64, y []float64) float64 { return y[1] }, Terminal: true}}
 	return mv

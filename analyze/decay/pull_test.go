@@ -88,7 +88,7 @@ func TestPullNeedsARestThatIsVertical(t *testing.T) {
 // with the textbook energy: small swings that the clip never shows come out
 // right, and so do both frictions.
 func TestLanternOverItsMagnet(t *testing.T) {
-	const viscous, drag, sigma, dt, steps = 0.045, 0.015, 1e-4, 1.0 / 60, 8
+	const viscous, drag, sigma, dt, steps = 0.045, 0.015, 1e-4, 1.0 / 60, 32
 	acc := func(a, v float64) float64 { return -lampTorque(a)/lampInertia - viscous*v - drag*v*math.Abs(v) }
 	rng := rand.New(rand.NewPCG(11, 12))
 	var ts, ys, us []float64
