@@ -76,12 +76,12 @@ type Sample struct {
 // Bob is one followed bob. All bobs of a track have one sample per frame, in
 // the order of frames.
 type Bob struct {
-	Name    string
-	Part    string // the rig's part that it sits on; empty when it names none
+	Name string
+	Part string // the rig's part that it sits on; empty when it names none
 	// RadiusPX is the usual radius of its outline in the picture, px; 0 when
 	// unknown (the track's table does not keep it).
 	RadiusPX float64
-	Samples []Sample
+	Samples  []Sample
 }
 
 // Usable returns the samples that have a position fit for fitting.
