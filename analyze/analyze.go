@@ -46,8 +46,8 @@ var analyses = []analysis{
 	{"angles", "series.angles", "Angle", angles},
 	{"free decay", "decay.free_decay", "Free decay", decays},
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
-	{"kicks", "kick.ledger", "Energy ledger", kicks},
 	{"matching", "match.fit", "Model matched to the motion", matching},
+	{"kicks", "kick.ledger", "Energy ledger", kicks},
 }
 
 type analysis struct {

@@ -10,6 +10,7 @@ import (
 	"lodeswing/analyze/kick"
 	"lodeswing/analyze/record"
 	"lodeswing/analyze/series"
+	"lodeswing/track/rig"
 )
 
 // kicks keeps the energy ledger of each part that a coil kicks.
@@ -35,7 +36,14 @@ func kicks(ctx context.Context, w *work) error {
 				clips = append(clips, kick.Clip{Angle: second, Off: true})
 			}
 		}
-		res, err := kick.Analyze(ctx, clips, kick.OptionsFor(w.rig, part, w.clip))
+		opt := kick.OptionsFor(w.rig, part, w.clip)
+		if opt.NoLedger != "" && w.rec.FittedRig != "" {
+			// What the rig left to the matching is known by now.
+			if fitted, err := rig.Parse("fitted.toml", []byte(w.rec.FittedRig)); err == nil {
+				opt = kick.OptionsFor(fitted, part, w.clip)
+			}
+		}
+		res, err := kick.Analyze(ctx, clips, opt)
 		if ctx.Err() != nil {
 			return ctx.Err()
 		}

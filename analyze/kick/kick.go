@@ -264,6 +264,7 @@ type Result struct {
 	// Separated tells whether kick and loss could be told apart, and How by what.
 	Separated bool
 	How       Separation
+	Idle      bool // no kick was seen where one was to be expected
 	// Of the middle of the kicked passes' amplitudes; J.
 	Amplitude, Kick, UKick, Loss, ULoss float64
 	// CovKickLoss is their covariance, J².

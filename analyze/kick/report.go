@@ -165,10 +165,20 @@ func (l *ledger) report(res *Result) {
 	if l.best.kicks == 1 {
 		fKick = l.measured("kick.energy", "Energy of one kick", kick)
 		v, variance := l.mean(kick)
-		if v > 0 && math.Sqrt(variance) < enough*v {
+		switch u := math.Sqrt(variance); {
+		case v > 0 && u < enough*v:
 			res.Separated, res.How = true, l.how()
+		case v < 3*u && u < enough*fLoss.Value:
+			// What it may be is small beside the loss: the coil as good as gives nothing.
+			res.Separated, res.Idle, res.How = true, true, l.how()
+			fKick.Kind, fKick.Hi, fKick.Lo = finding.UpperLimit, math.Max(0, v)+1.645*u, 0
+			fKick.Value, fKick.U = fKick.Hi, 0
+			fKick.Budget = nil
 		}
-		res.Kick, res.UKick = fKick.Value, fKick.U
+		res.Kick, res.UKick = v, fKick.U
+		if res.Idle {
+			res.UKick = math.Sqrt(variance)
+		}
 	} else {
 		res.Separated, res.How = true, CoilOff
 	}
@@ -198,10 +208,14 @@ func (l *ledger) report(res *Result) {
 		res.Findings = append(res.Findings, fLoss)
 	}
 	if l.best.kicks == 1 {
-		l.ways(res)
-		l.steady(res)
-		l.beginning(res)
-		l.perDay(res)
+		if !res.Idle {
+			l.ways(res)
+			l.steady(res)
+			l.beginning(res)
+			l.perDay(res)
+		} else {
+			res.Cautions = append(res.Cautions, "No kick was seen: the coil, its cell or the magnet at the foot does nothing, or the swing is too slow to be sensed.")
+		}
 	}
 	if f, ok := l.ratio(); ok {
 		res.Findings = append(res.Findings, f)

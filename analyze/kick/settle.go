@@ -228,6 +228,7 @@ func (l *ledger) findOdd() {
 		l.confirm()
 	}
 	l.splitTwo()
+	l.takeBack()
 }
 
 // confirm makes Odd of passes that are neither without a kick nor with two.
