@@ -133,6 +133,7 @@ func (f *fitter) solveChain(p []float64, lambda float64, keep bool) *system {
 		k := &f.clips[c]
 		n := 2 * k.model.Freedoms()
 		wide := 2*n + np + 1
+		own := k.model.OwnTurns()
 		var carry []float64 // rows of [s | p | rhs]
 		s.links[c] = make([]link, len(k.segments))
 		for i := range k.segments {
@@ -181,6 +182,17 @@ func (f *fitter) solveChain(p []float64, lambda float64, keep bool) *system {
 			for v := range n {
 				x := row()
 				x[v] = lambda*math.Sqrt(size[v]) + 1e-9*math.Sqrt(size[0]+1)
+			}
+			if math.IsInf(f.bind, 1) { // nothing tells a turn about the own axis yet
+				for _, v := range own {
+					row()[v] = 1e3 * math.Sqrt(size[0]+1)
+					row()[n/2+v] = 1e3 * math.Sqrt(size[0]+1)
+				}
+			}
+			if i == 0 || k.segments[i-1].broken { // how far it is turned at first is free
+				for _, v := range own {
+					row()[v] = 1e-2 * math.Sqrt(size[0]+1)
+				}
 			}
 			rows := len(a) / wide
 			triangle(a, rows, wide)

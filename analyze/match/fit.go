@@ -40,12 +40,24 @@ func (f *fitter) fit(ctx context.Context) error {
 		return err
 	}
 	f.reweigh()
+	if f.rms() > hopeless {
+		if err := f.shootAll(ctx, f.values(), true, true); err != nil {
+			return err
+		}
+		f.final = f.solveChain(f.values(), 1e-3, true)
+		f.converged, f.why = false, "the motion of the model stays far from the measured one"
+		return nil
+	}
 	if err := f.polish(ctx); err != nil {
 		return err
 	}
 	f.opt.log("final: r.m.s. residual %.6g, %s", f.rms(), f.why)
 	return nil
 }
+
+// hopeless is the size of residuals, in units of the noise, from which the last,
+// exact steps are not worth their time.
+const hopeless = 50
 
 // approach brings free stretches together into one motion near the optimum.
 func (f *fitter) approach(ctx context.Context) error {
@@ -79,16 +91,23 @@ func (f *fitter) approach(ctx context.Context) error {
 	if err := f.shootAll(ctx, f.values(), false, false); err != nil {
 		return err
 	}
+	free := math.Max(f.rms(), 1)
+	f.bind = 1
+	f.regauge()
 	f.bind = math.Max(f.gaps(), 1e-6)
+	by := 10.0
 	for f.bind > finalBind {
-		f.bind /= 100
+		f.bind /= by
 		if f.bind < 10*finalBind {
 			f.bind = finalBind
 		}
-		if err := f.descend(ctx, 6, 1e-2, false); err != nil {
+		if err := f.descend(ctx, 20, 2e-2, false); err != nil {
 			return err
 		}
 		f.opt.log("bound to %.1g rad: r.m.s. residual %.4g", f.bind, f.rms())
+		if by = 10; f.rms() < 1.5*free {
+			by = 100
+		}
 	}
 	return f.descend(ctx, 30, 1e-4, false)
 }
@@ -175,6 +194,35 @@ func split(address string) (owner, what string) {
 	return owner, what
 }
 
+// regauge turns parts about their own axes, where that is not felt, so that each
+// stretch begins turned as the one before it ended.
+func (f *fitter) regauge() {
+	if math.IsInf(f.bind, 1) {
+		return
+	}
+	for c := range f.clips {
+		k := &f.clips[c]
+		own := k.model.OwnTurns()
+		if len(own) == 0 {
+			continue
+		}
+		d := make([]float64, 2*k.model.Freedoms())
+		for i := 0; i+1 < len(k.segments); i++ {
+			g := &k.segments[i+1]
+			// A few rounds: turns in space do not add up simply.
+			for range 4 {
+				k.model.Deviation(g.y, k.segments[i].end, d)
+				for _, v := range own {
+					k.model.TurnOwn(g.y, v, d[v])
+					if len(g.end) > 0 {
+						k.model.TurnOwn(g.end, v, d[v])
+					}
+				}
+			}
+		}
+	}
+}
+
 // descend takes damped Gauss–Newton steps until the sum of squares falls by less
 // than the fraction enough per step. With all the nuisance parameters' derivatives
 // are fresh in each step, else only in the first.
@@ -252,9 +300,11 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 			stale = 0
 		}
 		if round+1 < rounds {
+			f.regauge()
 			if err := f.shootAll(ctx, p, true, all); err != nil {
 				return err
 			}
+			now, _, _ = f.merit(p)
 		}
 	}
 	f.chi2 = now
@@ -273,19 +323,48 @@ func (f *fitter) polish(ctx context.Context) error {
 	defer func() { f.exact, f.tol = false, tol }()
 	var fall, before float64
 	fresh := true
+	lambda := 0.0
+	keep := func() (out [][][]float64) {
+		for c := range f.clips {
+			var all [][]float64
+			for i := range f.clips[c].segments {
+				all = append(all, append([]float64(nil), f.clips[c].segments[i].y...))
+			}
+			out = append(out, all)
+		}
+		return out
+	}
+	var old [][][]float64
+	var oldP []float64
+	now := math.Inf(1)
 	for round := range rounds {
 		// The derivatives are found anew only where the steps are not small at once.
 		if err := f.shootAll(ctx, p, fresh, fresh); err != nil {
 			return err
 		}
-		f.final = f.solveChain(p, 0, true)
+		next, _, _ := f.merit(p)
+		if old != nil && !(next < now+0.01*now) {
+			// The step led astray: back, and a shorter one.
+			for c := range f.clips {
+				for i := range f.clips[c].segments {
+					copy(f.clips[c].segments[i].y, old[c][i])
+				}
+			}
+			p = oldP
+			f.setValues(p)
+			lambda, fresh, old = math.Max(30*lambda, 1e-4), true, nil
+			continue
+		}
+		now = next
+		f.final = f.solveChain(p, lambda, true)
 		before, fall = fall, f.final.foreseen()
 		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g", f.rms(), f.gaps(), fall)
-		if fall < enough*math.Max(1, f.scatter*f.scatter) {
+		if lambda == 0 && fall < enough*math.Max(1, f.scatter*f.scatter) || round > 3 && fall < 0.05 {
 			f.converged, f.why = true, fmt.Sprintf("one more step is foreseen to lower the sum of squares by only %.1g", fall)
 			break
 		}
 		fresh = fall > 10 || round > 0 && !fresh && fall > 0.1*before
+		old, oldP = keep(), p
 		p = f.stepped(p, f.final.step)
 		for c := range f.clips {
 			k := &f.clips[c]
@@ -294,6 +373,10 @@ func (f *fitter) polish(ctx context.Context) error {
 				k.model.Normalise(k.segments[i].y)
 			}
 		}
+		lambda /= 100
+		if lambda < 1e-7 {
+			lambda = 0
+		}
 		f.setValues(p)
 	}
 	if !f.converged {
@@ -301,7 +384,10 @@ func (f *fitter) polish(ctx context.Context) error {
 			return err
 		}
 		f.final = f.solveChain(p, 0, true)
-		f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall)
+		fall = f.final.foreseen()
+		if f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall); fall < 0.1 {
+			f.converged = true // a tenth of a standard uncertainty and a half
+		}
 	}
 	f.chi2, _, _ = f.merit(p)
 	return nil

@@ -48,7 +48,7 @@ func (r *reporter) misfit(ctx context.Context) string {
 	if s < plainMisfit {
 		return ""
 	}
-	caution := fmt.Sprintf("The model does not fit the motion (residuals %.1f times the pictures' noise): this number is that of the best wrong model.", s)
+	caution := fmt.Sprintf("The model does not fit the motion: the residuals are %.1f times the pictures' noise.", s)
 	r.res.Cautions = append(r.res.Cautions, caution)
 	if r.opt.Quick {
 		return caution

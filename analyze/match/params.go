@@ -245,8 +245,10 @@ func (b *builder) part(q *rig.Part, first bool) {
 				address: q.Name + ".weight moment", unit: "1", source: "the weight moment of " + q.Name, clip: -1, nuisance: true,
 				targets: b.set([]string{q.Name + ".mass"}, 0, g.V), prior: true, mean: 1, u: u, value: 1,
 			})
-			// Across the lever: which way it hangs.
-			b.place(q.Name+".centre.x", "the centre of mass of "+q.Name, centre[0], uc)
+			// Across the lever: which way it hangs. A ball joint's part has no such way.
+			if q.Joint != "ball" {
+				b.place(q.Name+".centre.x", "the centre of mass of "+q.Name, centre[0], uc)
+			}
 		} else {
 			b.place(q.Name+".centre.x", "the centre of mass of "+q.Name, centre[0], uc)
 			b.place(q.Name+".centre.z", "the centre of mass of "+q.Name, centre[2], uc)
@@ -286,7 +288,9 @@ func (b *builder) magnetPlace(g *rig.Magnet, ball bool) {
 		if b.meetsOnlyBase(g) {
 			return // with the base's
 		}
-		b.place(g.Name+".at.x", what, at[0], u)
+		if q := b.r.FindPart(g.Part); q == nil || q.Joint != "ball" {
+			b.place(g.Name+".at.x", what, at[0], u)
+		}
 		b.place(g.Name+".at.z", what, at[2], u)
 		return
 	}
@@ -405,6 +409,10 @@ func (b *builder) seen() {
 				continue
 			}
 			byBob[o.name] = true
+			if !k.model.OneAxis(o.part) {
+				b.add(param{address: o.name + ".at.z", unit: "m", source: "the bobs' places on their parts", role: byBobZ, clip: -1, bob: o.name, prior: true, u: uBobPlace, scale: 1e-5, nuisance: true})
+				continue
+			}
 			b.add(param{address: o.name + ".at.x", unit: "m", source: "the bobs' places on their parts", role: byBobX, clip: -1, bob: o.name, prior: true, u: uBobPlace, scale: 1e-5, nuisance: true})
 			b.add(param{address: o.name + ".at.z", unit: "m", source: "the bobs' places on their parts", role: byBobZ, clip: -1, bob: o.name, prior: true, u: uBobPlace, scale: 1e-5, nuisance: true})
 		}

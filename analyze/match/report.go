@@ -60,12 +60,20 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	r.fitSummary()
 	r.curves()
 	r.fittedRig()
-	if misfit != "" {
+	if !r.converged && misfit == "" {
+		misfit = "The matching did not settle: " + r.why + "."
+	}
+	if misfit != "" { // numbers of a wrong model are not told as if they were the toy's
 		for i := range r.res.Findings {
-			if x := &r.res.Findings[i]; x.Kind == finding.Measured {
-				x.Cautions = append(x.Cautions, misfit)
+			if x := &r.res.Findings[i]; x.Kind == finding.Measured || x.Kind == finding.UpperLimit {
+				*x = finding.Finding{
+					Key: x.Key, Subject: x.Subject, Name: x.Name, Kind: finding.Undecided, Unit: "1", Method: x.Method,
+					Text: misfit + " No number is given.",
+				}
 			}
 		}
+		r.res.Findings = slices.DeleteFunc(r.res.Findings, func(x finding.Finding) bool { return strings.HasSuffix(x.Key, "_deviation") || x.Key == "match.grade" })
+		r.res.Fitted = nil
 	}
 	return r.res, nil
 }

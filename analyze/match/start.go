@@ -1,8 +1,10 @@
 package match
 
 import (
+	"cmp"
 	"fmt"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/mat"
 )
@@ -277,33 +279,44 @@ func (s *poser) first(y []float64, want [][2]float64, have []bool) error {
 	best, keep := math.Inf(1), append([]float64(nil), y...)
 	nv := m.Freedoms()
 	d := make([]float64, 2*nv)
+	// Two freedoms at most are gone through, the smallest turns first: where several
+	// poses show the same picture (a ball joint seen from the front has two) the one
+	// nearest to rest is taken.
 	const turns = 12
-	n := 1
-	for range min(nv, 2) {
-		n *= turns
+	var tries [][2]float64
+	for i := range turns * turns {
+		a, b := 2*math.Pi*float64(i%turns)/turns, 2*math.Pi*float64(i/turns)/turns
+		a, b = math.Remainder(a, 2*math.Pi), math.Remainder(b, 2*math.Pi)
+		if !m.OneAxis(0) {
+			a, b = 0.3*a, 0.3*b
+		}
+		if nv == 1 && i >= turns {
+			break
+		}
+		tries = append(tries, [2]float64{a, b})
 	}
-	for i := range n {
+	slices.SortStableFunc(tries, func(p, q [2]float64) int {
+		return cmp.Compare(math.Hypot(p[0], p[1]), math.Hypot(q[0], q[1]))
+	})
+	good := 0.0
+	for i := range s.k.obs {
+		good = math.Max(good, 5/s.k.obs[i].w0)
+	}
+	for _, try := range tries {
 		z := m.Rest()
 		for j := range d {
 			d[j] = 0
 		}
-		left := i
 		for v := range min(nv, 2) {
-			x := 2 * math.Pi * float64(left%turns) / turns
-			left /= turns
-			if !m.OneAxis(0) {
-				x = 0.3 * (x - math.Pi)
-			}
-			if x > math.Pi {
-				x -= 2 * math.Pi
-			}
-			d[v] = x
+			d[v] = try[v]
 		}
 		m.Displace(z, d)
-		c := s.solve(z, want, have, 60)
-		if c < 0.98*best { // the first, smallest turn wins a draw
+		if c := s.solve(z, want, have, 60); c < 0.98*best {
 			best = c
 			copy(keep, z)
+			if best < good {
+				break
+			}
 		}
 	}
 	copy(y, keep)

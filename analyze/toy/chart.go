@@ -111,3 +111,42 @@ func (m *Model) TorqueWithoutMagnets(angle float64) float64 {
 func (m *Model) Move(y []float64, by float64, undriven bool) error {
 	return m.Run(context.Background(), 0, y, by, Options{Undriven: undriven}, nil, nil)
 }
+
+// OwnTurns lists the degrees of freedom that turn a part on a ball joint about
+// its own long axis where nothing on it tells how far it is turned: its centre of
+// mass and magnets lie, and its magnets point, along that axis, and it carries no
+// other part. States that differ by such a turn move alike.
+func (m *Model) OwnTurns() []int {
+	var out []int
+	for k := range m.bodies {
+		b := &m.bodies[k]
+		if b.joint != ball || b.centre.X != 0 || b.centre.Y != 0 {
+			continue
+		}
+		plain := true
+		for i := range m.magnets {
+			if g := &m.magnets[i]; g.body == k && (g.at.X != 0 || g.at.Y != 0 || g.axis.X != 0 || g.axis.Y != 0) {
+				plain = false
+			}
+		}
+		for i := range m.bodies {
+			plain = plain && m.bodies[i].parent != k
+		}
+		if plain {
+			out = append(out, b.v+2)
+		}
+	}
+	return out
+}
+
+// TurnOwn turns the part of such a degree of freedom about its own axis by an angle
+// in rad, without changing how it moves in space.
+func (m *Model) TurnOwn(y []float64, v int, by float64) {
+	b := &m.bodies[m.dofOf[v]]
+	d := make([]float64, m.nv)
+	d[v] = by
+	m.move(y, d)
+	w := y[m.nq+b.v : m.nq+b.v+3]
+	s, c := math.Sincos(by)
+	w[0], w[1] = c*w[0]+s*w[1], c*w[1]-s*w[0]
+}
