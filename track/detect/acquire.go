@@ -47,6 +47,18 @@ func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, bal
 	return f, r
 }
 
+// Relearn drops what was learnt of the bob's light and shape but its size, and
+// all trust in it: the first fits of a moving bob know nothing of its smear.
+func (f *Fitter) Relearn() {
+	f.forget()
+	f.slow[2].mean = 10 * f.ball
+	s := &f.Shape
+	s.UR = math.Max(s.UR, 0.02*s.R)
+	s.Blur, s.UBlur = math.Min(s.Blur, 1.2), 0.5
+	s.E1, s.E2, s.UE = 0, 0, 0.05
+	f.agree, f.agreeN = 1, 0
+}
+
 // loosen keeps the values of the slow quantities but not the trust in them: they
 // were found while the outline was not yet.
 func (f *Fitter) loosen() {
@@ -54,6 +66,7 @@ func (f *Fitter) loosen() {
 		q := &f.slow[i]
 		q.u, q.walk = 30, 1
 	}
+	f.known = 0
 }
 
 // faults is how far the model is usually from a real outline, over the contrast.

@@ -62,6 +62,7 @@ type Fit struct {
 	Contrast      float64 // bob minus wall, same levels
 	Noise         float64 // scatter of the residuals, levels of the projection
 	Visible       float64 // share of the outline that agrees with the model, 0 to 1
+	WallWrong     bool    // the wall's picture does not fit what is around the bob: the camera has moved
 	Cut           bool    // the outline reaches the picture's edge
 	Pixels        int     // how many took part
 	Steps         int     // iterations

@@ -149,7 +149,9 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			h, lit := m.lamp.light(fx*x + fy*y + fz*nz + fl)
 			res := float64(q.v) - f0 - h
 			r2 := res * res
-			cost += min(r2, most)
+			if !q.near {
+				cost += min(r2, most)
+			}
 			t := r2 * ibob
 			if t > 16 && r2 > least {
 				f.odd = append(f.odd, int32(i))
@@ -187,7 +189,9 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		if d < -reach {
 			res := float64(q.v) - back
 			r2 := res * res
-			cost += min(r2, most)
+			if !q.near {
+				cost += min(r2, most)
+			}
 			t := r2 * iwall
 			if t > 16 && r2 > least {
 				f.odd = append(f.odd, int32(i))
@@ -213,9 +217,9 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		} else {
 			c.alpha, c.r = edge(d * o.is)
 			c.r *= o.is
-			c.x, c.y = x, y
+			c.x, c.y, c.z = x, y, o.facing(x, y)
 		}
-		nz := o.facing(c.x, c.y)
+		nz := c.z
 		h, lit := m.lamp.light(fx*c.x + fy*c.y + fz*nz + fl)
 		step := f0 + h - back
 		res := float64(q.v) - back - c.alpha*step
@@ -224,7 +228,9 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		edgeJ := step * c.r
 		steep := edgeJ * loose
 		q2 := res * res
-		cost += min(q2, most)
+		if !q.near {
+			cost += min(q2, most)
+		}
 		t := q2 / (variance + steep*steep)
 		if t > 16 && q2 > misfit*step*step {
 			f.odd = append(f.odd, int32(i))

@@ -31,14 +31,17 @@ type Fitter struct {
 	Blocks bool
 
 	// slow is what is remembered of Fx, Fy, Fz, Lit, Bx and By.
-	slow   [6]memory
-	onWall bool    // the last fit used the wall's picture
-	ball   float64 // +1: its far side gets no light, as a ball's; −1: the same where light counts negative in the projection; 0: a flat thing's even shading
-	agree  float64 // mean factor by which sectors' residuals exceed white noise's
-	agreeN float64
-	frames int
-	unlit  bool    // no shading is fitted (coarsely, while closing in)
-	rough  float64 // residuals that the model's known faults leave, over the contrast
+	slow          [6]memory
+	onWall        bool    // the last fit used the wall's picture
+	known         int     // good fits so far
+	stale         int     // frames since the last good fit
+	bob, bobNoise float64 // usual F0 and scatter around it
+	ball          float64 // +1: its far side gets no light, as a ball's; −1: the same where light counts negative in the projection; 0: a flat thing's even shading
+	agree         float64 // mean factor by which sectors' residuals exceed white noise's
+	agreeN        float64
+	frames        int
+	unlit         bool    // no shading is fitted (coarsely, while closing in)
+	rough         float64 // residuals that the model's known faults leave, over the contrast
 
 	px                  []pixel
 	odd                 []int32 // pixels (indices of px) that fitted badly in the last pass
@@ -51,6 +54,7 @@ type Fitter struct {
 	oddAt               [][2]int16 // places that fitted badly in the last frame, px from the middle
 	ring                []float64
 	back                float64 // mean of the wall's picture behind the band, 0 where none is used
+	wallWrong           bool    // the wall's picture is of another place
 }
 
 // Shape is what is known of a bob's outline: px, with standard uncertainties.
@@ -89,6 +93,7 @@ func (f *Fitter) forget() {
 	for i := range f.slow {
 		f.slow[i] = memory{u: 80, walk: 1}
 	}
+	f.known = 0
 	f.slow[3].u = 15
 	f.slow[4].u, f.slow[5].u = 30, 30
 }
@@ -171,8 +176,11 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 			if damp /= 8; damp < 1e-3 {
 				damp = 0
 			}
-			noise.update(acc)
-			odd = f.markNear()
+			if odd = f.markNear(); odd {
+				cost = math.Inf(1) // of other pixels from now on
+			} else {
+				noise.update(acc)
+			}
 		}
 		a := acc.a
 		for i := range a {
@@ -211,6 +219,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	f.keepOdd(&m, from)
 	out.fill(&m, &inv, acc, &noise, &on, f.back)
 	out.Cut = f.cut(&m)
+	out.WallWrong = f.wallWrong
 	switch {
 	case back.quick(&on):
 		f.afterStep(&back, acc, &d)
@@ -227,7 +236,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	out.Cov.AB *= f.agree
 	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty
 	out.judge(f, &m)
-	f.remember(&m, &inv, &on, &out)
+	f.remember(&m, &inv, &on, &noise, &out)
 	return out
 }
 
@@ -247,9 +256,20 @@ func (m *model) at(p int) float64 { return m.level[p-pF0] }
 var slowly = [6]int{pFx, pFy, pFz, pLit, pBx, pBy}
 
 // remember learns the slow quantities from a fit.
-func (f *Fitter) remember(m *model, inv *matrix, on *[pCount]bool, out *Fit) {
+func (f *Fitter) remember(m *model, inv *matrix, on *[pCount]bool, noise *scatter, out *Fit) {
+	good := out.OK && !out.Cut && out.Visible > 0.7
+	f.stale++
+	if good {
+		f.stale = 0
+		f.known++
+		k := 1 / math.Min(float64(f.known), 10)
+		f.bob += k * (m.at(pF0) - f.bob)
+		if out.Visible > 0.9 || f.known < 3 {
+			f.bobNoise += k * (math.Sqrt(noise.bob) - f.bobNoise)
+		}
+	}
 	for i, k := range slowly {
-		if on[k] && out.OK && !out.Cut && out.Visible > 0.7 {
+		if on[k] && good {
 			f.slow[i].learn(m.at(k), math.Sqrt(inv[k][k]))
 		} else {
 			f.slow[i].pass()
@@ -283,6 +303,11 @@ func (m *model) apply(d *vector, r0 float64) float64 {
 	for i := range m.level {
 		m.level[i] += d[pF0+i]
 	}
+	// A distant lamp lights at least half of a ball; less, and the fit could hide
+	// all light behind the horizon, from where it does not come back.
+	if lit := &m.level[pLit-pF0]; *lit*m.lamp.sign < -2 {
+		*lit = -2 * m.lamp.sign
+	}
 	m.s = math.Min(math.Max(m.s+k*d[pBlur], math.Max(leastBlur, 0.5*m.s)), 2*m.s)
 	m.e1 = math.Min(math.Max(m.e1+k*d[pE1], -0.5), 0.5)
 	m.e2 = math.Min(math.Max(m.e2+k*d[pE2], -0.5), 0.5)
@@ -307,6 +332,9 @@ func (f *Fitter) priors(g Guess, smear float64) (p prior) {
 	for i, k := range slowly {
 		set(k, f.slow[i].mean, f.slow[i].before())
 	}
+	// Where all is lit, how far light would reach shows nowhere, and goes back to
+	// what a distant lamp does.
+	set(pLit, 0, 10)
 	set(pBlur, f.Shape.Blur, math.Max(f.Shape.UBlur, 0.02))
 	set(pE1, f.Shape.E1, math.Max(f.Shape.UE, 1e-3))
 	set(pE2, f.Shape.E2, math.Max(f.Shape.UE, 1e-3))
@@ -327,11 +355,15 @@ func (m *model) addPriors(acc *sums, p *prior, on *[pCount]bool) {
 type scatter struct {
 	bob, wall           float64
 	leastBob, leastWall float64
+	mostBob             float64 // 0: no limit
 }
 
 func (s *scatter) update(acc *sums) {
 	if acc.inN > 25 {
 		s.bob = math.Max(acc.inSum/acc.inN, s.leastBob)
+		if s.mostBob > 0 {
+			s.bob = math.Min(s.bob, s.mostBob)
+		}
 	}
 	if acc.outN > 25 {
 		s.wall = math.Max(acc.outSum/acc.outN, s.leastWall)

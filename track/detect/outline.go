@@ -53,6 +53,7 @@ type coverage struct {
 	r, u, v, l float64 // derivatives of alpha by radius, centre, smear
 	s, e1, e2  float64 // ... by blur and ellipse
 	x, y       float64 // the middle of what it sees of the bob, px from the bob's centre
+	z          float64 // the mean of a ball's normal towards the camera there
 }
 
 // cover computes the coverage at a place relative to the centre, rolling shutter
@@ -60,7 +61,7 @@ type coverage struct {
 func (o *outline) cover(x, y float64, c *coverage) {
 	*c = coverage{}
 	t := 0.5*o.share - 0.5
-	var wx, wy float64
+	var wx, wy, wz float64
 	for range o.pieces {
 		xk, yk := x-t*o.smear*o.mu, y-t*o.smear*o.mv
 		xp, yp := o.m11*xk+o.m12*yk, o.m12*xk+o.m22*yk
@@ -75,6 +76,7 @@ func (o *outline) cover(x, y float64, c *coverage) {
 		var alpha, dz float64
 		if o.piece == 0 {
 			alpha, dz = edge(z)
+			wz += alpha * o.facing(xk, yk)
 		} else {
 			nm := nx*o.mu + ny*o.mv
 			a := o.piece * nm * o.is
@@ -84,9 +86,15 @@ func (o *outline) cover(x, y float64, c *coverage) {
 			c.l += dz*(t*nm*o.is-2*o.sagitta*across/o.smear) + da*a/o.smear
 			c.s -= da * a * o.is
 			// The later (or earlier) part of the piece is what covers the pixel.
-			k := -0.5 * o.piece * (1 - alpha) * min(max(a*(1.0/3), -1), 1)
+			lean := min(max(a*(1.0/3), -1), 1)
+			k := -0.5 * o.piece * (1 - alpha) * lean
 			xk += k * o.mu
 			yk += k * o.mv
+			// Its normal varies too much over the part for the middle to do: Gauss's
+			// two points.
+			span := o.piece * (1 - (1-alpha)*math.Abs(lean)) * 0.28867513459481287
+			su, sv := span*o.mu, span*o.mv
+			wz += alpha * 0.5 * (o.facing(xk+su, yk+sv) + o.facing(xk-su, yk-sv))
 		}
 		c.alpha += alpha
 		wx += alpha * xk
@@ -102,7 +110,7 @@ func (o *outline) cover(x, y float64, c *coverage) {
 		t += o.share
 	}
 	if c.alpha > 1e-6 {
-		c.x, c.y = wx/c.alpha, wy/c.alpha
+		c.x, c.y, c.z = wx/c.alpha, wy/c.alpha, wz/c.alpha
 	} else {
 		c.x, c.y = x, y
 	}

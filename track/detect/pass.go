@@ -60,7 +60,7 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 		back, seen := wall.row(v, p.Rect.Min.X, p.W)
 		y := float32(yd) + offset
 		y2 := y * y
-		sparseRow := v * (sparse/2 + 1)
+		sparseRow := v * ((sparse+1)/2 | 1) // a step prime to sparse: no stripes
 		// Every skip-th pixel, shifted from row to row by a step that is prime to
 		// most skips, so that no direction is favoured.
 		first := u0
@@ -112,7 +112,7 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 			f.px = append(f.px, px)
 		}
 	}
-	f.back = 0
+	f.back, f.wallWrong = 0, false
 	if wall != nil {
 		f.chooseWall(m, known)
 	}
@@ -139,7 +139,9 @@ func (f *Fitter) chooseWall(m *model, known int) {
 		n := outer(0)
 		plain := f.spread()
 		outer(1)
-		use = n > 20 && f.spread() < 0.93*plain
+		left := f.spread()
+		use = n > 20 && left < 0.93*plain
+		f.wallWrong = n > 20 && left > 1.6*plain && left > 4
 	}
 	if !use {
 		for i := range f.px {
@@ -226,24 +228,21 @@ const misfit = 0.12 * 0.12
 
 // markNear marks the pixels around those that fitted badly, for the next pass.
 // Where they lie all around the outline it is the model that is wrong, and
-// nothing is marked. It tells whether any is marked that was not before.
+// nothing is marked. It tells whether the marks have changed much.
 func (f *Fitter) markNear() bool {
 	if len(f.odd) == 0 && !f.marked {
 		return false
 	}
 	var hit [sectors]bool
-	wide, fresh := 0, 0
+	wide := 0
 	for _, i := range f.odd {
 		q := &f.px[i]
 		if !hit[q.sec] {
 			hit[q.sec] = true
 			wide++
 		}
-		if !q.near {
-			fresh++
-		}
 	}
-	if len(f.odd) <= 2 || wide > sectors*5/12 {
+	if len(f.odd) <= 2 || wide > sectors*2/3 {
 		if f.marked {
 			f.marked = false
 			for i := range f.px {
@@ -256,11 +255,11 @@ func (f *Fitter) markNear() bool {
 	for _, i := range f.odd {
 		f.flagAround(int(f.px[i].at), true)
 	}
-	f.readFlags()
+	changed := f.readFlags()
 	for _, i := range f.odd {
 		f.flagAround(int(f.px[i].at), false)
 	}
-	return fresh > 2
+	return changed > 8
 }
 
 // flagAround sets the flag of the patch's pixels within oddReach of one.
@@ -274,13 +273,18 @@ func (f *Fitter) flagAround(at int, v bool) {
 	}
 }
 
-// readFlags marks the band's pixels whose flag is set.
-func (f *Fitter) readFlags() {
+// readFlags marks the band's pixels whose flag is set, and returns how many marks
+// came or went.
+func (f *Fitter) readFlags() (changed int) {
 	f.marked = true
 	for i := range f.px {
 		q := &f.px[i]
-		q.near = f.flag[q.at]
+		if now := f.flag[q.at]; now != q.near {
+			q.near = now
+			changed++
+		}
 	}
+	return changed
 }
 
 // keepOdd remembers where the outline did not agree: a rod that holds the bob
@@ -343,6 +347,13 @@ func (f *Fitter) startLevels(m *model) scatter {
 	}
 	inside, ui := mid(true)
 	outside, uo := mid(false)
+	if f.known > 2 {
+		// What covers half of the bob must not pass for the bob itself: light changes
+		// slowly.
+		room := 4 + 0.05*math.Abs(f.bob-outside-f.back) + 1.5*float64(f.stale)
+		inside = math.Min(math.Max(inside, f.bob-room), f.bob+room)
+		ui = math.Min(ui, 2*f.bobNoise*(1+0.2*float64(f.stale)))
+	}
 	m.level[0], m.level[pB0-pF0] = inside, outside
 	rough := f.rough * (inside - outside)
 	least := quantum(f.Weights) + rough*rough
@@ -350,6 +361,10 @@ func (f *Fitter) startLevels(m *model) scatter {
 	// Shading and texture swell these medians' spread; what the fit finds later
 	// may be smaller, down to a third.
 	n.leastBob, n.leastWall = math.Max(least, n.bob/9), math.Max(least, n.wall/9)
+	if f.known > 2 {
+		most := 2 * f.bobNoise * (1 + 0.2*float64(f.stale))
+		n.mostBob = math.Max(most*most, least)
+	}
 	return n
 }
 
@@ -371,10 +386,7 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		o.cover(x, y, &c)
 		beta := 1 - c.alpha
 		px, py := c.x*o.ir, c.y*o.ir
-		nz := 0.0
-		if c.alpha > 1e-3 {
-			nz = o.facing(c.x, c.y)
-		}
+		nz := c.z
 		h, lit := m.lamp.light(m.at(pFx)*px + m.at(pFy)*py + m.at(pFz)*nz + m.at(pLit))
 		front := m.at(pF0) + h
 		xb, yb := x*o.ir, y*o.ir
@@ -385,7 +397,9 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		variance := noise.bob*c.alpha + noise.wall*beta
 		steep := step * c.r * loose
 		t := res * res / (variance + steep*steep)
-		acc.cost += min(res*res, f.most)
+		if !q.near {
+			acc.cost += min(res*res, f.most)
+		}
 		w := weigh(t)
 		if t > 16 && res*res > misfit*step*step {
 			f.odd = append(f.odd, int32(i))

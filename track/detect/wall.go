@@ -33,6 +33,12 @@ func NewWall(r image.Rectangle) *Wall {
 // Useful tells whether anything of the wall has been seen.
 func (w *Wall) Useful() bool { return w != nil && w.seen > 0 }
 
+// Forget empties the wall: the camera has moved.
+func (w *Wall) Forget() {
+	clear(w.n)
+	w.seen = 0
+}
+
 // at returns the wall's blue, green and red at a pixel, and whether it was ever
 // seen.
 func (w *Wall) at(u, v int) (b, g, r float64, ok bool) {

@@ -57,7 +57,7 @@ func (b *bob) expect(frame *clip.Frame) {
 	p = b.filter.Predict(b.t)
 	b.pred = p
 	b.guess = detect.Guess{U: p.U, V: p.V, UPos: math.Max(p.Sigma(), 0.02)}
-	if b.filter.Sightings() >= 3 {
+	if b.filter.Sightings() >= 2 {
 		tau, u := f.expo.tau, f.expo.u
 		b.guess.SmearU, b.guess.SmearV = p.DU*tau, p.DV*tau
 		b.guess.USmear = math.Hypot(p.Speed()*u, math.Min(p.USpeed, p.Speed())*tau)
@@ -167,7 +167,7 @@ func (b *bob) leeway() float64 { return 0.04 * b.radius * b.radius }
 // free tells whether this frame's fit shall also fit the blur: at first,
 // and now and then while the bob is slow enough to show it.
 func (b *bob) free() bool {
-	if len(b.covers) > 0 || b.filter.Sightings() < 3 {
+	if len(b.covers) > 0 || b.filter.Sightings() < 2 {
 		return false
 	}
 	slow := math.Hypot(b.guess.SmearU, b.guess.SmearV) < 0.6*b.fitter.Shape.Blur
@@ -305,8 +305,8 @@ func (b *bob) regain(frame *clip.Frame, c detect.Candidate) {
 	b.covers = b.covers[:0]
 	b.fitter.Widen(c.R)
 	r := b.fitter.Fit(&b.patch, b.f.wall, g, nil, false)
-	if !r.OK || !b.plausible(&r) || r.Visible < 0.5 {
-		return
+	if !r.OK || !b.plausible(&r) || r.Visible < 0.6 || r.Noise > 0.2*math.Abs(r.Contrast) {
+		return // clutter
 	}
 	b.result, b.have = r, true
 	b.fitter.Learn(&r)
@@ -348,6 +348,9 @@ func (b *bob) settle(frame *clip.Frame) {
 		b.filter.Update(s.T, r.U, r.V, c)
 	}
 	b.lost = 0
+	if b.filter.Sightings() == 3 {
+		b.fitter.Relearn() // from now on the smear is known
+	}
 	if s.State == track.Seen {
 		b.good++
 		k := 1 / math.Min(float64(b.good), 30)

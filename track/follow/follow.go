@@ -64,6 +64,7 @@ type follower struct {
 	discs    []detect.Disc
 	whole    clip.Patch
 	frames   int
+	doubt    int           // frames running in which the wall's picture did not fit
 	repeated int           // sightings in frames that repeat the one before
 	problem  *NotFound     // what was wrong in the first frame
 	scouted  []*clip.Patch // later pictures, for bobs known by their motion
@@ -195,11 +196,30 @@ func (f *follower) step(ctx context.Context, frame *clip.Frame) error {
 	return nil
 }
 
+// doubtFrames is in how many frames running the wall must not fit before it is
+// taken that the camera has moved.
+const doubtFrames = 4
+
 // learnWall takes in what the windows show around the bobs.
 func (f *follower) learnWall(frame *clip.Frame) {
 	f.discs = f.discs[:0]
 	for _, b := range f.bobs {
 		f.discs = append(f.discs, b.shadow())
+	}
+	wrong := false
+	for _, b := range f.bobs {
+		wrong = wrong || b.have && b.result.WallWrong
+	}
+	if f.doubt++; !wrong {
+		f.doubt = 0
+	}
+	if f.doubt == doubtFrames {
+		// Start again with this frame.
+		frame.Patch(&f.whole, f.picture)
+		f.wall.Forget()
+		f.wall.Learn(&f.whole, f.discs, 1)
+		f.doubt = 0
+		return
 	}
 	for _, b := range f.bobs {
 		if b.lost == 0 && b.patch.W > 0 {
