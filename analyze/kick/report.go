@@ -359,7 +359,7 @@ func (l *ledger) summary(res *Result) finding.Fit {
 	}
 	for i, x := range l.laws {
 		fit.Candidates = append(fit.Candidates, finding.Candidate{
-			Name: x.law.String(), BIC: -2*x.logL + float64(x.size)*math.Log(float64(len(l.rows))), Weight: l.weighs[i],
+			Name: x.law.String(), BIC: l.bic(x), Weight: l.weighs[i],
 		})
 	}
 	if !res.Separated {

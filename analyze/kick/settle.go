@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"math"
+	"math/bits"
 	"slices"
 )
 
@@ -308,50 +309,62 @@ func (l *ledger) splitTwo() {
 	}
 }
 
-// weigh fits all mixtures of frictions and weighs them by the Bayesian
-// information criterion (G. Schwarz, Annals of Statistics 6, 1978). Frictions
-// that would give energy are left out.
+// weigh fits the mixtures of frictions and weighs them by the Bayesian
+// information criterion (G. Schwarz, Annals of Statistics 6, 1978). Mixtures of
+// fewer than two frictions are left out where the rig allows more: a friction too
+// small to be seen is still large enough to draw the kick aside by more than its
+// uncertainty. Frictions that would plainly give energy are left out.
 func (l *ledger) weigh() error {
 	l.laws, l.weighs = nil, nil
-	least := math.Inf(1)
-	var bics []float64
-	for w := viscous; w <= viscous|drag|dry; w++ {
-		if l.absent(w) {
-			continue
+	allowed := 0
+	for _, no := range l.opt.Absent {
+		if !no {
+			allowed++
 		}
-		s, ok := l.fit(w, nil, -1)
-		if !ok {
-			continue
-		}
-		bad := false
-		for j := range 3 {
-			if k := s.frictionAt(j); w.has(j) && s.beta[k] < -math.Sqrt(s.cov[k*s.size+k]*s.widen()) {
-				bad = true
+	}
+	for few := min(2, allowed); few > 0 && len(l.laws) == 0; few-- {
+		for w := viscous; w <= viscous|drag|dry; w++ {
+			if l.absent(w) || bits.OnesCount8(uint8(w)) < few {
+				continue
+			}
+			if s, ok := l.fit(w, nil, -1); ok && !s.gives() {
+				l.laws = append(l.laws, s)
 			}
 		}
-		if bad {
-			continue
-		}
-		bic := -2*s.logL + float64(s.size)*math.Log(float64(len(l.rows)))
-		l.laws, bics = append(l.laws, s), append(bics, bic)
-		least = math.Min(least, bic)
 	}
 	if len(l.laws) == 0 {
 		return errors.New("kick: no friction that takes energy explains the passes; look whether the part was touched")
 	}
+	least := math.Inf(1)
+	for _, s := range l.laws {
+		if b := l.bic(s); b < least {
+			least, l.best = b, s
+		}
+	}
 	sum := 0.0
-	for i, b := range bics {
-		w := math.Exp(-(b - least) / 2)
+	for _, s := range l.laws {
+		w := math.Exp(-(l.bic(s) - least) / 2)
 		l.weighs = append(l.weighs, w)
 		sum += w
-		if b == least {
-			l.best = l.laws[i]
-		}
 	}
 	for i := range l.weighs {
 		l.weighs[i] /= sum
 	}
 	return nil
+}
+
+func (l *ledger) bic(s *solution) float64 {
+	return -2*s.logL + float64(s.size)*math.Log(float64(len(l.rows)))
+}
+
+// gives tells whether a friction plainly gives energy.
+func (s *solution) gives() bool {
+	for j := range 3 {
+		if k := s.frictionAt(j); s.law.has(j) && s.beta[k] < -3*math.Sqrt(s.cov[k*s.size+k]*s.widen()) {
+			return true
+		}
+	}
+	return false
 }
 
 // absent tells whether a mixture holds a friction that the rig says is not there.
