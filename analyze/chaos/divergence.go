@@ -32,11 +32,11 @@ type Divergence struct {
 	// LogDistance is the middle logarithm of the distance (relative to the states' spread)
 	// at the times After, in s; Smooth is the same without the ripple of one period.
 	After, LogDistance, Smooth []float64
-	From, To             float64 // s, the straight stretch
-	Level                float64 // of the straight line at After = 0
-	Plateau              float64 // logarithm at which the distances saturate
-	Pairs                int     // states that have a near one
-	Orbits               float64 // periods in the series
+	From, To                   float64 // s, the straight stretch
+	Level                      float64 // of the straight line at After = 0
+	Plateau                    float64 // logarithm at which the distances saturate
+	Pairs                      int     // states that have a near one
+	Orbits                     float64 // periods in the series
 }
 
 // blocks is into how many stretches of time the states are divided to see how
@@ -82,6 +82,10 @@ func Diverge(v recurrence.Vectors, opt DivergenceOptions) (*Divergence, error) {
 		return d, nil
 	}
 	slope, level := line(d.After, d.Smooth, s.from, s.to)
+	if s.whole {
+		slope = s.slope
+		level = d.LogDistance[s.from] - slope*d.After[s.from]
+	}
 	d.Exponent.V, d.Level = slope, level
 	d.From, d.To = d.After[s.from], d.After[s.to]
 	// The scatter from leaving out one block after the other.
@@ -96,6 +100,10 @@ func Diverge(v recurrence.Vectors, opt DivergenceOptions) (*Divergence, error) {
 	// orbits of Lorenz's and Rössler's systems the mean error was −7 to +9 %.
 	d.Exponent.U = math.Hypot(math.Hypot(scatter, s.doubt), 0.08*slope)
 	d.Found = true
+	if s.whole {
+		d.Why = fmt.Sprintf("by the growth over one turn, by a factor of %.2g; there is no room for a longer stretch", math.Exp(slope*opt.Period*v.Step))
+		return d, nil
+	}
 	d.Why = fmt.Sprintf("straight from %.3g s to %.3g s, over a growth of the distances by %.2g", d.From, d.To, math.Exp(slope*(d.To-d.From)))
 	return d, nil
 }
@@ -154,6 +162,8 @@ func line(x, y []float64, from, to int) (slope, level float64) {
 type stretch struct {
 	from, to int
 	doubt    float64
+	whole    bool    // read over whole periods
+	slope    float64 // then
 }
 
 // straight looks for the stretch of the smoothed curve that is straight: after
@@ -181,6 +191,9 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 	if gain < 1 { // noise bends the lower end up
 		best, gain = d.longest(first, last, least, 0.4)
 	}
+	if gain < 1 && period >= 2 {
+		best, gain = d.overPeriods(period)
+	}
 	switch {
 	case d.Plateau-start < 0.7:
 		d.Why = fmt.Sprintf("near states do not part: after %.3g s their distance has grown by a factor of %.2g only", float64(n-1)*step, math.Exp(d.Plateau-start))
@@ -189,12 +202,39 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 		d.Why = "the distances of near states do not grow exponentially: the curve has no straight stretch of a period and a half and a factor of e"
 		return best, false
 	}
+	if best.whole {
+		return best, true
+	}
 	// What the slope would be in the stretch's first and second two thirds.
 	third := (best.to - best.from) / 3
 	a, _ := line(d.After, d.Smooth, best.from, best.to-third)
 	b, _ := line(d.After, d.Smooth, best.from+third, best.to)
 	best.doubt = math.Abs(a-b) / 2
 	return best, true
+}
+
+// overPeriods serves motion that is lost within a turn or two, where no straight
+// stretch can be longer: the growth over one period from each of the first times
+// (after a tenth of a period) that leads to a place still below saturation. The
+// ripple of a turn drops out of it.
+func (d *Divergence) overPeriods(period float64) (best stretch, gain float64) {
+	p := int(math.Round(period))
+	from := max(1, p/10)
+	roof := d.Plateau - 0.25*(d.Plateau-d.LogDistance[0])
+	lo, hi, sum, n := math.Inf(1), math.Inf(-1), 0.0, 0.0
+	to := from
+	for k := from; k <= p/4 && k+p < len(d.LogDistance) && d.LogDistance[k+p] < roof; k++ {
+		g := d.LogDistance[k+p] - d.LogDistance[k]
+		lo, hi = min(lo, g), max(hi, g)
+		sum += g
+		n++
+		to = k + p
+	}
+	if n == 0 {
+		return best, 0
+	}
+	t := d.After[p]
+	return stretch{from: from, to: to, whole: true, slope: sum / n / t, doubt: math.Hypot((hi-lo)/2/t, 0.12*sum/n/t)}, sum / n
 }
 
 // longest is the stretch between first and last, of least samples or more, with

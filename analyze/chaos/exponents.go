@@ -102,7 +102,16 @@ func average(ctx context.Context, rhs ode.Func, start []float64, k int, run Run,
 	}
 	growth := make([]float64, k)
 	orthonormalise(y[n:], n, growth)
-	s := ode.New(len(y), rhs, ode.Options{RelTol: tol, AbsTol: tol})
+	// Deviations, of length 1 at first, need not be as exact as the state; those of a
+	// toy hold the noise of differences, and the steps would shrink to follow it.
+	tols := make([]float64, len(y))
+	for i := range tols {
+		tols[i] = tol
+		if i >= n {
+			tols[i] = max(tol, 1e-7)
+		}
+	}
+	s := ode.New(len(y), rhs, ode.Options{RelTol: tol, AbsTols: tols})
 	t := 0.0
 	s.Reset(t, y)
 	var rows [][]float64
