@@ -270,6 +270,8 @@ type Result struct {
 	// CovKickLoss is their covariance, J².
 	CovKickLoss   float64
 	Omega, UOmega float64 // of small swings, rad/s; 0 where springs or magnets act
+
+	ledger *ledger
 }
 
 // Separation is what told kick and loss apart.
@@ -300,7 +302,7 @@ func Analyze(ctx context.Context, clips []Clip, opt Options) (*Result, error) {
 	if err := l.settle(ctx); err != nil {
 		return nil, err
 	}
-	res := &Result{Part: part, Unit: l.unit}
+	res := &Result{Part: part, Unit: l.unit, ledger: l}
 	l.report(res)
 	return res, nil
 }

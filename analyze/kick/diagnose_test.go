@@ -1,0 +1,115 @@
+package kick
+
+import (
+	"context"
+	"math/rand/v2"
+	"strings"
+	"testing"
+
+	"lodeswing/track/rig"
+)
+
+// unit is one simulated unit: factors on the gull's kick and frictions.
+type unit struct{ kick, viscous, dry float64 }
+
+// withOff is the inspector's clip: 24 s with the battery in, 6 s with it out.
+var withOff = []phase{{seconds: 24}, {seconds: 6, off: true}}
+
+func (u unit) rig(t testing.TB) *rig.Rig {
+	r := gull(t)
+	r.Coils[0].KickJ.V *= u.kick
+	r.Parts[0].Friction.Viscous.V *= u.viscous
+	r.Parts[0].Friction.Dry.V *= u.dry
+	return r
+}
+
+func (u unit) ledger(t testing.TB, rng *rand.Rand, phases []phase, start float64) *Result {
+	r := u.rig(t)
+	a, _ := filmed(t, model(t, r), rng, start*(1+0.02*rng.NormFloat64()), pictures, 0.002*rng.NormFloat64(), phases)
+	res, err := Analyze(context.Background(), []Clip{{Angle: a}}, OptionsFor(r, "swing", nil))
+	if err != nil {
+		t.Fatal(err)
+	}
+	return res
+}
+
+// seated is a unit whose kick and loss scatter by 2 % from seat to seat.
+func seated(rng *rand.Rand, kick, loss float64) unit {
+	l := loss * (1 + 0.02*rng.NormFloat64())
+	return unit{kick * (1 + 0.02*rng.NormFloat64()), l, l}
+}
+
+func reference(t testing.TB) Reference {
+	t.Helper()
+	rng := rand.New(rand.NewPCG(100, 1))
+	var good []*Result
+	for range 10 {
+		good = append(good, seated(rng, 1, 1).ledger(t, rng, withOff, 0.42))
+	}
+	ref, err := ReferenceFrom(good)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return ref
+}
+
+// Weak drives (−15 %) and more loss (+15 %) are told apart in 99 % of units, and
+// at most 1 % of good units are rejected; "measure again" counts as not told.
+// With -long 2,000 units: the table is printed.
+func TestUnitsAreToldApart(t *testing.T) {
+	ref := reference(t)
+	runs := 20
+	if *long {
+		runs = 667
+	}
+	for _, c := range []struct {
+		name       string
+		kick, loss float64
+		want       string
+	}{{"good", 1, 1, "Nothing is wrong"}, {"weak drive", 0.85, 1, "Reject: drive weak"}, {"more loss", 1, 1.15, "Reject: more loss"}} {
+		told, rejected, again := 0, 0, 0
+		for seed := range uint64(runs) {
+			rng := rand.New(rand.NewPCG(seed, 17))
+			d := Diagnose(seated(rng, c.kick, c.loss).ledger(t, rng, withOff, 0.42), ref)
+			switch {
+			case strings.HasPrefix(d.Verdict, c.want) && !strings.Contains(d.Verdict, "And:"):
+				told++
+			case !d.Told:
+				again++
+			default:
+				rejected++
+			}
+		}
+		t.Logf("%-10s of %d: told right %d, told wrong %d, measure again %d", c.name, runs, told, rejected, again)
+		if float64(told) < 0.99*float64(runs)-1 || c.name == "good" && float64(rejected) > 0.01*float64(runs) {
+			t.Errorf("%s: told right %d, wrong %d, again %d of %d", c.name, told, rejected, again, runs)
+		}
+	}
+}
+
+func TestDiagnoses(t *testing.T) {
+	ref := reference(t)
+	rng := rand.New(rand.NewPCG(7, 7))
+	steady := []phase{{seconds: 30}}
+	for _, c := range []struct {
+		name   string
+		unit   unit
+		phases []phase
+		start  float64
+		want   []string
+	}{
+		// The same steady amplitude as a good unit's, by a weak coil in a free bearing.
+		{"trap", unit{0.85, 0.85, 0.85}, withOff, 0.42, []string{"Reject: drive weak", "reference cell"}},
+		{"trap at one amplitude", unit{0.85, 0.85, 0.85}, steady, 0.42265, []string{"cannot tell", "battery out"}},
+		{"dead", unit{0, 1, 1}, withOff, 0.42, []string{"Reject: drive dead"}},
+		{"dry bearing", unit{1, 1, 9}, withOff, 0.42, []string{"bearing drag (dry)"}},
+		{"strong", unit{1.2, 1, 1}, withOff, 0.42, []string{"Nothing is wrong", "drive strong"}},
+	} {
+		d := Diagnose(c.unit.ledger(t, rng, c.phases, c.start), ref)
+		for _, w := range c.want {
+			if !strings.Contains(d.Verdict, w) {
+				t.Errorf("%s: %q lacks %q; causes %+v", c.name, d.Verdict, w, d.Causes)
+			}
+		}
+	}
+}
