@@ -126,7 +126,7 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 	least := misfit * (f0 - b0 - f.back) * (f0 - b0 - f.back)
 	most := f.most
 	halfSmear := 0.5 * o.smear * ir
-	var inSum, inN, outSum, outN, chi, n, cost float64
+	var inSum, inN, outSum, outN, chi, n, cost, edgeOver, edgeSteep float64
 	var c coverage
 	for i := range f.px {
 		q := &f.px[i]
@@ -247,13 +247,15 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		}
 		s.kept += w * info
 		n += w
+		edgeOver += w * (q2 - variance)
+		edgeSteep += w * edgeJ * edgeJ
 		w *= iv
 		chi += w * q2
 		lit *= c.alpha
 		s.add(w, res, edgeJ, step*c.l, c.alpha, lit*far, lit*nz, lit, beta, beta*far)
 	}
 	acc.inSum, acc.inN, acc.outSum, acc.outN = inSum, inN, outSum, outN
-	acc.cost = cost
+	acc.cost, acc.edgeOver, acc.edgeSteep = cost, edgeOver, edgeSteep
 	acc.chi, acc.n = chi, n+inN+outN
 	f.spreadSectors(m, acc)
 }

@@ -35,6 +35,7 @@ type Fitter struct {
 	onWall        bool    // the last fit used the wall's picture
 	known         int     // good fits so far
 	stale         int     // frames since the last good fit
+	uneven        float64 // how far the bob's outline is off an ellipse, px r.m.s.
 	bob, bobNoise float64 // usual F0 and scatter around it
 	ball          float64 // +1: its far side gets no light, as a ball's; −1: the same where light counts negative in the projection; 0: a flat thing's even shading
 	agree         float64 // mean factor by which sectors' residuals exceed white noise's
@@ -199,7 +200,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		}
 		back = m
 		shift = m.apply(&d, r0)
-		loose = math.Max(0.5*shift, 0.03)
+		loose = math.Max(math.Max(0.5*shift, 0.03), f.uneven)
 		if math.Hypot(m.cu-from[0], m.cv-from[1]) > 0.75+reach {
 			f.gather(p, wall, &m, covers, 0.5)
 			from = [2]float64{m.cu, m.cv}
@@ -236,7 +237,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	out.Cov.AB *= f.agree
 	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty
 	out.judge(f, &m)
-	f.remember(&m, &inv, &on, &noise, &out)
+	f.remember(&m, &inv, &on, &noise, acc, &out)
 	return out
 }
 
@@ -256,7 +257,7 @@ func (m *model) at(p int) float64 { return m.level[p-pF0] }
 var slowly = [6]int{pFx, pFy, pFz, pLit, pBx, pBy}
 
 // remember learns the slow quantities from a fit.
-func (f *Fitter) remember(m *model, inv *matrix, on *[pCount]bool, noise *scatter, out *Fit) {
+func (f *Fitter) remember(m *model, inv *matrix, on *[pCount]bool, noise *scatter, acc *sums, out *Fit) {
 	good := out.OK && !out.Cut && out.Visible > 0.7
 	f.stale++
 	if good {
@@ -264,6 +265,10 @@ func (f *Fitter) remember(m *model, inv *matrix, on *[pCount]bool, noise *scatte
 		f.known++
 		k := 1 / math.Min(float64(f.known), 10)
 		f.bob += k * (m.at(pF0) - f.bob)
+		if acc.edgeSteep > 0 {
+			over := math.Sqrt(math.Max(acc.edgeOver/acc.edgeSteep, 0))
+			f.uneven += k * (math.Min(over, 0.05*m.r) - f.uneven)
+		}
 		if out.Visible > 0.9 || f.known < 3 {
 			f.bobNoise += k * (math.Sqrt(noise.bob) - f.bobNoise)
 		}
@@ -372,14 +377,15 @@ func (s *scatter) update(acc *sums) {
 
 // sums is what one pass over the pixels adds up.
 type sums struct {
-	a            matrix
-	g            vector
-	chi, n       float64
-	cost         float64 // residuals², each at most f.most: what a step must not raise
-	inSum, inN   float64 // residuals² and pixels well inside the outline
-	outSum, outN float64
-	kept, all    [sectors]float64 // information on the outline that agrees, and all of it
-	score        [sectors]vector  // gradient by sector, for assess
+	a                   matrix
+	g                   vector
+	chi, n              float64
+	cost                float64 // residuals², each at most f.most: what a step must not raise
+	inSum, inN          float64 // residuals² and pixels well inside the outline
+	outSum, outN        float64
+	edgeOver, edgeSteep float64          // at the outline: residuals² beyond the noise, and the steepness² per px
+	kept, all           [sectors]float64 // information on the outline that agrees, and all of it
+	score               [sectors]vector  // gradient by sector, for assess
 }
 
 // fill writes what the last step found.

@@ -419,6 +419,9 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		} else if c.alpha < 0.03 {
 			acc.outSum += w * res * res
 			acc.outN += w
+		} else {
+			acc.edgeOver += w * (res*res - variance)
+			acc.edgeSteep += w * step * step * c.r * c.r
 		}
 		acc.n += w
 		w /= variance

@@ -107,11 +107,11 @@ func (s *Search) spread(k int, want bool) {
 }
 
 // ChooseStep returns the step that leaves a bob of the least expected radius at
-// least three cells of radius.
+// least four cells of radius.
 func (s *Search) ChooseStep(area image.Rectangle) int {
 	step := 1
 	if s.RMin > 0 {
-		step = int(s.RMin / 3)
+		step = int(s.RMin / 4)
 	} else {
 		step = min(area.Dx(), area.Dy()) / 300
 	}
