@@ -53,6 +53,10 @@ func kicks(ctx context.Context, w *work) error {
 		}
 		w.kicks = append(w.kicks, res)
 		w.rec.Findings = append(w.rec.Findings, res.Findings...)
+		if ref, ok := kick.ReferenceOf(w.rig, part, res); ok && !clips[0].Off {
+			d := kick.Diagnose(res, ref)
+			w.rec.Findings = append(w.rec.Findings, d.Finding(part, ref.From))
+		}
 		w.rec.Fits = append(w.rec.Fits, res.Fits...)
 		w.rec.Curves = append(w.rec.Curves, res.Curves...)
 		w.caution(part, res.Cautions...)

@@ -133,8 +133,7 @@ func ReferenceOf(r *rig.Rig, part string, res *Result) (ref Reference, ok bool) 
 }
 
 // ReferenceFrom makes a reference of the ledgers of units known to be good, whose
-// clips separate kick and loss. Two units at least; scatter is theirs, and not
-// below UsualScatter where they are fewer than ten.
+// clips separate kick and loss, two at least.
 func ReferenceFrom(good []*Result) (Reference, error) {
 	var amp []float64
 	var use []*Result
@@ -148,7 +147,7 @@ func ReferenceFrom(good []*Result) (Reference, error) {
 	}
 	slices.Sort(amp)
 	ref := Reference{Amplitude: amp[len(amp)/2], SameRig: true, From: fmt.Sprintf("%d reference units", len(use))}
-	of := func(least float64, x func(r *Result) float64) Quantity {
+	of := func(usual float64, x func(r *Result) float64) Quantity {
 		n, sum, sum2 := float64(len(use)), 0.0, 0.0
 		for _, r := range use {
 			v := x(r)
@@ -156,9 +155,8 @@ func ReferenceFrom(good []*Result) (Reference, error) {
 		}
 		m := sum / n
 		s := math.Sqrt(math.Max(0, sum2/n-m*m)*n/(n-1)) / math.Abs(m)
-		if n < 10 {
-			s = math.Max(s, least)
-		}
+		// Few units tell their scatter badly: the usual one counts as ten more.
+		s = math.Sqrt((10*usual*usual + (n-1)*s*s) / (10 + n - 1))
 		return Quantity{m, s / math.Sqrt(n), s}
 	}
 	ref.Kick = of(UsualScatter, func(r *Result) float64 { return r.At(ref.Amplitude).Kick })
@@ -189,6 +187,21 @@ type Diagnosis struct {
 	DriveGood, LossGood float64
 }
 
+// Finding puts a diagnosis in a record: the verdict, and each cause with its
+// probability and evidence.
+func (d *Diagnosis) Finding(part, from string) finding.Finding {
+	f := finding.Finding{
+		Key: "kick.diagnosis", Subject: part, Name: "Diagnosis", Kind: finding.Statement, Unit: "1", Text: d.Verdict,
+		Method: "kick, loss and rate set against " + from + ", by Bayes's rule",
+	}
+	for _, c := range d.Causes {
+		if c.Probability >= 0.01 {
+			f.Text += fmt.Sprintf(" [%s: %s]", c.Name, chance(c.Probability))
+		}
+	}
+	return f
+}
+
 const (
 	// tolerated is the relative change of kick or loss from which it is a fault:
 	// half of the 15 % of design section 6, since a verdict is wanted for those.
@@ -197,7 +210,7 @@ const (
 	// units with a given fault before anything is measured (common practice, no source).
 	wide, rare = 0.2, 0.15
 	// certain is the probability from which a cause is called the cause.
-	certain = 0.9
+	certain = 0.8
 	// rateTolerated is the relative change of the rate of swinging that mass or length
 	// must have changed for.
 	rateTolerated = 0.01

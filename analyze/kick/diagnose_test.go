@@ -43,7 +43,7 @@ func reference(t testing.TB) Reference {
 	t.Helper()
 	rng := rand.New(rand.NewPCG(100, 1))
 	var good []*Result
-	for range 10 {
+	for range 20 {
 		good = append(good, seated(rng, 1, 1).ledger(t, rng, withOff, 0.42))
 	}
 	ref, err := ReferenceFrom(good)
@@ -58,7 +58,7 @@ func reference(t testing.TB) Reference {
 // With -long 2,000 units: the table is printed.
 func TestUnitsAreToldApart(t *testing.T) {
 	ref := reference(t)
-	runs := 20
+	runs := 16
 	if *long {
 		runs = 667
 	}

@@ -152,7 +152,7 @@ func (l *ledger) fit(w law, extras []extra, sigma float64) (*solution, bool) {
 	const golden = 0.6180339887498949
 	a, b := hi-golden*(hi-lo), lo+golden*(hi-lo)
 	fa, fb := at(a), at(b)
-	for range 18 {
+	for range 12 {
 		if fa == nil || fb == nil {
 			break
 		}
