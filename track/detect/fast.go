@@ -115,6 +115,7 @@ func (m *model) quick(on *[pCount]bool) bool {
 // passQuick does what pass does, for models that are quick.
 func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, from [2]float64) {
 	f.odd = f.odd[:0]
+	f.around = [sectors]ringMean{}
 	sec := &f.sec
 	*sec = [sectors]sectorSums{}
 	du, dv := m.cu-from[0], m.cv-from[1]
@@ -188,6 +189,8 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		back := float64(q.wall) + b0 + bx*x + by*y
 		if d < -reach {
 			res := float64(q.v) - back
+			f.around[q.sec].sum += res
+			f.around[q.sec].n++
 			r2 := res * res
 			if !q.near {
 				cost += min(r2, most)

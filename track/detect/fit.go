@@ -50,6 +50,7 @@ type Fitter struct {
 	flagW, flagU, flagV int     // the patch's width and corner
 	marked              bool    // some pixels are near odd ones
 	sec                 [sectors]sectorSums
+	around              [sectors]ringMean // residuals outside the outline in the last pass
 	sums                [2]sums
 	most                float64    // a residual² counts no more than this in a step's cost
 	oddAt               [][2]int16 // places that fitted badly in the last frame, px from the middle
@@ -177,7 +178,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 			if damp /= 8; damp < 1e-3 {
 				damp = 0
 			}
-			if odd = f.markNear(); odd {
+			if odd = f.markNear(m.at(pF0) - m.at(pB0) - f.back); odd {
 				cost = math.Inf(1) // of other pixels from now on
 			} else {
 				noise.update(acc)

@@ -2,6 +2,7 @@ package detect
 
 import (
 	"math"
+	"math/bits"
 
 	"lodeswing/track/clip"
 )
@@ -229,8 +230,9 @@ const misfit = 0.12 * 0.12
 // markNear marks the pixels around those that fitted badly, for the next pass.
 // Where they lie all around the outline it is the model that is wrong, and
 // nothing is marked. It tells whether the marks have changed much.
-func (f *Fitter) markNear() bool {
-	if len(f.odd) == 0 && !f.marked {
+func (f *Fitter) markNear(contrast float64) bool {
+	dim := f.dimSectors(contrast)
+	if len(f.odd) == 0 && !f.marked && dim == 0 {
 		return false
 	}
 	var hit [sectors]bool
@@ -242,24 +244,56 @@ func (f *Fitter) markNear() bool {
 			wide++
 		}
 	}
-	if len(f.odd) <= 2 || wide > sectors*2/3 {
-		if f.marked {
-			f.marked = false
-			for i := range f.px {
-				f.px[i].near = false
-			}
-			return true
-		}
-		return false
+	odd := f.odd
+	if len(odd) <= 2 || wide > sectors*2/3 {
+		odd = nil
 	}
-	for _, i := range f.odd {
+	for _, i := range odd {
 		f.flagAround(int(f.px[i].at), true)
 	}
-	changed := f.readFlags()
-	for _, i := range f.odd {
+	changed := f.readFlags(dim)
+	for _, i := range odd {
 		f.flagAround(int(f.px[i].at), false)
 	}
+	f.marked = len(odd) > 0 || dim != 0
 	return changed > 8
+}
+
+// ringMean sums up residuals outside the outline in one sector.
+type ringMean struct{ sum, n float64 }
+
+// dimSectors returns, as bits, the sectors outside of which the wall is darker or
+// lighter than the model has it over a stretch of the outline: a shadow that the
+// bob casts close by. The outline cannot be trusted there.
+func (f *Fitter) dimSectors(contrast float64) (dim uint32) {
+	const run = 4
+	limit := 0.05 * math.Abs(contrast)
+	var sign [sectors]int
+	for k := range f.around {
+		if a := &f.around[k]; a.n > 3 {
+			switch m := a.sum / a.n; {
+			case m > limit:
+				sign[k] = 1
+			case m < -limit:
+				sign[k] = -1
+			}
+		}
+	}
+	for k := range sectors {
+		same := sign[k] != 0
+		for l := 1; l < run && same; l++ {
+			same = sign[(k+l)%sectors] == sign[k]
+		}
+		if same {
+			for l := -1; l <= run; l++ {
+				dim |= 1 << ((k + l + sectors) % sectors)
+			}
+		}
+	}
+	if bits.OnesCount32(dim) > sectors*2/3 {
+		return 0 // that is no shadow but a wrong level
+	}
+	return dim
 }
 
 // flagAround sets the flag of the patch's pixels within oddReach of one.
@@ -273,13 +307,13 @@ func (f *Fitter) flagAround(at int, v bool) {
 	}
 }
 
-// readFlags marks the band's pixels whose flag is set, and returns how many marks
-// came or went.
-func (f *Fitter) readFlags() (changed int) {
+// readFlags marks the band's pixels whose flag is set or whose sector is dim, and
+// returns how many marks came or went.
+func (f *Fitter) readFlags(dim uint32) (changed int) {
 	f.marked = true
 	for i := range f.px {
 		q := &f.px[i]
-		if now := f.flag[q.at]; now != q.near {
+		if now := f.flag[q.at] || dim>>q.sec&1 != 0; now != q.near {
 			q.near = now
 			changed++
 		}
@@ -316,7 +350,7 @@ func (f *Fitter) recallOdd(m *model) {
 		}
 	}
 	mark(true)
-	f.readFlags()
+	f.readFlags(0)
 	mark(false)
 }
 
@@ -376,6 +410,7 @@ func quantum(w [3]float64) float64 {
 // pass goes once over the pixels: residuals, weights, normal equations.
 func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [2]float64, on *[pCount]bool) {
 	f.odd = f.odd[:0]
+	f.around = [sectors]ringMean{}
 	du, dv := m.cu-from[0], m.cv-from[1]
 	o := m.outline()
 	var c coverage
@@ -394,6 +429,10 @@ func (f *Fitter) pass(m *model, acc *sums, noise *scatter, loose float64, from [
 		step := front - back
 		res := float64(q.v) - back - c.alpha*step
 
+		if c.alpha < 0.01 {
+			f.around[q.sec].sum += res
+			f.around[q.sec].n++
+		}
 		variance := noise.bob*c.alpha + noise.wall*beta
 		steep := step * c.r * loose
 		t := res * res / (variance + steep*steep)
