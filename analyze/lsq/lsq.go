@@ -67,6 +67,9 @@ type Options struct {
 	TolG float64
 	// Radius is the first trust region over the scaled length of the start. 0: 1.
 	Radius float64
+	// Once: do not try again with other dampings when the search does not converge or
+	// a parameter loses its effect on the way.
+	Once bool
 	// DiffStep is the relative step of the differences. 0: 6e-6, the cube root of
 	// the machine precision; larger for residuals that carry a numerical noise
 	// of their own, such as those of an integrator with a loose tolerance.

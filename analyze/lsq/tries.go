@@ -40,7 +40,7 @@ func (s *search) try() error {
 		if best == nil || s.cost < best.cost {
 			best = &end{slices.Clone(s.p), slices.Clone(s.r), s.cost, s.done, s.why, d}
 		}
-		if s.done && !lost {
+		if s.done && !lost || s.opt.Once {
 			break
 		}
 	}

@@ -92,7 +92,7 @@ func (f *fit) add(ctx context.Context, hz, chance float64) error {
 	f.hold = append(hold, false, false, true, false, false, false)
 	f.p = p
 	f.found = append(slices.Clone(f.found), Line{FalseAlarm: chance})
-	return f.solve(ctx)
+	return f.solve(ctx, 1e-6) // near enough to find the next line
 }
 
 // start estimates amplitudes and decay at hz from the first and second half.
@@ -129,8 +129,9 @@ func (f *fit) start(hz float64) (a, b, decay float64) {
 	return a * grow, b * grow, decay
 }
 
-// solve fits all lines and the constant together.
-func (f *fit) solve(ctx context.Context) error {
+// solve fits all lines and the constant together. A motion that no lines fit does
+// not converge; what is then found is no worse than what was there.
+func (f *fit) solve(ctx context.Context, tolF float64) error {
 	T, n, m := f.d.span, len(f.p), len(f.d.t)
 	lo, hi, scale := make([]float64, n), make([]float64, n), make([]float64, n)
 	for i := range lo {
@@ -161,7 +162,7 @@ func (f *fit) solve(ctx context.Context) error {
 			return nil
 		},
 		Jacobian: func(p, j []float64) error { f.slopes(p, root, j); return nil },
-	}, f.p, lsq.Options{TolF: 1e-12, MaxIterations: 100})
+	}, f.p, lsq.Options{TolF: tolF, MaxIterations: 40, Once: true})
 	if err != nil {
 		return fmt.Errorf("spectrum: the fit of %d lines failed: %w", f.lines(), err)
 	}
@@ -212,7 +213,7 @@ func (f *fit) simplify(ctx context.Context) error {
 	for l := range f.lines() {
 		f.hold[perLine*l+2] = false
 	}
-	if err := f.solve(ctx); err != nil {
+	if err := f.solve(ctx, 1e-8); err != nil {
 		return err
 	}
 	if !f.sum.Converged || f.sum.Rank < len(f.p) {
@@ -236,7 +237,7 @@ func (f *fit) simplify(ctx context.Context) error {
 			f.p[q+3], f.p[q+4], _ = f.startAll(l)
 		}
 	}
-	return f.solve(ctx)
+	return f.solve(ctx, 1e-14)
 }
 
 func (l *Line) setUnseen(i int, u float64) {
@@ -355,14 +356,22 @@ func (f *fit) report() []Line {
 }
 
 // cluster makes one unsteady line of every group of three or more lines nearer
-// than 3/duration to the next, and lets weak companions beside a line that
+// than 3/duration and their widths to the next, or of two that the clip cannot
+// part, and lets weak companions beside a line that
 // decays or drifts go with it.
 func (f *fit) cluster(lines []Line) []Line {
 	slices.SortFunc(lines, func(a, b Line) int { return cmp.Compare(a.Frequency, b.Frequency) })
 	var out []Line
 	for i := 0; i < len(lines); {
 		j := i + 1
-		for j < len(lines) && lines[j].Frequency-lines[j-1].Frequency < 3/f.d.span {
+		merged := false // two nearer than the clip can part
+		for j < len(lines) {
+			apart := lines[j].Frequency - lines[j-1].Frequency
+			widths := (math.Abs(lines[j].Decay) + math.Abs(lines[j-1].Decay)) / math.Pi
+			if apart > 3/f.d.span+widths {
+				break
+			}
+			merged = merged || apart < 1/f.d.span
 			j++
 		}
 		group := lines[i:j]
@@ -384,7 +393,7 @@ func (f *fit) cluster(lines []Line) []Line {
 		case len(rest) < len(group) && len(rest) == 1:
 			top.Unsteady = true
 			out = append(out, f.broad(top, group))
-		case len(rest) >= 3:
+		case len(rest) >= 3 || merged:
 			out = append(out, f.broad(top, group))
 		default:
 			out = append(out, rest...)
