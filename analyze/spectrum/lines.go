@@ -402,19 +402,22 @@ func (f *fit) cluster(lines []Line) []Line {
 	return out
 }
 
-// broad makes one unsteady line of a group.
+// broad makes one unsteady line of a group: its frequency is the centre of the
+// data's own power over the group's band, its uncertainty that power's half width.
 func (f *fit) broad(top Line, group []Line) Line {
+	df := 1 / f.d.span / 4
+	lo, hi := group[0].Frequency-1.5/f.d.span, group[len(group)-1].Frequency+1.5/f.d.span
+	psd := f.d.periodogram(f.d.y, Boxcar, df, int(hi/df)+2).psd
 	var p, m1, m2 float64
-	for _, l := range group {
-		w := math.Pow(10, l.LevelDB/10)
-		p += w
-		m1 += w * l.Frequency
-		m2 += w * l.Frequency * l.Frequency
+	for k := max(1, int(lo/df)); k < len(psd); k++ {
+		hz := float64(k) * df
+		p += psd[k]
+		m1 += psd[k] * hz
+		m2 += psd[k] * hz * hz
 	}
 	m1 /= p
-	width := math.Sqrt(max(0, m2/p-m1*m1))
 	top.Frequency = m1
-	top.UFrequency = math.Hypot(max(width, 0.5/f.d.span), top.UFrequency)
+	top.UFrequency = max(math.Sqrt(max(0, m2/p-m1*m1)), 0.5/f.d.span)
 	top.Unsteady, top.Drift = true, 0
 	return top
 }
