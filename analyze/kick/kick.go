@@ -55,6 +55,8 @@ type Options struct {
 	Absent [3]bool
 	// Sensed is the least rate in rad/s at the lowest point that fires the coil; 0: unknown.
 	Sensed float64
+	// PushOver is the angle from the lowest point over which the coil pushes, rad.
+	PushOver float64
 	// Coil is how people call the coil that kicks.
 	Coil string
 	// Battery, when set, gives the charge in A·s that one kick draws at an amplitude
@@ -122,6 +124,11 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 	for i := range r.Coils {
 		if k := &r.Coils[i]; k.Part == part || k.Part == "" {
 			o.Coil, o.Sensed, o.Capacity, o.Supply = k.Name, k.SensedRadS.Or(0), k.CapacityAs.Or(0), k.SupplyV.Or(0)
+			for _, m := range r.Magnets {
+				if at := rig.XYZ(m.AtM); m.Part == part && k.WidthM.Set && math.Hypot(at[0], at[2]) > 0 {
+					o.PushOver = k.WidthM.V / math.Hypot(at[0], at[2])
+				}
+			}
 			if clip != nil && clip.SupplyV.Set {
 				o.Supply = clip.SupplyV.V
 			}

@@ -305,12 +305,10 @@ func (l *ledger) enter() {
 			r.vFrom, r.vTo = sq(ga*tp[i-1].u), sq(gb*tp[i].u)
 			r.lean = ga - gb
 			r.speed = math.Sqrt(math.Max(0, (r.before+r.after)/l.inertia))
-			for k, w := range [2]struct{ end, e float64 }{{a, r.before}, {b, r.after}} {
-				_ = k
-				x := l.frictions(w.end, w.e)
-				for j := range r.work {
-					r.work[j] += x[j]
-				}
+			in := l.frictions(a, r.before, r.before, 0)
+			out := l.frictions(b, r.after, r.before, l.opt.PushOver)
+			for j := range r.work {
+				r.work[j] = in[j] + out[j]
 			}
 			last = i
 			l.rows = append(l.rows, r)
@@ -335,13 +333,18 @@ func (l *ledger) enter() {
 }
 
 // frictions is the work of unit frictions (viscous 1 N·m·s, drag 1 N·m·s², dry
-// 1 N·m) between the lowest point and a turning point.
-func (l *ledger) frictions(end, e float64) (w [3]float64) {
+// 1 N·m) between the lowest point and a turning point of energy e. Over the first
+// push rad from the lowest point the energy rises from e0 to e.
+func (l *ledger) frictions(end, e, e0, push float64) (w [3]float64) {
 	const n = 24 // midpoint rule in the eccentric angle, exact for a small swing
 	for i := range n {
 		phi := (float64(i) + 0.5) * math.Pi / 2 / n
 		s, c := math.Sincos(phi)
-		v2 := 2 * math.Max(0, e-l.energy(end*s)) / l.inertia
+		here := e
+		if x := math.Abs(end * s); x < push {
+			here = e0 + (e-e0)*x/push
+		}
+		v2 := 2 * math.Max(0, here-l.energy(end*s)) / l.inertia
 		d := math.Abs(end) * c * math.Pi / 2 / n
 		w[0] += math.Sqrt(v2) * d
 		w[1] += v2 * d

@@ -40,7 +40,7 @@ func (s *solution) lossVector(work [3]float64) []float64 {
 // workAt is the work of unit frictions over a pass at an amplitude.
 func (l *ledger) workAt(amplitude float64) (w [3]float64) {
 	for _, end := range []float64{amplitude, -amplitude} {
-		x := l.frictions(end, l.energy(end))
+		x := l.frictions(end, l.energy(end), 0, 0)
 		for j := range w {
 			w[j] += x[j]
 		}

@@ -175,6 +175,9 @@ func (l *ledger) perDay(res *Result) {
 	}
 	f := finding.Normal("kick.energy_per_day", l.part(), "Mechanical energy that the coil gives per day", kick.Value*perDay, kick.U*perDay, "J", "kick times kicks per day, as filmed")
 	f.Cautions = kick.Cautions
+	for _, s := range kick.Budget {
+		f.Budget = append(f.Budget, finding.Share{Source: s.Source, U: s.U * perDay})
+	}
 	res.Findings = append(res.Findings, f)
 	if l.opt.Battery == nil {
 		return

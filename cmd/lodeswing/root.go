@@ -46,6 +46,7 @@ Exit status: 0 done; 1 failed; 2 wrong use; 3 done, but the verdict is reject.`,
 		targetCommand(),
 		filmCommand(),
 		simulateCommand(),
+		compareCommand(),
 	)
 	return root
 }
