@@ -1,6 +1,9 @@
 package match
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // triangle brings the rows × cols matrix a (row-major) to upper triangular form by
 // Householder reflections. The last column is the right-hand side and is carried
@@ -89,6 +92,7 @@ type system struct {
 	np    int
 	links [][]link  // by clip and segment
 	top   []float64 // np rows of [R | rhs] for the parameters
+	plain []float64 // the same without bounds
 	scale []float64 // column lengths of the parameters, for damping
 	jac   [][]block // by clip and segment, kept when asked for
 	step  []float64 // of the parameters
@@ -117,12 +121,6 @@ func (f *fitter) solveChain(p []float64, lambda float64, keep bool) *system {
 		blocks[c] = make([]block, len(k.segments))
 		for i := range k.segments {
 			blocks[c][i] = rows.block(&k.segments[i])
-			b := &blocks[c][i]
-			for r := range b.rows {
-				for j, x := range b.jp[r*np : (r+1)*np] {
-					s.scale[j] += x * x
-				}
-			}
 		}
 		if keep {
 			s.jac[c] = blocks[c]
@@ -179,9 +177,13 @@ func (f *fitter) solveChain(p []float64, lambda float64, keep bool) *system {
 					size[v] += x[v] * x[v]
 				}
 			}
+			damp := lambda // in one motion the first state leads all others
+			if i > 0 && !k.segments[i-1].broken && f.oneMotion {
+				damp = 0
+			}
 			for v := range n {
 				x := row()
-				x[v] = lambda*math.Sqrt(size[v]) + 1e-9*math.Sqrt(size[0]+1)
+				x[v] = damp*math.Sqrt(size[v]) + 1e-9*math.Sqrt(size[0]+1)
 			}
 			if math.IsInf(f.bind, 1) { // nothing tells a turn about the own axis yet
 				for _, v := range own {
@@ -214,6 +216,14 @@ func (f *fitter) solveChain(p []float64, lambda float64, keep bool) *system {
 			}
 		}
 	}
+	// Damping is by what all stretches together feel of a parameter.
+	top = shrink(top, np)
+	for j := range np {
+		s.scale[j] = 0
+		for i := range j + 1 {
+			s.scale[j] += top[i*(np+1)+j] * top[i*(np+1)+j]
+		}
+	}
 	for j := range f.params {
 		q := &f.params[j]
 		x := make([]float64, np+1)
@@ -234,15 +244,40 @@ func (f *fitter) solveChain(p []float64, lambda float64, keep bool) *system {
 			top = append(top, x...)
 		}
 	}
-	s.top = shrink(top, np)
-	s.step = make([]float64, np)
-	for j := range np {
-		s.step[j] = s.top[j*(np+1)+np]
-	}
-	back(s.top, np+1, np, s.step)
-	for j := range f.params {
-		if f.params[j].held {
-			s.step[j] = 0
+	s.plain = shrink(slices.Clone(top), np)
+	// A step that would leave a parameter's bounds is sought anew with that
+	// parameter set down on the bound.
+	rows := slices.Clone(s.plain)
+	pinned := make([]bool, np)
+	for {
+		s.top = shrink(slices.Clone(rows), np)
+		s.step = make([]float64, np)
+		for j := range np {
+			s.step[j] = s.top[j*(np+1)+np]
+		}
+		back(s.top, np+1, np, s.step)
+		again := false
+		for j := range f.params {
+			q := &f.params[j]
+			if q.held {
+				s.step[j] = 0
+				continue
+			}
+			d := q.inside(p[j], s.step[j])
+			if d == s.step[j] || pinned[j] {
+				continue
+			}
+			for r := 0; r < len(rows); r += np + 1 {
+				rows[r+np] -= rows[r+j] * d
+				rows[r+j] = 0
+			}
+			x := make([]float64, np+1)
+			x[j] = math.Sqrt(s.scale[j]) + 1e-10
+			x[np] = x[j] * d
+			rows, pinned[j], again = append(rows, x...), true, true
+		}
+		if !again {
+			break
 		}
 	}
 	for c := range f.clips {

@@ -91,13 +91,16 @@ type fitter struct {
 	bind        float64 // rad, how far the ends of stretches may be apart; +Inf: they are free
 	tol         float64
 	exact       bool // all derivatives by central differences
-	scatter     float64
-	chi2        float64
-	converged   bool
-	why         string
-	cautions    []string
-	final       *system
-	growth      float64 // 1/s, of small deviations
+	// oneMotion: each stretch begins exactly where the one before it ended. A
+	// regular motion is brought to its optimum so; a chaotic one cannot be.
+	oneMotion bool
+	scatter   float64
+	chi2      float64
+	converged bool
+	why       string
+	cautions  []string
+	final     *system
+	growth    float64 // 1/s, of small deviations
 }
 
 func prepare(clips []Clip, r *rig.Rig, opt Options) (*fitter, error) {

@@ -40,7 +40,7 @@ func (f *fitter) fit(ctx context.Context) error {
 		return err
 	}
 	f.reweigh()
-	if f.rms() > hopeless {
+	if s := f.rms(); s > plainMisfit && s > wrongShare*f.size() { // not worth the last, exact steps
 		if err := f.shootAll(ctx, f.values(), true, true); err != nil {
 			return err
 		}
@@ -54,10 +54,6 @@ func (f *fitter) fit(ctx context.Context) error {
 	f.opt.log("final: r.m.s. residual %.6g, %s", f.rms(), f.why)
 	return nil
 }
-
-// hopeless is the size of residuals, in units of the noise, from which the last,
-// exact steps are not worth their time.
-const hopeless = 50
 
 // approach brings free stretches together into one motion near the optimum.
 func (f *fitter) approach(ctx context.Context) error {
@@ -96,7 +92,11 @@ func (f *fitter) approach(ctx context.Context) error {
 	f.regauge()
 	f.bind = math.Max(f.gaps(), 1e-6)
 	by := 10.0
-	for f.bind > finalBind {
+	least := finalBind
+	if f.regular() {
+		least = looseBind
+	}
+	for f.bind > least {
 		f.bind /= by
 		if f.bind < 10*finalBind {
 			f.bind = finalBind
@@ -109,12 +109,36 @@ func (f *fitter) approach(ctx context.Context) error {
 			by = 100
 		}
 	}
+	if f.regular() {
+		f.bind, f.oneMotion, f.exact = finalBind, true, true
+		if err := f.descend(ctx, 60, 1e-3, true); err != nil {
+			return err
+		}
+		f.exact = false
+		f.opt.log("as one motion: r.m.s. residual %.4g", f.rms())
+	}
 	return f.descend(ctx, 30, 1e-4, false)
 }
 
 // finalBind is how far the ends of stretches may be apart in the end, rad: far
 // below what a picture shows.
 const finalBind = 1e-8
+
+// looseBind is how near the ends of a regular motion's stretches are brought, rad,
+// before they are made one.
+const looseBind = 1e-4
+
+// regular tells whether a whole clip may be computed as one motion: small
+// deviations grow by no more than a few hundred over it.
+func (f *fitter) regular() bool {
+	for c := range f.clips {
+		k := &f.clips[c]
+		if f.growth*(k.obs[len(k.obs)-1].t-k.obs[0].t) > 6 {
+			return false
+		}
+	}
+	return true
+}
 
 // typical finds the motion's usual speed and size.
 func (f *fitter) typical() {
@@ -228,7 +252,7 @@ func (f *fitter) regauge() {
 // are fresh in each step, else only in the first.
 func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh bool) error {
 	p := f.values()
-	if err := f.shootAll(ctx, p, true, false); err != nil {
+	if err := f.shootAll(ctx, p, true, fresh); err != nil {
 		return err
 	}
 	now, _, _ := f.merit(p)
@@ -251,6 +275,7 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 				for i := range k.segments {
 					g := &k.segments[i]
 					old[c][i] = append([]float64(nil), g.y...)
+					g.swap()
 					k.model.Displace(g.y, f.capped(s.moves[c][i]))
 					k.model.Normalise(g.y)
 				}
@@ -276,6 +301,7 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 			for c := range f.clips {
 				for i := range f.clips[c].segments {
 					copy(f.clips[c].segments[i].y, old[c][i])
+					f.clips[c].segments[i].swap()
 				}
 			}
 			if next-now < 1e-9*now { // nothing more to gain
@@ -385,8 +411,11 @@ func (f *fitter) polish(ctx context.Context) error {
 		}
 		f.final = f.solveChain(p, 0, true)
 		fall = f.final.foreseen()
-		if f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall); fall < 0.1 {
-			f.converged = true // a tenth of a standard uncertainty and a half
+		if f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall); fall < 0.5 {
+			f.converged = true
+			if fall > 0.1 {
+				f.cautions = append(f.cautions, "The matching settled only to within half a standard uncertainty of its numbers.")
+			}
 		}
 	}
 	f.chi2, _, _ = f.merit(p)
@@ -400,11 +429,25 @@ func (s *system) foreseen() float64 {
 	for i := range s.np {
 		x := 0.0
 		for j := i; j < s.np; j++ {
-			x += s.top[i*(s.np+1)+j] * s.step[j]
+			x += s.plain[i*(s.np+1)+j] * s.step[j]
 		}
 		sum += x * x
 	}
 	return sum
+}
+
+// inside is the step from x by d, shortened where it would leave the bounds, or
+// change a number that is surely above zero by more than a factor of four.
+func (q *param) inside(x, d float64) float64 {
+	y := x + d
+	if q.positive && x > 0 {
+		y = math.Min(math.Max(y, x/4), 4*x)
+	}
+	y = math.Min(math.Max(y, q.lo), q.hi)
+	if y == x+d {
+		return d
+	}
+	return y - x
 }
 
 // stepped is p moved by step, kept inside the bounds.
@@ -412,10 +455,7 @@ func (f *fitter) stepped(p, step []float64) []float64 {
 	out := make([]float64, len(p))
 	for j := range p {
 		q := &f.params[j]
-		x := p[j] + step[j]
-		if q.positive && p[j] > 0 {
-			x = math.Min(math.Max(x, p[j]/4), 4*p[j])
-		}
+		x := p[j] + q.inside(p[j], step[j])
 		out[j] = math.Min(math.Max(x, q.lo), q.hi)
 	}
 	return out

@@ -28,6 +28,11 @@ type judgement struct {
 func (f *fitter) judge() (*judgement, error) {
 	np := len(f.params)
 	j := &judgement{np: np}
+	for q := range f.params {
+		if p := &f.params[q]; p.gauge {
+			p.u = math.Abs(p.value)
+		}
+	}
 	var jac, res []float64
 	var moment []int
 	base := 0

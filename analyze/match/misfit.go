@@ -10,8 +10,36 @@ import (
 	"lodeswing/analyze/finding"
 )
 
-// A fit whose residuals are this many times the pictures' noise does not fit.
-const plainMisfit = 3.0
+// A fit whose residuals are more than plainMisfit times the pictures' noise, and
+// more than wrongShare of the motion's own size, is that of a wrong model. What lies
+// between is a model that is nearly right, as every model is of a sharp enough
+// picture: its uncertainties are widened by the residuals as they are.
+const (
+	plainMisfit = 3.0
+	wrongShare  = 0.03
+)
+
+// size is the motion's own r.m.s. size, in units of the noise.
+func (f *fitter) size() float64 {
+	total, n := 0.0, 0
+	for c := range f.clips {
+		k := &f.clips[c]
+		for w := range k.watched {
+			var sa, sb, saa, sbb, m float64
+			for i := range k.obs {
+				if o := &k.obs[i]; o.who == w {
+					a, b := o.a*o.w0, o.b*math.Hypot(o.w1, o.w2)
+					sa, sb, saa, sbb, m = sa+a, sb+b, saa+a*a, sbb+b*b, m+1
+				}
+			}
+			if m > 0 {
+				total += saa - sa*sa/m + sbb - sb*sb/m
+				n += int(m) * k.dims
+			}
+		}
+	}
+	return math.Sqrt(math.Max(total, 0) / float64(max(n, 1)))
+}
 
 // fine gives states of a clip, a few per stretch.
 func (f *fitter) fine(c int) (times []float64, states [][]float64) {
@@ -36,28 +64,35 @@ func (f *fitter) fine(c int) (times []float64, states [][]float64) {
 func (r *reporter) misfit(ctx context.Context) string {
 	s := r.res.Scatter
 	text := fmt.Sprintf("The residuals are %.2f times what the pictures' noise lets expect; from one frame to the next they correlate by %.2f.", s, r.j.lag1)
+	share := s / r.size()
+	cause := ""
+	if (s > plainMisfit || !r.converged) && !r.opt.Quick {
+		cause = r.causes(ctx)
+	}
+	wrong := cause != "" || s > plainMisfit && share > wrongShare
 	switch {
 	case s < 1.5:
 		text += " The model fits."
-	case s < plainMisfit:
-		text += " The model fits nearly; the uncertainties are widened accordingly."
+	case !wrong:
+		text += fmt.Sprintf(" That is %.2g %% of the motion: the model is nearly right, and the uncertainties are widened by what it leaves.", 100*share)
 	default:
-		text += " The model does not fit."
+		text += fmt.Sprintf(" That is %.2g %% of the motion: the model does not fit.", 100*share)
 	}
 	r.add(finding.Finding{Key: "match.residuals", Name: "Does the model fit", Kind: finding.Statement, Unit: "1", Text: text, Method: r.say})
-	if s < plainMisfit {
+	if !wrong {
+		if s > plainMisfit {
+			r.res.Cautions = append(r.res.Cautions, fmt.Sprintf("The matched model leaves residuals %.1f times the measurement's noise (%.2g %% of the motion): something small acts that the rig does not hold.", s, 100*share))
+		}
 		return ""
 	}
-	caution := fmt.Sprintf("The model does not fit the motion: the residuals are %.1f times the pictures' noise.", s)
-	r.res.Cautions = append(r.res.Cautions, caution)
-	if r.opt.Quick {
-		return caution
+	if cause == "" && !r.opt.Quick {
+		cause = "Neither a reversed nor a missing magnet explains it. Look for a part that touches, a loose joint, a magnet that is not in the rig, or a wrong scale."
 	}
-	if cause := r.causes(ctx); cause != "" {
+	if cause != "" {
 		r.add(finding.Finding{Key: "match.cause", Name: "Likely cause", Kind: finding.Statement, Unit: "1", Text: cause, Method: "the same clip matched with each magnet reversed and taken out in turn"})
 		r.res.Cautions = append(r.res.Cautions, cause)
 	}
-	return caution
+	return fmt.Sprintf("The model does not fit the motion: the residuals are %.1f times the pictures' noise.", s)
 }
 
 // causes matches the clips with each magnet reversed or taken out, and names what
@@ -117,7 +152,7 @@ func (r *reporter) causes(ctx context.Context) string {
 	sort.Slice(all, func(a, b int) bool { return all[a].rms < all[b].rms })
 	best := all[0]
 	if !(best.rms < 0.5*now) {
-		return "Neither a reversed nor a missing magnet explains it. Look for a part that touches, a loose joint, a magnet that is not in the rig, or a wrong scale."
+		return ""
 	}
 	var same []string
 	for _, t := range all {

@@ -241,6 +241,9 @@ func (r *reporter) magnets() {
 				continue
 			}
 			if u, _, _ := r.j.of(r.fitter, grad); !(u < undeterminedAt*math.Abs(ma*mb)) {
+				if r.absent(a, b, ma, mb, da, db) {
+					continue
+				}
 				r.undecided("match.product", subject, "Pair product m₁m₂", "The clip does not determine how strongly these two act on each other: they came too little near each other. Film a larger release, or set them nearer.")
 				continue
 			}
@@ -292,6 +295,32 @@ func (r *reporter) magnets() {
 			r.add(h)
 		}
 	}
+}
+
+// absent tells, for a pair whose product is not determined, whether so little of it
+// is seen that a magnet must be missing, and says so.
+func (r *reporter) absent(a, b *rig.Magnet, ma, mb float64, da, db []float64) bool {
+	na, nb := a.Moment.Or(0), b.Moment.Or(0)
+	if a.Cylinder != nil {
+		na = cylinderOf(a).Moment()
+	}
+	if b.Cylinder != nil {
+		nb = cylinderOf(b).Moment()
+	}
+	ua, _, _ := r.j.of(r.fitter, da)
+	ub, _, _ := r.j.of(r.fitter, db)
+	most := (math.Abs(ma) + 1.645*ua) * (math.Abs(mb) + 1.645*ub)
+	r.opt.log("the product of %s and %s is at most %.3g, the rig's %.3g", a.Name, b.Name, most, na*nb)
+	if !(most < 0.1*na*nb) {
+		return false
+	}
+	f := finding.Normal("match.product", a.Name+" and "+b.Name, "Pair product m₁m₂", math.Abs(ma*mb), most/1.645, "A²·m⁴", r.say)
+	f.Kind, f.Lo, f.Hi = finding.UpperLimit, 0, most
+	r.add(f)
+	text := fmt.Sprintf("No action of “%s” and “%s” on each other is seen: their product is at most %.2g %% of the rig's. One of them is missing, or has lost its magnetism; this clip cannot say which.", a.Name, b.Name, 100*most/(na*nb))
+	r.add(finding.Finding{Key: "match.cause", Name: "Likely cause", Kind: finding.Statement, Unit: "1", Text: text, Method: r.say})
+	r.res.Cautions = append(r.res.Cautions, text)
+	return true
 }
 
 // nominal tells how far a number is from what the rig says it should be.

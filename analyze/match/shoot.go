@@ -16,13 +16,22 @@ type segment struct {
 	y        []float64
 	broken   bool // no continuity with the stretch that follows
 
-	// What the last computation gave.
-	pose       []pose
-	pos, vel   [][3]float64
-	end, slope []float64   // state at t1 and its rate as a deviation
-	dpos       [][]float64 // by column: 3 numbers per observation
-	dend       [][]float64 // by column: 2·nv numbers
+	seen              // what the last computation gave
+	spare seen        // of a step that is tried
+	slope []float64   // rate at t1, as a deviation
+	dpos  [][]float64 // by column: 3 numbers per observation
+	dend  [][]float64 // by column: 2·nv numbers
 }
+
+// seen is what an integration over a segment gives.
+type seen struct {
+	pose     []pose // by observation
+	pos, vel [][3]float64
+	end      []float64 // state at t1
+}
+
+// swap sets what was computed aside, or puts it back.
+func (g *segment) swap() { g.seen, g.spare = g.spare, g.seen }
 
 // cut makes a clip's segments from states at times; each ends where the next
 // begins.
@@ -226,24 +235,45 @@ func (f *fitter) shootAll(ctx context.Context, p []float64, slopes, all bool) er
 		}
 		f.apply(c, f.clips[c].model, p)
 	}
-	return f.jobs(ctx, func(c int, g *segment, m *toy.Model) error {
-		s := &shot{f: f, see: &sees[c], m: m}
-		n := g.to - g.from
-		if len(g.pos) != n {
-			g.pos, g.vel, g.pose = make([][3]float64, n), make([][3]float64, n), make([]pose, n)
-		}
-		if len(g.end) != len(g.y) {
-			g.end = make([]float64, len(g.y))
-		}
-		f.apply(c, m, p) // a clone may be new
-		if err := s.run(ctx, g, g.y, g.pos, g.pose, g.vel, g.end); err != nil {
-			return err
+	if f.oneMotion {
+		for c := range f.clips {
+			k := &f.clips[c]
+			s := &shot{f: f, see: &sees[c], m: k.model}
+			for i := range k.segments {
+				if i > 0 && !k.segments[i-1].broken {
+					copy(k.segments[i].y, k.segments[i-1].end)
+				}
+				if err := s.plain(ctx, &k.segments[i]); err != nil {
+					return err
+				}
+			}
 		}
 		if !slopes {
 			return nil
 		}
+	}
+	return f.jobs(ctx, func(c int, g *segment, m *toy.Model) error {
+		s := &shot{f: f, see: &sees[c], m: m}
+		f.apply(c, m, p) // a clone may be new
+		if !f.oneMotion {
+			if err := s.plain(ctx, g); err != nil || !slopes {
+				return err
+			}
+		}
 		return f.slopes(ctx, s, c, g, p, all)
 	})
+}
+
+// plain integrates a segment from its own state.
+func (s *shot) plain(ctx context.Context, g *segment) error {
+	n := g.to - g.from
+	if len(g.pos) != n {
+		g.pos, g.vel, g.pose = make([][3]float64, n), make([][3]float64, n), make([]pose, n)
+	}
+	if len(g.end) != len(g.y) {
+		g.end = make([]float64, len(g.y))
+	}
+	return s.run(ctx, g, g.y, g.pos, g.pose, g.vel, g.end)
 }
 
 // slopes fills the derivatives of one segment by central differences; nuisance
