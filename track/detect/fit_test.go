@@ -17,7 +17,6 @@ type tally struct {
 	nees             float64 // sum of eᵀC⁻¹e
 	bad              int
 	seen             float64
-	uu, agree        float64
 }
 
 func (t *tally) add(f Fit, u, v float64) {
@@ -32,7 +31,6 @@ func (t *tally) add(f Fit, u, v float64) {
 	t.suu += du * du
 	t.svv += dv * dv
 	t.seen += f.Visible
-	t.uu += (f.Cov.AA + f.Cov.BB) / 2
 	det := f.Cov.AA*f.Cov.BB - f.Cov.AB*f.Cov.AB
 	t.nees += (du*du*f.Cov.BB - 2*du*dv*f.Cov.AB + dv*dv*f.Cov.AA) / det
 }
@@ -185,7 +183,7 @@ func TestCentreOnPlainWall(t *testing.T) {
 			t.Errorf("%g px: stated covariance is wrong: consistency %.2f", c.d, k)
 		}
 		s.noise = 0
-		y = trial{scene: s, frames: 40, off: 0.3, seed: 8, draws: 1}.run(t)
+		y = trial{scene: s, frames: 20, off: 0.3, seed: 8, draws: 1}.run(t)
 		t.Logf("%2.0f px, clean: error %.4f px r.m.s., bias %.4f, consistency %.2f", c.d, y.rms(), y.bias(), y.consistency())
 		if !(y.rms() < 0.03) || y.bad > 0 {
 			t.Errorf("%g px clean: %.4f px", c.d, y.rms())
@@ -199,8 +197,8 @@ func TestCentreOnPlainWall(t *testing.T) {
 // A wall with a pattern of σ 8: at most 0.08 px, and with the wall known from
 // other frames nearly as good as before a plain one.
 func TestCentreOnTexturedWall(t *testing.T) {
-	for _, grain := range []float64{0, 1.5, 4} {
-		for _, d := range []float64{20, 40, 60} {
+	for _, grain := range []float64{1.5, 4} {
+		for _, d := range []float64{20, 60} {
 			w := int(d) + 30
 			s := scene{w: w, h: w, r: d / 2, bob: 80, wall: 170, blur: 0.8, noise: 3, texture: 8, grain: grain}
 			c := trial{scene: s, frames: many(60, 2000), off: 0.1, seed: 9, draws: 3}

@@ -31,7 +31,7 @@ type scene struct {
 	coverLevel float64
 }
 
-const fine = 5
+const fine = 4
 
 func (s *scene) render(rng *rand.Rand) *clip.Patch { return s.expose(s.levels(rng), rng) }
 
@@ -69,6 +69,7 @@ func (s *scene) levels(rng *rand.Rand) []float64 {
 	ax, ay := 1+s.axes[0], 1+s.axes[1]
 	if s.shade == [3]float64{} && s.gloss == 0 {
 		s.spans(cover, fw, fh, ax, ay)
+		gaussBlur(cover, fw, fh, s.blur*fine)
 		for i, c := range cover {
 			light[i] = s.bob * c
 		}
@@ -96,8 +97,10 @@ func (s *scene) levels(rng *rand.Rand) []float64 {
 			}
 		}
 	}
-	gaussBlur(cover, fw, fh, s.blur*fine)
-	gaussBlur(light, fw, fh, s.blur*fine)
+	if n > 0 {
+		gaussBlur(cover, fw, fh, s.blur*fine)
+		gaussBlur(light, fw, fh, s.blur*fine)
+	}
 	if s.texture > 0 && s.gain == nil {
 		s.gain = grainy(rng, s.w, s.h, s.grain, s.texture)
 	}

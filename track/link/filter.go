@@ -99,10 +99,14 @@ func (f *Filter) Update(t, u, v float64, c track.Cov) {
 		return nis
 	}
 	nis := predict()
-	// What could not have been expected (a kick, a hand) was a jerk: let there be
-	// as much as makes it likely, so that speed and acceleration are free to follow.
-	for n := 0; n < 20 && nis > surprise && dt > 0 && f.n > 2; n++ {
-		f.jerk *= 4
+	// What could not have been expected (a kick, a hand) was a jump of the speed, and
+	// a force that goes on: let both be as uncertain as explains it.
+	if nis > surprise && dt > 0 && f.n > 2 {
+		for i := range before {
+			e := z[i] - f.axis[i].x[0]
+			before[i].p[1][1] += 2 * e * e / (dt * dt)
+			before[i].p[2][2] += 0.5 * e * e / (dt * dt * dt * dt)
+		}
 		nis = predict()
 	}
 	for i := range f.axis {
@@ -116,8 +120,8 @@ func (f *Filter) Update(t, u, v float64, c track.Cov) {
 	}
 }
 
-// surprise is the normalised innovation, both axes together, beyond which the
-// jerk is raised at once.
+// surprise is the normalised innovation, both axes together, beyond which
+// something has happened to the bob.
 const surprise = 16.0
 
 // advance moves the state on by dt.
