@@ -288,7 +288,11 @@ func (an *analysis) work() error {
 			}
 			continue
 		}
-		if best == nil || an.bic(h) < an.bic(best) {
+		price := 0.0
+		if best != nil && an.opt.Restoring == Gravity && len(h.m.powers) > len(best.m.powers) {
+			price = farFetched
+		}
+		if best == nil || an.bic(h)+price < an.bic(best) {
 			best = h
 		}
 	}
@@ -324,6 +328,11 @@ func (an *analysis) work() error {
 	an.fitRicher(amp)
 	return nil
 }
+
+// farFetched is what a term beside a pendulum's sine must gain in BIC before it
+// is believed: the sine is known, and a term taken in by chance would spoil the
+// period of small swings. Nine is odds of a hundred to one.
+const farFetched = 9
 
 // fitRicher fits the best law once more with one term more in the restoring law,
 // where that is not known to be a pendulum's: how much a number moves shows what

@@ -51,9 +51,12 @@ func (o *outcome) String() string {
 
 // What design section 6 asks to be decided: pure laws from ln(A₀/A) = 0.4 at
 // 30 dB, mixtures whose parts are each at least 20 % of the first loss from 0.7
-// at 55 dB, in 30 s at 60 frames/s. Mixtures of all three frictions are printed,
-// too: where two of them imitate the third, the Cramér–Rao bound of its share is
-// above a third of 20 % and no criterion can decide (the test prints the bound).
+// at 55 dB, here in 30 s at 60 frames/s. Beside each row stands how often an
+// ideal fit would let BIC find the law (see ideal): 30 s are too short for some
+// mixtures, above all for those of three frictions of which two imitate the
+// third, and there the test only prints. Measured with -long (60 clips a row): in
+// rows that an ideal fit decides, BIC is right in 99 % and "decided" is said, and
+// right, in 98 %.
 func TestLawsThatMustBeDecided(t *testing.T) {
 	runs := 2
 	if *long {
@@ -82,21 +85,17 @@ func TestLawsThatMustBeDecided(t *testing.T) {
 		}
 		rng := rand.New(rand.NewPCG(uint64(i), 7))
 		var o outcome
-		var must bool
-		weakest := 0.0
+		perfect := 0.0
 		for range runs {
 			tr := swinging{1, r.release, r.shares, r.logRatio, r.db, 30, 60, true}.truth(rng)
 			if o.n == 0 {
-				weakest = tr.weakestPart()
-				// Decidable at all: the weakest part stands 4.5 standard
-				// uncertainties out, of which BIC itself asks for 2.7.
-				must = tr.m.law.count() < 3 || weakest > 4.5
+				perfect = tr.ideal(t)
 			}
 			o.add(t, tr, rng)
 		}
-		t.Logf("ln %.1f %.0f dB %.2f rad, viscous/drag/dry %3.0f/%3.0f/%3.0f %%, weakest part %5.1f × its bound: %v", r.logRatio, r.db, r.release,
-			100*r.shares[0], 100*r.shares[1], 100*r.shares[2], weakest, &o)
-		if !must {
+		t.Logf("ln %.1f %.0f dB %.2f rad, viscous/drag/dry %3.0f/%3.0f/%3.0f %%: ideal %5.1f %%; %v", r.logRatio, r.db, r.release,
+			100*r.shares[0], 100*r.shares[1], 100*r.shares[2], 100*perfect, &o)
+		if perfect < 0.97 {
 			continue
 		}
 		all.n, all.right, all.wrong, all.best, all.undecided = all.n+o.n, all.right+o.right, all.wrong+o.wrong, all.best+o.best, all.undecided+o.undecided
@@ -114,22 +113,44 @@ func TestLawsThatMustBeDecided(t *testing.T) {
 	}
 }
 
-// weakestPart is the least of the true frictions over its Cramér–Rao bound when
-// all three frictions are free.
-func (tr truth) weakestPart() float64 {
-	full := truth{m: model{sine: true, law: viscous | drag | dry}, sigma: tr.sigma, dt: tr.dt, n: tr.n}
-	full.p = append(append([]float64{}, tr.p[:atShape]...), 0, 0, 0)
-	for i, l := range frictions {
-		full.p[atShape+i] = tr.m.friction(tr.p, l)
+// ideal is how often BIC would find the true law if every fit were perfect: each
+// rival is fitted to the motion without noise, and what it lacks there, χ², makes
+// the difference in BIC normal with mean χ² + Δk·ln n and standard deviation
+// 2√χ². A rival that holds the true law is chosen when its extra terms gain more
+// than their price by chance.
+func (tr truth) ideal(t *testing.T) float64 {
+	t.Helper()
+	quiet := tr
+	quiet.sigma = 0
+	ts, ys := quiet.record(rand.New(rand.NewPCG(0, 0)))
+	s := &samples{t: ts, y: ys}
+	for range ts {
+		s.u = append(s.u, tr.sigma)
 	}
-	least := math.Inf(1)
-	for i, l := range frictions {
-		if tr.m.law&l != 0 {
-			c := full.p[atShape+i] / full.bound(frictionOf(l))
-			least = math.Min(least, c)
+	own := &fitted{m: tr.m, p: tr.p}
+	amplitude := 0.0
+	for _, y := range ys {
+		amplitude = math.Max(amplitude, math.Abs(y))
+	}
+	price := math.Log(float64(tr.n))
+	p := 1.0
+	for _, l := range laws {
+		if l == tr.m.law {
+			continue
 		}
+		more := float64(l.count() - tr.m.law.count())
+		if l&tr.m.law == tr.m.law {
+			// Each extra term cannot be negative: it gains by chance on one side only.
+			p *= 1 - (1-normalCDF(math.Sqrt(more*price)))*more
+			continue
+		}
+		f, err := s.fit(t.Context(), model{sine: tr.m.sine, law: l}, restart(own, model{sine: tr.m.sine, law: l}, 0.7*amplitude), false)
+		if err != nil {
+			t.Fatal(err)
+		}
+		p = math.Min(p, normalCDF((f.chi2+more*price)/(2*math.Sqrt(f.chi2))))
 	}
-	return least
+	return p
 }
 
 // A dry friction that takes 0.3 % of the loss is seen at 80 dB, but makes no law.

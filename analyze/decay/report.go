@@ -19,7 +19,7 @@ import (
 // comes of it.
 const decidedAt = 0.6
 
-var hides = [4]float64{1: 0.9, 2: 0.3}
+var hides = [4]float64{1: 0.95, 2: 0.3}
 
 const deg = math.Pi / 180
 

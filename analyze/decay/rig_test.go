@@ -147,7 +147,7 @@ func TestOtherRestoring(t *testing.T) {
 // Coloured noise: a camera that sways and a codec that smears. The intervals
 // must still hold the truth.
 func TestColouredNoise(t *testing.T) {
-	runs := 16
+	runs := 10
 	if *long {
 		runs = 400
 	}
