@@ -48,6 +48,7 @@ var analyses = []analysis{
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
 	{"matching", "match.fit", "Model matched to the motion", matching},
 	{"kicks", "kick.ledger", "Energy ledger", kicks},
+	{"claims", "claim.answers", "Claims", claims},
 }
 
 type analysis struct {

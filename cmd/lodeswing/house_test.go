@@ -14,7 +14,7 @@ var road = []string{
 	"track/rig", "analyze/finding", "analyze/lsq", "analyze/ode", "analyze/magnet",
 	"track", "track/clip", "track/camera", "track/board", "track/shake", "track/detect", "track/link", "track/follow",
 	"analyze/series", "analyze/decay", "analyze/spectrum", "analyze/modes", "analyze/toy", "analyze/recurrence",
-	"analyze/chaos", "analyze/match", "analyze/kick", "analyze/compare", "analyze/lot", "analyze/record", "analyze",
+	"analyze/chaos", "analyze/match", "analyze/kick", "analyze/compare", "analyze/claim", "analyze/lot", "analyze/record", "analyze",
 	"plots", "samples", "cmd/internal/progress", "cmd/internal/store", "cmd/internal/job", "cmd/internal/desk", "cmd/lodeswing",
 }
 
