@@ -316,7 +316,7 @@ func quartic(t, y []float64) (v, slope, second float64, ok bool) {
 
 // fitSummary is the fit for the record: what was free, held, and not separable.
 func (r *reporter) fitSummary() {
-	f := finding.Fit{Key: "match.fit", ChiSquare: r.j.chi2, DegreesOf: r.j.dof, Converged: r.converged, Why: r.why}
+	f := finding.Fit{Key: "match.fit", ChiSquare: r.j.chi2 * r.widened * r.widened, DegreesOf: r.j.dof, Converged: r.converged, Why: r.why}
 	var order []int
 	for i := range r.params {
 		if r.params[i].asked && !r.poor[i] {
@@ -423,8 +423,46 @@ func (r *reporter) fittedRig() {
 		r.res.Cautions = append(r.res.Cautions, "The rig with the fitted numbers could not be made: "+err.Error())
 		return
 	}
+	r.places(c)
 	c.Start = r.startOf(c)
 	r.res.Fitted = c
+}
+
+// places puts what else the model needs to move as matched into the rig: weights
+// and places, each within what the rig admits of it.
+func (r *reporter) places(c *rig.Rig) {
+	for i := range r.params {
+		q := &r.params[i]
+		if q.role != byModel || q.tied != nil {
+			continue
+		}
+		if name, ok := strings.CutSuffix(q.address, ".weight moment"); ok {
+			if p := c.FindPart(name); p != nil {
+				p.MassKg.V *= q.value
+			}
+			continue
+		}
+		owner, axis := split(q.address)
+		owner, what := split(owner)
+		var at *[]float64
+		if p := c.FindPart(owner); p != nil && what == "centre" {
+			at = &p.CentreM
+		} else if p != nil && what == "pivot" {
+			at = &p.PivotM
+		} else if g := c.FindMagnet(owner); g != nil && what == "at" {
+			at = &g.AtM
+		}
+		if at == nil {
+			continue
+		}
+		x := rig.XYZ(*at)
+		x[slices.Index([]string{"x", "y", "z"}, axis)] = q.value
+		if len(*at) == 3 || axis == "y" {
+			*at = x[:]
+		} else {
+			*at = []float64{x[0], x[2]}
+		}
+	}
 }
 
 // startOf is the matched state at the first clip's start, as a rig's starts.

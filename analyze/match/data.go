@@ -95,6 +95,7 @@ type fitter struct {
 	// regular motion is brought to its optimum so; a chaotic one cannot be.
 	oneMotion bool
 	scatter   float64
+	widened   float64 // by which the noise was taken larger than the track says
 	chi2      float64
 	converged bool
 	why       string
@@ -104,7 +105,7 @@ type fitter struct {
 }
 
 func prepare(clips []Clip, r *rig.Rig, opt Options) (*fitter, error) {
-	f := &fitter{rig: r, opt: opt, source: clips, tol: 1e-9, scatter: 1}
+	f := &fitter{rig: r, opt: opt, source: clips, tol: 1e-9, scatter: 1, widened: 1}
 	for i := range clips {
 		k, err := f.clip(&clips[i], len(clips) > 1)
 		if err != nil {

@@ -51,6 +51,21 @@ func (f *fitter) fit(ctx context.Context) error {
 	if err := f.polish(ctx); err != nil {
 		return err
 	}
+	if s := f.rms(); s > clearMisfit {
+		// A model that is only nearly right must not force clock, weight and camera
+		// to make up for it: its residuals count as noise of their own size.
+		f.widened = s
+		for c := range f.clips {
+			k := &f.clips[c]
+			for i := range k.obs {
+				o := &k.obs[i]
+				o.w0, o.w1, o.w2 = o.w0/s, o.w1/s, o.w2/s
+			}
+		}
+		if err := f.polish(ctx); err != nil {
+			return err
+		}
+	}
 	f.opt.log("final: r.m.s. residual %.6g, %s", f.rms(), f.why)
 	return nil
 }
@@ -341,14 +356,14 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 // the sum of squares by next to nothing. It does not ask whether each step lowers
 // it: near the optimum the integration's own error hides that.
 func (f *fitter) polish(ctx context.Context) error {
-	const rounds, enough = 10, 1e-3
+	const rounds, enough = 16, 1e-3
 	p := f.values()
 	f.converged, f.exact = false, true
 	tol := f.tol
 	f.tol = 1e-11 // an integration's scatter over a difference's step must be small
 	defer func() { f.exact, f.tol = false, tol }()
 	var fall, before float64
-	fresh := true
+	unit, fresh := 1.0, true
 	lambda := 0.0
 	keep := func() (out [][][]float64) {
 		for c := range f.clips {
@@ -368,7 +383,7 @@ func (f *fitter) polish(ctx context.Context) error {
 		if err := f.shootAll(ctx, p, fresh, fresh); err != nil {
 			return err
 		}
-		next, _, _ := f.merit(p)
+		next, _, rows := f.merit(p)
 		if old != nil && !(next < now+0.01*now) {
 			// The step led astray: back, and a shorter one.
 			for c := range f.clips {
@@ -378,14 +393,23 @@ func (f *fitter) polish(ctx context.Context) error {
 			}
 			p = oldP
 			f.setValues(p)
-			lambda, fresh, old = math.Max(30*lambda, 1e-4), true, nil
+			lambda, fresh, old = math.Max(20*lambda, 1e-4), true, nil
 			continue
+		}
+		if old != nil { // the last step was good
+			if lambda /= 20; lambda < 1e-7 {
+				lambda = 0
+			}
 		}
 		now = next
 		f.final = f.solveChain(p, lambda, true)
 		before, fall = fall, f.final.foreseen()
 		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g", f.rms(), f.gaps(), fall)
-		if lambda == 0 && fall < enough*math.Max(1, f.scatter*f.scatter) || round > 3 && fall < 0.05 {
+		unit = math.Max(1, next/float64(rows)) // what a standard uncertainty counts, misfit included
+		if unit > plainMisfit*plainMisfit || f.widened > plainMisfit {
+			unit = math.Max(unit, 2e-3*next) // and the residuals hang together
+		}
+		if lambda == 0 && fall < enough*unit || round > 3 && fall < 0.05*unit {
 			f.converged, f.why = true, fmt.Sprintf("one more step is foreseen to lower the sum of squares by only %.1g", fall)
 			break
 		}
@@ -399,10 +423,6 @@ func (f *fitter) polish(ctx context.Context) error {
 				k.model.Normalise(k.segments[i].y)
 			}
 		}
-		lambda /= 100
-		if lambda < 1e-7 {
-			lambda = 0
-		}
 		f.setValues(p)
 	}
 	if !f.converged {
@@ -411,9 +431,9 @@ func (f *fitter) polish(ctx context.Context) error {
 		}
 		f.final = f.solveChain(p, 0, true)
 		fall = f.final.foreseen()
-		if f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall); fall < 0.5 {
+		if f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall); fall < 0.5*unit {
 			f.converged = true
-			if fall > 0.1 {
+			if fall > 0.1*unit {
 				f.cautions = append(f.cautions, "The matching settled only to within half a standard uncertainty of its numbers.")
 			}
 		}

@@ -291,13 +291,13 @@ friction = { viscous = "fit", drag = "fit", dry = "fit" }
 			}
 			name += []string{"viscous ", "drag ", "dry "}[i]
 		}
-		got, err := Run(context.Background(), []Clip{{Angles: []series.Angle{a}}}, c, Options{Quick: true, Log: t.Logf})
+		got, err := Run(context.Background(), []Clip{{Angles: []series.Angle{a}}}, c, Options{Quick: true})
 		if err != nil {
 			t.Fatal(err)
 		}
 		free := float64(strings.Count(name, " ") + 3)
 		bic := float64(n)*math.Log(got.Fits[0].ChiSquare/float64(n)) + free*math.Log(float64(n))
-		t.Logf("%-20s BIC %.1f, scatter %.2f", name, bic, got.Scatter)
+		t.Logf("%-20s BIC %.1f, scatter %.2f, %s", name, bic, got.Scatter, got.Fits[0].Why)
 		if bic < best {
 			best, law, res = bic, name, got
 		}
@@ -309,7 +309,7 @@ friction = { viscous = "fit", drag = "fit", dry = "fit" }
 		t.Errorf("ω₀² = %.3f s⁻², the authors' 64.219", w2)
 	}
 	if res.Fitted == nil {
-		t.Fatal("no fitted rig")
+		t.Fatal("no fitted rig: ", find(res, "match.residuals").Text)
 	}
 	m, err := toy.New(res.Fitted)
 	if err != nil {
@@ -320,6 +320,7 @@ friction = { viscous = "fit", drag = "fit", dry = "fit" }
 		t.Fatal(err)
 	}
 	zero := res.Estimate("arm.zero").Value
+	t.Logf("clock %+v", res.Estimate("the clock"))
 	sum, k, last := 0.0, 0.0, 0.0
 	if err := m.Sample(context.Background(), y, times, toy.Options{}, func(i int, y []float64) {
 		if times[i] < 35 {

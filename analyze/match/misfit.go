@@ -16,6 +16,7 @@ import (
 // picture: its uncertainties are widened by the residuals as they are.
 const (
 	plainMisfit = 3.0
+	clearMisfit = 1.5
 	wrongShare  = 0.03
 )
 
@@ -64,14 +65,14 @@ func (f *fitter) fine(c int) (times []float64, states [][]float64) {
 func (r *reporter) misfit(ctx context.Context) string {
 	s := r.res.Scatter
 	text := fmt.Sprintf("The residuals are %.2f times what the pictures' noise lets expect; from one frame to the next they correlate by %.2f.", s, r.j.lag1)
-	share := s / r.size()
+	share := s / r.widened / r.size()
 	cause := ""
 	if (s > plainMisfit || !r.converged) && !r.opt.Quick {
 		cause = r.causes(ctx)
 	}
 	wrong := cause != "" || s > plainMisfit && share > wrongShare
 	switch {
-	case s < 1.5:
+	case s < clearMisfit:
 		text += " The model fits."
 	case !wrong:
 		text += fmt.Sprintf(" That is %.2g %% of the motion: the model is nearly right, and the uncertainties are widened by what it leaves.", 100*share)
@@ -104,7 +105,7 @@ func (r *reporter) causes(ctx context.Context) string {
 		rms   float64
 	}
 	var all []trial
-	now := math.Sqrt(r.j.chi2 / float64(r.j.rows))
+	now := r.widened * math.Sqrt(r.j.chi2/float64(r.j.rows))
 	for i := range r.rig.Magnets {
 		name := r.rig.Magnets[i].Name
 		for _, what := range []string{"reversed", "missing"} {

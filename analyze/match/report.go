@@ -34,7 +34,7 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	if err != nil {
 		return nil, err
 	}
-	r := &reporter{fitter: f, j: j, p: f.values(), res: &Result{Scatter: math.Sqrt(j.chi2 / float64(j.dof)), Converged: f.converged}, poor: map[int]bool{}}
+	r := &reporter{fitter: f, j: j, p: f.values(), res: &Result{Scatter: f.widened * math.Sqrt(j.chi2/float64(j.dof)), Converged: f.converged}, poor: map[int]bool{}}
 	r.say = byMatching
 	if n := len(f.clips); n > 1 {
 		r.say += fmt.Sprintf(", %d clips together", n)
@@ -307,10 +307,12 @@ func (r *reporter) absent(a, b *rig.Magnet, ma, mb float64, da, db []float64) bo
 	if b.Cylinder != nil {
 		nb = cylinderOf(b).Moment()
 	}
-	ua, _, _ := r.j.of(r.fitter, da)
-	ub, _, _ := r.j.of(r.fitter, db)
-	most := (math.Abs(ma) + 1.645*ua) * (math.Abs(mb) + 1.645*ub)
-	r.opt.log("the product of %s and %s is at most %.3g, the rig's %.3g", a.Name, b.Name, most, na*nb)
+	grad := make([]float64, r.j.np)
+	for q := range grad {
+		grad[q] = da[q]*mb + db[q]*ma
+	}
+	u, _, _ := r.j.of(r.fitter, grad)
+	most := math.Abs(ma*mb) + 1.645*u
 	if !(most < 0.1*na*nb) {
 		return false
 	}
