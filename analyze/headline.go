@@ -75,8 +75,11 @@ func frequencies(w *work) []string {
 
 func decayWords(w *work, part string, decided bool, law string) string {
 	var b strings.Builder
-	if f := w.rec.Find("decay.period_zero", part); f != nil {
+	if f := w.rec.Find("decay.period_zero", part); f != nil && f.Kind == finding.Measured {
 		fmt.Fprintf(&b, "“%s” swings once every %s in small swings.", part, inWords(f))
+	} else if f := w.rec.Find("decay.period_at", part); f != nil && f.Kind == finding.Measured {
+		at := strings.TrimPrefix(f.Name, "Period at ")
+		fmt.Fprintf(&b, "“%s” swings once every %s at %s.", part, inWords(f), at)
 	}
 	if f := w.rec.Find("decay.log_decrement", part); f != nil && f.Kind == finding.Measured {
 		loss, u := 1-math.Exp(-f.Value), f.U*math.Exp(-f.Value)
