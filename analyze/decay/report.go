@@ -236,6 +236,12 @@ func (an *analysis) lawFindings(res *Result, b int) []finding.Finding {
 				text += fmt.Sprintf(" Besides it, %s friction of up to %.2g %% of the loss at the first swing cannot be excluded.", l, 100*an.limits[i].share)
 			}
 		}
+		for k, l := range laws {
+			// 3.84: the 95 % point of χ² with one degree of freedom.
+			if top.m.law&^l != 0 && l.count() > top.m.law.count() && an.fits[k].chi2 < top.chi2+3.84 {
+				text += fmt.Sprintf(" A mixture of %s friction would fit as well, and is set aside only because it is less simple.", l)
+			}
+		}
 	}
 	if b != 0 {
 		text += fmt.Sprintf(" Viscous friction alone is worse by %.4g in BIC.", an.bics[0]-an.bics[b])
