@@ -51,6 +51,7 @@ type Fitter struct {
 	marked              bool    // some pixels are near odd ones
 	sec                 [sectors]sectorSums
 	around              [sectors]ringMean // residuals outside the outline in the last pass
+	dimNow, dimBefore   uint32            // sectors, as bits, with a shadow outside, in this frame and the last
 	sums                [2]sums
 	most                float64    // a residual² counts no more than this in a step's cost
 	oddAt               [][2]int16 // places that fitted badly in the last frame, px from the middle
@@ -143,8 +144,8 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		return Fit{Why: "too few pixels in the picture"}
 	}
 	prior := f.priors(g, smear)
-	noise := f.startLevels(&m)
 	f.recallOdd(&m)
+	noise := f.startLevels(&m)
 	third := (m.at(pF0) - m.at(pB0) - f.back) / 3
 	f.most = 36*math.Max(noise.bob, noise.wall) + third*third
 	loose := math.Max(math.Hypot(g.UPos, math.Min(f.Shape.UR, 0.1*r0)), 0.05)
@@ -219,6 +220,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		}
 	}
 	f.keepOdd(&m, from)
+	f.dimBefore = f.dimNow
 	out.fill(&m, &inv, acc, &noise, &on, f.back)
 	out.Cut = f.cut(&m)
 	out.WallWrong = f.wallWrong

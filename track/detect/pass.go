@@ -267,9 +267,16 @@ type ringMean struct{ sum, n float64 }
 // bob casts close by. The outline cannot be trusted there.
 func (f *Fitter) dimSectors(contrast float64) (dim uint32) {
 	const run = 4
-	limit := 0.05 * math.Abs(contrast)
 	var sign [sectors]int
+	outside := 0
 	for k := range f.around {
+		if f.around[k].n == 0 {
+			outside++
+		}
+		limit := 0.05 * math.Abs(contrast)
+		if f.dimBefore>>k&1 != 0 {
+			limit *= 0.5 // it does not go from one frame to the next
+		}
 		if a := &f.around[k]; a.n > 3 {
 			switch m := a.sum / a.n; {
 			case m > limit:
@@ -290,7 +297,16 @@ func (f *Fitter) dimSectors(contrast float64) (dim uint32) {
 			}
 		}
 	}
-	if bits.OnesCount32(dim) > sectors*2/3 {
+	f.dimNow = 0
+	if outside > sectors/6 {
+		return 0 // cut by the picture's edge: what is left of the outline is needed
+	}
+	// A shadow goes with its bob: what was not there a frame ago is something that
+	// the bob passes.
+	f.dimNow = dim
+	b := f.dimBefore
+	dim &= b | b<<1 | b>>1 | b>>(sectors-1) | b<<(sectors-1)
+	if bits.OnesCount32(dim) > sectors*7/12 {
 		return 0 // that is no shadow but a wrong level
 	}
 	return dim
@@ -369,6 +385,9 @@ func (f *Fitter) startLevels(m *model) scatter {
 		}
 		for i := 0; i < len(f.px); i += every {
 			q := &f.px[i]
+			if q.near {
+				continue
+			}
 			d2 := float64(q.x*q.x + q.y*q.y)
 			if inside && d2 < lim*lim {
 				f.ring = append(f.ring, float64(q.v)-m.shade(float64(q.x), float64(q.y)))

@@ -149,7 +149,7 @@ func (b *bob) try(g detect.Guess) bool {
 	// A plain sighting may lie farther from where it was expected than a poor one:
 	// clips hold repeated frames, and hands push bobs.
 	floor := 1e-3 * b.radius * b.radius
-	if r.Visible > 0.8 && math.Abs(r.R-b.radius) < 0.1*b.radius {
+	if r.Visible > 0.65 && math.Abs(r.R-b.radius) < 0.1*b.radius {
 		floor = b.leeway()
 	}
 	if b.pred.Cost(r.U, r.V, r.Cov, floor) > gate {

@@ -169,7 +169,7 @@ func TestFollowedFilm(t *testing.T) {
 		{"lit ball on a rod, clean", clean, func(s *film.Scene) {}},
 		{"plain on a rod, clean", clean, func(s *film.Scene) { s.Bobs[0].Plain = true }},
 		{"glossy on a rod, clean", clean, func(s *film.Scene) { s.Bobs[0].Gloss = 1 }},
-		{"shadow close by, clean", 0.05, func(s *film.Scene) { s.Light.Shadow = 0.5; s.Wall.Y = 0.02 }},
+		{"shadow close by, clean", clean, func(s *film.Scene) { s.Light.Shadow = 0.5; s.Wall.Y = 0.02 }},
 		{"noise 5", clean, func(s *film.Scene) { s.Noise.Read = 5 }},
 		{"patterned wall, noise 2", patterned, func(s *film.Scene) { s.Wall.Texture = 8; s.Noise.Read = 2 }},
 		{"pattern, shadow, gloss, noise 2", patterned, func(s *film.Scene) {
