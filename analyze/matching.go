@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"time"
 
 	"lodeswing/analyze/match"
 	"lodeswing/analyze/record"
@@ -12,12 +13,40 @@ import (
 	"lodeswing/track/rig"
 )
 
-// matching fits the model of the toy where the rig leaves numbers to that.
+// matchingTime is how long a measurement waits for the matching; `lodeswing fit`
+// on the result takes as long as it needs.
+const matchingTime = 45 * time.Second
+
+// matching fits the model of the toy where the rig leaves numbers to that. A
+// matching that does not settle, or not in time, says that and nothing else: the
+// measurement does not wait for it and tells no number of it.
 func matching(ctx context.Context, w *work) error {
 	if !match.Asks(w.rig) {
 		return nil
 	}
-	return fitInto(ctx, w.rec, []match.Clip{{Track: w.track, Angles: w.angles, Entry: w.clip}}, w.rig, match.Options{})
+	limited, stop := context.WithTimeout(ctx, matchingTime)
+	defer stop()
+	res, err := match.Run(limited, []match.Clip{{Track: w.track, Angles: w.angles, Entry: w.clip}}, w.rig, match.Options{})
+	const how = "simulated model matched to the measured motion"
+	switch {
+	case ctx.Err() != nil:
+		return ctx.Err()
+	case limited.Err() != nil:
+		w.undecided("match.fit", "", "Model matched to the motion",
+			fmt.Sprintf("the matching was not done within %.0f s and was left out; lodeswing fit on this result takes the time that it needs", matchingTime.Seconds()), how)
+		return nil
+	case err != nil:
+		return err
+	case !res.Converged:
+		why := "the search did not settle"
+		if len(res.Fits) > 0 && res.Fits[0].Why != "" {
+			why = "the search did not settle: " + res.Fits[0].Why
+		}
+		w.undecided("match.fit", "", "Model matched to the motion", why+"; a longer clip, or one that starts when the hand has let go, may help", how)
+		return nil
+	}
+	intoRecord(w.rec, res)
+	return nil
 }
 
 func fitInto(ctx context.Context, rec *record.Record, clips []match.Clip, r *rig.Rig, opt match.Options) error {
@@ -25,6 +54,11 @@ func fitInto(ctx context.Context, rec *record.Record, clips []match.Clip, r *rig
 	if err != nil {
 		return err
 	}
+	intoRecord(rec, res)
+	return nil
+}
+
+func intoRecord(rec *record.Record, res *match.Result) {
 	rec.Findings = append(rec.Findings, res.Findings...)
 	rec.Fits = append(rec.Fits, res.Fits...)
 	rec.Curves = append(rec.Curves, res.Curves...)
@@ -32,7 +66,6 @@ func fitInto(ctx context.Context, rec *record.Record, clips []match.Clip, r *rig
 	if res.Fitted != nil {
 		rec.FittedRig = string(res.Fitted.Marshal())
 	}
-	return nil
 }
 
 // Input is one clip of several that FitClips matches together: a track, or angle
