@@ -22,6 +22,7 @@ func headline(w *work) string {
 			out = append(out, words)
 		}
 	}
+	out = append(out, magnetWords(w)...)
 	out = append(out, frequencies(w)...)
 	if len(out) == 0 {
 		if w.track != nil {
@@ -34,6 +35,29 @@ func headline(w *work) string {
 		return "No period or damping could be read from this table; the findings say why."
 	}
 	return strings.Join(out, " ")
+}
+
+// magnetWords says how strong the magnets are: each moment that is known, or
+// else the product of a pair.
+func magnetWords(w *work) []string {
+	var out []string
+	for _, key := range []string{"match.moment", "match.product"} {
+		for i := range w.rec.Findings {
+			f := &w.rec.Findings[i]
+			if f.Key != key || f.Kind != finding.Measured {
+				continue
+			}
+			if key == "match.moment" {
+				out = append(out, fmt.Sprintf("The moment of %s is %s.", f.Subject, inWords(f)))
+			} else {
+				out = append(out, fmt.Sprintf("The moments of %s multiply to %s.", f.Subject, inWords(f)))
+			}
+		}
+		if len(out) > 0 {
+			return out
+		}
+	}
+	return out
 }
 
 // frequencies says how fast the parts move that no free decay explains, and why

@@ -142,8 +142,10 @@ func TestBehindAPost(t *testing.T) {
 		Bobs: []film.Bob{{Name: "ball", Colour: film.RGB{190, 60, 40}, DiameterM: 0.03, At: func(t float64) film.Vec {
 			return film.Vec{-0.12 * math.Cos(3*t), 0, 0.03 * math.Sin(3*t)}
 		}}},
-		Rods: []film.Rod{{Colour: film.RGB{90, 90, 95}, DiameterM: 0.014, Front: true, Still: false,
-			From: func(float64) film.Vec { return film.Vec{0.01, -0.1, 0.2} }, To: func(float64) film.Vec { return film.Vec{0.01, -0.1, -0.2} }}},
+		Rods: []film.Rod{{
+			Colour: film.RGB{90, 90, 95}, DiameterM: 0.014, Front: true, Still: false,
+			From: func(float64) film.Vec { return film.Vec{0.01, -0.1, 0.2} }, To: func(float64) film.Vec { return film.Vec{0.01, -0.1, -0.2} },
+		}},
 	}
 	tr, err := follow(t, s, plainRig+"[[bob]]\nname = \"ball\"\ncolour = \"#be3c28\"\ndiameter_mm = 30\n", 200)
 	if err != nil {
