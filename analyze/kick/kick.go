@@ -145,6 +145,7 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 		o.Absent = [3]bool{}
 	}
 	o.weigh(r, p)
+	o.Battery = charge(r, part)
 	if p.Upright || series.Pulled(r, part) != "" && bends(r, p) {
 		o.bend(r, p)
 	}

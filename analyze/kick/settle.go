@@ -53,12 +53,23 @@ func (l *ledger) setAside() {
 	}
 	slices.Sort(all)
 	usual := 1.4826 * all[len(all)/2]
+	hand := func(i int) bool {
+		r := &l.rows[i]
+		return off[i] > 40*math.Max(usual, math.Sqrt(r.vFrom+r.vTo)) && off[i] > 0.1*(r.before+r.after)
+	}
+	hands := 0
+	for i := range l.rows {
+		if hand(i) {
+			hands++
+		}
+	}
+	const few = 3 // more are not a hand but a strong coil that fires now and then
 	for i := range l.rows {
 		r := &l.rows[i]
 		if !r.fixed && off[i] > 8*math.Max(usual, math.Sqrt(r.vFrom+r.vTo)) && off[i] > 0.002*(r.before+r.after) {
 			r.state = Odd
 			// A hand bends the turning points on both sides as well.
-			if off[i] > 40*math.Max(usual, math.Sqrt(r.vFrom+r.vTo)) && off[i] > 0.1*(r.before+r.after) {
+			if hands < few && hand(i) {
 				for j := max(0, i-1); j <= min(len(l.rows)-1, i+1); j++ {
 					if l.rows[j].clip == r.clip && !l.rows[j].fixed {
 						l.rows[j].state, l.rows[j].fixed = Odd, true
@@ -229,7 +240,50 @@ func (l *ledger) findOdd() {
 		l.confirm()
 	}
 	l.splitTwo()
+	l.turnOver()
 	l.takeBack()
+}
+
+// turnOver looks for a coil that fires at so few passes that those without a kick
+// were taken for the usual ones.
+func (l *ledger) turnOver() {
+	was := make([]State, len(l.rows))
+	high := 0
+	for i := range l.rows {
+		was[i] = l.rows[i].state
+		if s := was[i]; (s == Odd || s == Double) && !l.rows[i].fixed && l.rows[i].net() > 0 {
+			high++
+		}
+	}
+	old, ok := l.fit(plain, nil, -1)
+	if high < 3 || !ok {
+		return
+	}
+	for i := range l.rows {
+		switch r := &l.rows[i]; {
+		case r.fixed:
+		case r.state == Kicked:
+			r.state = Missed
+		case (r.state == Odd || r.state == Double) && r.net() > 0:
+			r.state = Kicked
+		}
+	}
+	s, ok := l.fit(plain, nil, -1)
+	if ok && s.kicks == 1 && s.beta[0] > 0 && s.sigma < 0.4*s.beta[0] && (old.kicks == 0 || old.beta[0] < 0.6*s.beta[0]) {
+		// Those without a kick must agree on the loss.
+		ss, n := 0.0, 0.0
+		for i := range l.rows {
+			if l.rows[i].state == Missed {
+				ss, n = ss+sq(s.resid[i]), n+1
+			}
+		}
+		if math.Sqrt(ss/n) < 0.1*s.beta[0] {
+			return
+		}
+	}
+	for i := range l.rows {
+		l.rows[i].state = was[i]
+	}
 }
 
 // confirm makes Odd of passes that are neither without a kick nor with two.
