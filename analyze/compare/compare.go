@@ -106,7 +106,6 @@ type quantity struct {
 	common          map[string]float64
 	at20            bool
 	name            string
-	cautions        []string
 }
 
 // atAmplitude is what a name says of the amplitude at which it holds: values at
