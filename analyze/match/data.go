@@ -89,6 +89,7 @@ type fitter struct {
 
 	rate, angle float64 // typical speed (rad/s) and size of the motion (rad)
 	bind        float64 // rad, how far the ends of stretches may be apart; +Inf: they are free
+	lax         float64 // rad, the gap that merit weighs as one
 	tol         float64
 	exact       bool // all derivatives by central differences
 	// oneMotion: each stretch begins exactly where the one before it ended. A
@@ -105,7 +106,7 @@ type fitter struct {
 }
 
 func prepare(clips []Clip, r *rig.Rig, opt Options) (*fitter, error) {
-	f := &fitter{rig: r, opt: opt, source: clips, tol: 1e-9, scatter: 1, widened: 1}
+	f := &fitter{rig: r, opt: opt, source: clips, tol: 1e-9, scatter: 1, widened: 1, lax: meritBind}
 	for i := range clips {
 		k, err := f.clip(&clips[i], len(clips) > 1)
 		if err != nil {

@@ -132,7 +132,7 @@ func (f *fitter) approach(ctx context.Context) error {
 		f.exact = false
 		f.opt.log("as one motion: r.m.s. residual %.4g", f.rms())
 	}
-	return f.descend(ctx, 30, 1e-4, false)
+	return f.descend(ctx, 6, 1e-4, false)
 }
 
 // finalBind is how far the ends of stretches may be apart in the end, rad: far
@@ -336,7 +336,7 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 			break
 		}
 		stale++
-		all := fresh || stale >= 4 || fell > 0.3
+		all := fresh || stale >= 4
 		if all {
 			stale = 0
 		}
@@ -361,6 +361,11 @@ func (f *fitter) polish(ctx context.Context) error {
 	f.converged, f.exact = false, true
 	tol := f.tol
 	f.tol = 1e-11 // an integration's scatter over a difference's step must be small
+	f.lax = meritBind
+	if !f.oneMotion {
+		f.lax = 30 * meritBind // a long step's gaps are closed by the next one
+	}
+	defer func() { f.lax = meritBind }()
 	defer func() { f.exact, f.tol = false, tol }()
 	var fall, before float64
 	unit, fresh := 1.0, true

@@ -132,7 +132,7 @@ func (f *fitter) merit(p []float64) (total, data float64, rows int) {
 			if i+1 < len(k.segments) && !g.broken && !math.IsInf(f.bind, 1) {
 				k.model.Deviation(k.segments[i+1].y, g.end, gap)
 				for v, x := range gap {
-					x /= math.Max(f.bind, meritBind)
+					x /= math.Max(f.bind, f.lax)
 					if v >= nv {
 						x /= f.omega()
 					}
