@@ -18,6 +18,7 @@ type ledger struct {
 	rows  []row
 	rest  []float64 // per clip: how far the true vertical lies from the series' zero, rad
 	uRest []float64 // what is known of that beforehand
+	noise []float64 // per clip: scatter of the turning points over what the series' noise lets expect
 
 	weight, inertia float64         // as used: J and kg·m², or per unit inertia
 	shares          []finding.Share // relative, of every energy
@@ -33,7 +34,8 @@ type ledger struct {
 // turn is one turning point.
 type turn struct {
 	t, angle, u float64
-	index       int // of the sample before it
+	index       int     // of the sample before it
+	lean        float64 // rad per rad: change of angle by an error of the vertical
 }
 
 // row is one pass between two turning points of a clip.
@@ -71,7 +73,7 @@ func open(clips []Clip, opt Options) (*ledger, error) {
 				u = math.Abs(s.D[0])
 			}
 		}
-		l.rest, l.uRest = append(l.rest, 0), append(l.uRest, math.Max(u, 1e-5))
+		l.rest, l.uRest, l.noise = append(l.rest, 0), append(l.uRest, math.Max(u, 1e-5)), append(l.noise, 1)
 	}
 	n := 0
 	for _, tp := range l.turns {
@@ -180,7 +182,7 @@ func vertex(a *series.Angle, r series.Turning, reach float64) (turn, bool) {
 				}
 			}
 			angle := c[0] + d*(c[1]+d*(c[2]+d*(c[3]+d*c[4])))
-			return turn{t: at + d*reach, angle: angle, u: math.Sqrt(v) * math.Max(1, a.NoiseRatio), index: min(r.Index, len(a.T)-1)}, true
+			return turn{t: at + d*reach, angle: angle, lean: 1, u: math.Sqrt(v) * math.Max(1, a.NoiseRatio), index: min(r.Index, len(a.T)-1)}, true
 		}
 		at += d * reach
 	}
@@ -302,8 +304,8 @@ func (l *ledger) enter() {
 				before: l.energy(a), after: l.energy(b), amp: (math.Abs(a) + math.Abs(b)) / 2, side: math.Copysign(1, b),
 			}
 			ga, gb := l.torque(a), l.torque(b)
-			r.vFrom, r.vTo = sq(ga*tp[i-1].u), sq(gb*tp[i].u)
-			r.lean = ga - gb
+			r.vFrom, r.vTo = sq(ga*tp[i-1].u*l.noise[c]), sq(gb*tp[i].u*l.noise[c])
+			r.lean = ga*tp[i-1].lean - gb*tp[i].lean
 			r.speed = math.Sqrt(math.Max(0, (r.before+r.after)/l.inertia))
 			in := l.frictions(a, r.before, r.before, 0)
 			out := l.frictions(b, r.after, r.before, l.opt.PushOver)

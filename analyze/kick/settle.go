@@ -15,20 +15,28 @@ const plain = viscous | dry
 // settle finds the vertical, what the coil did at each pass, and the fits.
 func (l *ledger) settle(ctx context.Context) error {
 	l.setAside()
-	for range 2 {
+	const rounds = 4 // the last leaves the vertical where the turning points were measured
+	for n := range rounds {
 		if err := ctx.Err(); err != nil {
 			return err
+		}
+		if n >= 2 {
+			l.sharpen()
 		}
 		s, ok := l.fit(plain, nil, -1)
 		if !ok {
 			return errors.New("kick: the balance of the passes cannot be solved; look at the turning points in the angle's figure")
 		}
-		l.upright(s)
+		if n < rounds-1 {
+			l.upright(s)
+		}
 	}
+	l.measureNoise()
 	if l.unknown() {
 		l.findOff(ctx)
 	}
 	l.findOdd()
+	l.measureNoise()
 	if err := ctx.Err(); err != nil {
 		return err
 	}
@@ -98,6 +106,26 @@ func (l *ledger) takeBack() {
 				break
 			}
 		}
+	}
+}
+
+// measureNoise finds by how much the turning points scatter more than the series'
+// noise lets expect: errors of neighbouring frames that are alike do not average
+// out over a swing. It is the likeliest factor; an error of a turning point takes
+// from one pass what it gives to the next, which a kick that varies does not, so
+// that the two are told apart.
+func (l *ledger) measureNoise() {
+	for c := range l.noise {
+		best, at := math.Inf(-1), 1.0
+		for _, x := range [...]float64{1, 1.2, 1.45, 1.75, 2.1, 2.5, 3, 3.6, 4.3, 5.2} {
+			l.noise[c] = x
+			l.enter()
+			if s, ok := l.fit(plain, nil, -1); ok && s.logL > best {
+				best, at = s.logL, x
+			}
+		}
+		l.noise[c] = at
+		l.enter()
 	}
 }
 
