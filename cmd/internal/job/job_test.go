@@ -142,7 +142,8 @@ func fromTurns(t *testing.T, truth *samples.Truth, amplitude float64) (period, z
 	return 0, 0
 }
 
-// positions holds the track against the film's truth, in pixels.
+// positions holds the track against the film's truth, in pixels: every bob is
+// found in nearly all frames, and its centre is off by less than limit r.m.s.
 func positions(t *testing.T, rec *record.Record, dir string, limit float64) {
 	t.Helper()
 	f, err := os.Open(filepath.Join(dir, "truth.csv"))
@@ -158,29 +159,55 @@ func positions(t *testing.T, rec *record.Record, dir string, limit float64) {
 	for i, name := range rows[0] {
 		col[name] = i
 	}
-	bob := &rec.Track.Bobs[0]
-	var du, dv, z2 float64
-	n := 0
-	for _, row := range rows[1:] {
-		i, _ := strconv.Atoi(row[col["frame"]])
-		u, _ := strconv.ParseFloat(row[col["u_px"]], 64)
-		v, _ := strconv.ParseFloat(row[col["v_px"]], 64)
-		if i >= len(bob.Samples) || !bob.Samples[i].State.Usable() {
-			continue
+	for b := range rec.Track.Bobs {
+		bob := &rec.Track.Bobs[b]
+		var du, dv, z2 float64
+		n := 0
+		for _, row := range rows[1:] {
+			i, _ := strconv.Atoi(row[col["frame"]])
+			u, _ := strconv.ParseFloat(row[col["u_px"]], 64)
+			v, _ := strconv.ParseFloat(row[col["v_px"]], 64)
+			if row[col["bob"]] != bob.Name || i >= len(bob.Samples) || !bob.Samples[i].State.Usable() {
+				continue
+			}
+			s := bob.Samples[i]
+			du += (s.U - u) * (s.U - u)
+			dv += (s.V - v) * (s.V - v)
+			z2 += (s.U-u)*(s.U-u)/s.Pixel.AA + (s.V-v)*(s.V-v)/s.Pixel.BB
+			n++
 		}
-		s := bob.Samples[i]
-		du += (s.U - u) * (s.U - u)
-		dv += (s.V - v) * (s.V - v)
-		z2 += (s.U-u)*(s.U-u)/s.Pixel.AA + (s.V-v)*(s.V-v)/s.Pixel.BB
-		n++
+		if n < len(bob.Samples)*95/100 {
+			t.Errorf("%s: only %d of %d frames hold it", bob.Name, n, len(bob.Samples))
+		}
+		du, dv = math.Sqrt(du/float64(n)), math.Sqrt(dv/float64(n))
+		t.Logf("%s: positions after H.264 %.3f px across, %.3f px down r.m.s. in %d frames; over the stated uncertainty %.2f", bob.Name, du, dv, n, math.Sqrt(z2/float64(2*n)))
+		if du > limit || dv > limit {
+			t.Errorf("%s: positions are off by %.3f and %.3f px r.m.s.; allowed is %.2f", bob.Name, du, dv, limit)
+		}
 	}
-	if n < len(bob.Samples)*98/100 {
-		t.Fatalf("only %d of %d frames hold the bob", n, len(bob.Samples))
-	}
-	du, dv = math.Sqrt(du/float64(n)), math.Sqrt(dv/float64(n))
-	t.Logf("positions after H.264: %.4f px across, %.4f px down r.m.s. in %d frames; over the stated uncertainty %.2f", du, dv, n, math.Sqrt(z2/float64(2*n)))
-	if du > limit || dv > limit {
-		t.Errorf("positions are off by %.3f and %.3f px r.m.s.; the design allows %.2f", du, dv, limit)
+}
+
+// Every toy of the harbour set goes the whole road. Balls that hide one another,
+// and blue ones, which the encoder shows worst, are allowed half a pixel here; the
+// accuracy on one ball is track/follow's to show.
+func TestTheWholeWorkshopIsMeasured(t *testing.T) {
+	for _, name := range samples.Names() {
+		if name == "lantern" {
+			continue // the demo's own test
+		}
+		t.Run(name, func(t *testing.T) {
+			rec, _, dir := filmed(t, name, 2)
+			positions(t, rec, dir, 0.5)
+			checkFolder(t, filepath.Join(dir, "result"))
+			if rec.Headline == "" {
+				t.Error("no headline")
+			}
+			for _, f := range rec.Findings {
+				if f.Kind == finding.Measured && !(f.U > 0) {
+					t.Errorf("%s of %s has no uncertainty: %+v", f.Key, f.Subject, f)
+				}
+			}
+		})
 	}
 }
 
