@@ -100,7 +100,7 @@ type fitOnPage struct {
 }
 
 // fitNames are the fits' names in plain words.
-var fitNames = map[string]string{"decay.fit": "The free decay", "match.fit": "The model of the toy"}
+var fitNames = map[string]string{"decay.fit": "The free decay", "match.fit": "The model of the toy", "kick.ledger": "The energy ledger"}
 
 type parameter struct{ Name, Value string }
 

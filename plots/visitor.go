@@ -139,7 +139,7 @@ func Visitor(r *record.Record, w Words) ([]byte, error) {
 }
 
 // cutOut is the still where the toy moves: within a bob and a half of a line from
-// the pivot to anywhere that a bob was. All else is white. nil where no bob was
+// the point that it swings about to anywhere that a bob was. All else is white. nil where no bob was
 // seen.
 func cutOut(img image.Image, t *track.Track) image.Image {
 	type line struct{ x0, y0, x1, y1 float64 }
@@ -151,14 +151,15 @@ func cutOut(img image.Image, t *track.Track) image.Image {
 		radius = math.Max(radius, b.RadiusPX)
 		use := b.Usable()
 		step := max(1, len(use)/150)
+		hubU, hubV, swings := hub(use)
 		for k := 0; k < len(use); k += step {
 			u, v := use[k].U, use[k].V
 			if math.IsNaN(u) || math.IsNaN(v) {
 				continue
 			}
 			l := line{u, v, u, v}
-			if t.Cal.OriginU != 0 || t.Cal.OriginV != 0 {
-				l.x0, l.y0 = t.Cal.OriginU, t.Cal.OriginV
+			if swings {
+				l.x0, l.y0 = hubU, hubV
 			}
 			lines = append(lines, l)
 			for _, p := range [][2]float64{{l.x0, l.y0}, {l.x1, l.y1}} {
@@ -198,6 +199,37 @@ func cutOut(img image.Image, t *track.Track) image.Image {
 		}
 	}
 	return out
+}
+
+// hub is the point of the picture that a bob swings about, by the algebraic circle
+// through its path (I. Kåsa, IEEE Trans. Instrum. Meas. 25, 1976); ok is false where
+// the path is no piece of a circle.
+func hub(path []track.Sample) (u, v float64, ok bool) {
+	n := float64(len(path))
+	if n < 20 {
+		return 0, 0, false
+	}
+	mu, mv := 0.0, 0.0
+	for _, s := range path {
+		mu, mv = mu+s.U/n, mv+s.V/n
+	}
+	var uu, uv, vv, ru, rv float64
+	for _, s := range path {
+		x, y := s.U-mu, s.V-mv
+		r := x*x + y*y
+		uu, uv, vv, ru, rv = uu+x*x, uv+x*y, vv+y*y, ru+r*x, rv+r*y
+	}
+	det := 2 * (uu*vv - uv*uv)
+	if !(det > 0) {
+		return 0, 0, false
+	}
+	x, y := (ru*vv-rv*uv)/det, (rv*uu-ru*uv)/det
+	radius := math.Sqrt(x*x + y*y + (uu+vv)/n)
+	off := 0.0
+	for _, s := range path {
+		off += math.Abs(math.Hypot(s.U-mu-x, s.V-mv-y)-radius) / n
+	}
+	return mu + x, mv + y, off < 0.02*radius && radius < 20*math.Sqrt((uu+vv)/n)
 }
 
 // nearLine is the distance of a point from a stretch between two points.

@@ -57,9 +57,18 @@ func (l *ledger) ways(res *Result) {
 			"The kick depends on speed: it is stated for the mean speed of the kicked passes.")
 	}
 	if res.Separated {
-		u := l.best.sigma / math.Sqrt(2*math.Max(1, n-1))
-		f := finding.Normal("kick.scatter", l.part(), "Relative scatter of the kicks from pass to pass", l.best.sigma/res.Kick, u/res.Kick, "1", "the likeliest scatter beyond the pictures' noise")
-		f.Lo = math.Max(0, f.Lo)
+		const key, name, how = "kick.scatter", "Relative scatter of the kicks from pass to pass", "the likeliest scatter beyond the pictures' noise"
+		v := 0.0
+		for _, x := range l.best.varRes {
+			v += x / float64(len(l.best.varRes))
+		}
+		// The variance of a variance of v from n passes is 2v²/n.
+		most := math.Sqrt(sq(l.best.sigma)+1.645*v*math.Sqrt(2/math.Max(1, n))) / res.Kick
+		u := l.best.sigma / math.Sqrt(2*math.Max(1, n-1)) / res.Kick
+		f := finding.Normal(key, l.part(), name, l.best.sigma/res.Kick, u, "1", how)
+		if f.Value < 2*u || l.best.sigma == 0 {
+			f = finding.Finding{Key: key, Subject: l.part(), Name: name, Kind: finding.UpperLimit, Value: most, Hi: most, Unit: "1", Method: how}
+		}
 		res.Findings = append(res.Findings, f)
 	}
 }
