@@ -2,6 +2,7 @@ package kick
 
 import (
 	"context"
+	"math"
 	"math/rand/v2"
 	"strings"
 	"testing"
@@ -110,6 +111,24 @@ func TestDiagnoses(t *testing.T) {
 			if !strings.Contains(d.Verdict, w) {
 				t.Errorf("%s: %q lacks %q; causes %+v", c.name, d.Verdict, w, d.Causes)
 			}
+		}
+	}
+}
+
+// A reference cell in a unit that kicks 15 % too little: if the cell was weak, the
+// kick rises by 1/0.85, else it stays.
+func TestSwapSplitsTheGroup(t *testing.T) {
+	rng := rand.New(rand.NewPCG(5, 5))
+	before := unit{0.85, 1, 1}.ledger(t, rng, withOff, 0.42)
+	for _, c := range []struct {
+		kick float64
+		want string
+	}{{1, "The fault was in the cell"}, {0.85, "The fault was not in the cell"}, {0.893, "cannot tell"}} {
+		after := unit{c.kick, 1, 1}.ledger(t, rng, withOff, 0.42)
+		a, b := before.At(0.4), after.At(0.4)
+		u := math.Sqrt(a.VarKick/a.Kick/a.Kick + b.VarKick/b.Kick/b.Kick)
+		if said, p := Swap(b.Kick/a.Kick-1, u, Cell); !strings.Contains(said, c.want) || p < 0 || p > 1 {
+			t.Errorf("kick %g: %s (%g)", c.kick, said, p)
 		}
 	}
 }

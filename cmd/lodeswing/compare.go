@@ -13,12 +13,14 @@ import (
 
 	"lodeswing/analyze/compare"
 	"lodeswing/analyze/finding"
+	"lodeswing/analyze/kick"
 	"lodeswing/analyze/record"
 	"lodeswing/track/rig"
 )
 
 func compareCommand() *cobra.Command {
 	var asJSON, sameCamera, all bool
+	var swapped string
 	cmd := &cobra.Command{
 		Use:   "compare A B",
 		Short: "Set two results, or two groups of results, against each other",
@@ -27,14 +29,23 @@ the difference is more than the measurement. What both have in common cancels: w
 the same numbers in both rigs, an error of mass, inertia, ruler or clock shifts both
 alike. With --same-camera the scale and the vertical cancel too.
 
+--swapped says that between A and B a reference part took the place of the unit's
+own (cell, magnet or coil), and tells whether a weak drive's fault was in it.
+
 A and B are result folders, or folders that hold several: then means are compared,
 with what the units of a group scatter. Where a rig notes the temperature of its
 clip, magnets' moments are taken to 20 °C first.`,
 		Example: `  lodeswing compare before-result after-result
   lodeswing compare old-winding new-winding --same-camera
+  lodeswing compare weak-unit with-reference-cell --swapped cell
   lodeswing compare lot-may lot-june --json`,
 		Args: exactly(2, "two results, or folders of results"),
 		RunE: func(cmd *cobra.Command, args []string) error {
+			switch kick.Swapped(swapped) {
+			case "", kick.Cell, kick.Magnet, kick.CoilIn:
+			default:
+				return wrongUse("--swapped takes cell, magnet or coil, not %q", swapped)
+			}
 			a, rigA, err := side(args[0])
 			if err != nil {
 				return err
@@ -52,10 +63,14 @@ clip, magnets' moments are taken to 20 °C first.`,
 				return differencesJSON(cmd.OutOrStdout(), a.Name, b.Name, opt, ds)
 			}
 			tellDifferences(cmd.OutOrStdout(), a, b, opt, ds, all)
+			if swapped != "" {
+				return tellSwap(cmd.OutOrStdout(), ds, kick.Swapped(swapped))
+			}
 			return nil
 		},
 	}
 	cmd.Flags().BoolVar(&sameCamera, "same-camera", false, "the camera was not moved between: scale and vertical are the same")
+	cmd.Flags().StringVar(&swapped, "swapped", "", "the `part` that a reference part took the place of between A and B: cell, magnet or coil")
 	cmd.Flags().BoolVar(&all, "all", false, "also list what does not differ by more than the measurement")
 	cmd.Flags().BoolVar(&asJSON, "json", false, "print the differences as JSON, for machines")
 	return cmd
@@ -194,6 +209,18 @@ func tellDifferences(out io.Writer, a, b compare.Side, opt compare.Options, ds [
 	for _, c := range cautions {
 		fmt.Fprintln(out, "Caution:", c)
 	}
+}
+
+// tellSwap says whether a weak drive's fault was in the part that was swapped.
+func tellSwap(out io.Writer, ds []compare.Difference, part kick.Swapped) error {
+	for i := range ds {
+		if d := &ds[i]; d.Key == "kick.energy" && !math.IsNaN(d.Ratio) {
+			words, _ := kick.Swap(d.Ratio, d.URatio, part)
+			fmt.Fprintln(out, words)
+			return nil
+		}
+	}
+	return fmt.Errorf("the results do not both tell the energy of a kick, so that the swap of the %s cannot be judged; film both with ten seconds without the battery", part)
 }
 
 // differencesJSON writes the differences for machines; a number that is not known
