@@ -16,7 +16,6 @@ func (r *reporter) curves() {
 	for c := range r.clips {
 		k := &r.clips[c]
 		see := r.viewer(c, r.p)
-		w := &rower{f: r.fitter, c: c, k: k, see: see}
 		step := k.step()
 		for who := range k.watched {
 			o := &k.watched[who]
@@ -70,7 +69,6 @@ func (r *reporter) curves() {
 				across.Name = "angle"
 				lines = []finding.Line{across}
 			}
-			_ = w
 			r.res.Curves = append(r.res.Curves, finding.Curve{
 				Key: "match-fit", Subject: subject, Title: "Measured and matched: " + subject,
 				Caption: "Where it was, and where the matched model puts it, over the whole clip.",

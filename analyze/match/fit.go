@@ -62,6 +62,8 @@ func (f *fitter) fit(ctx context.Context) error {
 				o.w0, o.w1, o.w2 = o.w0/s, o.w1/s, o.w2/s
 			}
 		}
+		f.reweigh()
+		f.cautions = nil
 		if err := f.polish(ctx); err != nil {
 			return err
 		}
@@ -356,7 +358,7 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 // the sum of squares by next to nothing. It does not ask whether each step lowers
 // it: near the optimum the integration's own error hides that.
 func (f *fitter) polish(ctx context.Context) error {
-	const rounds, enough = 16, 1e-3
+	const rounds, enough, nearly = 20, 1e-3, 0.35
 	p := f.values()
 	f.converged, f.exact = false, true
 	tol := f.tol
@@ -365,85 +367,79 @@ func (f *fitter) polish(ctx context.Context) error {
 	if !f.oneMotion {
 		f.lax = 30 * meritBind // a long step's gaps are closed by the next one
 	}
-	defer func() { f.lax = meritBind }()
-	defer func() { f.exact, f.tol = false, tol }()
-	var fall, before float64
-	unit, fresh := 1.0, true
-	lambda := 0.0
-	keep := func() (out [][][]float64) {
-		for c := range f.clips {
-			var all [][]float64
-			for i := range f.clips[c].segments {
-				all = append(all, append([]float64(nil), f.clips[c].segments[i].y...))
-			}
-			out = append(out, all)
-		}
-		return out
+	defer func() { f.exact, f.tol, f.lax = false, tol, meritBind }()
+	if err := f.shootAll(ctx, p, true, true); err != nil {
+		return err
 	}
-	var old [][][]float64
-	var oldP []float64
-	now := math.Inf(1)
-	for round := range rounds {
-		// The derivatives are found anew only where the steps are not small at once.
-		if err := f.shootAll(ctx, p, fresh, fresh); err != nil {
-			return err
-		}
-		next, _, rows := f.merit(p)
-		if old != nil && !(next < now+0.01*now) {
-			// The step led astray: back, and a shorter one.
-			for c := range f.clips {
-				for i := range f.clips[c].segments {
-					copy(f.clips[c].segments[i].y, old[c][i])
-				}
-			}
-			p = oldP
-			f.setValues(p)
-			lambda, fresh, old = math.Max(20*lambda, 1e-4), true, nil
-			continue
-		}
-		if old != nil { // the last step was good
-			if lambda /= 20; lambda < 1e-7 {
-				lambda = 0
-			}
-		}
-		now = next
-		f.final = f.solveChain(p, lambda, true)
-		before, fall = fall, f.final.foreseen()
-		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g", f.rms(), f.gaps(), fall)
-		unit = math.Max(1, next/float64(rows)) // what a standard uncertainty counts, misfit included
+	now, _, rows := f.merit(p)
+	lambda, unit, fall := 0.0, 1.0, math.Inf(1)
+	failed := 0
+	for range rounds {
+		unit = math.Max(1, now/float64(rows)) // what a standard uncertainty counts, misfit included
 		if unit > plainMisfit*plainMisfit || f.widened > plainMisfit {
-			unit = math.Max(unit, 2e-3*next) // and the residuals hang together
-		}
-		if lambda == 0 && fall < enough*unit || round > 3 && fall < 0.05*unit {
-			f.converged, f.why = true, fmt.Sprintf("one more step is foreseen to lower the sum of squares by only %.1g", fall)
-			break
-		}
-		fresh = fall > 10 || round > 0 && !fresh && fall > 0.1*before
-		old, oldP = keep(), p
-		p = f.stepped(p, f.final.step)
-		for c := range f.clips {
-			k := &f.clips[c]
-			for i := range k.segments {
-				k.model.Displace(k.segments[i].y, f.capped(f.final.moves[c][i]))
-				k.model.Normalise(k.segments[i].y)
-			}
-		}
-		f.setValues(p)
-	}
-	if !f.converged {
-		if err := f.shootAll(ctx, p, true, true); err != nil {
-			return err
+			unit = math.Max(unit, 2e-3*now) // and the residuals hang together
 		}
 		f.final = f.solveChain(p, 0, true)
 		fall = f.final.foreseen()
-		if f.why = fmt.Sprintf("after %d last steps one more is still foreseen to lower the sum of squares by %.2g", rounds, fall); fall < 0.5*unit {
-			f.converged = true
-			if fall > 0.1*unit {
-				f.cautions = append(f.cautions, "The matching settled only to within half a standard uncertainty of its numbers.")
+		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g", f.rms(), f.gaps(), fall)
+		if fall < enough*unit || failed > 0 && fall < nearly*unit || failed > 6 {
+			break
+		}
+		s := f.final
+		if lambda > 0 {
+			s = f.solveChain(p, lambda, false)
+		}
+		trial := f.stepped(p, s.step)
+		var old [][]float64
+		for c := range f.clips {
+			k := &f.clips[c]
+			for i := range k.segments {
+				g := &k.segments[i]
+				old = append(old, append([]float64(nil), g.y...))
+				g.swap()
+				k.model.Displace(g.y, f.capped(s.moves[c][i]))
+				k.model.Normalise(g.y)
 			}
 		}
+		err := f.shootAll(ctx, trial, false, false)
+		if ctx.Err() != nil {
+			return err
+		}
+		next, _, _ := f.merit(trial)
+		if err != nil || !(next < now+0.2*unit) {
+			n := 0
+			for c := range f.clips {
+				for i := range f.clips[c].segments {
+					g := &f.clips[c].segments[i]
+					g.swap()
+					copy(g.y, old[n])
+					n++
+				}
+			}
+			lambda = math.Max(10*lambda, 1e-4)
+			failed++
+			continue
+		}
+		failed, p, now = 0, trial, next
+		f.setValues(p)
+		if lambda /= 3; lambda < 3e-5 {
+			lambda = 0
+		}
+		// The derivatives are found anew where the step was not small.
+		if fall > unit {
+			f.regauge()
+			if err := f.shootAll(ctx, p, true, true); err != nil {
+				return err
+			}
+			now, _, _ = f.merit(p)
+		}
 	}
-	f.chi2, _, _ = f.merit(p)
+	f.converged = fall < 0.5*unit
+	f.why = fmt.Sprintf("one more step is foreseen to lower the sum of squares by %.1g", fall)
+	if f.converged && fall > 0.1*unit {
+		f.cautions = append(f.cautions, "The matching settled only to within half a standard uncertainty of its numbers.")
+	}
+	f.chi2 = now
 	return nil
 }
 
