@@ -103,7 +103,7 @@ func Answers(claims []rig.Claim, in Input) ([]Answer, []finding.Curve) {
 func words(c *rig.Claim) string {
 	switch {
 	case c.RunsForS.Set:
-		return fmt.Sprintf("It runs for %.3g minutes.", c.RunsForS.V/60)
+		return "It runs for " + minutes(c.RunsForS.V) + "."
 	case c.HandsOverWithinS.Set:
 		return fmt.Sprintf("It hands over within %.3g seconds.", c.HandsOverWithinS.V)
 	case c.NeverSettles:
