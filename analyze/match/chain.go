@@ -9,6 +9,7 @@ import (
 // Householder reflections. The last column is the right-hand side and is carried
 // along. Rows beyond cols hold what is left over.
 func triangle(a []float64, rows, cols int) {
+	work := make([]float64, cols)
 	for j := 0; j < cols-1 && j < rows-1; j++ {
 		norm := 0.0
 		for i := j; i < rows; i++ {
@@ -25,12 +26,9 @@ func triangle(a []float64, rows, cols int) {
 		beta := 1 / (norm * (norm + math.Abs(x0))) // 2/(vᵀv)
 		a[j*cols+j] = v0
 		// w = vᵀA for the columns to the right, row by row, then A −= β v w.
-		var w [160]float64
-		ws := w[:0]
-		if n := cols - j - 1; n <= len(w) {
-			ws = w[:n]
-		} else {
-			ws = make([]float64, n)
+		ws := work[:cols-j-1]
+		for c := range ws {
+			ws[c] = 0
 		}
 		for i := j; i < rows; i++ {
 			v := a[i*cols+j]

@@ -2,12 +2,15 @@ package match
 
 import (
 	"context"
+	"flag"
 	"math"
 	"math/rand/v2"
 	"testing"
 
 	"lodeswing/track/rig"
 )
+
+var longUnits = flag.Int("units", 334, "units of each toy in the long coverage run")
 
 // drawn is a unit as it might have come from the workshop: each number that the
 // rig gives with an uncertainty is drawn from it, so that what the rig says is
@@ -87,7 +90,7 @@ func coverage(t *testing.T, name string, units int, seconds float64) (inside, al
 func TestCoverage(t *testing.T) {
 	units := 12
 	if *long {
-		units = 334
+		units = *longUnits
 	}
 	inside, all := 0, 0
 	names := []string{"lantern"}
