@@ -46,6 +46,7 @@ var analyses = []analysis{
 	{"angles", "series.angles", "Angle", angles},
 	{"free decay", "decay.free_decay", "Free decay", decays},
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
+	{"modes", "modes.modes", "Modes", together},
 	{"matching", "match.fit", "Model matched to the motion", matching},
 	{"kicks", "kick.ledger", "Energy ledger", kicks},
 	{"claims", "claim.answers", "Claims", claims},

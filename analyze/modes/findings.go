@@ -80,7 +80,7 @@ func (res *Result) Findings() []finding.Finding {
 	}
 	if caution := res.nonlinear(); caution != "" {
 		for i := range out {
-			if out[i].Kind == finding.Measured && strings.HasSuffix(out[i].Key, ".frequency") {
+			if out[i].Kind == finding.Measured && (strings.HasSuffix(out[i].Key, ".frequency") || strings.HasSuffix(out[i].Key, ".period")) {
 				out[i].Cautions = append(out[i].Cautions, caution)
 			}
 		}
@@ -97,7 +97,7 @@ func (res *Result) nonlinear() string {
 	if res.bobs[0].U == nil || res.Scatter < 2 {
 		return ""
 	}
-	return fmt.Sprintf("The motion departs from a sum of damped sinusoids by %.1f times what the pictures leave open, as large swings do; uncertainties were widened for it.", res.Scatter)
+	return fmt.Sprintf("The motion departs from a sum of damped sinusoids by %.1f times what the pictures leave open, as swings do that are so large that their frequency changes with them. Frequencies and beats are those of this clip, at its amplitudes; uncertainties were widened for it. A smaller release tells the modes of small motion.", res.Scatter)
 }
 
 func (res *Result) exchangeText() string {
@@ -193,6 +193,9 @@ func (res *Result) spectrumCurve() finding.Curve {
 	}
 }
 
+// shownPower is the least power of a spectrogram's shades over the greatest.
+const shownPower = 1e-5
+
 // Spectrogram is the figure of one bob's spectrum as it changes over the clip, up
 // to 3 times the strongest frequency, in stretches of ten swings or a fifth of the
 // clip, whichever is shorter.
@@ -212,6 +215,14 @@ func Spectrogram(b Bob, opt Options) (finding.Curve, error) {
 	}
 	c := g.Curve(b.Name)
 	c.Key, c.Title = "spectrogram", "Spectrum over time"
+	top := 0.0
+	for _, row := range g.PSD {
+		for _, v := range row {
+			if v > top {
+				top = v
+			}
+		}
+	}
 	grid := &finding.Grid{X: g.Time, Label: "power", Unit: opt.Unit + "²/Hz", Log: true}
 	for k, f := range g.Freq {
 		if f > 3*strongest {
@@ -219,9 +230,10 @@ func Spectrogram(b Bob, opt Options) (finding.Curve, error) {
 		}
 		grid.Y = append(grid.Y, f)
 		for i := range g.Time {
-			grid.Z = append(grid.Z, g.PSD[i][k])
+			grid.Z = append(grid.Z, math.Max(g.PSD[i][k], shownPower*top))
 		}
 	}
 	c.Grid = grid
+	c.Caption += " Dark: much motion at that frequency and time; what is below a hundred-thousandth of the greatest is shown as that."
 	return c, nil
 }
