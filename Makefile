@@ -36,7 +36,7 @@ check: install-run
 	go tool staticcheck ./...
 
 long: install-run install-test
-	go test -timeout 3h ./analyze/... -args -long
+	go test -timeout 3h $$(grep -rl --include='*_test.go' '"long"' analyze track cmd samples | xargs -n1 dirname | sort -u | sed 's|^|./|') -args -long
 
 bench: install-run install-test
 	go test -run '^$$' -bench . -benchtime 3x ./...
