@@ -1,6 +1,7 @@
 package chaos
 
 import (
+	"cmp"
 	"context"
 	"fmt"
 	"math"
@@ -18,7 +19,7 @@ type Motion struct {
 	Columns [][]float64 // NaN where a sample is missing
 	U       float64     // standard uncertainty of a sample, typical of all columns
 	// Never says, in plain words, why this toy cannot be chaotic whatever it does
-	// (one undriven degree of freedom; axisymmetric). Empty: it may be.
+	// as Never has it ("… cannot be"); empty: it may be.
 	Never string
 }
 
@@ -69,10 +70,11 @@ const enough = 100
 // The limits between regimes, as shares of the amplitude. They were set on the
 // toys of the demo workshop and on simulated motions; no source.
 const (
-	steadyRipple = 0.03 // an amplitude that scatters less is steady
-	regularJump  = 0.08 // turning points nearer to their neighbours' course are regular
-	decayed      = 0.15 // a fall of ln(amplitude) that counts as decay
-	explained    = 0.95 // lines that explain this much make a motion quasi-periodic
+	steadyRipple = 0.03  // an amplitude that scatters less is steady
+	regularJump  = 0.08  // turning points nearer to their neighbours' course are regular
+	decayed      = 0.15  // a fall of ln(amplitude) that counts as decay
+	explained    = 0.985 // few lines that explain this much make a motion quasi-periodic
+	few          = 4     // lines; with many, anything short can be explained
 )
 
 // Assess tells the regime of a motion. It errs only for input that makes no sense;
@@ -94,7 +96,7 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		r.Text, r.NeedS = "Too short to say how it behaves.", 64*e.step
 		return r, nil
 	}
-	r.spectrum, err = spectrum.Compute(e.times(), main, nil, spectrum.Options{MaxLines: 6})
+	r.spectrum, err = spectrum.Compute(e.times(), main, nil, spectrum.Options{MaxLines: few, Spare: -1})
 	if err != nil || len(r.spectrum.Lines) == 0 {
 		r.Text = "No frequency stands out of the scatter; nothing can be said of how it behaves."
 		return r, nil
@@ -152,8 +154,10 @@ func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 		r.Kind = Growing
 	case smooth && r.Ripple < steadyRipple:
 		r.Kind = Steady
-	case r.Explained > explained && len(lines) >= 2 && r.beats(lines):
+	case (smooth || r.Explained > explained) && len(lines) >= 2 && r.beats(lines, smooth):
 		r.Kind = Beating
+	case smooth:
+		r.Kind = Steady // its amplitude wanders, but not from swing to swing
 	case r.Explained > explained:
 		r.Kind = QuasiPeriodic
 	default:
@@ -184,25 +188,25 @@ func (r *Regime) margin() float64 {
 	return 0.6 + 0.38*c
 }
 
-// lines are the steady lines that hold more than a hundredth of the strongest's
-// power, overtones left out.
+// lines are the sinusoids that hold more than a hundredth of the strongest's
+// power, strongest first.
 func (r *Regime) lines() []spectrum.Line {
-	all := r.spectrum.Lines
-	var out []spectrum.Line
-	for _, l := range all {
-		if !l.Unsteady && l.Harmonic == 0 && l.LevelDB > all[0].LevelDB-20 {
-			out = append(out, l)
-		}
+	all := slices.Clone(r.spectrum.Sinusoids)
+	slices.SortFunc(all, func(a, b spectrum.Line) int { return -cmp.Compare(a.LevelDB, b.LevelDB) })
+	if len(all) == 0 {
+		return nil
 	}
-	return out
+	top := all[0].LevelDB
+	return slices.DeleteFunc(all, func(l spectrum.Line) bool { return l.LevelDB < top-20 })
 }
 
 // beats tells whether the two strongest lines lie so near that the eye sees one
-// motion wax and wane, and sets the beat period.
-func (r *Regime) beats(lines []spectrum.Line) bool {
+// motion wax and wane (or whether the turning points say so), and sets the beat
+// period.
+func (r *Regime) beats(lines []spectrum.Line, smooth bool) bool {
 	a, b := lines[0], lines[1]
 	d := math.Abs(a.Frequency - b.Frequency)
-	if d > 0.35*a.Frequency {
+	if d > 0.35*a.Frequency && !smooth {
 		return false
 	}
 	u := math.Hypot(a.UFrequency, b.UFrequency)
@@ -211,7 +215,7 @@ func (r *Regime) beats(lines []spectrum.Line) bool {
 }
 
 // chaos applies the tests to an irregular motion that does not decay. All three
-// must agree: an exponent beyond three of its uncertainties, K above 0.8, and no
+// must agree: an exponent beyond three of its uncertainties, K above 0.7, and no
 // surrogate that does as well.
 func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 	if m.Never != "" {
@@ -268,7 +272,7 @@ func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 	if d.Found && d.Exponent.V > 3*d.Exponent.U {
 		votes++
 	}
-	if r.ZeroOne != nil && r.ZeroOne.K.V > 0.8 {
+	if r.ZeroOne != nil && r.ZeroOne.K.V > 0.7 {
 		votes++
 	}
 	if r.Surrogates != nil && r.Surrogates.Rejected {
@@ -338,7 +342,7 @@ func (r *Regime) words(m Motion) {
 	case Irregular:
 		switch {
 		case m.Never != "":
-			r.Text = "Irregular, but not chaotic: " + m.Never + "."
+			r.Text = "Irregular, but not chaotic: " + m.Never + " chaotic."
 		case r.NeedS > 0:
 			r.Text = fmt.Sprintf("Irregular. Whether it is chaotic needs %d passes; film for about %.0f s.", enough, r.NeedS)
 		default:

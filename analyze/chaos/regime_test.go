@@ -2,11 +2,15 @@ package chaos
 
 import (
 	"context"
+	"flag"
 	"math"
 	"math/rand/v2"
+	"path/filepath"
 	"strings"
 	"testing"
 )
+
+var long = flag.Bool("long", false, "run the full Monte Carlo counts")
 
 // motion samples f at 60 Hz with noise, one sample in fifty missing.
 func motion(rng *rand.Rand, seconds, noise float64, f func(t float64) []float64) Motion {
@@ -93,12 +97,103 @@ func TestRegimeOfChaos(t *testing.T) {
 		t.Errorf("from 12 s: %s, %v", r.Text, r.NeedS)
 	}
 	m := motion(rng, 140, 0.05, at)
-	m.Never = "one part on a hinge that nothing drives"
+	m.Never = "one part on one hinge that no coil drives cannot be"
 	if r, err = Assess(context.Background(), m); err != nil {
 		t.Fatal(err)
 	}
 	if r.Kind != Irregular || !strings.Contains(r.Text, "not chaotic") {
 		t.Errorf("a toy that cannot be chaotic: %s", r.Text)
+	}
+}
+
+// The toys of the demo workshop and two that are chaotic, from what a camera sees of their bobs.
+func TestRegimesOfToys(t *testing.T) {
+	cases := []struct {
+		name          string
+		from, seconds float64
+		want          Kind
+	}{
+		{"gull", 0, 40, Growing},
+		{"gull", 200, 30, Steady},
+		{"buoys", 0, 20, Beating},
+		{"lantern", 0, 20, Decaying},
+		{"lantern-magnet-out", 0, 20, Decaying},
+		// Launched in a wide circle it goes round in order for a minute, then darts.
+		{"lantern-ball", 0, 30, Decaying},
+		{"lantern-ball", 90, 60, IrregularDecaying},
+		{"restless", 60, 30, Irregular},
+		{"thrown", 60, 120, Chaotic},
+	}
+	for _, c := range cases {
+		path := harbour(c.name)
+		if c.name == "restless" || c.name == "thrown" {
+			path = filepath.Join("testdata", c.name+".toml")
+		}
+		m, start := openToy(t, path)
+		never := Never(openRig(t, path))
+		rng := rand.New(rand.NewPCG(5, 6))
+		seen := watch(t, m, start, c.from, 1./60, int(60*c.seconds))
+		see := Motion{U: 1e-4, Never: never}
+		for i, p := range seen {
+			see.T = append(see.T, float64(i)/60)
+			k := 0
+			for _, q := range p {
+				for _, v := range []float64{q[0], q[2] + 0.5*q[1]} { // from above at 30°
+					if i == 0 {
+						see.Columns = append(see.Columns, nil)
+					}
+					see.Columns[k] = append(see.Columns[k], v+1e-4*rng.NormFloat64())
+					k++
+				}
+			}
+		}
+		r, err := Assess(context.Background(), see)
+		if err != nil {
+			t.Fatal(err)
+		}
+		t.Logf("%s, %.0f s: %s %.2f %s\n   %s", c.name, c.seconds, r.Kind, r.Confidence, r.Text, strings.Join(r.Evidence, "; "))
+		if r.Kind != c.want {
+			t.Errorf("%s: told %q, want %q", c.name, r.Kind, c.want)
+		}
+	}
+}
+
+// Noise of a hundredth of the amplitude never makes a regular motion chaotic.
+func TestNoiseIsNotChaos(t *testing.T) {
+	runs := 8
+	if *long {
+		runs = 250
+	}
+	rng := rand.New(rand.NewPCG(7, 8))
+	told := map[string]map[Kind]int{}
+	for range runs {
+		w := 2 * math.Pi * (0.7 + 0.6*rng.Float64())
+		ratio, share := 1.02+0.2*rng.Float64(), 0.2+0.6*rng.Float64()
+		other, die := 1.3+rng.Float64(), 0.005+0.03*rng.Float64()
+		for name, f := range map[string]func(t float64) []float64{
+			"steady":         func(t float64) []float64 { return []float64{math.Sin(w*t) + 0.02*math.Sin(3*w*t)} },
+			"decaying":       func(t float64) []float64 { return []float64{math.Exp(-die*t) * math.Sin(w*t)} },
+			"beating":        func(t float64) []float64 { return []float64{math.Sin(w*t) + share*math.Sin(ratio*w*t)} },
+			"quasi-periodic": func(t float64) []float64 { return []float64{math.Sin(w*t) + share*math.Sin(other*w*t)} },
+		} {
+			r, err := Assess(context.Background(), motion(rng, 120, 0.01, f))
+			if err != nil {
+				t.Fatal(err)
+			}
+			if told[name] == nil {
+				told[name] = map[Kind]int{}
+			}
+			told[name][r.Kind]++
+			if r.Kind == Chaotic {
+				t.Errorf("%s is told chaotic: %v", name, r.Evidence)
+			}
+		}
+	}
+	for name, kinds := range told {
+		t.Logf("%-16s told %v", name, kinds)
+		if kinds[Irregular] > runs/8 {
+			t.Errorf("%s: %d of %d told irregular", name, kinds[Irregular], runs)
+		}
 	}
 }
 
