@@ -47,6 +47,7 @@ var analyses = []analysis{
 	{"free decay", "decay.free_decay", "Free decay", decays},
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
 	{"modes", "modes.modes", "Modes", together},
+	{"regime", "regime", "How it behaves", regime},
 	{"matching", "match.fit", "Model matched to the motion", matching},
 	{"kicks", "kick.ledger", "Energy ledger", kicks},
 	{"claims", "claim.answers", "Claims", claims},
