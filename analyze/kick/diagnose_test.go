@@ -56,7 +56,9 @@ func reference(t testing.TB) Reference {
 
 // Weak drives (−15 %) and more loss (+15 %) are told apart in 99 % of units, and
 // at most 1 % of good units are rejected; "measure again" counts as not told.
-// With -long 2,000 units: the table is printed.
+// With -long 2,001 units: the table is printed. Measured so: of 667 each, good 662
+// passed, none rejected, 5 to be measured again; weak drive 667 told; more loss 666
+// told, 1 to be measured again.
 func TestUnitsAreToldApart(t *testing.T) {
 	ref := reference(t)
 	runs := 16

@@ -110,8 +110,9 @@ var separable = []struct {
 }
 
 // The kick is within 4 % of the toy model's own (95 %, inertia given), and its
-// interval holds it. With -long: 1,000 motions, 250 of each kind; measured so, the
-// worst 95 % error is printed.
+// interval holds it. With -long: 1,000 motions, 250 of each kind; measured so, 95 %
+// of the kicks lie within 0.28 % (start-up), 1.3 % (push) and 0.1 % (battery out or
+// in), and the intervals hold the truth in 91, 98, 99 and 96 %, 96.0 % of all.
 func TestKickAgainstTheModel(t *testing.T) {
 	r := gull(t)
 	m := model(t, r)
