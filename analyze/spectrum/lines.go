@@ -34,7 +34,7 @@ func (s *Spectrum) findLines(ctx context.Context, d *data) ([]float64, error) {
 	const df = 1. / 8 // of a resolution: near enough for the fit to find the top
 	n := int(s.opt.MaxFreq*d.span/df) + 1
 	// A motion that changes takes several sinusoids for one line; room for that.
-	for f.lines() < s.opt.MaxLines+6 {
+	for f.lines() < s.opt.MaxLines+s.opt.Spare {
 		power := d.lombScargle(f.rest, df/d.span, n)
 		if s.Power == nil {
 			s.Power = make([]float64, len(s.Freq))
@@ -348,6 +348,8 @@ func (f *fit) report() []Line {
 			out = append(out, line)
 		}
 	}
+	slices.SortFunc(out, func(a, b Line) int { return cmp.Compare(a.Frequency, b.Frequency) })
+	f.s.Sinusoids = slices.Clone(out)
 	out = f.cluster(out)
 	slices.SortFunc(out, func(a, b Line) int { return -cmp.Compare(a.LevelDB, b.LevelDB) })
 	out = out[:min(len(out), f.s.opt.MaxLines)]
@@ -358,9 +360,8 @@ func (f *fit) report() []Line {
 // cluster makes one unsteady line of every group of three or more lines nearer
 // than 3/duration and their widths to the next, or of two that the clip cannot
 // part, and lets weak companions beside a line that
-// decays or drifts go with it.
+// decays or drifts go with it. The lines come in order of frequency.
 func (f *fit) cluster(lines []Line) []Line {
-	slices.SortFunc(lines, func(a, b Line) int { return cmp.Compare(a.Frequency, b.Frequency) })
 	var out []Line
 	for i := 0; i < len(lines); {
 		j := i + 1

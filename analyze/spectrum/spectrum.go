@@ -28,6 +28,9 @@ type Options struct {
 	MinFreq  float64 // Hz, least frequency of a line; 0: one over the duration
 	MaxFreq  float64 // Hz; 0: half the sampling rate (from the median step)
 	MaxLines int     // 0: 8
+	// Spare is how many sinusoids beyond MaxLines may be spent on lines that are not
+	// steady. 0: 6; negative: none.
+	Spare int
 	// FalseAlarm is the greatest chance that noise alone made a line for it to be
 	// listed. 0: 0.001.
 	FalseAlarm float64
@@ -78,6 +81,9 @@ type Spectrum struct {
 	Power []float64
 	// Lines, strongest first.
 	Lines []Line
+	// Sinusoids are all that were fitted, in order of frequency, before groups of them
+	// were made one unsteady line.
+	Sinusoids []Line
 
 	From, To   float64 // s, first and last sample
 	Samples    int
@@ -227,6 +233,10 @@ func prepare(t, y, u []float64, opt *Options) (*data, error) {
 	if opt.MaxLines <= 0 {
 		opt.MaxLines = 8
 	}
+	if opt.Spare == 0 {
+		opt.Spare = 6
+	}
+	opt.Spare = max(0, opt.Spare)
 	if opt.FalseAlarm <= 0 {
 		opt.FalseAlarm = 1e-3
 	}
