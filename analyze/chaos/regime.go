@@ -21,6 +21,9 @@ type Motion struct {
 	// Never says, in plain words, why this toy cannot be chaotic whatever it does
 	// as Never has it ("… cannot be"); empty: it may be.
 	Never string
+	// BeatS is the beat period in s as the modes of all parts tell it; it is told in
+	// place of that of two spectral lines of one column. 0: not known.
+	BeatS Value
 }
 
 // Kind is a regime.
@@ -301,6 +304,9 @@ func thin(x []float64, period float64) []float64 {
 
 // words writes the line and the evidence.
 func (r *Regime) words(m Motion) {
+	if m.BeatS.V > 0 && r.BeatS.V > 0 {
+		r.BeatS = m.BeatS
+	}
 	say := func(format string, a ...any) { r.Evidence = append(r.Evidence, fmt.Sprintf(format, a...)) }
 	say("%d passes, a period of %.3g s", r.Passes, r.PeriodS)
 	say("from start to end the amplitude changes by a factor of %.2f, and scatters by %.1f %% about its course", math.Exp(r.Change), 100*r.Ripple)

@@ -45,7 +45,7 @@ func TestSurrogateProperties(t *testing.T) {
 func TestSurrogateTest(t *testing.T) {
 	ctx := context.Background()
 	rng := rand.New(rand.NewPCG(3, 4))
-	runs, rejected := 40, 0
+	runs, rejected := 24, 0
 	for r := range runs {
 		x, y, z := make([]float64, 600), 0.0, 0.0
 		for i := range x {
