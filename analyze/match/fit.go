@@ -98,6 +98,12 @@ func (f *fitter) approach(ctx context.Context) error {
 	if err := f.descend(ctx, 8, 1e-2, false); err != nil {
 		return err
 	}
+	if f.reweigh(); f.scatter < plainMisfit { // single samples that lie far out must not lead
+		if err := f.descend(ctx, 4, 1e-2, false); err != nil {
+			return err
+		}
+		f.reweigh()
+	}
 	f.opt.log("free stretches: r.m.s. residual %.4g", f.rms())
 	f.merge()
 	f.tol = 1e-9
@@ -373,67 +379,75 @@ func (f *fitter) polish(ctx context.Context) error {
 	}
 	now, _, rows := f.merit(p)
 	lambda, unit, fall := 0.0, 1.0, math.Inf(1)
-	failed := 0
+	failed, ahead := 0, 0
+	// A step that lets the sum of squares rise is followed for a while, since in a
+	// narrow bent valley the next ones may lead lower (a watchdog: R. M. Chamberlain
+	// et al., Mathematical Programming Study 16 (1982) 1); best is where to go back to.
+	best := f.mark(p, now)
 	for range rounds {
-		unit = math.Max(1, now/float64(rows)) // what a standard uncertainty counts, misfit included
+		unit = math.Max(1, best.merit/float64(rows)) // what a standard uncertainty counts, misfit included
 		if unit > plainMisfit*plainMisfit || f.widened > plainMisfit {
-			unit = math.Max(unit, 2e-3*now) // and the residuals hang together
+			unit = math.Max(unit, 2e-3*best.merit) // and the residuals hang together
 		}
 		f.final = f.solveChain(p, 0, true)
 		fall = f.final.foreseen()
-		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g", f.rms(), f.gaps(), fall)
-		if fall < enough*unit || failed > 0 && fall < nearly*unit || failed > 6 {
+		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g, damped by %.1g", f.rms(), f.gaps(), fall, lambda)
+		if ahead == 0 && (fall < enough*unit || failed > 0 && fall < nearly*unit || failed > 6) {
 			break
 		}
 		s := f.final
 		if lambda > 0 {
 			s = f.solveChain(p, lambda, false)
 		}
-		trial := f.stepped(p, s.step)
-		var old [][]float64
+		p = f.stepped(p, s.step)
 		for c := range f.clips {
 			k := &f.clips[c]
 			for i := range k.segments {
 				g := &k.segments[i]
-				old = append(old, append([]float64(nil), g.y...))
-				g.swap()
 				k.model.Displace(g.y, f.capped(s.moves[c][i]))
 				k.model.Normalise(g.y)
 			}
 		}
-		err := f.shootAll(ctx, trial, false, false)
+		err := f.shootAll(ctx, p, false, false)
 		if ctx.Err() != nil {
 			return err
 		}
-		next, _, _ := f.merit(trial)
-		if err != nil || !(next < now+0.2*unit) {
-			n := 0
-			for c := range f.clips {
-				for i := range f.clips[c].segments {
-					g := &f.clips[c].segments[i]
-					g.swap()
-					copy(g.y, old[n])
-					n++
-				}
+		now, _, _ = f.merit(p)
+		far := fall > unit
+		switch {
+		case err == nil && now < best.merit+0.2*unit:
+			failed, ahead = 0, 0
+			f.setValues(p)
+			best = f.mark(p, now)
+			if lambda /= 3; lambda < 1e-6 {
+				lambda = 0
 			}
-			lambda = math.Max(10*lambda, 1e-4)
-			failed++
-			continue
+		case err == nil && ahead < 3 && now < 1e4*best.merit:
+			ahead, far = ahead+1, true
+		default:
+			p = f.restore(best)
+			lambda, far = math.Max(10*lambda, 1e-5), true
+			failed, ahead = failed+1, 0
+			if err := f.shootAll(ctx, p, false, false); err != nil {
+				return err
+			}
 		}
-		failed, p, now = 0, trial, next
-		f.setValues(p)
-		if lambda /= 3; lambda < 3e-5 {
-			lambda = 0
-		}
-		// The derivatives are found anew where the step was not small.
-		if fall > unit {
+		if far { // the derivatives are found anew where the step was not small
 			f.regauge()
 			if err := f.shootAll(ctx, p, true, true); err != nil {
 				return err
 			}
-			now, _, _ = f.merit(p)
 		}
 	}
+	if ahead > 0 {
+		p = f.restore(best)
+		if err := f.shootAll(ctx, p, true, true); err != nil {
+			return err
+		}
+		f.final = f.solveChain(p, 0, true)
+		fall = f.final.foreseen()
+	}
+	now = best.merit
 	f.converged = fall < 0.5*unit
 	f.why = fmt.Sprintf("one more step is foreseen to lower the sum of squares by %.1g", fall)
 	if f.converged && fall > 0.1*unit {
@@ -441,6 +455,36 @@ func (f *fitter) polish(ctx context.Context) error {
 	}
 	f.chi2 = now
 	return nil
+}
+
+// place is a point of the search.
+type place struct {
+	p      []float64
+	states [][]float64
+	merit  float64
+}
+
+func (f *fitter) mark(p []float64, merit float64) place {
+	m := place{p: p, merit: merit}
+	for c := range f.clips {
+		for i := range f.clips[c].segments {
+			m.states = append(m.states, slices.Clone(f.clips[c].segments[i].y))
+		}
+	}
+	return m
+}
+
+// restore goes back to a marked place; what was computed there is not.
+func (f *fitter) restore(m place) []float64 {
+	n := 0
+	for c := range f.clips {
+		for i := range f.clips[c].segments {
+			copy(f.clips[c].segments[i].y, m.states[n])
+			n++
+		}
+	}
+	f.setValues(m.p)
+	return m.p
 }
 
 // foreseen is how much the step of the parameters lowers the sum of squares in

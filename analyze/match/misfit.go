@@ -6,6 +6,7 @@ import (
 	"math"
 	"sort"
 	"strings"
+	"time"
 
 	"lodeswing/analyze/finding"
 )
@@ -17,6 +18,8 @@ import (
 const (
 	plainMisfit = 3.0
 	clearMisfit = 1.5
+	causesFrom  = 2.2 // and from here on causes are looked for, for so long at most
+	causesTime  = 30 * time.Second
 	wrongShare  = 0.03
 )
 
@@ -67,8 +70,10 @@ func (r *reporter) misfit(ctx context.Context) string {
 	text := fmt.Sprintf("The residuals are %.2f times what the pictures' noise lets expect; from one frame to the next they correlate by %.2f.", s, r.j.lag1)
 	share := s / r.widened / r.size()
 	cause := ""
-	if (s > plainMisfit || !r.converged) && !r.opt.Quick {
-		cause = r.causes(ctx)
+	if s > causesFrom && !r.opt.Quick {
+		limited, stop := context.WithTimeout(ctx, causesTime)
+		cause = r.causes(limited)
+		stop()
 	}
 	wrong := cause != "" || s > plainMisfit && share > wrongShare
 	switch {
@@ -139,10 +144,7 @@ func (r *reporter) causes(ctx context.Context) string {
 				continue
 			}
 			if err := f.quick(ctx); err != nil {
-				if ctx.Err() != nil {
-					return ""
-				}
-				continue
+				continue // what is out of time is not told
 			}
 			all = append(all, trial{[]string{name}, what, f.rms()})
 		}
