@@ -22,6 +22,9 @@ func headline(w *work) string {
 			out = append(out, words)
 		}
 	}
+	if f := w.rec.Find("regime", ""); f != nil && f.Kind == finding.Statement && len(out) == 0 {
+		out = append(out, f.Text)
+	}
 	out = append(out, magnetWords(w)...)
 	out = append(out, frequencies(w)...)
 	if len(out) == 0 {

@@ -7,7 +7,6 @@ import (
 	"slices"
 
 	"lodeswing/analyze/chaos"
-	"lodeswing/analyze/finding"
 )
 
 // leastRegular is the share of a motion that its spectral lines must explain for it
@@ -38,6 +37,10 @@ func regime(ctx context.Context, w *work) error {
 		filmed.Coils = nil
 	}
 	m := chaos.Motion{T: times, Never: chaos.Never(&filmed)}
+	beat := w.rec.Find("modes.beat.period", "")
+	if beat != nil {
+		m.BeatS = chaos.Value{V: beat.Value, U: beat.U}
+	}
 	for i := range w.angles {
 		a := &w.angles[i]
 		column, at := make([]float64, len(times)), 0
@@ -67,10 +70,9 @@ func regime(ctx context.Context, w *work) error {
 	if len(w.angles) == 1 {
 		subject = w.angles[0].Part
 	}
-	have := slices.ContainsFunc(w.rec.Findings, func(f finding.Finding) bool { return f.Key == "modes.beat.period" })
 	for _, f := range r.Findings(subject) {
-		if have && f.Key == "regime.beat_period" {
-			continue // the modes tell it better than two lines of one bob's spectrum
+		if beat != nil && f.Key == "regime.beat_period" {
+			continue // the modes have told it
 		}
 		w.rec.Findings = append(w.rec.Findings, f)
 	}

@@ -80,8 +80,11 @@ func (res *Result) Findings() []finding.Finding {
 	}
 	if caution := res.nonlinear(); caution != "" {
 		for i := range out {
-			if out[i].Kind == finding.Measured && (strings.HasSuffix(out[i].Key, ".frequency") || strings.HasSuffix(out[i].Key, ".period")) {
+			switch {
+			case out[i].Key == "modes.mode1.frequency":
 				out[i].Cautions = append(out[i].Cautions, caution)
+			case out[i].Kind == finding.Measured && (strings.HasSuffix(out[i].Key, ".frequency") || strings.HasSuffix(out[i].Key, ".period")):
+				out[i].Cautions = append(out[i].Cautions, "At this clip's amplitudes: see mode 1.")
 			}
 		}
 	}
