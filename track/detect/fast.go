@@ -151,7 +151,11 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			res := float64(q.v) - f0 - h
 			r2 := res * res
 			if !q.near {
-				cost += min(r2, most)
+				if r2 < most {
+					cost += r2
+				} else {
+					cost += most
+				}
 			}
 			t := r2 * ibob
 			if t > 16 && r2 > least {
@@ -193,7 +197,11 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			f.around[q.sec].n++
 			r2 := res * res
 			if !q.near {
-				cost += min(r2, most)
+				if r2 < most {
+					cost += r2
+				} else {
+					cost += most
+				}
 			}
 			t := r2 * iwall
 			if t > 16 && r2 > least {
@@ -215,12 +223,15 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			s.g[lSlope] += wf * res
 			continue
 		}
-		if o.smear > 0 {
-			o.cover(x, y, &c)
-		} else {
+		switch {
+		case o.smear == 0:
 			c.alpha, c.r = edge(d * o.is)
 			c.r *= o.is
-			c.x, c.y, c.z = x, y, o.facing(x, y)
+			c.l, c.x, c.y, c.z = 0, x, y, o.facing(x, y)
+		case o.pieces == 1:
+			c.alpha, c.r, c.l, c.x, c.y, c.z = o.coverOnce(x, y, xp, yp, rho, d)
+		default:
+			o.cover(x, y, &c)
 		}
 		nz := c.z
 		h, lit := m.lamp.light(fx*c.x + fy*c.y + fz*nz + fl)
@@ -232,7 +243,11 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		steep := edgeJ * loose
 		q2 := res * res
 		if !q.near {
-			cost += min(q2, most)
+			if q2 < most {
+				cost += q2
+			} else {
+				cost += most
+			}
 		}
 		t := q2 / (variance + steep*steep)
 		if t > 16 && q2 > misfit*step*step {

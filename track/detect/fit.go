@@ -13,10 +13,10 @@ const (
 	mostSteps  = 12   // of Gauss–Newton; from a good prediction it takes one or two
 	mostEdge   = 5000 // pixels at the edge; of more, every second, third … is taken
 	enoughFlat = 400  // pixels that show bob or wall alone
-	// A step from this near ends so close to the minimum that a second one would
-	// not move the centre by a fiftieth of its uncertainty; see TestOneStep.
-	closeEnough = 0.1 // px
-	leastBlur   = 0.3 // px; a pixel's own width is √(1/12) = 0.29
+	// A step from this near ends closer to the minimum than half the centre's
+	// uncertainty (TestOneStepIsEnough), which a second one would not better by much.
+	closeEnough = 0.12 // px
+	leastBlur   = 0.3  // px; a pixel's own width is √(1/12) = 0.29
 )
 
 // Fitter fits one bob in one projection of the colours, frame after frame. It
@@ -437,7 +437,7 @@ func (out *Fit) judge(f *Fitter, m *model) {
 		out.Why = "the fit broke down"
 	case math.Abs(out.Contrast) < 3*out.Noise*math.Sqrt(1/math.Max(m.r, 1)) || math.Abs(out.Contrast) < 4:
 		out.Why = "no contrast between bob and wall"
-	case out.Visible < 0.3:
+	case out.Visible < 0.15 || out.Visible < 0.3 && !out.Cut:
 		out.Why = "too little of the outline is seen"
 	case out.sigma() > 0.25*m.r+0.5:
 		out.Why = "the centre is not determined"
