@@ -384,7 +384,8 @@ func (f *fitter) polish(ctx context.Context) error {
 	// narrow bent valley the next ones may lead lower (a watchdog: R. M. Chamberlain
 	// et al., Mathematical Programming Study 16 (1982) 1); best is where to go back to.
 	best := f.mark(p, now)
-	for range rounds {
+	done := false
+	for round := range rounds {
 		unit = math.Max(1, best.merit/float64(rows)) // what a standard uncertainty counts, misfit included
 		if unit > plainMisfit*plainMisfit || f.widened > plainMisfit {
 			unit = math.Max(unit, 2e-3*best.merit) // and the residuals hang together
@@ -392,7 +393,8 @@ func (f *fitter) polish(ctx context.Context) error {
 		f.final = f.solveChain(p, 0, true)
 		fall = f.final.foreseen()
 		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g, damped by %.1g", f.rms(), f.gaps(), fall, lambda)
-		if ahead == 0 && (fall < enough*unit || failed > 0 && fall < nearly*unit || failed > 6) {
+		if ahead == 0 && (fall < enough*unit || (failed > 0 || round > 6) && fall < nearly*unit || failed > 6) {
+			done = true
 			break
 		}
 		s := f.final
@@ -413,7 +415,7 @@ func (f *fitter) polish(ctx context.Context) error {
 			return err
 		}
 		now, _, _ = f.merit(p)
-		far := fall > unit
+		far := fall > 0.05*unit
 		switch {
 		case err == nil && now < best.merit+0.2*unit:
 			failed, ahead = 0, 0
@@ -439,7 +441,7 @@ func (f *fitter) polish(ctx context.Context) error {
 			}
 		}
 	}
-	if ahead > 0 {
+	if !done {
 		p = f.restore(best)
 		if err := f.shootAll(ctx, p, true, true); err != nil {
 			return err

@@ -11,10 +11,10 @@ import (
 	"lodeswing/analyze/finding"
 )
 
-// A fit whose residuals are more than plainMisfit times the pictures' noise, and
-// more than wrongShare of the motion's own size, is that of a wrong model. What lies
-// between is a model that is nearly right, as every model is of a sharp enough
-// picture: its uncertainties are widened by the residuals as they are.
+// A fit whose residuals are more than plainMisfit times a picture's noise is that of
+// a wrong model. An encoder sees far more sharply: there they must also be more
+// than wrongShare of the motion's own size. What lies between is a model that is
+// nearly right, and its uncertainties are widened by the residuals as they are.
 const (
 	plainMisfit = 3.0
 	clearMisfit = 1.5
@@ -75,7 +75,11 @@ func (r *reporter) misfit(ctx context.Context) string {
 		cause = r.causes(limited)
 		stop()
 	}
-	wrong := cause != "" || s > plainMisfit && share > wrongShare
+	filmed := false
+	for c := range r.clips {
+		filmed = filmed || r.clips[c].tables == nil
+	}
+	wrong := cause != "" || s > plainMisfit && (filmed || share > wrongShare)
 	switch {
 	case s < clearMisfit:
 		text += " The model fits."
