@@ -99,6 +99,84 @@ func (e *evenly) size() float64 {
 	return sd
 }
 
+// moving cuts off what lies still at the start and at the end: stretches of a
+// thirtieth of the clip in which all columns together move less than a
+// twenty-fifth of what they do at most. It returns when the motion comes to rest,
+// if a tenth of the clip or more is left then; else 0.
+func (e *evenly) moving(u float64) (restsS float64) {
+	w := max(8, e.n/30)
+	var act []float64
+	for i := 0; i+w <= e.n; i += w {
+		ss := 0.0
+		for _, c := range e.columns {
+			_, sd := meanSD(c[i : i+w])
+			ss += sd * sd
+		}
+		act = append(act, math.Sqrt(ss))
+	}
+	if len(act) < 4 {
+		return 0
+	}
+	still := max(0.04*slices.Max(act), 4*u*math.Sqrt(float64(len(e.columns))))
+	from, to := 0, len(act)-1
+	for from < to && act[from] < still {
+		from++
+	}
+	for to > from && act[to] < still {
+		to--
+	}
+	end := e.n
+	if to < len(act)-1 {
+		end = (to + 1) * w
+		if e.n-end >= e.n/10 {
+			restsS = e.from + e.step*float64(end)
+		}
+	}
+	for k := range e.columns {
+		e.columns[k] = e.columns[k][from*w : end]
+	}
+	e.from += e.step * float64(from*w)
+	e.n = end - from*w
+	widest := -1.0
+	for k, c := range e.columns {
+		if _, sd := meanSD(c); sd > widest {
+			e.main, widest = k, sd
+		}
+	}
+	return restsS
+}
+
+// repeats looks for the time, from half a period to twenty or a third of the clip,
+// after which all columns come again most nearly, and how nearly: the root mean
+// square difference over that of unrelated moments, noise of u taken out.
+func (e *evenly) repeats(periodS, u float64) (after, mismatch float64) {
+	p := periodS / e.step
+	lo, hi := max(1, int(p/2)), min(int(20*p)+1, e.n/3)
+	stride := max(1, e.n/4000)
+	total := 0.0
+	for _, c := range e.columns {
+		_, sd := meanSD(c)
+		total += 2 * sd * sd
+	}
+	noise := 2 * u * u * float64(len(e.columns))
+	mismatch = 1
+	step := max(1, int(p/60))
+	for lag := lo; lag <= hi; lag += step {
+		ss, n := 0.0, 0.0
+		for i := 0; i+lag < e.n; i += stride {
+			for _, c := range e.columns {
+				d := c[i+lag] - c[i]
+				ss += d * d
+			}
+			n++
+		}
+		if m := math.Sqrt(max(0, ss/n-noise) / total); m < mismatch {
+			after, mismatch = float64(lag)*e.step, m
+		}
+	}
+	return after, mismatch
+}
+
 // turning returns the main column's distance from mean at its turning points, one
 // between each two crossings of mean, and when.
 func (e *evenly) turning(mean float64) (amp, at []float64) {
@@ -161,23 +239,19 @@ func course(at, amp []float64) (change, scatter float64) {
 
 func sq(x float64) float64 { return x * x }
 
-// jump is how far turning points lie from the course of their neighbours on the
-// same side (the middle of the two before and after, by the cubic through four),
-// over the typical amplitude: the middle one of all.
-func jump(amp []float64) float64 {
+// jump is how far values lie from the course of their neighbours (the middle of
+// the two before and after on the same side, by the cubic through four), the
+// middle one of all.
+func jump(x []float64) float64 {
 	var d []float64
-	for i := 4; i+4 < len(amp); i++ {
-		told := (4*(amp[i-2]+amp[i+2]) - amp[i-4] - amp[i+4]) / 6
-		d = append(d, math.Abs(amp[i]-told))
+	for i := 4; i+4 < len(x); i++ {
+		told := (4*(x[i-2]+x[i+2]) - x[i-4] - x[i+4]) / 6
+		d = append(d, math.Abs(x[i]-told))
 	}
 	if len(d) < 4 {
 		return 0
 	}
-	size := median(slices.Clone(amp))
-	if size == 0 {
-		return 0
-	}
-	return median(d) / size
+	return median(d)
 }
 
 // median changes the order of x.

@@ -54,8 +54,11 @@ type Regime struct {
 	PeriodS    float64 // s, of the strongest line
 	Change     float64 // logarithm of the amplitude at the end over that at the start
 	Ripple     float64 // scatter of the amplitude about its course, over the amplitude
-	Jump       float64 // how far turning points lie from the course of their neighbours, over the amplitude
+	Jump       float64 // how far turning points and passes lie from the course of their neighbours, over the amplitude
 	Explained  float64 // share of the motion that spectral lines explain
+	RepeatS    float64 // s, after which the motion comes again most nearly (up to 20 periods)
+	Mismatch   float64 // the difference then, over that of unrelated moments
+	RestsS     float64 // s, when it comes to rest within the clip; 0 when it does not
 	BeatS      Value   // s, beat period; 0 when it does not beat
 	NeedS      float64 // s, how long to film to know more; 0 when it is enough
 	States     recurrence.Vectors
@@ -77,6 +80,7 @@ const (
 	regularJump  = 0.08  // turning points nearer to their neighbours' course are regular
 	decayed      = 0.15  // a fall of ln(amplitude) that counts as decay
 	explained    = 0.985 // few lines that explain this much make a motion quasi-periodic
+	repeated     = 0.05  // a course that comes again with less difference is periodic
 	few          = 4     // lines; with many, anything short can be explained
 )
 
@@ -94,24 +98,36 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		r.Text = fmt.Sprintf("At rest: it moves by no more than the measurement's own scatter (%.2g).", max(m.U, size))
 		return r, nil
 	}
+	whole := e.n
+	r.RestsS = e.moving(m.U)
 	main := e.columns[e.main]
+	if e.n < 64 && whole >= 64 {
+		r.Kind, r.Confidence = AtRest, 0.8
+		r.Text = fmt.Sprintf("At rest but for %.2g s.", float64(e.n)*e.step)
+		return r, nil
+	}
 	if e.n < 64 {
 		r.Text, r.NeedS = "Too short to say how it behaves.", 64*e.step
 		return r, nil
 	}
-	r.spectrum, err = spectrum.Compute(e.times(), main, nil, spectrum.Options{MaxLines: few, Spare: -1})
+	r.spectrum, err = spectrum.Compute(e.times(), main, nil, spectrum.Options{
+		MaxLines: few, Spare: -1, MinFreq: 4 / (e.step * float64(e.n)),
+	})
+	mean, _ := meanSD(main)
+	cut, cutErr := Cut(e.times(), [][]float64{main}, 0, mean, Both)
+	if cutErr != nil {
+		return nil, cutErr
+	}
+	if r.Passes = len(cut.T); r.Passes < 8 {
+		r.Text = fmt.Sprintf("Too short to say how it behaves: only %d passes.", r.Passes)
+		r.NeedS = 10 / float64(max(r.Passes, 1)) * e.step * float64(e.n)
+		return r, nil
+	}
 	if err != nil || len(r.spectrum.Lines) == 0 {
 		r.Text = "No frequency stands out of the scatter; nothing can be said of how it behaves."
 		return r, nil
 	}
-	if err := r.describe(e, m.U); err != nil {
-		return nil, err
-	}
-	if r.Passes < 8 {
-		r.Text = fmt.Sprintf("Too short to say how it behaves: only %d passes.", r.Passes)
-		r.NeedS = 10 * r.PeriodS
-		return r, nil
-	}
+	r.describe(e, mean, cut.T, m.U)
 	if err := r.decide(ctx, e, m); err != nil {
 		return nil, err
 	}
@@ -120,33 +136,29 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 }
 
 // describe sets the numbers that the decision rests on.
-func (r *Regime) describe(e *evenly, u float64) error {
-	main := e.columns[e.main]
+func (r *Regime) describe(e *evenly, mean float64, passes []float64, u float64) {
 	r.PeriodS = 1 / r.spectrum.Lines[0].Frequency
-	mean, sd := meanSD(main)
-	cut, err := Cut(e.times(), [][]float64{main}, 0, mean, Both)
-	if err != nil {
-		return err
-	}
-	r.Passes = len(cut.T)
+	sd := e.size()
 	r.Explained = 1 - r.spectrum.Noise*r.spectrum.Noise/(sd*sd)
 	amp, at := e.turning(mean)
 	r.Change, r.Ripple = course(at, amp)
-	r.Jump = jump(amp)
-	// What the measurement's scatter alone makes of both.
 	if typical := median(slices.Clone(amp)); typical > 0 {
+		// In height over the amplitude, and in time as the angle of a turn: a part that
+		// goes round shows its whims in time alone.
+		r.Jump = math.Hypot(jump(amp)/typical, 2*math.Pi*jump(passes)/r.PeriodS)
+		// What the measurement's scatter alone makes of it.
 		noise := 2 * u / typical
 		r.Ripple = math.Sqrt(max(0, r.Ripple*r.Ripple-noise*noise))
 		r.Jump = math.Sqrt(max(0, r.Jump*r.Jump-noise*noise))
 	}
-	return nil
+	r.RepeatS, r.Mismatch = e.repeats(r.PeriodS, u)
 }
 
 // decide sets the kind, with the tests for chaos where they are called for.
 func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
-	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple
+	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple || r.RestsS > 0
 	grows := r.Change > decayed && r.Change > 1.5*r.Ripple
-	smooth := r.Jump < regularJump
+	smooth := r.Jump < regularJump && r.Explained > 0.5
 	lines := r.lines()
 	switch {
 	case decays && (smooth || r.Explained > explained):
@@ -159,10 +171,12 @@ func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 		r.Kind = Steady
 	case (smooth || r.Explained > explained) && len(lines) >= 2 && r.beats(lines, smooth):
 		r.Kind = Beating
-	case smooth:
-		r.Kind = Steady // its amplitude wanders, but not from swing to swing
+	case smooth || r.Mismatch < repeated/2:
+		r.Kind = Steady // its amplitude may wander, but not from swing to swing
 	case r.Explained > explained:
 		r.Kind = QuasiPeriodic
+	case r.Mismatch < repeated:
+		r.Kind = Steady
 	default:
 		r.Kind = Irregular
 	}
@@ -310,7 +324,8 @@ func (r *Regime) words(m Motion) {
 	say := func(format string, a ...any) { r.Evidence = append(r.Evidence, fmt.Sprintf(format, a...)) }
 	say("%d passes, a period of %.3g s", r.Passes, r.PeriodS)
 	say("from start to end the amplitude changes by a factor of %.2f, and scatters by %.1f %% about its course", math.Exp(r.Change), 100*r.Ripple)
-	say("a turning point lies %.1f %% of the amplitude from the course of its neighbours", 100*r.Jump)
+	say("turning points and passes lie %.1f %% of the amplitude from the course of their neighbours", 100*r.Jump)
+	say("after %.3g s it comes again with %.0f %% of the difference of unrelated moments", r.RepeatS, 100*r.Mismatch)
 	say("spectral lines explain %.1f %% of the motion", 100*r.Explained)
 	if d := r.Divergence; d != nil {
 		if d.Found {
@@ -332,16 +347,25 @@ func (r *Regime) words(m Motion) {
 	switch r.Kind {
 	case Decaying:
 		r.Text = "Decaying: a regular swing that dies down."
+		if r.RestsS > 0 {
+			r.Text = fmt.Sprintf("Decaying: a regular swing that dies down and rests from %.3g s on.", r.RestsS)
+		}
 	case Growing:
 		r.Text = "Growing: a regular swing that is still gathering."
 	case Steady:
 		r.Text = "Steady: the same swing over and over."
+		if r.Mismatch < repeated && r.RepeatS > 1.5*r.PeriodS && r.Ripple > steadyRipple {
+			r.Text = fmt.Sprintf("Steady: the same course over and over, every %.3g s.", r.RepeatS)
+		}
 	case Beating:
 		r.Text = fmt.Sprintf("Beating: the swing waxes and wanes every %.3g s as energy goes to and fro.", r.BeatS.V)
 	case QuasiPeriodic:
 		r.Text = "Quasi-periodic: several steady swings at once, ordered though it never quite repeats."
 	case IrregularDecaying:
 		r.Text = "Irregular and decaying: it darts about while it dies down."
+		if r.RestsS > 0 {
+			r.Text = fmt.Sprintf("Irregular and decaying: it darts about and rests from %.3g s on.", r.RestsS)
+		}
 	case Chaotic:
 		d := r.Divergence
 		r.Text = fmt.Sprintf("Chaotic: what will happen is lost within a few times %.2g s.", 1/d.Exponent.V)
