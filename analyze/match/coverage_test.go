@@ -86,7 +86,10 @@ func coverage(t *testing.T, name string, units int, seconds float64) (inside, al
 }
 
 // Coverage of the 95 % intervals where all that the rig is unsure of is drawn anew
-// for each unit (JCGM 101). With so few units the share may lie between 84 and 100 %.
+// for each unit (JCGM 101). With so few units the share may lie between 80 and 100 %.
+// Measured with -long -units 60: lantern, 10 s: 175 of 180 (97.2 %). Of buoys drawn
+// so, a third did not settle and gave no number before the last steps were watched
+// over a few at a time; they and the gull were not counted again since.
 func TestCoverage(t *testing.T) {
 	units := 12
 	if *long {

@@ -98,6 +98,7 @@ type fitter struct {
 	scatter   float64
 	widened   float64 // by which the noise was taken larger than the track says
 	chi2      float64
+	unsettled bool // the last step foreseen counts as an uncertainty of its own
 	converged bool
 	why       string
 	cautions  []string

@@ -450,10 +450,11 @@ func (f *fitter) polish(ctx context.Context) error {
 		fall = f.final.foreseen()
 	}
 	now = best.merit
-	f.converged = fall < 0.5*unit
+	f.converged = fall < unit
 	f.why = fmt.Sprintf("one more step is foreseen to lower the sum of squares by %.1g", fall)
-	if f.converged && fall > 0.1*unit {
-		f.cautions = append(f.cautions, "The matching settled only to within half a standard uncertainty of its numbers.")
+	f.unsettled = fall > 0.1*unit
+	if f.converged && f.unsettled {
+		f.cautions = append(f.cautions, "The matching settled only to within about one standard uncertainty of its numbers; what is left is in their uncertainties.")
 	}
 	f.chi2 = now
 	return nil

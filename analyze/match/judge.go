@@ -228,6 +228,9 @@ func (j *judgement) covariance(f *fitter, jac, res []float64, moment []int) erro
 			if f.params[a].held || f.params[b].held {
 				x, y = 0, 0
 			}
+			if f.unsettled {
+				y += f.final.step[a] * f.final.step[b]
+			}
 			j.inverse[a*np+b], j.cov[a*np+b] = x, y
 		}
 	}
