@@ -197,6 +197,27 @@ func TestNoiseIsNotChaos(t *testing.T) {
 	}
 }
 
+// States of a swing of 200 samples a second, thinned: two numbers of size one, and
+// a full turn apart they are the same.
+func TestStates(t *testing.T) {
+	rng := rand.New(rand.NewPCG(9, 10))
+	m := motion(rng, 60, 0.0005, func(t float64) []float64 { return []float64{0.3 * math.Sin(2*math.Pi*t), 0} })
+	v, period, err := States(m, 1000)
+	if err != nil {
+		t.Fatal(err)
+	}
+	near(t, "period", period, 1, 0.01)
+	turn := int(math.Round(1 / v.Step))
+	if v.N > 1000 || v.N < 800 || v.Dim != 4 {
+		t.Fatalf("%d states of dimension %d", v.N, v.Dim)
+	}
+	for i := 0; i+turn < v.N; i += 50 {
+		a, b := v.State(i), v.State(i+turn)
+		near(t, "a turn later", b[0], a[0], 0.1)
+	}
+	near(t, "size", math.Hypot(v.State(0)[0], v.State(int(math.Round(0.25/v.Step)))[0]), math.Sqrt2, 0.15)
+}
+
 func TestAssessBadInput(t *testing.T) {
 	for _, m := range []Motion{
 		{},
