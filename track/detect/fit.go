@@ -159,7 +159,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	for step := 0; step < mostSteps; step++ {
 		out.Steps = step + 1
 		*acc = sums{}
-		if m.quick(&on) {
+		if m.quick() {
 			f.passQuick(&m, acc, &noise, loose, from)
 		} else {
 			f.pass(&m, acc, &noise, loose, from, &on)
@@ -225,7 +225,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	out.Cut = f.cut(&m)
 	out.WallWrong = f.wallWrong
 	switch {
-	case back.quick(&on):
+	case back.quick():
 		f.afterStep(&back, acc, &d)
 		f.assess(&m, &inv, acc, &on)
 	case shift < 0.02:
@@ -235,7 +235,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	// What the model cannot follow of a lit outline is no noise, and the same in
 	// all frames: rendered balls are off by half of this (TestFilmScenes in
 	// track/follow).
-	faulty := m.s * (0.004 + 0.025*f.shading()/math.Max(math.Abs(out.Contrast), 1))
+	faulty := m.s * (0.006 + 0.03*f.shading()/math.Max(math.Abs(out.Contrast), 1))
 	out.Cov.AA = out.Cov.AA*f.agree + faulty*faulty
 	out.Cov.AB *= f.agree
 	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty

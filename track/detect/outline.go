@@ -133,13 +133,15 @@ func (o *outline) cover(x, y float64, c *coverage) {
 // coverOnce is cover for a smear of one piece, as far as the everyday pass needs
 // it: rho is the place's distance from the centre after the ellipse is taken out
 // (xp, yp), d its depth inside the outline.
-func (o *outline) coverOnce(x, y, xp, yp, rho, d float64) (alpha, dr, dl, xm, ym, nz float64) {
+func (o *outline) coverOnce(x, y, xp, yp, rho, d float64) (alpha, dr, dl, ds, xm, ym, nz float64) {
 	ir := 1 / (rho + 1e-9)
 	nm := ((o.m11*xp+o.m12*yp)*o.mu + (o.m12*xp+o.m22*yp)*o.mv) * ir
 	a := o.smear * nm * o.is
 	bend := o.sagitta * (1 - nm*nm) * ir
-	alpha, dz, da := edgeSmeared(d*o.is-bend, a)
+	z := d*o.is - bend
+	alpha, dz, da := edgeSmeared(z, a)
 	dl = (da*a - 2*dz*bend) * o.ismear
+	ds = -(dz*z + da*a) * o.is
 	lean := a * (1.0 / 3)
 	if lean > 1 {
 		lean = 1
@@ -156,7 +158,7 @@ func (o *outline) coverOnce(x, y, xp, yp, rho, d float64) (alpha, dr, dl, xm, ym
 		su, sv := 0.28867513459481287*span*o.mu, 0.28867513459481287*span*o.mv
 		nz = 0.5 * (o.facing(xm+su, ym+sv) + o.facing(xm-su, ym-sv))
 	}
-	return alpha, dz * o.is, dl, xm, ym, nz
+	return alpha, dz * o.is, dl, ds, xm, ym, nz
 }
 
 // facing is the camera's share of a ball's outward normal at a place within its
