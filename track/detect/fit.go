@@ -233,12 +233,15 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	}
 	f.frames++
 	// What the model cannot follow of a lit outline is no noise, and the same in
-	// all frames: rendered balls are off by half of this (TestFilmScenes in
+	// all frames: rendered balls are off by half of this (TestFollowedFilm in
 	// track/follow).
+	// Part of an outline has nothing to check it on the other side.
+	less := 1 + 2*(1-out.Visible)
 	faulty := m.s * (0.006 + 0.03*f.shading()/math.Max(math.Abs(out.Contrast), 1))
-	out.Cov.AA = out.Cov.AA*f.agree + faulty*faulty
-	out.Cov.AB *= f.agree
-	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty
+	grow := f.agree * less * less
+	out.Cov.AA = out.Cov.AA*grow + faulty*faulty
+	out.Cov.AB *= grow
+	out.Cov.BB = out.Cov.BB*grow + faulty*faulty
 	out.judge(f, &m)
 	f.remember(&m, &inv, &on, &noise, acc, &out)
 	return out
