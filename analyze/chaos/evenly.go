@@ -177,6 +177,40 @@ func (e *evenly) repeats(periodS, u float64) (after, mismatch float64) {
 	return after, mismatch
 }
 
+// pace is the change of the logarithm of all columns' speed together from start
+// to end, by a straight line through stretches of two periods or more, with its
+// standard uncertainty from the scatter about it. A part that goes round and slows
+// shows it here, not in its amplitude.
+func (e *evenly) pace(periodS float64) (change, u float64) {
+	p := periodS / e.step
+	lag := max(1, min(int(p/8), e.n/60))
+	w := max((e.n-lag)/12, min(int(2*p), (e.n-lag)/8))
+	var x, y []float64
+	for i := 0; i+w+lag <= e.n; i += w {
+		ss := 0.0
+		for _, c := range e.columns {
+			for k := i; k < i+w; k++ {
+				ss += sq(c[k+lag] - c[k])
+			}
+		}
+		if ss > 0 {
+			x, y = append(x, float64(i)/float64(e.n)), append(y, 0.5*math.Log(ss))
+		}
+	}
+	n := len(x)
+	if n < 5 {
+		return 0, math.Inf(1)
+	}
+	slope, level := line(x, y, 0, n-1)
+	var ss, xx float64
+	mx, _ := meanSD(x)
+	for i := range x {
+		ss += sq(y[i] - level - slope*x[i])
+		xx += sq(x[i] - mx)
+	}
+	return slope, math.Sqrt(ss / float64(n-2) / xx)
+}
+
 // turning returns the main column's distance from mean at its turning points, one
 // between each two crossings of mean, and when.
 func (e *evenly) turning(mean float64) (amp, at []float64) {

@@ -42,16 +42,27 @@ func (d *Divergence) Curve(subject string) finding.Curve {
 		X:       finding.Axis{Label: "time", Unit: "s"},
 		Y:       finding.Axis{Label: "distance over size of the motion", Unit: "1", Log: true},
 		Lines: []finding.Line{
-			{Name: "distance", Role: finding.Data, X: d.After, Y: grow(d.LogDistance)},
+			{Name: "distance", Role: finding.Data, X: every(d.After, 120), Y: every(grow(d.LogDistance), 120)},
 			{Name: "without the ripple of a turn", Role: finding.Model, X: d.After, Y: grow(d.Smooth)},
 		},
 	}
 	if d.Found {
-		x := []float64{d.From, d.To}
-		y := []float64{d.Level + d.Exponent.V*d.From, d.Level + d.Exponent.V*d.To}
+		// A little longer than the stretch itself, to be seen beside the curve.
+		more := (d.To - d.From) / 3
+		x := []float64{max(0, d.From-more), d.To + more}
+		y := []float64{d.Level + d.Exponent.V*x[0], d.Level + d.Exponent.V*x[1]}
 		c.Lines = append(c.Lines, finding.Line{Name: "straight stretch", Role: finding.Guide, X: x, Y: grow(y)})
 	}
 	return c
+}
+
+// every thins x to about n values.
+func every(x []float64, n int) []float64 {
+	var out []float64
+	for i := 0; i < len(x); i += max(1, len(x)/n) {
+		out = append(out, x[i])
+	}
+	return out
 }
 
 // Finding returns K.

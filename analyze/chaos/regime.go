@@ -67,6 +67,7 @@ type Regime struct {
 	Divergence *Divergence
 	ZeroOne    *ZeroOne
 	Surrogates *Surrogates
+	slows      bool // its speed falls, whatever its amplitude does
 	spectrum   *spectrum.Spectrum
 }
 
@@ -151,12 +152,16 @@ func (r *Regime) describe(e *evenly, mean float64, passes []float64, u float64) 
 		r.Ripple = math.Sqrt(max(0, r.Ripple*r.Ripple-noise*noise))
 		r.Jump = math.Sqrt(max(0, r.Jump*r.Jump-noise*noise))
 	}
+	if pace, uPace := e.pace(r.PeriodS); pace < -2*decayed && pace < -4*uPace {
+		r.Change = min(r.Change, pace)
+		r.slows = true
+	}
 	r.RepeatS, r.Mismatch = e.repeats(r.PeriodS, u)
 }
 
 // decide sets the kind, with the tests for chaos where they are called for.
 func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
-	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple || r.RestsS > 0
+	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple || r.RestsS > 0 || r.slows
 	grows := r.Change > decayed && r.Change > 1.5*r.Ripple
 	smooth := r.Jump < regularJump && r.Explained > 0.5
 	lines := r.lines()

@@ -215,7 +215,7 @@ func TestStates(t *testing.T) {
 		a, b := v.State(i), v.State(i+turn)
 		near(t, "a turn later", b[0], a[0], 0.1)
 	}
-	near(t, "size", math.Hypot(v.State(0)[0], v.State(int(math.Round(0.25/v.Step)))[0]), math.Sqrt2, 0.15)
+	near(t, "size", math.Hypot(v.State(0)[0], v.State(int(math.Round(0.25 / v.Step)))[0]), math.Sqrt2, 0.15)
 }
 
 func TestAssessBadInput(t *testing.T) {
