@@ -13,10 +13,10 @@ const (
 	mostSteps  = 12   // of Gauss–Newton; from a good prediction it takes one or two
 	mostEdge   = 5000 // pixels at the edge; of more, every second, third … is taken
 	enoughFlat = 400  // pixels that show bob or wall alone
-	// A step from this near ends closer to the minimum than half the centre's
-	// uncertainty (TestOneStepIsEnough), which a second one would not better by much.
-	closeEnough = 0.12 // px
-	leastBlur   = 0.3  // px; a pixel's own width is √(1/12) = 0.29
+	// A step from this near ends so close to the minimum that a second one would
+	// not move the centre by a fiftieth of its uncertainty; see TestOneStep.
+	closeEnough = 0.1 // px
+	leastBlur   = 0.3 // px; a pixel's own width is √(1/12) = 0.29
 )
 
 // Fitter fits one bob in one projection of the colours, frame after frame. It
@@ -159,7 +159,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	for step := 0; step < mostSteps; step++ {
 		out.Steps = step + 1
 		*acc = sums{}
-		if m.quick() {
+		if m.quick(&on) {
 			f.passQuick(&m, acc, &noise, loose, from)
 		} else {
 			f.pass(&m, acc, &noise, loose, from, &on)
@@ -225,7 +225,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	out.Cut = f.cut(&m)
 	out.WallWrong = f.wallWrong
 	switch {
-	case back.quick():
+	case back.quick(&on):
 		f.afterStep(&back, acc, &d)
 		f.assess(&m, &inv, acc, &on)
 	case shift < 0.02:
@@ -233,15 +233,12 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	}
 	f.frames++
 	// What the model cannot follow of a lit outline is no noise, and the same in
-	// all frames: rendered balls are off by half of this (TestFollowedFilm in
+	// all frames: rendered balls are off by half of this (TestFilmScenes in
 	// track/follow).
-	// Part of an outline has nothing to check it on the other side.
-	less := 1 + 2*(1-out.Visible)
-	faulty := m.s * (0.006 + 0.03*f.shading()/math.Max(math.Abs(out.Contrast), 1))
-	grow := f.agree * less * less
-	out.Cov.AA = out.Cov.AA*grow + faulty*faulty
-	out.Cov.AB *= grow
-	out.Cov.BB = out.Cov.BB*grow + faulty*faulty
+	faulty := m.s * (0.004 + 0.025*f.shading()/math.Max(math.Abs(out.Contrast), 1))
+	out.Cov.AA = out.Cov.AA*f.agree + faulty*faulty
+	out.Cov.AB *= f.agree
+	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty
 	out.judge(f, &m)
 	f.remember(&m, &inv, &on, &noise, acc, &out)
 	return out
@@ -440,7 +437,7 @@ func (out *Fit) judge(f *Fitter, m *model) {
 		out.Why = "the fit broke down"
 	case math.Abs(out.Contrast) < 3*out.Noise*math.Sqrt(1/math.Max(m.r, 1)) || math.Abs(out.Contrast) < 4:
 		out.Why = "no contrast between bob and wall"
-	case out.Visible < 0.15 || out.Visible < 0.3 && !out.Cut:
+	case out.Visible < 0.3:
 		out.Why = "too little of the outline is seen"
 	case out.sigma() > 0.25*m.r+0.5:
 		out.Why = "the centre is not determined"

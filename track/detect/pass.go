@@ -88,8 +88,8 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 				if e < 0 {
 					e = -e
 				}
-				r2, lo, hi := x*x+y2, edgeIn-e, edgeOut+e
-				if lo > 0 && r2 < lo*lo || r2 > hi*hi {
+				r2, lo, hi := x*x+y2, max(edgeIn-e, 0), edgeOut+e
+				if r2 < lo*lo || r2 > hi*hi {
 					continue
 				}
 			}
@@ -256,7 +256,7 @@ func (f *Fitter) markNear(contrast float64) bool {
 		f.flagAround(int(f.px[i].at), false)
 	}
 	f.marked = len(odd) > 0 || dim != 0
-	return changed > 8+len(f.px)/50
+	return changed > 8
 }
 
 // ringMean sums up residuals outside the outline in one sector.

@@ -21,17 +21,16 @@ type bob struct {
 	startU     float64
 	startV     float64
 
-	fitter       *detect.Fitter
-	filter       *link.Filter
-	search       detect.Search
-	samples      []track.Sample
-	lastU, lastV float64 // where it was last seen, px
-	good         int     // fits so far
-	lost         int     // frames since it was last seen
-	stall        bool    // the last frame looked like a repeated one
-	radius       float64 // usual, px
-	level        float64 // usual level of the bob, in the fitter's projection
-	contrast     float64 // usual size of its difference from the wall
+	fitter   *detect.Fitter
+	filter   *link.Filter
+	search   detect.Search
+	samples  []track.Sample
+	good     int     // fits so far
+	lost     int     // frames since it was last seen
+	stall    bool    // the last frame looked like a repeated one
+	radius   float64 // usual, px
+	level    float64 // usual level of the bob, in the fitter's projection
+	contrast float64 // usual size of its difference from the wall
 
 	// of the present frame
 	patch  clip.Patch
@@ -172,19 +171,19 @@ func (b *bob) free() bool {
 		return false
 	}
 	slow := math.Hypot(b.guess.SmearU, b.guess.SmearV) < 0.6*b.fitter.Shape.Blur
-	return b.good < 8 || slow && b.good%16 == 0
+	return b.good < 12 || slow && b.good%16 == 0
 }
 
 // plausible tells whether a fit can be this bob: as large and as
 // bright as it was.
 func (b *bob) plausible(r *detect.Fit) bool {
-	switch {
-	case math.Abs(r.R-b.radius) > 0.25*b.radius+0.5:
+	if math.Abs(r.R-b.radius) > 0.3*b.radius+0.5 {
 		return false
-	case math.Abs(r.Level-b.level) > 25+0.35*b.contrast:
-		return false
-	case r.Noise > 0.4*math.Abs(r.Contrast):
-		return false // it fits nothing that is there
+	}
+	if b.good > 3 {
+		if math.Abs(r.Level-b.level) > 25+0.35*b.contrast {
+			return false
+		}
 	}
 	return true
 }
@@ -248,15 +247,7 @@ func (f *follower) seekLost(frame *clip.Frame) {
 		}
 		frame.Patch(&f.whole, area)
 		b.search.Look, b.search.RMin, b.search.RMax = b.look, 0.75*b.radius, 1.3*b.radius
-		found := b.search.Find(&f.whole, area, 0, f.wall, nil)
-		// One that rests may meanwhile pass for wall: where it was last it is looked
-		// for all the same.
-		m := int(2 * b.radius)
-		rest := image.Rect(int(b.lastU)-m, int(b.lastV)-m, int(b.lastU)+m, int(b.lastV)+m).Intersect(area)
-		if !rest.Empty() && b.look.Kind != detect.ByMotion {
-			found = append(found, b.search.Find(&f.whole, rest, 0, nil, nil)...)
-		}
-		for _, c := range found {
+		for _, c := range b.search.Find(&f.whole, area, 0, f.wall, nil) {
 			if c.Score() < 0.4 || f.claimed(c.U, c.V) {
 				continue
 			}
@@ -357,7 +348,6 @@ func (b *bob) settle(frame *clip.Frame) {
 		b.filter.Update(s.T, r.U, r.V, c)
 	}
 	b.lost = 0
-	b.lastU, b.lastV = r.U, r.V
 	if b.filter.Sightings() == 3 {
 		b.fitter.Relearn() // from now on the smear is known
 	}
