@@ -1,6 +1,9 @@
 package match
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // rower turns segments into rows of the least squares.
 type rower struct {
@@ -152,4 +155,61 @@ func (f *fitter) merit(p []float64) (total, data float64, rows int) {
 		total = math.Inf(1)
 	}
 	return total, data, rows
+}
+
+func median(v []float64) float64 {
+	if len(v) == 0 {
+		return math.NaN()
+	}
+	s := slices.Clone(v)
+	slices.Sort(s)
+	return s[len(s)/2]
+}
+
+// rms is the residuals' r.m.s., in units of what the pictures' noise allows.
+func (f *fitter) rms() float64 {
+	_, data, rows := f.merit(f.values())
+	return math.Sqrt(data / float64(max(rows, 1)))
+}
+
+// reweigh gives observations that lie far out less weight (Huber), and finds the
+// residuals' scatter.
+func (f *fitter) reweigh() {
+	p := f.values()
+	var all []float64
+	for c := range f.clips {
+		k := &f.clips[c]
+		w := &rower{f: f, c: c, k: k, see: f.viewer(c, p)}
+		for i := range k.segments {
+			g := &k.segments[i]
+			for o := range g.to - g.from {
+				r0, r1 := w.residual(g, o)
+				all = append(all, math.Abs(r0))
+				if k.dims == 2 {
+					all = append(all, math.Abs(r1))
+				}
+			}
+		}
+	}
+	f.scatter = median(all) / 0.6745
+	limit := 4 * math.Max(f.scatter, 1)
+	for c := range f.clips {
+		k := &f.clips[c]
+		w := &rower{f: f, c: c, k: k, see: f.viewer(c, p)}
+		for i := range k.segments {
+			g := &k.segments[i]
+			for o := range g.to - g.from {
+				r0, r1 := w.residual(g, o)
+				r := math.Abs(r0)
+				if k.dims == 2 {
+					r = math.Max(r, math.Abs(r1))
+				}
+				q := &k.obs[g.from+o]
+				q.weight = 1
+				if r > limit {
+					q.weight = limit / r
+				}
+			}
+		}
+	}
 }
