@@ -88,22 +88,26 @@ func (k *clipData) step() float64 {
 
 // poser finds the toy's pose from where its bobs are.
 type poser struct {
-	k   *clipData
-	see viewer
+	k     *clipData
+	see   viewer
+	paths []path
+	step  float64
+	want  [][2]float64 // where the watched things are
+	have  []bool       // and which of them are seen
 }
 
 // residuals of a pose: the watched things at places (a, b).
-func (s *poser) residuals(y []float64, want [][2]float64, have []bool, out []float64) {
+func (s *poser) residuals(y, out []float64) {
 	i := 0
 	for w := range s.k.watched {
-		if !have[w] {
+		if !s.have[w] {
 			continue
 		}
 		at := s.k.pose(s.k.model, y, w)
 		a, b := s.see.project(w, s.see.world(&at, w))
-		out[i] = want[w][0] - a
+		out[i] = s.want[w][0] - a
 		if s.k.dims == 2 {
-			out[i+1] = want[w][1] - b
+			out[i+1] = s.want[w][1] - b
 		}
 		i += s.k.dims
 	}
@@ -111,11 +115,11 @@ func (s *poser) residuals(y []float64, want [][2]float64, have []bool, out []flo
 
 // solve moves the pose y (speeds are left alone) to where the bobs are, by damped
 // Gauss–Newton steps, and returns the r.m.s. distance left.
-func (s *poser) solve(y []float64, want [][2]float64, have []bool, rounds int) float64 {
+func (s *poser) solve(y []float64, rounds int) float64 {
 	m := s.k.model
 	nv := m.Freedoms()
 	rows := 0
-	for _, h := range have {
+	for _, h := range s.have {
 		if h {
 			rows += s.k.dims
 		}
@@ -132,7 +136,7 @@ func (s *poser) solve(y []float64, want [][2]float64, have []bool, rounds int) f
 		}
 		return sum
 	}
-	s.residuals(y, want, have, r0)
+	s.residuals(y, r0)
 	c0 := cost(r0)
 	lambda := 1e-6
 	z := make([]float64, len(y))
@@ -147,7 +151,7 @@ func (s *poser) solve(y []float64, want [][2]float64, have []bool, rounds int) f
 			}
 			d[v] = 1e-5
 			m.Displace(z, d)
-			s.residuals(z, want, have, r1)
+			s.residuals(z, r1)
 			for i := range rows {
 				g := (r0[i] - r1[i]) / 1e-5
 				j.Set(i, v, g)
@@ -171,7 +175,7 @@ func (s *poser) solve(y []float64, want [][2]float64, have []bool, rounds int) f
 			most = math.Max(most, math.Abs(d[v]))
 		}
 		m.Displace(z, d)
-		s.residuals(z, want, have, r1)
+		s.residuals(z, r1)
 		if c1 := cost(r1); c1 < c0 {
 			copy(y, z)
 			c0 = c1
@@ -188,93 +192,112 @@ func (s *poser) solve(y []float64, want [][2]float64, have []bool, rounds int) f
 }
 
 // starts finds the toy's states at moments about every span seconds, where the
-// bobs are seen, and cuts the clip there.
+// bobs are seen and no coil pushes, and cuts the clip there.
 func (f *fitter) starts(c int, span float64) error {
 	k := &f.clips[c]
 	step := k.step()
-	paths := k.paths()
 	p := f.values()
 	f.apply(c, k.model, p)
-	s := &poser{k: k, see: f.viewer(c, p)}
-	m := k.model
-	nv := m.Freedoms()
-	want, have := make([][2]float64, len(k.watched)), make([]bool, len(k.watched))
-	look := func(t float64) bool {
-		all := true
-		for w := range k.watched {
-			want[w][0], want[w][1], have[w] = paths[w].at(t, step)
-			all = all && have[w]
-		}
-		return all
+	s := &poser{k: k, see: f.viewer(c, p), paths: k.paths(), step: step}
+	seen, poses, err := s.follow()
+	if err != nil {
+		return err
 	}
-	first, last := k.obs[0].t, k.obs[len(k.obs)-1].t
-	y := m.Rest()
-	found := false
+	m := k.model
+	var busy []bool
+	if !k.undriven {
+		busy = m.MayPush(seen, poses, pushMargin*step, maxHole*step)
+	}
+	nv := m.Freedoms()
 	var times []float64
 	var states [][]float64
-	before, after := make([]float64, len(y)), make([]float64, len(y))
+	before, after := m.Rest(), m.Rest()
 	d := make([]float64, 2*nv)
 	h := 1.5 * step
-	for t := first; t < last-3*step; {
-		if !look(t) {
-			t += step
+	next := math.Inf(-1)
+	for i, t := range seen {
+		if t < next-step/2 || busy != nil && busy[i] || t > k.obs[len(k.obs)-1].t-3*step {
 			continue
 		}
-		if !found {
-			if err := s.first(y, want, have); err != nil {
-				return err
-			}
-			found = true
-		} else {
-			s.solve(y, want, have, 30)
-		}
+		y := poses[i]
 		copy(before, y)
 		copy(after, y)
 		t0, t1 := t, t
-		if t-h >= first && look(t-h) {
-			s.solve(before, want, have, 10)
+		if s.look(t - h) {
+			s.solve(before, 10)
 			t0 = t - h
 		}
-		if look(t + h) {
-			s.solve(after, want, have, 10)
+		if s.look(t + h) {
+			s.solve(after, 10)
 			t1 = t + h
 		}
 		z := append([]float64(nil), y...)
-		for i := range nv {
-			z[len(y)-f.auxOf(c)-nv+i] = 0
+		for v := range nv {
+			z[len(y)-f.auxOf(c)-nv+v] = 0
 		}
 		if t1 > t0 {
 			m.Deviation(before, after, d)
-			for i := range nv {
-				d[nv+i], d[i] = d[i]/(t1-t0), 0
+			for v := range nv {
+				d[nv+v], d[v] = d[v]/(t1-t0), 0
 			}
 			m.Displace(z, d)
 		}
-		if f.hasCoilNear(c, z) {
-			t += step
-			continue
-		}
 		m.Normalise(z)
 		times, states = append(times, t), append(states, z)
-		// On to the next: carried along by the speeds, a frame at a time, so that a
-		// turning part is not lost.
-		next := math.Min(t+span, last)
-		for t < next-step/2 {
-			t += step
-			if look(t) {
-				s.solve(y, want, have, 6)
-			}
-		}
+		next = t + span
 	}
 	if len(times) == 0 {
-		return fmt.Errorf("no moment of the clip%s shows all bobs for long enough", k.its(""))
+		return fmt.Errorf("no moment of the clip%s shows all bobs for long enough while no coil pushes", k.its(""))
 	}
 	f.cut(c, times, states)
 	return nil
 }
 
+// pushMargin and maxHole are in frames: how near the begin or end of a push the
+// motion may be cut, and how long a bob may be out of sight before it is no longer
+// known whether a coil pushes.
+const (
+	pushMargin = 1.6
+	maxHole    = 6.5
+)
+
+// look takes the watched things' places at time t; false where one is not seen.
+func (s *poser) look(t float64) bool {
+	all := true
+	for w := range s.k.watched {
+		s.want[w][0], s.want[w][1], s.have[w] = s.paths[w].at(t, s.step)
+		all = all && s.have[w]
+	}
+	return all
+}
+
+// follow finds the toy's poses, a frame's time apart, wherever all bobs are seen:
+// each from the one before, so that a turning part is not lost. Speeds are 0.
+func (s *poser) follow() (times []float64, poses [][]float64, err error) {
+	s.want, s.have = make([][2]float64, len(s.k.watched)), make([]bool, len(s.k.watched))
+	first, last := s.k.obs[0].t, s.k.obs[len(s.k.obs)-1].t
+	y := s.k.model.Rest()
+	for i := 0; ; i++ {
+		t := first + float64(i)*s.step
+		if t > last {
+			return times, poses, nil
+		}
+		if !s.look(t) {
+			continue
+		}
+		if len(times) == 0 {
+			if err := s.first(y); err != nil {
+				return nil, nil, err
+			}
+		} else {
+			s.solve(y, 30)
+		}
+		times, poses = append(times, t), append(poses, append([]float64(nil), y...))
+	}
+}
+
 // first finds the pose without knowing one before.
-func (s *poser) first(y []float64, want [][2]float64, have []bool) error {
+func (s *poser) first(y []float64) error {
 	m := s.k.model
 	best, keep := math.Inf(1), append([]float64(nil), y...)
 	nv := m.Freedoms()
@@ -311,7 +334,7 @@ func (s *poser) first(y []float64, want [][2]float64, have []bool) error {
 			d[v] = try[v]
 		}
 		m.Displace(z, d)
-		if c := s.solve(z, want, have, 60); c < 0.98*best {
+		if c := s.solve(z, 60); c < 0.98*best {
 			best = c
 			copy(keep, z)
 			if best < good {
@@ -328,8 +351,3 @@ func (s *poser) first(y []float64, want [][2]float64, have []bool) error {
 
 // auxOf is how many numbers of a clip's state are not places or speeds.
 func (f *fitter) auxOf(c int) int { return f.clips[c].model.Aux() }
-
-func (f *fitter) hasCoilNear(c int, y []float64) bool {
-	k := &f.clips[c]
-	return !k.undriven && k.model.NearCoil(y)
-}

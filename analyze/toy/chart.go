@@ -52,30 +52,6 @@ func (m *Model) Deviation(a, b, d []float64) {
 // the coils given by their winding.
 func (m *Model) Aux() int { return m.naux }
 
-// NearCoil tells whether in state y some coil may be pushing, or about to: its
-// magnet is within the reach of the push. A motion must not be cut there.
-func (m *Model) NearCoil(y []float64) bool {
-	m.prepare()
-	m.kinematics(y)
-	for i := range m.coils {
-		c := &m.coils[i]
-		g := &m.magnets[c.magnet]
-		d := g.r.Sub(c.at)
-		over := d.Sub(c.axis.Scale(d.Dot(c.axis)))
-		reach := 1.3*c.width + 1e-3
-		if c.wound {
-			reach = 2 * c.radius
-		}
-		if c.kick == 0 && !c.wound {
-			continue
-		}
-		if over.Norm() < reach {
-			return true
-		}
-	}
-	return false
-}
-
 // MagnetPlace is where a magnet's centre is in state y, m; ok is false for a name
 // that the toy does not have.
 func (m *Model) MagnetPlace(y []float64, name string) (at [3]float64, ok bool) {
