@@ -10,7 +10,7 @@ import (
 
 const (
 	sectors    = 24   // of the outline, for what is hidden and for neighbouring residuals that agree
-	mostSteps  = 12   // of Gauss–Newton; from a good prediction it takes one or two
+	mostSteps  = 20   // of Gauss–Newton; from a good prediction it takes one or two
 	mostEdge   = 5000 // pixels at the edge; of more, every second, third … is taken
 	enoughFlat = 400  // pixels that show bob or wall alone
 	// A step from this near ends so close to the minimum that a second one would
@@ -149,33 +149,38 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	third := (m.at(pF0) - m.at(pB0) - f.back) / 3
 	f.most = 36*math.Max(noise.bob, noise.wall) + third*third
 	loose := math.Max(math.Hypot(g.UPos, math.Min(f.Shape.UR, 0.1*r0)), 0.05)
-	acc, spare := &f.sums[0], &f.sums[1]
 	var inv matrix
 	from := [2]float64{m.cu, m.cv} // middle of the gathering
-	var back model                 // where the last step was taken from
+	var back model                 // where the last step was taken from ...
+	acc := &f.sums[1]              // ... and the sums there
 	cost, damp := math.Inf(1), 0.0
 	var d vector
 	shift := 0.0
 	for step := 0; step < mostSteps; step++ {
 		out.Steps = step + 1
-		*acc = sums{}
-		if m.quick(&on) {
-			f.passQuick(&m, acc, &noise, loose, from)
-		} else {
-			f.pass(&m, acc, &noise, loose, from, &on)
+		// Beside the sums of the last step that was taken, so that those stay
+		// however many steps are refused.
+		next := &f.sums[0]
+		if next == acc {
+			next = &f.sums[1]
 		}
-		m.addPriors(acc, &prior, &on)
+		*next = sums{}
+		if m.quick(&on) {
+			f.passQuick(&m, next, &noise, loose, from)
+		} else {
+			f.pass(&m, next, &noise, loose, from, &on)
+		}
+		m.addPriors(next, &prior, &on)
 		odd := false
-		if acc.cost > 1.03*cost && damp < 1e4 {
+		if next.cost > 1.03*cost && damp < 1e4 {
 			// Worse than before the step: go back and take a shorter one
 			// (Levenberg 1944, Marquardt 1963).
 			m, damp = back, math.Max(8*damp, 0.05)
-			acc, spare = spare, acc
 		} else {
-			if acc.n < 30 {
+			if next.n < 30 {
 				return Fit{Why: "hardly any of the outline agrees"}
 			}
-			cost = acc.cost
+			acc, cost = next, next.cost
 			if damp /= 8; damp < 1e-3 {
 				damp = 0
 			}
@@ -214,9 +219,6 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 		}
 		if damp == 0 && (shift < 0.04 && step > 0 || shift < closeEnough && !odd) {
 			break
-		}
-		if damp == 0 {
-			acc, spare = spare, acc
 		}
 	}
 	f.keepOdd(&m, from)

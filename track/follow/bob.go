@@ -1,8 +1,10 @@
 package follow
 
 import (
+	"cmp"
 	"image"
 	"math"
+	"slices"
 
 	"lodeswing/track"
 	"lodeswing/track/clip"
@@ -25,12 +27,15 @@ type bob struct {
 	filter   *link.Filter
 	search   detect.Search
 	samples  []track.Sample
-	good     int     // fits so far
+	good     int     // frames in which it was seen whole
+	fits     int     // frames in which its outline was fitted
 	lost     int     // frames since it was last seen
 	stall    bool    // the last frame looked like a repeated one
 	radius   float64 // usual, px
 	level    float64 // usual level of the bob, in the fitter's projection
 	contrast float64 // usual size of its difference from the wall
+	rough    float64 // usual noise of its fits over the contrast: print, holes and shine are noise too
+	visible  float64 // usual share of its outline that is seen
 
 	// of the present frame
 	patch  clip.Patch
@@ -100,7 +105,7 @@ func (b *bob) look1(frame *clip.Frame) {
 	if b.patch.W < 3 || b.patch.H < 3 {
 		return
 	}
-	if b.guess.UPos < 0.3*b.radius {
+	if b.guess.UPos < 0.15*b.radius+1 {
 		if b.try(b.guess) {
 			return
 		}
@@ -111,23 +116,40 @@ func (b *bob) look1(frame *clip.Frame) {
 	if b.look.Kind == detect.ByMotion {
 		wall = f.wall
 	}
-	var best detect.Candidate
-	cost := math.Inf(1)
-	for _, c := range b.search.Find(&b.patch, b.patch.Rect, 0, wall, nil) {
-		if c.Score() < 0.35 || covered(c.U, c.V, b.covers) {
-			continue
-		}
-		k := b.pred.Cost(c.U, c.V, track.Cov{}, 1+b.leeway()) + 4*(1-c.Score())
-		if k < cost {
-			best, cost = c, k
-		}
+	cost := func(c detect.Candidate) float64 {
+		return b.pred.Cost(c.U, c.V, track.Cov{}, 1+b.leeway()) + 4*(1-c.Score())
 	}
-	if cost < gate {
+	near := slices.DeleteFunc(b.search.Find(&b.patch, b.patch.Rect, 0, wall, nil), func(c detect.Candidate) bool {
+		return c.Score() < 0.35 || covered(c.U, c.V, b.covers) || cost(c) >= gate
+	})
+	slices.SortStableFunc(near, func(x, y detect.Candidate) int { return cmp.Compare(cost(x), cost(y)) })
+	for _, c := range near[:min(len(near), 2)] {
 		g := b.guess
-		g.U, g.V, g.UPos = best.U, best.V, 0.7+0.04*b.radius
-		b.fitter.Widen(best.R)
-		b.try(g)
+		g.U, g.V, g.UPos = c.U, c.V, 0.7+0.04*b.radius
+		b.fitter.Widen(c.R)
+		if b.try(g) {
+			return
+		}
 	}
+	if len(near) > 0 {
+		b.roughly(near[0])
+	}
+}
+
+// roughly takes a candidate for the bob, as it was found, where its outline cannot
+// be fitted: a camera that is jolted or a hand's shadow spoils a frame or two, and
+// a rough place keeps hold of the bob. Only what is plainly as large and as round as
+// the bob, and stands clear of the others, will do.
+func (b *bob) roughly(c detect.Candidate) {
+	if b.fits < 5 || len(b.covers) > 0 || c.Score() < 0.5 || math.Abs(c.R-b.radius) > 0.15*b.radius {
+		return
+	}
+	u := 0.7 + 0.05*b.radius
+	b.result = detect.Fit{
+		U: c.U, V: c.V, Cov: track.Cov{AA: u * u, BB: u * u}, R: b.radius,
+		Level: b.level, Contrast: b.contrast, Visible: 0.5,
+	}
+	b.have = true
 }
 
 func covered(u, v float64, covers []detect.Disc) bool {
@@ -174,18 +196,12 @@ func (b *bob) free() bool {
 	return b.good < 12 || slow && b.good%16 == 0
 }
 
-// plausible tells whether a fit can be this bob: as large and as
-// bright as it was.
+// plausible tells whether a fit can be this bob: as large, as bright and about as
+// plain as it was.
 func (b *bob) plausible(r *detect.Fit) bool {
-	if math.Abs(r.R-b.radius) > 0.3*b.radius+0.5 {
-		return false
-	}
-	if b.good > 3 {
-		if math.Abs(r.Level-b.level) > 25+0.35*b.contrast {
-			return false
-		}
-	}
-	return true
+	return math.Abs(r.R-b.radius) <= 0.3*b.radius+0.5 &&
+		math.Abs(r.Level-b.level) <= 25+0.35*b.contrast &&
+		r.Noise <= math.Max(0.5, 2*b.rough)*b.contrast
 }
 
 // untangle makes sure that no two bobs claim the same thing: the one whose
@@ -305,7 +321,7 @@ func (b *bob) regain(frame *clip.Frame, c detect.Candidate) {
 	b.covers = b.covers[:0]
 	b.fitter.Widen(c.R)
 	r := b.fitter.Fit(&b.patch, b.f.wall, g, nil, false)
-	if !r.OK || !b.plausible(&r) || r.Visible < 0.6 || r.Noise > 0.2*math.Abs(r.Contrast) {
+	if !r.OK || !b.plausible(&r) || r.Visible < math.Min(0.6, 0.8*b.visible) || r.Noise > math.Max(0.2, 1.5*b.rough)*math.Abs(r.Contrast) {
 		return // clutter
 	}
 	b.result, b.have = r, true
@@ -348,6 +364,12 @@ func (b *bob) settle(frame *clip.Frame) {
 		b.filter.Update(s.T, r.U, r.V, c)
 	}
 	b.lost = 0
+	if r.Pixels > 0 {
+		b.fits++
+		k := 1 / math.Min(float64(b.fits), 30)
+		b.visible += k * (r.Visible - b.visible)
+		b.rough += k * (r.Noise/math.Max(math.Abs(r.Contrast), 1) - b.rough)
+	}
 	if b.filter.Sightings() == 3 {
 		b.fitter.Relearn() // from now on the smear is known
 	}

@@ -239,6 +239,7 @@ func (b *bob) accept(c detect.Candidate) (why string) {
 	fitter.Shape.UBlur = math.Max(0.5*r.Blur, 0.3)
 	b.fitter, b.result, b.radius, b.level = fitter, r, r.R, r.Level
 	b.contrast = math.Abs(r.Contrast)
+	b.fits, b.visible, b.rough = 1, r.Visible, r.Noise/math.Max(b.contrast, 1)
 	return ""
 }
 
