@@ -228,6 +228,7 @@ func (m *Model) Clone() *Model {
 		c.coils[i].points = append([]windingPoint(nil), c.coils[i].points...)
 	}
 	c.solver, c.events, c.params, c.tangentWork = nil, nil, nil, nil
+	c.lamp, c.planar, c.planarWork = nil, nil, nil
 	c.workSpace()
 	copy(c.mass, m.mass)
 	copy(c.sA, m.sA)

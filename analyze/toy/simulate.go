@@ -20,7 +20,7 @@ type Options struct {
 	// MaxStep in s; default none.
 	MaxStep float64
 
-	general bool // tests: do not take the short way of a lantern
+	general bool // tests: do not take a short way
 }
 
 func (o Options) tol() float64 {
@@ -100,8 +100,13 @@ func (m *Model) Run(ctx context.Context, t0 float64, y []float64, t1 float64, op
 	}
 	tol := opt.tol()
 	rhs := m.derive
-	if m.lamp = m.newLamp(); m.lamp != nil && !opt.general {
-		rhs = m.deriveLamp
+	m.lamp, m.planar = nil, nil
+	if !opt.general {
+		if m.lamp = m.newLamp(); m.lamp != nil {
+			rhs = m.deriveLamp
+		} else if m.planar = m.newPlanar(); m.planar != nil {
+			rhs = m.derivePlanar
+		}
 	}
 	m.solver = ode.New(m.StateLen(), rhs, ode.Options{
 		RelTol: tol, AbsTol: tol, MaxStep: opt.MaxStep, MaxSteps: 100_000 + int(10_000*math.Abs(t1-t0)),
@@ -183,8 +188,19 @@ const touching = 1e-3
 // meeting ends the motion where two magnets touch: the model knows no contact.
 func (r *run) meeting(s *ode.Solver) error {
 	m := r.m
-	if len(m.pairs) == 0 || m.lamp != nil && !r.opt.general {
+	if len(m.pairs) == 0 || m.lamp != nil {
 		return nil
+	}
+	if l := m.planar; l != nil {
+		// The magnets are where the last step had them.
+		near := false
+		for _, p := range m.pairs {
+			a, b := &l.magnets[p.a], &l.magnets[p.b]
+			near = near || (a.x-b.x)*(a.x-b.x)+(a.z-b.z)*(a.z-b.z) < 2*touching*touching
+		}
+		if !near {
+			return nil
+		}
 	}
 	m.kinematics(s.State())
 	for _, p := range m.pairs {

@@ -52,7 +52,7 @@ func TestLanternTwoWays(t *testing.T) {
 		Name: "other", Part: "base", AtM: []float64{0.1, -0.33}, Axis: []float64{0.3, -1}, Moment: number(0.8),
 	})
 	m = mustNew(t, r)
-	a, b := swing(t, m, Options{Tol: 1e-12}), swing(t, m, Options{Tol: 1e-12, general: true})
+	b, a := swing(t, m, Options{Tol: 1e-12, general: true}), swing(t, m, Options{Tol: 1e-12})
 	if m.lamp == nil || math.Abs(a-b) > 1e-8 {
 		t.Errorf("short way ends at %.12f, general at %.12f", a, b)
 	}

@@ -161,7 +161,8 @@ type Model struct {
 	nStuck               int
 	solver               *ode.Solver
 	events               []ode.Event
-	lamp                 *lamp
+	lamp                 *lamp // the short ways of the motion under way, or nil
+	planar, planarWork   *planar
 }
 
 // pair is two magnets that act on each other and can move against each other.
