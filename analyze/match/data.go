@@ -54,8 +54,8 @@ type clipData struct {
 	watched  []watched
 	obs      []observation
 	segments []segment
-	breaks   []float64 // times at which a hand pushed
-	dims     int       // rows per observation
+	left     []interval // what is left out: a hand
+	dims     int        // rows per observation
 }
 
 // its names something of this clip alone where there are several.
@@ -181,7 +181,6 @@ func (f *fitter) clip(in *Clip, several bool) (*clipData, error) {
 	}
 	if in.Entry != nil {
 		k.undriven = !in.Entry.Battery
-		k.breaks = append(k.breaks, in.Entry.PushedAtS...)
 		for name := range in.Entry.Moved {
 			k.moved[name] = true
 		}
@@ -202,6 +201,13 @@ func (f *fitter) clip(in *Clip, several bool) (*clipData, error) {
 		return nil, err
 	}
 	sort.SliceStable(k.obs, func(i, j int) bool { return k.obs[i].t < k.obs[j].t })
+	k.leaveHeld()
+	if in.Entry != nil {
+		k.leaveMarked(in.Entry.PushedAtS)
+	}
+	if len(k.obs) < fewest {
+		return nil, fmt.Errorf("hardly anything of the clip%s is left without what is held or pushed by hand", k.its(""))
+	}
 	return k, nil
 }
 

@@ -64,13 +64,6 @@ func (f *fitter) fit(ctx context.Context) error {
 // approach brings free stretches together into one motion near the optimum.
 func (f *fitter) approach(ctx context.Context) error {
 	f.bind = math.Inf(1)
-	for c := range f.clips {
-		span := math.Max(firstSpan, 12*f.clips[c].step())
-		if err := f.starts(c, span); err != nil {
-			return err
-		}
-	}
-	f.typical()
 	// First what is asked for, on free stretches.
 	hold := func(held bool) {
 		for j := range f.params {
@@ -79,9 +72,25 @@ func (f *fitter) approach(ctx context.Context) error {
 		}
 	}
 	f.tol = 1e-8
-	hold(true)
-	if err := f.descend(ctx, 40, 1e-3, false); err != nil {
-		return err
+	for range 3 { // again where a hand was found in the clip
+		for c := range f.clips {
+			span := math.Max(firstSpan, 12*f.clips[c].step())
+			if err := f.starts(c, span); err != nil {
+				return err
+			}
+		}
+		f.typical()
+		hold(true)
+		if err := f.descend(ctx, 40, 1e-3, false); err != nil {
+			return err
+		}
+		again, err := f.findHands(ctx)
+		if err != nil {
+			return err
+		}
+		if !again {
+			break
+		}
 	}
 	hold(false)
 	if err := f.descend(ctx, 8, 1e-2, false); err != nil {

@@ -52,6 +52,7 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	for c := range f.clips {
 		f.apply(c, f.clips[c].model, r.p)
 	}
+	r.leftOut()
 	r.separability()
 	r.magnets()
 	r.rest()

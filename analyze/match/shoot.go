@@ -58,8 +58,8 @@ func (f *fitter) cut(c int, times []float64, states [][]float64) {
 				g.t1 = k.obs[g.to-1].t + 1e-3
 			}
 		}
-		for _, b := range k.breaks {
-			g.broken = g.broken || b >= g.t0 && b < g.t1
+		if g.broken = k.parted(g.t0, g.t1); g.broken && g.to > g.from {
+			g.t1 = k.obs[g.to-1].t + 1e-3
 		}
 		k.segments = append(k.segments, g)
 	}

@@ -26,6 +26,7 @@ type take struct {
 	plane   bool // a track without its camera
 	clip    *rig.Clip
 	start   []rig.Start
+	path    func(t float64, state []float64) // the motion; nil: as the model moves
 }
 
 // simulate makes the track of a rig's toy: its own motion, the camera of the rig
@@ -68,6 +69,10 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 	if err != nil {
 		t.Fatal(err)
 	}
+	where := o.path
+	if where == nil {
+		where = func(t float64, state []float64) { path.At(t, state) }
+	}
 	rnd := rand.New(rand.NewPCG(o.seed, 1))
 	tr := &track.Track{Cal: cal, BrokeAt: math.NaN()}
 	var pos [][3]float64
@@ -84,7 +89,7 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 			var u, w float64
 			tt := at
 			for range 4 {
-				path.At(tt, state)
+				where(tt, state)
 				pos = m.Positions(state, pos)
 				u, w = cam.BobToPixel(pos[b][0], pos[b][1]-q.DepthM.Or(0), pos[b][2], radius)
 				tt = at + cam.RowTime(u, w)
