@@ -20,7 +20,7 @@ func kicks(ctx context.Context, w *work) error {
 		if i < 0 {
 			continue // said where its angle was looked for
 		}
-		clips := []kick.Clip{{Angle: w.angles[i]}}
+		clips := []kick.Clip{{Angle: w.angles[i], Track: w.track}}
 		if w.clip != nil {
 			clips[0].Off = !w.clip.Battery
 		}
@@ -33,7 +33,7 @@ func kicks(ctx context.Context, w *work) error {
 			if err != nil {
 				w.undecided("kick.battery_out", part, "Battery-out clip", err.Error(), "loss of the same unit with the coil off")
 			} else {
-				clips = append(clips, kick.Clip{Angle: second, Off: true})
+				clips = append(clips, kick.Clip{Angle: second, Track: w.out.Track, Off: true})
 			}
 		}
 		opt := kick.OptionsFor(w.rig, part, w.clip)
@@ -88,14 +88,18 @@ func without(out *record.Record, part string) (series.Angle, error) {
 // kickWords says in a sentence or two what the ledger tells of a part.
 func kickWords(w *work, res *kick.Result) string {
 	var b strings.Builder
+	at := fmt.Sprintf(" at %.3g°", res.Amplitude/degree)
+	if w.rec.Find("kick.mean", res.Part) != nil {
+		at = "" // on a ball joint no amplitude says it all
+	}
 	k, l := w.rec.Find("kick.energy", res.Part), w.rec.Find("kick.loss", res.Part)
 	switch {
 	case k != nil && k.Kind == finding.Measured:
-		fmt.Fprintf(&b, "The coil gives “%s” %s at each kick; %s takes %s per pass at %.3g°.", res.Part, inWords(k), "friction", inWords(l), res.Amplitude/degree)
+		fmt.Fprintf(&b, "The coil gives “%s” %s at each kick; friction takes %s per pass%s.", res.Part, inWords(k), inWords(l), at)
 	case k != nil:
 		fmt.Fprintf(&b, "A coil kicks “%s”; this clip cannot tell kick and friction apart.", res.Part)
 	case l != nil && l.Kind == finding.Measured:
-		fmt.Fprintf(&b, "With the coil off, friction takes %s from “%s” per pass at %.3g°.", inWords(l), res.Part, res.Amplitude/degree)
+		fmt.Fprintf(&b, "With the coil off, friction takes %s from “%s” per pass%s.", inWords(l), res.Part, at)
 	}
 	if s := w.rec.Find("kick.steady_amplitude", res.Part); s != nil && s.Kind == finding.Measured {
 		fmt.Fprintf(&b, " Kick and friction are equal at %s.", inWords(s))

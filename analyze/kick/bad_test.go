@@ -38,7 +38,7 @@ func TestNoLedger(t *testing.T) {
 		part string
 		want string
 	}{
-		{"ball joint", ball, "stem", "ball joint"},
+		{"ball joint by a table of angles", ball, "stem", "not a table of angles"},
 		{"no such part", r, "wing", `no part "wing"`},
 		{"unknown magnet", fitted, "swing", "match it first"},
 		{"at rest", r, "swing", "turning points"},

@@ -9,6 +9,11 @@ import (
 
 // curves draws the ledger: gain per pass against amplitude, and over time.
 func (l *ledger) curves(res *Result) {
+	if l.free != nil {
+		res.Curves = append(res.Curves, l.ballBalance(res))
+		l.overTime(res)
+		return
+	}
 	joule := finding.Axis{Label: "energy per pass", Unit: l.unit}
 	amplitude := finding.Axis{Label: "amplitude", Unit: "rad", ShowUnit: "°", ShowFactor: 1 / degree}
 	balance := finding.Curve{
@@ -64,10 +69,20 @@ func (l *ledger) curves(res *Result) {
 	balance.Lines = append(balance.Lines, finding.Line{Name: "neither grows nor dies", Role: finding.Guide, X: []float64{x[0], x[len(x)-1]}, Y: []float64{0, 0}})
 	res.Curves = append(res.Curves, balance)
 
+	l.overTime(res)
+}
+
+// overTime draws the energy and the kicks over time.
+func (l *ledger) overTime(res *Result) {
+	s := l.best
 	time := finding.Axis{Label: "time", Unit: "s"}
 	energy := finding.Curve{
 		Key: "kick-energy", Subject: l.part(), Title: "Energy at the turning points", X: time, Y: finding.Axis{Label: "energy", Unit: l.unit},
 		Caption: "The swing's energy before each pass. A level row means that kick and loss are equal.",
+	}
+	if l.free != nil {
+		energy.Title = "Energy between the passes"
+		energy.Caption = "The energy of the free motion before each pass of the coil, above the lowest on its path: motion, height and the magnets' field. A level row means that kick and loss are equal."
 	}
 	line := finding.Line{Name: "measured", Role: finding.Mark}
 	for _, p := range res.Passes {
@@ -93,14 +108,22 @@ func (l *ledger) curves(res *Result) {
 			first, last = math.Min(first, p.T), math.Max(last, p.T)
 		}
 	}
+	mean, u := res.Kick, res.UKick
+	if l.free != nil {
+		// All in one heap: a ball joint has no right and left.
+		g := lines[true]
+		g.Name = "measured"
+		mean, u = l.usualGain()*res.Kick, l.usualGain()*res.UKick
+		kicks.Caption = "What the coil gave at each pass: less where the magnet passed beside it. The line is the mean of the passes with a kick, with its standard uncertainty."
+	}
 	for _, right := range []bool{true, false} {
 		if len(lines[right].X) > 0 {
 			kicks.Lines = append(kicks.Lines, *lines[right])
 		}
 	}
 	kicks.Lines = append(kicks.Lines, finding.Line{
-		Name: "mean", Role: finding.Model, X: []float64{first, last}, Y: []float64{res.Kick, res.Kick},
-		Lo: []float64{res.Kick - res.UKick, res.Kick - res.UKick}, Hi: []float64{res.Kick + res.UKick, res.Kick + res.UKick},
+		Name: "mean", Role: finding.Model, X: []float64{first, last}, Y: []float64{mean, mean},
+		Lo: []float64{mean - u, mean - u}, Hi: []float64{mean + u, mean + u},
 	})
 	res.Curves = append(res.Curves, kicks)
 }

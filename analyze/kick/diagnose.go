@@ -112,6 +112,13 @@ func ReferenceOf(r *rig.Rig, part string, res *Result) (ref Reference, ok bool) 
 			return ref, false
 		}
 	}
+	if l.free != nil {
+		ref = Reference{
+			Amplitude: res.Amplitude, From: "the rig's own numbers",
+			Kick: Quantity{c.KickJ.V, c.KickJ.U / c.KickJ.V, UsualScatter}, Loss: total(0),
+		}
+		return ref, ref.Loss.Value > 0
+	}
 	// The reference amplitude is where a good unit is steady.
 	lo, hi := 1e-3, 2.5
 	for range 60 {
@@ -231,7 +238,11 @@ func Diagnose(r *Result, ref Reference) Diagnosis {
 	loss := kick
 	if r.Separated {
 		kick = fmt.Sprintf("its kick is %s of the reference", percent(b.Kick/ref.Kick.Value, math.Hypot(math.Sqrt(b.VarKick)/ref.Kick.Value, ref.Kick.U)))
-		loss = fmt.Sprintf("its loss per pass at %.3g° is %s of the reference", ref.Amplitude/degree, percent(b.Loss/ref.Loss.Value, math.Hypot(math.Sqrt(b.VarLoss)/ref.Loss.Value, ref.Loss.U)))
+		at := fmt.Sprintf(" at %.3g°", ref.Amplitude/degree)
+		if r.ledger.free != nil {
+			at = "" // the mean of the passes that were filmed
+		}
+		loss = fmt.Sprintf("its loss per pass%s is %s of the reference", at, percent(b.Loss/ref.Loss.Value, math.Hypot(math.Sqrt(b.VarLoss)/ref.Loss.Value, ref.Loss.U)))
 	}
 	drive := Cause{
 		Name: "drive weak: coil, cell or the magnet at the foot", Fault: true, Probability: weak, Evidence: kick,

@@ -25,12 +25,15 @@ import (
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/series"
 	"lodeswing/analyze/toy"
+	"lodeswing/track"
 	"lodeswing/track/rig"
 )
 
 // Clip is one clip of the unit.
 type Clip struct {
 	Angle series.Angle
+	// Track is what was followed; a part on a ball joint needs it beside its angle.
+	Track *track.Track
 	// Off: the coil was without its battery in this clip.
 	Off bool
 	// OffFromS and OffToS, where OffToS is above OffFromS, bound a stretch with
@@ -51,6 +54,8 @@ type Options struct {
 	// Well, when set, is the potential energy in J against the angle (rad, to the
 	// vertical), where springs or magnets act beside gravity. It needs Inertia.
 	Well func(angle float64) float64
+	// Ball, when set, says that the part is on a ball joint, and what it needs.
+	Ball *Ball
 	// Absent says which frictions the part is known not to have: viscous, air drag, dry.
 	Absent [3]bool
 	// Sensed is the least rate in rad/s at the lowest point that fires the coil; 0: unknown.
@@ -107,7 +112,7 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 	}
 	switch {
 	case p.Joint == "ball":
-		o.NoLedger = fmt.Sprintf("%q swings on a ball joint: its energy has no single amplitude, and turning points of its picture are not turning points of its motion", part)
+		o.ball(r, p)
 	case p.Joint == "pin":
 		o.NoLedger = fmt.Sprintf("%q turns on a pin: it has no lowest point to pass", part)
 	case p.On != "" && p.On != rig.Base:
@@ -146,7 +151,7 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 	}
 	o.weigh(r, p)
 	o.Battery = charge(r, part)
-	if p.Upright || series.Pulled(r, part) != "" && bends(r, p) {
+	if o.Ball == nil && (p.Upright || series.Pulled(r, part) != "" && bends(r, p)) {
 		o.bend(r, p)
 	}
 	return o
@@ -289,6 +294,7 @@ type Separation uint8
 const (
 	Nothing  Separation = iota
 	CoilOff             // passes with the coil off
+	Between             // the free motion between the pushes
 	Constant            // by the change of amplitude, if the kick does not depend on speed
 	Gaps                // single passes that seem to have had no kick
 )
@@ -303,7 +309,11 @@ func Analyze(ctx context.Context, clips []Clip, opt Options) (*Result, error) {
 	if opt.NoLedger != "" {
 		return nil, fmt.Errorf("kick: no energy ledger: %s", opt.NoLedger)
 	}
-	l, err := open(clips, opt)
+	open := open
+	if opt.Ball != nil {
+		open = openBall
+	}
+	l, err := open(ctx, clips, opt)
 	if err != nil {
 		return nil, err
 	}

@@ -1,6 +1,7 @@
 package kick
 
 import (
+	"context"
 	"fmt"
 	"math"
 	"slices"
@@ -24,6 +25,8 @@ type ledger struct {
 	shares          []finding.Share // relative, of every energy
 	omega, uOmega   float64
 	pendulum        bool
+	free            *freeFit // of a part on a ball joint
+	plain           law      // the friction with which states are found out
 	inertiaFrom     string
 
 	best   *solution
@@ -49,6 +52,10 @@ type row struct {
 	lean           float64    // J/rad: change of the net by an error of the vertical
 	amp, speed     float64
 	side           float64 // +1 rightward
+	gain           float64 // kicks right over the coil that a kicked pass counts for
+	span           float64 // s
+	aside          float64 // m, from the coil's axis; a ball joint's only
+	last           *stretch
 	state          State
 	fixed          bool // the state is known beforehand
 }
@@ -58,8 +65,8 @@ func (r *row) net() float64 { return r.after - r.before }
 // leastPasses is how many passes make a ledger.
 const leastPasses = 6
 
-func open(clips []Clip, opt Options) (*ledger, error) {
-	l := &ledger{opt: opt, clips: clips, unit: "J", pendulum: opt.Well == nil}
+func open(_ context.Context, clips []Clip, opt Options) (*ledger, error) {
+	l := &ledger{opt: opt, clips: clips, unit: "J", pendulum: opt.Well == nil, plain: viscous | dry}
 	for i := range clips {
 		a := &clips[i].Angle
 		if a.Problem != "" {
@@ -281,6 +288,10 @@ func (l *ledger) torque(angle float64) float64 {
 // enter makes the rows from the turning points and the rest angles as they are
 // known now; states are kept.
 func (l *ledger) enter() {
+	if l.free != nil {
+		l.enterBall()
+		return
+	}
 	old := l.rows
 	l.rows = nil
 	for c, tp := range l.turns {
@@ -302,6 +313,7 @@ func (l *ledger) enter() {
 			r := row{
 				clip: c, from: i - 1, to: i, joined: last == i-1, t: (tp[i].t + tp[i-1].t) / 2,
 				before: l.energy(a), after: l.energy(b), amp: (math.Abs(a) + math.Abs(b)) / 2, side: math.Copysign(1, b),
+				gain: 1, span: tp[i].t - tp[i-1].t,
 			}
 			ga, gb := l.torque(a), l.torque(b)
 			r.vFrom, r.vTo = sq(ga*tp[i-1].u*l.noise[c]), sq(gb*tp[i].u*l.noise[c])

@@ -39,6 +39,9 @@ func (s *solution) lossVector(work [3]float64) []float64 {
 
 // workAt is the work of unit frictions over a pass at an amplitude.
 func (l *ledger) workAt(amplitude float64) (w [3]float64) {
+	if l.free != nil {
+		return l.usualWork()
+	}
 	for _, end := range []float64{amplitude, -amplitude} {
 		x := l.frictions(end, l.energy(end), 0, 0)
 		for j := range w {
@@ -76,6 +79,9 @@ func (l *ledger) budget(g []float64, value float64) []finding.Share {
 		out = append(out, finding.Share{Source: source, U: u})
 	}
 	for c := range l.clips {
+		if l.free != nil {
+			break // in the covariance already
+		}
 		for _, sh := range l.clips[c].Angle.Shared {
 			if sh.Source == "vertical" || len(sh.D) == 0 {
 				continue // free in the fit
@@ -109,7 +115,7 @@ func (l *ledger) measured(key, name string, g func(s *solution) []float64) findi
 	budget := l.budget(g(l.best), v)
 	u := math.Sqrt(variance + sq(rss(budget)))
 	f := finding.Normal(key, l.part(), name, v, u, l.unit, method)
-	f.Budget = append([]finding.Share{{Source: "pictures, scatter of the kicks and choice of friction", U: math.Sqrt(variance)}}, budget...)
+	f.Budget = append([]finding.Share{{Source: l.pictures(), U: math.Sqrt(variance)}}, budget...)
 	return f
 }
 
@@ -135,16 +141,21 @@ func (l *ledger) middle() float64 {
 
 // how tells by what kick and loss may be told apart.
 func (l *ledger) how() Separation {
-	n, none := 0, 0
+	n, none, off := 0, 0, 0
 	for i := range l.rows {
 		switch l.rows[i].state {
-		case Off, Slow:
+		case Off:
+			off++
+			n++
+		case Slow:
 			n++
 		case Missed:
 			none++
 		}
 	}
 	switch {
+	case l.free != nil && off < leastOff:
+		return Between
 	case n >= leastOff:
 		return CoilOff
 	case none > 0:
@@ -160,6 +171,9 @@ func (l *ledger) report(res *Result) {
 	loss := func(s *solution) []float64 { return s.lossVector(work) }
 	kick := (*solution).kickVector
 	at := fmt.Sprintf(" at an amplitude of %.3g°", res.Amplitude/degree)
+	if l.free != nil {
+		at = ", on average of those filmed"
+	}
 	fLoss := l.measured("kick.loss", "Energy that friction takes per pass"+at, loss)
 	var fKick finding.Finding
 	if l.best.kicks == 1 {
@@ -210,8 +224,12 @@ func (l *ledger) report(res *Result) {
 	if l.best.kicks == 1 {
 		if !res.Idle {
 			l.ways(res)
-			l.steady(res)
-			l.beginning(res)
+			if l.free == nil {
+				l.steady(res)
+				l.beginning(res)
+			} else {
+				l.usualKick(res)
+			}
 			l.perDay(res)
 		} else {
 			res.Cautions = append(res.Cautions, "No kick was seen: the coil, its cell or the magnet at the foot does nothing, or the swing is too slow to be sensed.")
@@ -231,6 +249,8 @@ func (h Separation) caution() string {
 	switch h {
 	case Constant:
 		return "No pass without a kick was filmed: kick and loss were told apart by how the amplitude changes, on the assumption that the kick does not depend on speed. A real coil's kick weakens with speed, which then looks like friction."
+	case Between:
+		return "Kick and loss were told apart by the free motion between the pushes. The kick is that of a pass right over the coil; beside it, it is taken to fall off as the rig's radius says."
 	case Gaps:
 		return "Kick and loss were told apart by single passes that gained much less than the others, on the assumption that these had no kick at all."
 	}
@@ -342,6 +362,9 @@ func (l *ledger) summary(res *Result) finding.Fit {
 		}
 	}
 	for c := range l.clips {
+		if l.free != nil {
+			break
+		}
 		name := "vertical"
 		if c > 0 {
 			name = fmt.Sprintf("vertical of clip %d", c+1)
@@ -350,9 +373,10 @@ func (l *ledger) summary(res *Result) finding.Fit {
 		add(name, at, 1, "rad")
 		fit.Free[len(fit.Free)-1].Value += l.rest[c]
 	}
-	for a := range s.size {
-		row := make([]float64, s.size)
-		for b := range s.size {
+	told := len(fit.Free)
+	for a := range told {
+		row := make([]float64, told)
+		for b := range told {
 			row[b] = s.cov[a*s.size+b] / math.Sqrt(s.cov[a*s.size+a]*s.cov[b*s.size+b])
 		}
 		fit.Correlation = append(fit.Correlation, row)

@@ -8,14 +8,14 @@ import (
 	"slices"
 )
 
-// plain is the friction with which states are found out: enough to follow any
-// mixture over a clip.
-const plain = viscous | dry
-
 // settle finds the vertical, what the coil did at each pass, and the fits.
 func (l *ledger) settle(ctx context.Context) error {
-	l.setAside()
-	const rounds = 4 // the last leaves the vertical where the turning points were measured
+	rounds := 4 // the last leaves the vertical where the turning points were measured
+	if l.free != nil {
+		rounds = 0 // energies were measured already, and the vertical with them
+	} else {
+		l.setAside()
+	}
 	for n := range rounds {
 		if err := ctx.Err(); err != nil {
 			return err
@@ -23,7 +23,7 @@ func (l *ledger) settle(ctx context.Context) error {
 		if n >= 2 {
 			l.sharpen()
 		}
-		s, ok := l.fit(plain, nil, -1)
+		s, ok := l.fit(l.plain, nil, -1)
 		if !ok {
 			return errors.New("kick: the balance of the passes cannot be solved; look at the turning points in the angle's figure")
 		}
@@ -32,6 +32,11 @@ func (l *ledger) settle(ctx context.Context) error {
 		}
 	}
 	l.measureNoise()
+	if l.free != nil {
+		if err := l.blunt(ctx); err != nil {
+			return err
+		}
+	}
 	if l.unknown() {
 		l.findOff(ctx)
 	}
@@ -90,7 +95,7 @@ func (l *ledger) setAside() {
 
 // takeBack gives passes that were set aside the state that fits them.
 func (l *ledger) takeBack() {
-	s, ok := l.fit(plain, nil, -1)
+	s, ok := l.fit(l.plain, nil, -1)
 	if !ok || s.kicks == 0 || !(s.beta[0] > 0) {
 		return
 	}
@@ -120,7 +125,7 @@ func (l *ledger) measureNoise() {
 		for _, x := range [...]float64{1, 1.2, 1.45, 1.75, 2.1, 2.5, 3, 3.6, 4.3, 5.2} {
 			l.noise[c] = x
 			l.enter()
-			if s, ok := l.fit(plain, nil, -1); ok && s.logL > best {
+			if s, ok := l.fit(l.plain, nil, -1); ok && s.logL > best {
 				best, at = s.logL, x
 			}
 		}
@@ -165,7 +170,7 @@ func (l *ledger) findOff(ctx context.Context) {
 	if n < 2*leastOff {
 		return
 	}
-	all, ok := l.fit(plain, nil, -1)
+	all, ok := l.fit(l.plain, nil, -1)
 	if !ok {
 		return
 	}
@@ -184,15 +189,18 @@ func (l *ledger) findOff(ctx context.Context) {
 	type cut struct{ from, to int }
 	best, bestCut := all.logL, cut{}
 	try := func(c cut) {
-		loses := 0.0
+		loses, open := 0.0, 0
 		for i := c.from; i < c.to; i++ {
 			loses += l.rows[i].net()
+			if !l.rows[i].fixed {
+				open++
+			}
 		}
-		if loses >= 0 || ctx.Err() != nil {
+		if loses >= 0 || open < leastOff || ctx.Err() != nil {
 			return
 		}
 		set(c.from, c.to)
-		if s, ok := l.fit(plain, nil, -1); ok && s.kicks == 1 && s.logL > best && s.beta[0] > 5*math.Sqrt(s.cov[0]*s.widen()) {
+		if s, ok := l.fit(l.plain, nil, -1); ok && s.kicks == 1 && s.logL > best && s.beta[0] > 5*math.Sqrt(s.cov[0]*s.widen()) {
 			best, bestCut = s.logL, c
 		}
 	}
@@ -223,7 +231,7 @@ func (l *ledger) findOff(ctx context.Context) {
 func (l *ledger) findOdd() {
 	l.takeBack()
 	for range 10 {
-		s, ok := l.fit(plain, nil, -1)
+		s, ok := l.fit(l.plain, nil, -1)
 		if !ok || s.kicks == 0 {
 			return
 		}
@@ -283,7 +291,7 @@ func (l *ledger) turnOver() {
 			high++
 		}
 	}
-	old, ok := l.fit(plain, nil, -1)
+	old, ok := l.fit(l.plain, nil, -1)
 	if high < 3 || !ok {
 		return
 	}
@@ -296,7 +304,7 @@ func (l *ledger) turnOver() {
 			r.state = Kicked
 		}
 	}
-	s, ok := l.fit(plain, nil, -1)
+	s, ok := l.fit(l.plain, nil, -1)
 	if ok && s.kicks == 1 && s.beta[0] > 0 && s.sigma < 0.4*s.beta[0] && (old.kicks == 0 || old.beta[0] < 0.6*s.beta[0]) {
 		// Those without a kick must agree on the loss.
 		ss, n := 0.0, 0.0
@@ -317,7 +325,7 @@ func (l *ledger) turnOver() {
 // confirm makes Odd of passes that are neither without a kick nor with two.
 func (l *ledger) confirm() {
 	for range 3 {
-		s, ok := l.fit(plain, nil, -1)
+		s, ok := l.fit(l.plain, nil, -1)
 		if !ok || s.kicks == 0 {
 			return
 		}
@@ -338,7 +346,7 @@ func (l *ledger) confirm() {
 // splitTwo looks for a coil that fires at some passes only, in no order: the
 // changes then fall into two heaps, and no middle one is the usual.
 func (l *ledger) splitTwo() {
-	one, ok := l.fit(plain, nil, -1)
+	one, ok := l.fit(l.plain, nil, -1)
 	if !ok || one.kicks == 0 {
 		return
 	}
@@ -368,7 +376,7 @@ func (l *ledger) splitTwo() {
 				r.state, changed = to, true
 			}
 		}
-		next, ok := l.fit(plain, nil, -1)
+		next, ok := l.fit(l.plain, nil, -1)
 		if !ok || next.kicks == 0 {
 			break
 		}

@@ -98,7 +98,7 @@ func (l *ledger) columns(s *solution) {
 	for i := range l.rows {
 		r := &l.rows[i]
 		d := s.design[i*s.size : (i+1)*s.size]
-		h := r.state.share()
+		h := r.state.share() * r.gain
 		if s.kicks == 1 {
 			d[0] = h
 			for k, e := range s.extras {
@@ -183,7 +183,7 @@ func (l *ledger) fitAt(w law, extras []extra, sigma float64) (*solution, bool) {
 	for i := range l.rows {
 		r := &l.rows[i]
 		typical += r.before / float64(n)
-		c := r.vFrom + r.vTo + sq(sigma*r.state.share())
+		c := r.vFrom + r.vTo + sq(sigma*r.state.share()*r.gain)
 		s.varRes[i] = c
 		if r.state == Odd {
 			c += sq(r.before + r.after) // says nothing
@@ -243,6 +243,7 @@ func (l *ledger) fitAt(w law, extras []extra, sigma float64) (*solution, bool) {
 			m[j*p+j] += 1
 		}
 	}
+	s.beforehand(l, m, b)
 	cov, ok := inverse(m, p)
 	if !ok {
 		return nil, false
@@ -273,7 +274,62 @@ func (l *ledger) fitAt(w law, extras []extra, sigma float64) (*solution, bool) {
 		j := p - len(l.clips) + c
 		s.logL -= sq(s.beta[j]/l.uRest[c]) / 2
 	}
+	s.inCommon(l)
 	return s, true
+}
+
+// beforehand enters what the free motion between the pushes tells of the frictions.
+func (s *solution) beforehand(l *ledger, m, b []float64) {
+	if l.free == nil {
+		return
+	}
+	f := l.free
+	for i := range 3 {
+		if !s.law.has(i) {
+			continue
+		}
+		a := s.frictionAt(i)
+		for j := range 3 {
+			// A friction that the law lacks is zero.
+			b[a] += f.info[3*i+j] * f.friction[j]
+			if s.law.has(j) {
+				m[a*s.size+s.frictionAt(j)] += f.info[3*i+j]
+			}
+		}
+	}
+}
+
+// inCommon adds what all stretches of free motion have in common (camera, magnets
+// and their places) to the covariance, and what is known of the frictions to the
+// likelihood.
+func (s *solution) inCommon(l *ledger) {
+	if l.free == nil {
+		return
+	}
+	f := l.free
+	var off [3]float64
+	for i := range 3 {
+		off[i] = -f.friction[i]
+		if s.law.has(i) {
+			off[i] += s.beta[s.frictionAt(i)]
+		}
+	}
+	for i := range 3 {
+		for j := range 3 {
+			s.logL -= off[i] * f.info[3*i+j] * off[j] / 2
+		}
+	}
+	var ds [][]float64
+	for _, dy := range f.common {
+		ds = append(ds, s.response(dy))
+	}
+	for _, d := range ds {
+		for j := range d {
+			for k := range d {
+				s.cov[j*s.size+k] += d[j] * d[k]
+			}
+		}
+	}
 }
 
 // response is what a change dy of all nets does to the parameters.

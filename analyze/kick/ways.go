@@ -46,8 +46,10 @@ func (l *ledger) ways(res *Result) {
 	if res.Separated {
 		share = "Relative difference"
 	}
-	tell(side, 2, "kick.by_direction", share+" of kicks to the right and to the left",
-		"Kicks to the right and to the left differ: the coil stands beside the lowest point, or senses late on one side.")
+	if l.free == nil {
+		tell(side, 2, "kick.by_direction", share+" of kicks to the right and to the left",
+			"Kicks to the right and to the left differ: the coil stands beside the lowest point, or senses late on one side.")
+	}
 	if f := tell(time, 1, "kick.fading", "Change of the kick over the clip",
 		"The kick, or the friction at the same amplitude, changed while the phone ran: a cell that gives out, a coil that warms, or a bearing that runs in."); f != nil && f.Value < -3*f.U {
 		res.Cautions = append(res.Cautions, "The kick fades over the clip.")
@@ -171,8 +173,8 @@ func (l *ledger) perDay(res *Result) {
 		if r.state == Off || r.clip != 0 {
 			continue
 		}
-		count += r.state.share()
-		time += l.turns[0][r.to].t - l.turns[0][r.from].t
+		count += r.state.share() * r.gain
+		time += r.span
 	}
 	const day = 86400
 	perDay := count / time * day
