@@ -55,6 +55,7 @@ type clipData struct {
 	obs      []observation
 	segments []segment
 	left     []interval // what is left out: a hand
+	slow     []slowPass // where the motion after has no bond with the motion before
 	dims     int        // rows per observation
 }
 

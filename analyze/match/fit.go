@@ -103,6 +103,7 @@ func (f *fitter) approach(ctx context.Context) error {
 		f.reweigh()
 	}
 	f.opt.log("free stretches: r.m.s. residual %.4g", f.rms())
+	f.saddles()
 	f.merge()
 	f.tol = 1e-9
 	if err := f.shootAll(ctx, f.values(), false, false); err != nil {

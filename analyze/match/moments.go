@@ -90,6 +90,10 @@ func (r *reporter) magnets() {
 				r.undecided("match.product", subject, "Pair product m₁m₂", whyTrapped)
 				continue
 			}
+			if hard := r.whyHard(ga); ga == gb && hard != "" {
+				r.undecided("match.product", subject, "Pair product m₁m₂", hard)
+				continue
+			}
 			if u, _, _ := r.j.of(r.fitter, grad); !(u < undeterminedAt*math.Abs(ma*mb)) {
 				if r.absent(a, b, ma, mb, da, db) {
 					continue
@@ -126,6 +130,9 @@ func (r *reporter) magnets() {
 				if len(q.tied) > 1 {
 					why = "The clip holds too little of these magnets' action to tell their moment: film a larger release or set them nearer."
 				}
+			}
+			if hard := r.whyHard(i); hard != "" && !trapped {
+				why = hard
 			}
 			r.undecided("match.moment", subject, name, why)
 			continue

@@ -8,7 +8,6 @@ import (
 	"strings"
 
 	"lodeswing/analyze/finding"
-	"lodeswing/track/rig"
 )
 
 const byMatching = "model matched to the track by multiple shooting"
@@ -21,7 +20,9 @@ type reporter struct {
 	p   []float64
 	say string // method
 	// poor holds the parameters that the clips do not determine.
-	poor map[int]bool
+	poor  map[int]bool
+	spans map[int]span // 95 % intervals of parameters by profile, where derivatives do not do
+	hard  string       // says that the part hardly got over the magnet
 }
 
 // undeterminedAt is the relative standard uncertainty from which a number is not
@@ -29,11 +30,14 @@ type reporter struct {
 const undeterminedAt = 0.3
 
 func (f *fitter) report(ctx context.Context) (*Result, error) {
+	if err := f.settle(ctx); err != nil {
+		return nil, err
+	}
 	j, err := f.judge()
 	if err != nil {
 		return nil, err
 	}
-	r := &reporter{fitter: f, j: j, p: f.values(), res: &Result{Scatter: f.widened * math.Sqrt(j.chi2/float64(j.dof)), Converged: f.converged}, poor: map[int]bool{}}
+	r := &reporter{fitter: f, j: j, p: f.values(), res: &Result{Scatter: f.widened * math.Sqrt(j.chi2/float64(j.dof)), Converged: f.converged}, poor: map[int]bool{}, spans: map[int]span{}}
 	r.say = byMatching
 	if n := len(f.clips); n > 1 {
 		r.say += fmt.Sprintf(", %d clips together", n)
@@ -54,6 +58,10 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	}
 	r.leftOut()
 	r.separability()
+	r.capture(ctx)
+	if err := ctx.Err(); err != nil {
+		return nil, err
+	}
 	r.magnets()
 	r.rest()
 	r.loss()
@@ -62,6 +70,9 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	r.fittedRig()
 	if !r.converged && misfit == "" {
 		misfit = "The matching did not settle: " + r.why + "."
+		if hard := r.hardly(); hard != "" {
+			misfit = hard + " So near to being captured the matching did not settle; let it go from farther out, so that it passes over the magnet with some speed."
+		}
 	}
 	if misfit != "" { // numbers of a wrong model are not told as if they were the toy's
 		for i := range r.res.Findings {
@@ -85,6 +96,7 @@ func (r *reporter) number(key, subject, name string, value float64, grad []float
 	u, _, budget := r.j.of(r.fitter, grad)
 	f := finding.Normal(key, subject, name, value, u, unit, r.say)
 	f.Budget = budget
+	r.bound(&f, grad)
 	r.add(f)
 	return &r.res.Findings[len(r.res.Findings)-1]
 }
@@ -116,47 +128,6 @@ func (r *reporter) separability() {
 			}
 		}
 	}
-}
-
-// trapped tells whether the only part, a hinge over magnets of the base, stayed
-// beside them all the time: such a clip determines no moment.
-func (f *fitter) trapped() bool {
-	if len(f.rig.Parts) != 1 || f.nv != 1 {
-		return false
-	}
-	base := 0
-	var at [3]float64
-	for i := range f.rig.Magnets {
-		if g := &f.rig.Magnets[i]; g.Part == "" || g.Part == rig.Base {
-			base++
-			at = rig.XYZ(g.AtM)
-		}
-	}
-	if base != 1 {
-		return false
-	}
-	pivot := rig.XYZ(f.rig.Parts[0].PivotM)
-	over := math.Atan2(at[0]-pivot[0], -(at[2] - pivot[2]))
-	for c := range f.clips {
-		k := &f.clips[c]
-		left, right := false, false
-		for s := range k.segments {
-			g := &k.segments[s]
-			for i := range g.pose {
-				w := &k.watched[k.obs[g.from+i].who]
-				a := g.pose[i].at[0]
-				if w.bob >= 0 {
-					p := g.pose[i].turn
-					a = math.Atan2(-p[0][2], p[2][2]) // of its own hanging direction
-				}
-				left, right = left || a < over, right || a > over
-			}
-		}
-		if left && right {
-			return false
-		}
-	}
-	return true
 }
 
 const whyTrapped = "The part stayed on one side of the magnet all through the clip: such a motion determines no magnet. Let it go from farther out, so that it passes over the magnet."

@@ -61,6 +61,7 @@ func (f *fitter) cut(c int, times []float64, states [][]float64) {
 		if g.broken = k.parted(g.t0, g.t1); g.broken && g.to > g.from {
 			g.t1 = k.obs[g.to-1].t + 1e-3
 		}
+		g.broken = g.broken || s+1 < len(times) && k.slowAt(times[s+1])
 		k.segments = append(k.segments, g)
 	}
 }

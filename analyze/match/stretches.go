@@ -5,8 +5,12 @@ import (
 )
 
 // regular tells whether a whole clip may be computed as one motion: small
-// deviations grow by no more than a few hundred over it.
+// deviations grow by no more than a few hundred over it, or there is but one joint
+// that nothing drives, whose motion is cut where it hardly gets over a magnet.
 func (f *fitter) regular() bool {
+	if _, lone := f.overMagnet(); lone && !f.driven() {
+		return true
+	}
 	for c := range f.clips {
 		k := &f.clips[c]
 		if f.growth*(k.obs[len(k.obs)-1].t-k.obs[0].t) > 6 {
@@ -177,12 +181,20 @@ func (f *fitter) merge() {
 		}
 		var times []float64
 		var states [][]float64
+		slow := k.slow
 		for i := range k.segments {
 			g := &k.segments[i]
+			for len(slow) > 0 && slow[0].t <= g.t0 {
+				times, states = append(times, slow[0].t), append(states, slow[0].y)
+				slow = slow[1:]
+			}
 			afterBreak := i > 0 && k.segments[i-1].broken
 			if len(times) == 0 || afterBreak || g.broken || g.t0-times[len(times)-1] > span-1e-9 {
 				times, states = append(times, g.t0), append(states, g.y)
 			}
+		}
+		for _, s := range slow {
+			times, states = append(times, s.t), append(states, s.y)
 		}
 		f.opt.log("%d stretches of about %.2g s (growth %.2g /s)", len(times), span, growth)
 		f.cut(c, times, states)
