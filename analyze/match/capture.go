@@ -184,13 +184,15 @@ func (r *reporter) capture(ctx context.Context) {
 	if !r.oneMotion || r.res.Scatter > plainMisfit || !r.converged {
 		return
 	}
-	r.hard = r.hardly()
+	if r.hard = r.hardly(); r.hard == "" {
+		return
+	}
 	for i := range r.params {
 		q := &r.params[i]
 		if !q.asked || r.poor[i] || !q.moment() {
 			continue
 		}
-		if r.hard != "" && r.passes() < fewestPasses {
+		if r.passes() < fewestPasses {
 			r.poor[i] = true
 			continue
 		}

@@ -37,6 +37,7 @@ func drawn(t testing.TB, r *rig.Rig, seed uint64) *rig.Rig {
 	}
 	for i := range c.Magnets {
 		place(c.Magnets[i].AtM, 0.5e-3)
+		slanted(&c.Magnets[i], "turn", uAxis*rnd.NormFloat64())
 	}
 	for i := range c.Bobs {
 		place(c.Bobs[i].AtM, 0.5e-3)

@@ -1,6 +1,7 @@
 package match
 
 import (
+	"math"
 	"slices"
 	"strings"
 
@@ -61,6 +62,10 @@ func (r *reporter) places(c *rig.Rig) {
 		}
 		owner, axis := split(q.address)
 		owner, what := split(owner)
+		if g := c.FindMagnet(owner); g != nil && what == "axis" {
+			slanted(g, axis, q.value)
+			continue
+		}
 		var at *[]float64
 		if p := c.FindPart(owner); p != nil && what == "centre" {
 			at = &p.CentreM
@@ -79,6 +84,22 @@ func (r *reporter) places(c *rig.Rig) {
 		} else {
 			*at = []float64{x[0], x[2]}
 		}
+	}
+}
+
+// slanted turns a magnet's axis in the rig, as the model does.
+func slanted(g *rig.Magnet, way string, by float64) {
+	x := rig.XYZ(g.Axis)
+	s, c := math.Sincos(by)
+	flat := math.Hypot(x[0], x[2])
+	switch {
+	case way == "turn":
+		x[0], x[2] = c*x[0]+s*x[2], c*x[2]-s*x[0]
+	case flat > 0:
+		x[0], x[1], x[2] = x[0]*(c*flat-s*x[1])/flat, c*x[1]+s*flat, x[2]*(c*flat-s*x[1])/flat
+	}
+	if g.Axis = []float64{x[0], x[2]}; x[1] != 0 {
+		g.Axis = x[:]
 	}
 }
 

@@ -56,9 +56,10 @@ type target struct {
 }
 
 const (
-	uBobPlace = 0.5e-3 // m, of a bob's place on its part (common practice, no source)
-	uPlace    = 0.5e-3 // m, of a coordinate in the rig, where it says nothing
-	wideShift = 0.1    // m, of the toy's place in the picture: found from the clip
+	uAxis     = math.Pi / 180 // rad, of a magnet's axis each way, where the rig says nothing (common practice, no source)
+	uBobPlace = 0.5e-3        // m, of a bob's place on its part (common practice, no source)
+	uPlace    = 0.5e-3        // m, of a coordinate in the rig, where it says nothing
+	wideShift = 0.1           // m, of the toy's place in the picture: found from the clip
 )
 
 // builder collects the parameters.
@@ -107,6 +108,7 @@ func (f *fitter) buildParams() error {
 	}
 	for i := range b.r.Magnets {
 		b.magnetPlace(&b.r.Magnets[i], ball)
+		b.magnetAxis(&b.r.Magnets[i], ball)
 	}
 	b.seen()
 	b.gauge()

@@ -144,6 +144,29 @@ func (b *builder) magnetPlace(g *rig.Magnet, ball bool) {
 	b.add(p)
 }
 
+// magnetAxis adds where a magnet's axis points. That of a part on a ball joint is left
+// alone: the part turns about its own axis, and what a slant does goes round with it.
+func (b *builder) magnetAxis(g *rig.Magnet, ball bool) {
+	u := g.UAxisRad.Or(uAxis)
+	if q := b.r.FindPart(g.Part); q != nil && q.Joint == "ball" || len(b.r.Magnets) < 2 {
+		return
+	}
+	add := func(way string) {
+		name := g.Name + ".axis." + way
+		if b.f.modelIndex(name) < 0 {
+			return
+		}
+		b.add(param{
+			address: name, unit: "rad", source: "the axis of " + g.Name, clip: -1, nuisance: true, prior: true, u: u,
+			targets: b.set([]string{name}, 0, 1), scale: 1e-4,
+		})
+	}
+	add("turn")
+	if ball {
+		add("lean")
+	}
+}
+
 // meetsOnlyBase tells whether a moving magnet's place is only felt as its
 // distance from one magnet of the base.
 func (b *builder) meetsOnlyBase(g *rig.Magnet) bool {

@@ -296,7 +296,7 @@ func (m *Model) addMagnet(g *rig.Magnet, index map[string]int) error {
 	if axis == (vec{}) {
 		return fmt.Errorf("%s: axis must point somewhere, from its south to its north", where)
 	}
-	p := magnetPart{name: g.Name, body: k, at: vector(g.AtM), axis: axis, moment: g.Moment.Or(1), gapTo: -1}
+	p := magnetPart{name: g.Name, body: k, at: vector(g.AtM), axis: axis, given: axis, moment: g.Moment.Or(1), gapTo: -1}
 	if c := g.Cylinder; c != nil {
 		p.cylinder, p.exact = true, true
 		p.cyl = magnet.Cylinder{

@@ -114,3 +114,54 @@ func endOf(t *testing.T, m *Model) float64 {
 	}
 	return y[0]
 }
+
+// Turning and leaning an axis by Set is the same as giving the rig the axis so turned.
+func TestAxisSlant(t *testing.T) {
+	const turn, lean = 0.02, -0.03
+	hung := lantern()
+	hung.Parts[0].Joint, hung.Parts[0].SpinInertia = "ball", rig.Value{V: 1e-5, Set: true}
+	for name, r := range map[string]*rig.Rig{"hinge": lantern(), "ball": hung, "cylinders": cylinders()} {
+		m, err := New(r)
+		if err != nil {
+			t.Fatal(err)
+		}
+		magnet := &r.Magnets[1]
+		for way, by := range map[string]float64{".axis.turn": turn, ".axis.lean": lean} {
+			i, err := m.Index(magnet.Name + way)
+			if err != nil {
+				t.Fatal(err)
+			}
+			m.Set(i, by)
+		}
+		// About +y by turn, which takes z towards x; then towards y by lean: these axes
+		// lie in the plane of x and z.
+		a := rig.XYZ(magnet.Axis)
+		x, z := a[0]*math.Cos(turn)+a[2]*math.Sin(turn), a[2]*math.Cos(turn)-a[0]*math.Sin(turn)
+		magnet.Axis = []float64{x * math.Cos(lean), math.Sin(lean) * math.Hypot(x, z), z * math.Cos(lean)}
+		k, err := New(r)
+		if err != nil {
+			t.Fatal(err)
+		}
+		y := k.Rest()
+		k.Displace(y, []float64{0.3, 0.1, 0.2, 0.5, 0.6, 0.7}[:2*k.Freedoms()])
+		d, e := make([]float64, len(y)), make([]float64, len(y))
+		m.Derive(y, d)
+		k.Derive(y, e)
+		for i := range d {
+			if math.Abs(d[i]-e[i]) > 1e-9*(1+math.Abs(e[i])) {
+				t.Errorf("%s: derivative %d is %g by Set, %g by the rig", name, i, d[i], e[i])
+			}
+		}
+	}
+}
+
+// cylinders is the lantern with discs for magnets.
+func cylinders() *rig.Rig {
+	r := lantern()
+	for i := range r.Magnets {
+		r.Magnets[i].Cylinder = &rig.Cylinder{
+			DiameterM: rig.Value{V: 0.012, Set: true}, HeightM: rig.Value{V: 0.006, Set: true}, RemanenceT: rig.Value{V: 1.2, Set: true},
+		}
+	}
+	return r
+}

@@ -64,6 +64,8 @@ func (m *Model) listParams() {
 			add(g.name, ".gap", "m", &g.gap)
 		}
 		place(g.name, ".at", &g.at)
+		add(g.name, ".axis.turn", "rad", &g.turn)
+		add(g.name, ".axis.lean", "rad", &g.lean)
 	}
 	for i := range m.coils {
 		c := &m.coils[i]
@@ -157,6 +159,7 @@ func (m *Model) refresh() error {
 		if g.cylinder {
 			g.moment = g.cyl.Moment()
 		}
+		g.axis = g.tilted()
 		g.ownM = g.axis.Scale(g.moment)
 		if g.exact && g.body >= 0 {
 			g.cutFaces()
@@ -191,6 +194,25 @@ func (m *Model) refresh() error {
 		}
 	}
 	return nil
+}
+
+// tilted is the axis as it stands, off from the given one by turn and lean.
+func (g *magnetPart) tilted() vec {
+	if g.turn == 0 && g.lean == 0 {
+		return g.given
+	}
+	s, c := math.Sincos(g.turn)
+	a := vec{X: c*g.given.X + s*g.given.Z, Y: g.given.Y, Z: c*g.given.Z - s*g.given.X}
+	if g.lean == 0 {
+		return a
+	}
+	// Turned towards +y about the axis across it.
+	s, c = math.Sincos(g.lean)
+	flat := math.Hypot(a.X, a.Z)
+	if flat == 0 {
+		return a
+	}
+	return vec{X: a.X * (c*flat - s*a.Y) / flat, Y: c*a.Y + s*flat, Z: a.Z * (c*flat - s*a.Y) / flat}
 }
 
 // standsAt is where a base magnet stands: at its own place, or as far from the

@@ -85,6 +85,10 @@ type magnetPart struct {
 	body int // −1: the base
 	at   vec // own axes
 	axis vec // own axes, unit, south to north
+	// The axis as the rig gives it, and by how much it is off: turn in the plane of x
+	// and z (+z towards +x), lean across that plane (towards +y), rad.
+	given      vec
+	turn, lean float64
 	// moment in A·m² along axis; for a cylinder it follows from remanence.
 	moment       float64
 	cylinder     bool

@@ -142,6 +142,7 @@ type Magnet struct {
 	// that distance in the direction that at_mm gives; where it is not, at_mm holds.
 	GapM     Value     `rig:"gap_mm,u=0.5,fit,pos"`
 	Axis     []float64 `rig:"axis"`
+	UAxisRad Value     `rig:"axis_reading_deg,u=0,pos"` // standard uncertainty of the direction of axis, each way (default 1°)
 	Moment   Value     `rig:"moment_A_m2,rel_u=0.05,fit"`
 	Cylinder *Cylinder `rig:"cylinder"`
 }
