@@ -18,6 +18,7 @@ import (
 	"unicode"
 	"unicode/utf8"
 
+	"lodeswing/analyze/chaos"
 	"lodeswing/analyze/decay"
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/kick"
@@ -48,7 +49,9 @@ var analyses = []analysis{
 	{"spectrum", "spectrum.lines", "Spectral lines", spectra},
 	{"modes", "modes.modes", "Modes", together},
 	{"regime", "regime", "How it behaves", regime},
+	{"recurrence", "recurrence.plot", "Recurrence plot", recurring},
 	{"matching", "match.fit", "Model matched to the motion", matching},
+	{"model's future", "chaos.model_exponent", "Largest exponent of the model", foretelling},
 	{"kicks", "kick.ledger", "Energy ledger", kicks},
 	{"claims", "claim.answers", "Claims", claims},
 }
@@ -71,6 +74,9 @@ type work struct {
 	angles []series.Angle // one per part that gave an angle
 	decays []*decay.Result
 	kicks  []*kick.Result
+	whole  *wholeMotion   // of all parts; nil when it could not be told
+	regime *chaos.Regime  // nil as well then
+	fitted *rig.Rig       // the rig with what the matching found; nil when it found nothing
 	out    *record.Record // of the battery-out clip; nil when there is none
 }
 

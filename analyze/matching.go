@@ -46,6 +46,7 @@ func matching(ctx context.Context, w *work) error {
 		return nil
 	}
 	intoRecord(w.rec, res)
+	w.fitted = res.Fitted
 	return nil
 }
 

@@ -2,74 +2,39 @@ package analyze
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"slices"
 
 	"lodeswing/analyze/chaos"
+	"lodeswing/analyze/match"
+	"lodeswing/analyze/series"
 )
 
-// leastRegular is the share of a motion that its spectral lines must explain for it
-// to be called regular in the report.
-const leastRegular = 0.9
-
-// regime says in one line how the whole toy behaves: its parts' angles together,
-// at the moments at which any was measured.
+// regime says in one line how the whole toy behaves: its parts' motion together.
 func regime(ctx context.Context, w *work) error {
 	if len(w.angles) == 0 {
 		return nil
 	}
-	var times []float64
-	for i := range w.angles {
-		a := &w.angles[i]
-		if w.joint(a.Part) == "ball" {
-			return fmt.Errorf("“%s” swings freely on a ball joint, and one angle does not tell how it moves", a.Part)
-		}
-		if slices.Max(a.Angle)-slices.Min(a.Angle) > 2*math.Pi {
-			return fmt.Errorf("“%s” goes all the way round, and the tests for regular and irregular motion are not sure of such motion", a.Part)
-		}
-		times = append(times, a.T...)
+	m, err := w.wholeMotion()
+	if err != nil {
+		return err
 	}
-	slices.Sort(times)
-	times = slices.Compact(times)
-	filmed := *w.rig
-	if w.clip != nil && !w.clip.Battery {
-		filmed.Coils = nil
+	filmed, err := match.Filmed(w.rig, w.clip)
+	if err != nil {
+		return err
 	}
-	m := chaos.Motion{T: times, Never: chaos.Never(&filmed)}
+	m.Never = chaos.Never(filmed)
 	beat := w.rec.Find("modes.beat.period", "")
 	if beat != nil {
 		m.BeatS = chaos.Value{V: beat.Value, U: beat.U}
 	}
-	for i := range w.angles {
-		a := &w.angles[i]
-		column, at := make([]float64, len(times)), 0
-		for k, t := range times {
-			column[k] = math.NaN()
-			if at < len(a.T) && a.T[at] == t {
-				column[k] = a.Angle[at]
-				at++
-			}
-		}
-		m.Columns = append(m.Columns, column)
-		u := slices.Clone(a.UAngle)
-		slices.Sort(u)
-		m.U = math.Max(m.U, u[len(u)/2])
-	}
-	r, err := chaos.Assess(ctx, m)
+	r, err := chaos.Assess(ctx, m.Motion)
 	if err != nil {
 		return err
 	}
-	switch r.Kind {
-	case chaos.Decaying, chaos.Steady, chaos.Growing, chaos.Beating, chaos.QuasiPeriodic:
-		if r.Explained < leastRegular || r.PeriodS > (times[len(times)-1]-times[0])/4 {
-			return fmt.Errorf("its turning points look regular, but its strongest frequencies explain only %.0f %% of it or are too slow for the clip; film longer, or look at the figures", 100*r.Explained)
-		}
-	}
-	subject := ""
-	if len(w.angles) == 1 {
-		subject = w.angles[0].Part
-	}
+	subject := w.onlyPart()
 	for _, f := range r.Findings(subject) {
 		if beat != nil && f.Key == "regime.beat_period" {
 			continue // the modes have told it
@@ -77,15 +42,88 @@ func regime(ctx context.Context, w *work) error {
 		w.rec.Findings = append(w.rec.Findings, f)
 	}
 	w.rec.Curves = append(w.rec.Curves, r.Curves(subject)...)
+	w.regime, w.whole = r, m
 	return nil
 }
 
-// joint is the kind of a part's joint by the rig; empty when the rig has no such part.
-func (w *work) joint(part string) string {
-	for i := range w.rig.Parts {
-		if w.rig.Parts[i].Name == part {
-			return w.rig.Parts[i].Joint
+// wholeMotion is the motion of all measured parts together.
+type wholeMotion struct {
+	chaos.Motion
+	Names []string // of the columns, as people call them
+	Parts []int    // the part of each column, as an index of w.angles
+}
+
+// wholeMotion gathers what is known of all parts at the moments of the one that was
+// measured most often. An angle stands for itself, or, where its part goes all the
+// way round, for its sine and cosine; a ball joint stands for its bob's place in the
+// picture over its distance from the pivot. All is in radians, or as good as.
+func (w *work) wholeMotion() (*wholeMotion, error) {
+	most := 0
+	for i := range w.angles {
+		if len(w.angles[i].T) > len(w.angles[most].T) {
+			most = i
 		}
 	}
-	return ""
+	m := &wholeMotion{}
+	m.T = w.angles[most].T
+	add := func(part int, name string, t, y []float64, u float64) {
+		m.Columns = append(m.Columns, chaos.Resample(t, y, m.T))
+		m.Names, m.Parts = append(m.Names, name), append(m.Parts, part)
+		m.U = math.Max(m.U, u)
+	}
+	for i := range w.angles {
+		a := &w.angles[i]
+		u := middle(a.UAngle)
+		switch {
+		case a.Joint == "ball":
+			x, z, ux, err := w.places(a)
+			if err != nil {
+				return nil, err
+			}
+			add(i, a.Part+", sideways", a.T, x, ux)
+			add(i, a.Part+", up", a.T, z, ux)
+		case slices.Max(a.Angle)-slices.Min(a.Angle) > 2*math.Pi:
+			sin, cos := make([]float64, len(a.T)), make([]float64, len(a.T))
+			for k, q := range a.Angle {
+				sin[k], cos[k] = math.Sincos(q)
+			}
+			add(i, "sine of "+a.Part, a.T, sin, u)
+			add(i, "cosine of "+a.Part, a.T, cos, u)
+		default:
+			add(i, a.Part, a.T, a.Angle, u)
+		}
+	}
+	return m, nil
+}
+
+// places are where a ball joint's bob was in the plane of motion when its angle
+// was measured, over its distance from the pivot, with the middle sample's
+// uncertainty.
+func (w *work) places(a *series.Angle) (x, z []float64, u float64, err error) {
+	if w.track == nil || !(a.Pivot.R > 0) {
+		return nil, nil, 0, fmt.Errorf("“%s” swings freely on a ball joint, and one angle does not tell how it moves; analyse its track", a.Part)
+	}
+	for i := range w.track.Bobs {
+		b := &w.track.Bobs[i]
+		if b.Name != a.Bob {
+			continue
+		}
+		var t, bx, bz, us []float64
+		for _, s := range b.Usable() {
+			ux, uz := s.Plane.Sigmas()
+			t, bx, bz, us = append(t, s.T), append(bx, s.X/a.Pivot.R), append(bz, s.Z/a.Pivot.R), append(us, math.Max(ux, uz)/a.Pivot.R)
+		}
+		if len(t) == 0 {
+			break
+		}
+		return chaos.Resample(t, bx, a.T), chaos.Resample(t, bz, a.T), middle(us), nil
+	}
+	return nil, nil, 0, errors.New("the bob that gave the angle is not in the track")
+}
+
+// middle is the median.
+func middle(x []float64) float64 {
+	y := slices.Clone(x)
+	slices.Sort(y)
+	return y[len(y)/2]
 }

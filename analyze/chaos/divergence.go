@@ -166,11 +166,15 @@ type stretch struct {
 	slope    float64 // then
 }
 
-// straight looks for the stretch of the smoothed curve that is straight: after
-// the first half period (in which distances turn into the direction that grows),
-// below saturation, with a slope that changes by less than a fifth from end to
-// end (where there is none, by less than two fifths). Among all such the one with the greatest growth is taken. A growth below
-// e, or shorter than a period and a half, is no exponential growth.
+// straight looks for the stretch of the smoothed curve that is straight. At first
+// what was not measured makes the distances grow: neighbours that differ in a spin or
+// a coil's state that nobody sees, and noise. So it begins a period and a half after
+// the start where a growth of e is left from there to saturation, with a slope that
+// changes by less than two fifths from end to end; else after half a period (in
+// which distances turn into the direction that grows), with a slope that changes by
+// less than a fifth (where there is none, two fifths). Among all such the one with
+// the greatest growth is taken. A growth below e, or shorter than a period and a
+// half, is no exponential growth.
 func (d *Divergence) straight(period, step float64) (stretch, bool) {
 	n := len(d.Smooth)
 	tail := slices.Clone(d.Smooth[n*2/3:])
@@ -181,13 +185,25 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 		first = 0
 	}
 	start := d.Smooth[min(first, n-1)]
-	roof := d.Plateau - 0.35*(d.Plateau-start) // where saturation begins to bend the curve
-	last := first
-	for last < n-1 && d.Smooth[last] < roof {
-		last++
-	}
 	least := max(int(math.Ceil(1.5*period)), 3)
-	best, gain := d.longest(first, last, least, 0.2)
+	// below is the last place before the curve comes within a share of its growth
+	// from a place to saturation, where that begins to bend it.
+	below := func(from int, share float64) int {
+		roof := d.Plateau - share*(d.Plateau-d.Smooth[min(from, n-1)])
+		last := from
+		for last < n-1 && d.Smooth[last] < roof {
+			last++
+		}
+		return last
+	}
+	best, gain := stretch{}, 0.0
+	if period >= 2 && least < n {
+		best, gain = d.longest(least, below(least, 0.25), least, 0.4)
+	}
+	last := below(first, 0.35)
+	if gain < 1 {
+		best, gain = d.longest(first, last, least, 0.2)
+	}
 	if gain < 1 { // noise bends the lower end up
 		best, gain = d.longest(first, last, least, 0.4)
 	}

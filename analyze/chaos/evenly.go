@@ -211,10 +211,10 @@ func (e *evenly) pace(periodS float64) (change, u float64) {
 	return slope, math.Sqrt(ss / float64(n-2) / xx)
 }
 
-// turning returns the main column's distance from mean at its turning points, one
-// between each two crossings of mean, and when.
-func (e *evenly) turning(mean float64) (amp, at []float64) {
-	x := e.columns[e.main]
+// turning returns a column's distance from mean at its turning points, one between
+// each two crossings of mean, and when.
+func (e *evenly) turning(column int, mean float64) (amp, at []float64) {
+	x := e.columns[column]
 	top, where, side := 0.0, 0, 0.0
 	crossed := false
 	for i, v := range x {
@@ -273,19 +273,16 @@ func course(at, amp []float64) (change, scatter float64) {
 
 func sq(x float64) float64 { return x * x }
 
-// jump is how far values lie from the course of their neighbours (the middle of
-// the two before and after on the same side, by the cubic through four), the
-// middle one of all.
-func jump(x []float64) float64 {
+// jumps is how far each value lies from the course of its neighbours (the middle
+// of the two before and after on the same side, by the cubic through four); it
+// leaves out four at either end.
+func jumps(x []float64) []float64 {
 	var d []float64
 	for i := 4; i+4 < len(x); i++ {
 		told := (4*(x[i-2]+x[i+2]) - x[i-4] - x[i+4]) / 6
 		d = append(d, math.Abs(x[i]-told))
 	}
-	if len(d) < 4 {
-		return 0
-	}
-	return median(d)
+	return d
 }
 
 // median changes the order of x.

@@ -7,7 +7,6 @@ import (
 	"math"
 	"slices"
 
-	"lodeswing/analyze/finding"
 	"lodeswing/analyze/recurrence"
 	"lodeswing/analyze/spectrum"
 )
@@ -54,35 +53,48 @@ type Regime struct {
 	PeriodS    float64 // s, of the strongest line
 	Change     float64 // logarithm of the amplitude at the end over that at the start
 	Ripple     float64 // scatter of the amplitude about its course, over the amplitude
-	Jump       float64 // how far turning points and passes lie from the course of their neighbours, over the amplitude
-	Explained  float64 // share of the motion that spectral lines explain
-	RepeatS    float64 // s, after which the motion comes again most nearly (up to 20 periods)
-	Mismatch   float64 // the difference then, over that of unrelated moments
-	RestsS     float64 // s, when it comes to rest within the clip; 0 when it does not
-	BeatS      Value   // s, beat period; 0 when it does not beat
-	NeedS      float64 // s, how long to film to know more; 0 when it is enough
-	States     recurrence.Vectors
+	// Jump is how far turning points and passes lie from the course of their
+	// neighbours, over the amplitude: three quarters of them lie nearer. Of several
+	// columns the worst.
+	Jump      float64
+	Explained float64 // share of the motion that spectral lines explain; of several columns the least
+	RepeatS   float64 // s, after which the motion comes again most nearly (up to 20 periods)
+	Mismatch  float64 // the difference then, over that of unrelated moments
+	RestsS    float64 // s, when it comes to rest within the clip; 0 when it does not
+	SteadyS   float64 // s, from when on a swing that gathered or died at first stays the same; 0: from the start, or never
+	BeatS     Value   // s, beat period; 0 when it does not beat
+	NeedS     float64 // s, how long to film to know more; 0 when it is enough
+	States    recurrence.Vectors
+	// Delay and Dimension are the embedding of the column that moves most; nil when
+	// the motion is too short for them.
 	Delay      *Delay
 	Dimension  *Dimension
 	Divergence *Divergence
 	ZeroOne    *ZeroOne
 	Surrogates *Surrogates
 	slows      bool // its speed falls, whatever its amplitude does
+	dies       bool // it beats, and dies down
 	spectrum   *spectrum.Spectrum
 }
 
-// enough is how many passes an exponent needs.
-const enough = 100
+const (
+	// enough is how many passes an exponent needs, and sure how many decide when the
+	// tests do not agree.
+	enough = 100
+	sure   = 300
+)
 
 // The limits between regimes, as shares of the amplitude. They were set on the
 // toys of the demo workshop and on simulated motions; no source.
 const (
 	steadyRipple = 0.03  // an amplitude that scatters less is steady
-	regularJump  = 0.08  // turning points nearer to their neighbours' course are regular
+	regularJump  = 0.1   // turning points nearer to their neighbours' course are regular
 	decayed      = 0.15  // a fall of ln(amplitude) that counts as decay
 	explained    = 0.985 // few lines that explain this much make a motion quasi-periodic
+	regularLines = 0.9   // a motion of which its lines explain less is not regular, unless it merely slows
 	repeated     = 0.05  // a course that comes again with less difference is periodic
 	few          = 4     // lines; with many, anything short can be explained
+	moves        = 0.3   // columns that move this much of what the main one does count
 )
 
 // Assess tells the regime of a motion. It errs only for input that makes no sense;
@@ -96,12 +108,11 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 	size := e.size()
 	if size < 5*m.U || size == 0 {
 		r.Kind, r.Confidence = AtRest, 0.95
-		r.Text = fmt.Sprintf("At rest: it moves by no more than the measurement's own scatter (%.2g).", max(m.U, size))
+		r.Text = "At rest: it moves by no more than the measurement's own scatter."
 		return r, nil
 	}
 	whole := e.n
 	r.RestsS = e.moving(m.U)
-	main := e.columns[e.main]
 	if e.n < 64 && whole >= 64 {
 		r.Kind, r.Confidence = AtRest, 0.8
 		r.Text = fmt.Sprintf("At rest but for %.2g s.", float64(e.n)*e.step)
@@ -111,24 +122,25 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		r.Text, r.NeedS = "Too short to say how it behaves.", 64*e.step
 		return r, nil
 	}
-	r.spectrum, err = spectrum.Compute(e.times(), main, nil, spectrum.Options{
-		MaxLines: few, Spare: -1, MinFreq: 4 / (e.step * float64(e.n)),
-	})
+	if err := e.choose(ctx); err != nil {
+		return nil, err
+	}
+	main := e.columns[e.main]
 	mean, _ := meanSD(main)
-	cut, cutErr := Cut(e.times(), [][]float64{main}, 0, mean, Both)
-	if cutErr != nil {
-		return nil, cutErr
+	cut, err := Cut(e.times(), [][]float64{main}, 0, mean, Both)
+	if err != nil {
+		return nil, err
 	}
 	if r.Passes = len(cut.T); r.Passes < 8 {
-		r.Text = fmt.Sprintf("Too short to say how it behaves: only %d passes.", r.Passes)
+		r.Text = fmt.Sprintf("Too short to say how it behaves: it passes its middle only %d times.", r.Passes)
 		r.NeedS = 10 / float64(max(r.Passes, 1)) * e.step * float64(e.n)
 		return r, nil
 	}
-	if err != nil || len(r.spectrum.Lines) == 0 {
+	if r.spectrum, err = e.lines(e.main, few); err != nil || len(r.spectrum.Lines) == 0 {
 		r.Text = "No frequency stands out of the scatter; nothing can be said of how it behaves."
-		return r, nil
+		return r, ctx.Err()
 	}
-	r.describe(e, mean, cut.T, m.U)
+	r.describe(e, m.U)
 	if err := r.decide(ctx, e, m); err != nil {
 		return nil, err
 	}
@@ -137,36 +149,67 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 }
 
 // describe sets the numbers that the decision rests on.
-func (r *Regime) describe(e *evenly, mean float64, passes []float64, u float64) {
+func (r *Regime) describe(e *evenly, u float64) {
 	r.PeriodS = 1 / r.spectrum.Lines[0].Frequency
-	sd := e.size()
+	mean, sd := meanSD(e.columns[e.main])
 	r.Explained = 1 - r.spectrum.Noise*r.spectrum.Noise/(sd*sd)
-	amp, at := e.turning(mean)
+	amp, at := e.turning(e.main, mean)
 	r.Change, r.Ripple = course(at, amp)
 	if typical := median(slices.Clone(amp)); typical > 0 {
-		// In height over the amplitude, and in time as the angle of a turn: a part that
-		// goes round shows its whims in time alone.
-		r.Jump = math.Hypot(jump(amp)/typical, 2*math.Pi*jump(passes)/r.PeriodS)
 		// What the measurement's scatter alone makes of it.
 		noise := 2 * u / typical
 		r.Ripple = math.Sqrt(max(0, r.Ripple*r.Ripple-noise*noise))
-		r.Jump = math.Sqrt(max(0, r.Jump*r.Jump-noise*noise))
+	}
+	for _, k := range e.busy() {
+		r.Jump = max(r.Jump, e.unruly(k, u))
+		if k == e.main {
+			continue
+		}
+		if s, err := e.lines(k, few); err == nil {
+			_, sd := meanSD(e.columns[k])
+			r.Explained = min(r.Explained, 1-s.Noise*s.Noise/(sd*sd))
+		}
 	}
 	if pace, uPace := e.pace(r.PeriodS); pace < -2*decayed && pace < -4*uPace {
 		r.Change = min(r.Change, pace)
 		r.slows = true
 	}
 	r.RepeatS, r.Mismatch = e.repeats(r.PeriodS, u)
+	if math.Abs(r.Change) > decayed && r.RestsS == 0 {
+		r.SteadyS = settled(at, amp, e.from+e.step*float64(e.n))
+	}
+}
+
+// settled is when an amplitude that changed at first stays the same, if that is so
+// for two fifths of the time or more; else 0.
+func settled(at, amp []float64, end float64) float64 {
+	for part := 2; part <= 6; part++ {
+		from := len(at) * part / 10
+		if len(at)-from < 16 {
+			return 0
+		}
+		change, ripple := course(at[from:], amp[from:])
+		// That it is the same, and not merely changing ever more slowly.
+		if math.Abs(change) < decayed/3 && ripple < steadyRipple && end > at[from] {
+			return at[from]
+		}
+	}
+	return 0
 }
 
 // decide sets the kind, with the tests for chaos where they are called for.
 func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple || r.RestsS > 0 || r.slows
 	grows := r.Change > decayed && r.Change > 1.5*r.Ripple
-	smooth := r.Jump < regularJump && r.Explained > 0.5
+	smooth := r.Jump < regularJump && (r.Explained > regularLines || r.slows && r.Jump < regularJump/2)
 	lines := r.lines()
+	regular := smooth || r.Explained > explained
 	switch {
-	case decays && (smooth || r.Explained > explained):
+	case regular && r.Ripple > 5*steadyRipple && len(lines) >= 2 && (m.BeatS.V > 0 || len(e.columns) == 1) && r.beats(lines, false):
+		r.Kind, r.dies = Beating, decays
+	case decays && r.SteadyS > 0 && smooth, grows && r.SteadyS > 0 && smooth:
+		r.Kind = Steady
+	case decays && regular:
 		r.Kind = Decaying
 	case decays:
 		r.Kind = IrregularDecaying
@@ -174,7 +217,7 @@ func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 		r.Kind = Growing
 	case smooth && r.Ripple < steadyRipple:
 		r.Kind = Steady
-	case (smooth || r.Explained > explained) && len(lines) >= 2 && r.beats(lines, smooth):
+	case regular && len(lines) >= 2 && r.beats(lines, smooth):
 		r.Kind = Beating
 	case smooth || r.Mismatch < repeated/2:
 		r.Kind = Steady // its amplitude may wander, but not from swing to swing
@@ -234,200 +277,4 @@ func (r *Regime) beats(lines []spectrum.Line, smooth bool) bool {
 	u := math.Hypot(a.UFrequency, b.UFrequency)
 	r.BeatS = Value{1 / d, u / (d * d)}
 	return true
-}
-
-// chaos applies the tests to an irregular motion that does not decay. All three
-// must agree: an exponent beyond three of its uncertainties, K above 0.7, and no
-// surrogate that does as well.
-func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
-	if m.Never != "" {
-		return nil
-	}
-	if r.Passes < enough {
-		r.NeedS = 1.2 * enough / float64(r.Passes) * e.step * float64(e.n)
-		r.Confidence = 0.7
-		return nil
-	}
-	period := r.PeriodS / e.step
-	main := e.columns[e.main]
-	var err error
-	if r.Delay, err = MutualInformation(main, e.step, int(2*period)); err != nil {
-		return err
-	}
-	band := int(math.Ceil(period))
-	if r.Dimension, err = FalseNeighbours(main, r.Delay.Samples, 8, band); err != nil {
-		return err
-	}
-	// Positions and, by a short delay, their rates; of one column alone the delays
-	// that its own embedding asks for.
-	if len(e.columns) > 1 {
-		r.States, err = recurrence.Embed(e.from, e.step, 2, max(1, int(math.Round(period/8))), e.columns...)
-	} else {
-		r.States, err = recurrence.Embed(e.from, e.step, max(2, r.Dimension.Dim), r.Delay.Samples, e.columns...)
-	}
-	if err != nil {
-		return err
-	}
-	if r.Divergence, err = Diverge(r.States, DivergenceOptions{Period: max(1, period)}); err != nil {
-		return err
-	}
-	var quarter []float64
-	for i := 0.0; int(i) < len(main); i += max(1, period/4*1.13) { // not in step with the period
-		quarter = append(quarter, main[int(i)])
-	}
-	if len(quarter) >= 200 {
-		if r.ZeroOne, err = ZeroOneTest(quarter); err != nil {
-			return err
-		}
-	}
-	dim := min(max(2, r.Dimension.Dim), 5)
-	if r.Surrogates, err = SurrogateTest(ctx, thin(main, period), SurrogateOptions{
-		Dim: dim, Delay: max(1, r.Delay.Samples/stride(period)), Band: max(1, band/stride(period)), Count: 19,
-	}); err != nil {
-		if ctx.Err() != nil {
-			return ctx.Err()
-		}
-		r.Cautions = append(r.Cautions, err.Error())
-	}
-	d := r.Divergence
-	votes := 0
-	if d.Found && d.Exponent.V > 3*d.Exponent.U {
-		votes++
-	}
-	if r.ZeroOne != nil && r.ZeroOne.K.V > 0.7 {
-		votes++
-	}
-	if r.Surrogates != nil && r.Surrogates.Rejected {
-		votes++
-	}
-	if votes == 3 {
-		r.Kind = Chaotic
-		z := d.Exponent.V / d.Exponent.U
-		r.Confidence = min(0.98, 0.8+0.04*(z-3))
-	} else {
-		r.Confidence = 0.6
-	}
-	return nil
-}
-
-// stride thins a series to some twelve samples a period.
-func stride(period float64) int { return max(1, int(period/12)) }
-
-func thin(x []float64, period float64) []float64 {
-	var out []float64
-	for i := 0; i < len(x); i += stride(period) {
-		out = append(out, x[i])
-	}
-	return out
-}
-
-// words writes the line and the evidence.
-func (r *Regime) words(m Motion) {
-	if m.BeatS.V > 0 && r.BeatS.V > 0 {
-		r.BeatS = m.BeatS
-	}
-	say := func(format string, a ...any) { r.Evidence = append(r.Evidence, fmt.Sprintf(format, a...)) }
-	say("%d passes, a period of %.3g s", r.Passes, r.PeriodS)
-	say("from start to end the amplitude changes by a factor of %.2f, and scatters by %.1f %% about its course", math.Exp(r.Change), 100*r.Ripple)
-	say("turning points and passes lie %.1f %% of the amplitude from the course of their neighbours", 100*r.Jump)
-	say("after %.3g s it comes again with %.0f %% of the difference of unrelated moments", r.RepeatS, 100*r.Mismatch)
-	say("spectral lines explain %.1f %% of the motion", 100*r.Explained)
-	if d := r.Divergence; d != nil {
-		if d.Found {
-			say("near states part at a rate of (%.2g ± %.1g) per s", d.Exponent.V, d.Exponent.U)
-		} else {
-			say("%s", d.Why)
-		}
-	}
-	if r.ZeroOne != nil {
-		say("the 0–1 test gives K = %.2f (1 is chaos)", r.ZeroOne.K.V)
-	}
-	if s := r.Surrogates; s != nil {
-		if s.Rejected {
-			say("it foretells itself better than any of its surrogates")
-		} else {
-			say("it foretells itself no better than noise of its spectrum would")
-		}
-	}
-	switch r.Kind {
-	case Decaying:
-		r.Text = "Decaying: a regular swing that dies down."
-		if r.RestsS > 0 {
-			r.Text = fmt.Sprintf("Decaying: a regular swing that dies down and rests from %.3g s on.", r.RestsS)
-		}
-	case Growing:
-		r.Text = "Growing: a regular swing that is still gathering."
-	case Steady:
-		r.Text = "Steady: the same swing over and over."
-		if r.Mismatch < repeated && r.RepeatS > 1.5*r.PeriodS && r.Ripple > steadyRipple {
-			r.Text = fmt.Sprintf("Steady: the same course over and over, every %.3g s.", r.RepeatS)
-		}
-	case Beating:
-		r.Text = fmt.Sprintf("Beating: the swing waxes and wanes every %.3g s as energy goes to and fro.", r.BeatS.V)
-	case QuasiPeriodic:
-		r.Text = "Quasi-periodic: several steady swings at once, ordered though it never quite repeats."
-	case IrregularDecaying:
-		r.Text = "Irregular and decaying: it darts about while it dies down."
-		if r.RestsS > 0 {
-			r.Text = fmt.Sprintf("Irregular and decaying: it darts about and rests from %.3g s on.", r.RestsS)
-		}
-	case Chaotic:
-		d := r.Divergence
-		r.Text = fmt.Sprintf("Chaotic: what will happen is lost within a few times %.2g s.", 1/d.Exponent.V)
-	case Irregular:
-		switch {
-		case m.Never != "":
-			r.Text = "Irregular, but not chaotic: " + m.Never + " chaotic."
-		case r.NeedS > 0:
-			r.Text = fmt.Sprintf("Irregular. Whether it is chaotic needs %d passes; film for about %.0f s.", enough, r.NeedS)
-		default:
-			r.Text = "Irregular; the tests for chaos do not agree, so it is not called chaotic."
-		}
-	}
-}
-
-// Findings returns the regime as a statement, and the findings of the tests that
-// were made.
-func (r *Regime) Findings(subject string) []finding.Finding {
-	f := finding.Finding{
-		Key: "regime", Subject: subject, Name: "Regime", Unit: "1", Kind: finding.Statement,
-		Text:     fmt.Sprintf("%s Confidence %.0f %%.", r.Text, 100*r.Confidence),
-		Method:   "Course and scatter of the turning points, spectral lines; for irregular motion exponent, 0–1 test and surrogates together",
-		Cautions: slices.Clone(r.Cautions),
-	}
-	for _, e := range r.Evidence {
-		f.Cautions = append(f.Cautions, "Evidence: "+e+".")
-	}
-	out := []finding.Finding{f}
-	if r.BeatS.V > 0 && r.Kind == Beating {
-		out = append(out, finding.Normal("regime.beat_period", subject, "Beat period", r.BeatS.V, r.BeatS.U, "s", "Difference of the two strongest spectral lines"))
-	}
-	if r.Divergence != nil {
-		out = append(out, r.Divergence.Findings(subject)...)
-	}
-	if r.ZeroOne != nil {
-		out = append(out, r.ZeroOne.Finding(subject))
-	}
-	if r.Surrogates != nil {
-		out = append(out, r.Surrogates.Finding(subject))
-	}
-	return out
-}
-
-// Curves returns the curves of the tests that were made.
-func (r *Regime) Curves(subject string) []finding.Curve {
-	var out []finding.Curve
-	if r.Delay != nil {
-		out = append(out, r.Delay.Curve(subject, r.Delay.S/float64(max(1, r.Delay.Samples))))
-	}
-	if r.Dimension != nil {
-		out = append(out, r.Dimension.Curve(subject))
-	}
-	if r.Divergence != nil && len(r.Divergence.After) > 0 {
-		out = append(out, r.Divergence.Curve(subject))
-	}
-	if r.ZeroOne != nil {
-		out = append(out, r.ZeroOne.Curve(subject))
-	}
-	return out
 }

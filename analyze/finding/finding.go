@@ -19,6 +19,7 @@ type Finding struct {
 	Text     string   `json:"text,omitempty"`     // for a Statement: what is found, in plain words
 	Method   string   `json:"method"`             // one line on how it was obtained
 	Cautions []string `json:"cautions,omitempty"` // one plain sentence each
+	Evidence []string `json:"evidence,omitempty"` // what a Statement rests on, one plain sentence each
 	Budget   []Share  `json:"budget,omitempty"`   // what U is made of, in the finding's unit
 }
 

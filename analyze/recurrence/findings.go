@@ -7,29 +7,35 @@ import (
 	"lodeswing/analyze/finding"
 )
 
-const method = "Recurrence quantification (Marwan et al. 2007), all pairs of states; uncertainty by leaving out stretches of time"
-
 // Findings returns the measures about the subject. A measure that has no value
 // (a mean of no lines) is left out.
 func (p *Plot) Findings(subject string) []finding.Finding {
 	m := p.Measures
+	diagonal := finding.DisplayValue(float64(p.opt.LMin)*p.Step, 0.05*float64(p.opt.LMin)*p.Step, "s").Value + " s"
+	vertical := finding.DisplayValue(float64(p.opt.VMin)*p.Step, 0.05*float64(p.opt.VMin)*p.Step, "s").Value + " s"
+	chosen := "the threshold was chosen to make it so"
+	if p.opt.Rate == 0 {
+		chosen = "with the threshold that was given"
+	}
 	list := []struct {
 		key, name, unit string
 		v               Value
 		share           bool
+		what            string
 	}{
-		{"rate", "Recurrence rate", "1", m.RR, true},
-		{"determinism", "Determinism (share of recurrences that run on)", "1", m.DET, true},
-		{"mean_line", "Mean time that two passages stay alike", "s", m.L, false},
-		{"longest_line", "Longest time that two passages stay alike", "s", m.LMax, false},
-		{"divergence", "Divergence (inverse of the longest)", "1/s", m.DIV, false},
-		{"entropy", "Entropy of the diagonal lines", "1", m.ENTR, false},
-		{"laminarity", "Laminarity (share of recurrences at standstill)", "1", m.LAM, true},
-		{"trapping_time", "Trapping time", "s", m.TT, false},
-		{"longest_vertical", "Longest standstill", "s", m.VMax, false},
-		{"return_1", "Recurrence time, first type", "s", m.T1, false},
-		{"return_2", "Recurrence time, second type", "s", m.T2, false},
+		{"rate", "Recurrence rate RR", "1", m.RR, true, "share of all pairs of moments that are alike; " + chosen},
+		{"determinism", "Determinism DET", "1", m.DET, true, "share of the like pairs that stay alike for " + diagonal + " or longer: near 1 for regular motion, low for noise"},
+		{"mean_line", "Mean diagonal L", "s", m.L, false, "for how long two passages that are alike stay alike, on average"},
+		{"longest_line", "Longest diagonal L_max", "s", m.LMax, false, "for how long the two most alike passages stay alike"},
+		{"divergence", "Divergence DIV", "1/s", m.DIV, false, "one over the longest diagonal: the faster like passages part, the larger"},
+		{"entropy", "Entropy of the diagonals ENTR", "1", m.ENTR, false, "how mixed the diagonals' lengths are, in nats; 0 where all are of one length"},
+		{"laminarity", "Laminarity LAM", "1", m.LAM, true, "share of the like pairs in which the motion lingers for " + vertical + " or longer"},
+		{"trapping_time", "Trapping time TT", "s", m.TT, false, "for how long it lingers, on average"},
+		{"longest_vertical", "Longest standstill V_max", "s", m.VMax, false, "for how long it lingers at most"},
+		{"return_1", "Recurrence time, first type", "s", m.T1, false, "from one moment to the next like it, moments close by included"},
+		{"return_2", "Recurrence time, second type", "s", m.T2, false, "from coming near a state to coming near it again"},
 	}
+	const method = "; from all pairs (Marwan et al. 2007), uncertainty by leaving out stretches of time"
 	prefix := "recurrence."
 	if p.Kind != "auto" {
 		prefix += p.Kind + "_"
@@ -39,7 +45,7 @@ func (p *Plot) Findings(subject string) []finding.Finding {
 		if math.IsNaN(l.v.V) || math.IsInf(l.v.V, 0) {
 			continue
 		}
-		f := finding.Normal(prefix+l.key, subject, l.name, l.v.V, l.v.U, l.unit, method)
+		f := finding.Normal(prefix+l.key, subject, l.name, l.v.V, l.v.U, l.unit, l.what+method)
 		f.Lo = max(f.Lo, 0) // NaN where the uncertainty is not known
 		if l.share {
 			f.Hi = min(f.Hi, 1)
@@ -62,7 +68,12 @@ func (p *Plot) Curves(subject string) []finding.Curve {
 		for i, d := range p.Map.Density {
 			z[i] = math.Round(1000*float64(d)) / 1000
 		}
-		caption := fmt.Sprintf("Dark where the motion at one time is like the motion at the other (%.3g %% of all pairs). Long diagonals: it runs through the same course again; broken dots: it does not; squares: it stands still.", 100*p.Measures.RR.V)
+		what := map[string]string{
+			"auto":  "Each dot compares two moments of the clip, one along each axis: dark where the toy does the same at both. Long unbroken diagonals: it runs through the same course again, as a regular swing does; short pieces: it repeats itself for a while and then goes another way; blocks: it lingers; dark only near the main diagonal: it changes for good, as a dying swing does.",
+			"cross": "Dark where the second, at the time below, does what the first does at the time on the left. A dark main diagonal: they move alike at the same time; diagonals beside it: one does later what the other did.",
+			"joint": "Dark where both are, at one time, where each was at the other.",
+		}[p.Kind]
+		caption := fmt.Sprintf("%s %.3g %% of all pairs are dark.", what, 100*p.Measures.RR.V)
 		if p.Map.Rows < p.N || p.Map.Cols < p.M {
 			caption += fmt.Sprintf(" Each cell holds %.0f × %.0f pairs.", math.Ceil(float64(p.N)/float64(p.Map.Rows)), math.Ceil(float64(p.M)/float64(p.Map.Cols)))
 		}

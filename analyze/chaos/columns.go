@@ -1,0 +1,104 @@
+package chaos
+
+import (
+	"cmp"
+	"context"
+	"math"
+	"slices"
+
+	"lodeswing/analyze/spectrum"
+)
+
+// busy lists the columns that move at least the share moves of what the main one
+// does, the most moving first, four at most.
+func (e *evenly) busy() []int {
+	size := make([]float64, len(e.columns))
+	order := make([]int, len(e.columns))
+	for k, c := range e.columns {
+		_, size[k] = meanSD(c)
+		order[k] = k
+	}
+	slices.SortFunc(order, func(a, b int) int { return cmp.Compare(size[b], size[a]) })
+	n := 0
+	for n < len(order) && n < 4 && size[order[n]] >= moves*size[order[0]] && size[order[n]] > 0 {
+		n++
+	}
+	return order[:n]
+}
+
+// choose makes that column the main one whose strongest sinusoid is the strongest of
+// all, or of those that have nearly as much power the slowest: of two that move alike,
+// one may do so at twice the frequency.
+func (e *evenly) choose(ctx context.Context) error {
+	busy := e.busy()
+	if len(busy) < 2 {
+		return nil
+	}
+	power, period := make([]float64, len(e.columns)), make([]float64, len(e.columns))
+	best := 0.0
+	for _, k := range busy {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		s, err := e.lines(k, 1)
+		if err != nil || len(s.Lines) == 0 {
+			continue
+		}
+		_, sd := meanSD(e.columns[k])
+		power[k], period[k] = sd*sd-s.Noise*s.Noise, 1/s.Lines[0].Frequency
+		if power[k] > best {
+			best, e.main = power[k], k
+		}
+	}
+	for _, k := range busy {
+		if power[k] > 0.3*best && period[k] > 1.2*period[e.main] {
+			e.main = k
+		}
+	}
+	return nil
+}
+
+// mostLooked is how many samples a column's lines are looked for in: thinned, never
+// below eight a period of what is found by them.
+const mostLooked = 3000
+
+// lines fits up to most sinusoids to a column.
+func (e *evenly) lines(column, most int) (*spectrum.Spectrum, error) {
+	thin := max(1, e.n/mostLooked)
+	var t, x []float64
+	for i := 0; i < e.n; i += thin {
+		t, x = append(t, e.from+e.step*float64(i)), append(x, e.columns[column][i])
+	}
+	return spectrum.Compute(t, x, nil, spectrum.Options{MaxLines: most, Spare: -1, MinFreq: 4 / (e.step * float64(e.n))})
+}
+
+// unruly is how far a column's turning points and passes lie from the course of
+// their neighbours, over its amplitude: three quarters of them lie nearer. In
+// height, and in time as the angle of a turn, since a part that goes round shows its
+// whims in time alone. Noise of u is taken out.
+func (e *evenly) unruly(column int, u float64) float64 {
+	x := e.columns[column]
+	mean, _ := meanSD(x)
+	amp, _ := e.turning(column, mean)
+	typical := median(slices.Clone(amp))
+	cut, err := Cut(e.times(), [][]float64{x}, 0, mean, Both)
+	if err != nil || len(amp) < 12 || typical == 0 {
+		return 0
+	}
+	gaps := make([]float64, 0, len(cut.T))
+	for i := 1; i < len(cut.T); i++ {
+		gaps = append(gaps, cut.T[i]-cut.T[i-1])
+	}
+	turn := math.Pi / median(gaps) // a pass to the next is half a turn
+	high, late := jumps(amp), jumps(cut.T)
+	all := make([]float64, min(len(high), len(late)))
+	for i := range all {
+		all[i] = math.Hypot(high[i]/typical, turn*late[i])
+	}
+	if len(all) < 4 {
+		return 0
+	}
+	slices.Sort(all)
+	noise := 3 * u / typical
+	return math.Sqrt(max(0, sq(all[len(all)*3/4])-noise*noise))
+}
