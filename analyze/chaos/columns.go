@@ -40,12 +40,15 @@ func (e *evenly) choose(ctx context.Context) error {
 		if err := ctx.Err(); err != nil {
 			return err
 		}
-		s, err := e.lines(k, 1)
+		s, explains, err := e.lines(k, 1)
 		if err != nil || len(s.Lines) == 0 {
 			continue
 		}
+		if period[k] = 1 / s.Lines[0].Frequency; period[k] > e.longest() {
+			continue // a drift, not a swing
+		}
 		_, sd := meanSD(e.columns[k])
-		power[k], period[k] = sd*sd-s.Noise*s.Noise, 1/s.Lines[0].Frequency
+		power[k] = sd * sd * explains
 		if power[k] > best {
 			best, e.main = power[k], k
 		}
@@ -58,18 +61,59 @@ func (e *evenly) choose(ctx context.Context) error {
 	return nil
 }
 
-// mostLooked is how many samples a column's lines are looked for in: thinned, never
-// below eight a period of what is found by them.
+// longest is the longest period, in s, that can be told.
+func (e *evenly) longest() float64 { return e.step * float64(e.n) / 4 }
+
+// mostLooked is how many samples a column's lines are looked for in, at most.
 const mostLooked = 3000
 
-// lines fits up to most sinusoids to a column.
-func (e *evenly) lines(column, most int) (*spectrum.Spectrum, error) {
-	thin := max(1, e.n/mostLooked)
-	var t, x []float64
-	for i := 0; i < e.n; i += thin {
-		t, x = append(t, e.from+e.step*float64(i)), append(x, e.columns[column][i])
+// lines fits up to most sinusoids to a column, thinned to some twelve samples a turn;
+// of a motion so long that this is not enough, to its middle. explains is the share of
+// what it looked at that the sinusoids explain.
+func (e *evenly) lines(column, most int) (s *spectrum.Spectrum, explains float64, err error) {
+	all := e.columns[column]
+	turn := e.turn(column)
+	thin := max(1, int(turn/12))
+	if e.n/thin > mostLooked {
+		thin = max(thin, min(e.n/mostLooked, int(turn/6)))
 	}
-	return spectrum.Compute(t, x, nil, spectrum.Options{MaxLines: most, Spare: -1, MinFreq: 4 / (e.step * float64(e.n))})
+	from, to := 0, e.n
+	if spare := e.n - mostLooked*thin; spare > 0 {
+		from, to = spare/2, e.n-spare/2
+	}
+	var t, x []float64
+	for i := from; i < to; i += thin {
+		t, x = append(t, e.from+e.step*float64(i)), append(x, all[i])
+	}
+	s, err = spectrum.Compute(t, x, nil, spectrum.Options{MaxLines: most, Spare: -1, MinFreq: 4 / (e.step * float64(to-from))})
+	if err != nil {
+		return nil, 0, err
+	}
+	if _, sd := meanSD(x); sd > 0 {
+		explains = 1 - s.Noise*s.Noise/(sd*sd)
+	}
+	return s, explains, nil
+}
+
+// turn is twice the usual time between crossings of a column's middle, in samples.
+func (e *evenly) turn(column int) float64 {
+	x := e.columns[column]
+	mean, _ := meanSD(x)
+	var gaps []float64
+	last, side := 0, 0.0
+	for i, v := range x {
+		if (v-mean)*side < 0 {
+			gaps = append(gaps, float64(i-last))
+			last = i
+		}
+		if v != mean {
+			side = v - mean
+		}
+	}
+	if len(gaps) < 4 {
+		return 1
+	}
+	return 2 * median(gaps)
 }
 
 // unruly is how far a column's turning points and passes lie from the course of

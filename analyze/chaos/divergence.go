@@ -169,8 +169,8 @@ type stretch struct {
 // straight looks for the stretch of the smoothed curve that is straight. At first
 // what was not measured makes the distances grow: neighbours that differ in a spin or
 // a coil's state that nobody sees, and noise. So it begins a period and a half after
-// the start where a growth of e is left from there to saturation, with a slope that
-// changes by less than two fifths from end to end; else after half a period (in
+// the start where a growth by a factor of 2.2 is left from there to saturation, with a
+// slope that changes by less than a half from end to end; else after half a period (in
 // which distances turn into the direction that grows), with a slope that changes by
 // less than a fifth (where there is none, two fifths). Among all such the one with
 // the greatest growth is taken. A growth below e, or shorter than a period and a
@@ -198,12 +198,13 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 	}
 	best, gain := stretch{}, 0.0
 	if period >= 2 && least < n {
-		best, gain = d.longest(least, below(least, 0.25), least, 0.4)
+		best, gain = d.longest(least, below(least, 0.25), least, 0.5)
+	}
+	if gain >= lateGrowth {
+		return d.doubted(best), true
 	}
 	last := below(first, 0.35)
-	if gain < 1 {
-		best, gain = d.longest(first, last, least, 0.2)
-	}
+	best, gain = d.longest(first, last, least, 0.2)
 	if gain < 1 { // noise bends the lower end up
 		best, gain = d.longest(first, last, least, 0.4)
 	}
@@ -221,12 +222,21 @@ func (d *Divergence) straight(period, step float64) (stretch, bool) {
 	if best.whole {
 		return best, true
 	}
-	// What the slope would be in the stretch's first and second two thirds.
-	third := (best.to - best.from) / 3
-	a, _ := line(d.After, d.Smooth, best.from, best.to-third)
-	b, _ := line(d.After, d.Smooth, best.from+third, best.to)
-	best.doubt = math.Abs(a-b) / 2
-	return best, true
+	return d.doubted(best), true
+}
+
+// lateGrowth is the least growth, as a logarithm, of a stretch that begins after
+// what was not measured has shown itself.
+const lateGrowth = 0.8
+
+// doubted is the stretch with half the difference of the slopes in its first and its
+// last two thirds.
+func (d *Divergence) doubted(s stretch) stretch {
+	third := (s.to - s.from) / 3
+	a, _ := line(d.After, d.Smooth, s.from, s.to-third)
+	b, _ := line(d.After, d.Smooth, s.from+third, s.to)
+	s.doubt = math.Abs(a-b) / 2
+	return s
 }
 
 // overPeriods serves motion that is lost within a turn or two, where no straight

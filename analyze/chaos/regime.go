@@ -74,6 +74,7 @@ type Regime struct {
 	Surrogates *Surrogates
 	slows      bool // its speed falls, whatever its amplitude does
 	dies       bool // it beats, and dies down
+	wild       int  // the column that lines explain least
 	spectrum   *spectrum.Spectrum
 }
 
@@ -136,7 +137,7 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		r.NeedS = 10 / float64(max(r.Passes, 1)) * e.step * float64(e.n)
 		return r, nil
 	}
-	if r.spectrum, err = e.lines(e.main, few); err != nil || len(r.spectrum.Lines) == 0 {
+	if r.spectrum, r.Explained, err = e.lines(e.main, few); err != nil || len(r.spectrum.Lines) == 0 {
 		r.Text = "No frequency stands out of the scatter; nothing can be said of how it behaves."
 		return r, ctx.Err()
 	}
@@ -150,11 +151,13 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 
 // describe sets the numbers that the decision rests on.
 func (r *Regime) describe(e *evenly, u float64) {
-	r.PeriodS = 1 / r.spectrum.Lines[0].Frequency
-	mean, sd := meanSD(e.columns[e.main])
-	r.Explained = 1 - r.spectrum.Noise*r.spectrum.Noise/(sd*sd)
+	if r.PeriodS = 1 / r.spectrum.Lines[0].Frequency; r.PeriodS > e.longest() {
+		r.PeriodS = e.turn(e.main) * e.step
+	}
+	mean, _ := meanSD(e.columns[e.main])
 	amp, at := e.turning(e.main, mean)
 	r.Change, r.Ripple = course(at, amp)
+	r.wild = e.main
 	if typical := median(slices.Clone(amp)); typical > 0 {
 		// What the measurement's scatter alone makes of it.
 		noise := 2 * u / typical
@@ -165,9 +168,8 @@ func (r *Regime) describe(e *evenly, u float64) {
 		if k == e.main {
 			continue
 		}
-		if s, err := e.lines(k, few); err == nil {
-			_, sd := meanSD(e.columns[k])
-			r.Explained = min(r.Explained, 1-s.Noise*s.Noise/(sd*sd))
+		if _, explains, err := e.lines(k, few); err == nil && explains < r.Explained {
+			r.Explained, r.wild = explains, k
 		}
 	}
 	if pace, uPace := e.pace(r.PeriodS); pace < -2*decayed && pace < -4*uPace {

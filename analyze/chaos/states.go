@@ -58,7 +58,7 @@ func States(ctx context.Context, m Motion, most int) (*Embedded, error) {
 		return nil, err
 	}
 	out := &Embedded{PeriodS: e.step * float64(e.n) / 8, Thinned: max(1, int(math.Ceil(float64(e.n)/float64(max(most, 100)))))}
-	if s, err := e.lines(e.main, 1); err == nil && len(s.Lines) > 0 {
+	if s, _, err := e.lines(e.main, 1); err == nil && len(s.Lines) > 0 {
 		out.PeriodS = min(out.PeriodS, 1/s.Lines[0].Frequency)
 	}
 	// Never so thin that a turn has fewer than eight states.

@@ -20,6 +20,7 @@ func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 		r.Confidence = 0.7
 		return nil
 	}
+	e = e.thinned(max(1, int(r.PeriodS/e.step/perTurn)))
 	period := r.PeriodS / e.step
 	main := e.columns[e.main]
 	var err error
@@ -33,8 +34,9 @@ func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 		return err
 	}
 	var quarter []float64
-	for i := 0.0; int(i) < len(main); i += max(1, period/4*1.13) { // not in step with the period
-		quarter = append(quarter, main[int(i)])
+	wild := e.columns[r.wild]                                      // one part may swing in step while another darts about
+	for i := 0.0; int(i) < len(wild); i += max(1, period/4*1.13) { // not in step with the period
+		quarter = append(quarter, wild[int(i)])
 	}
 	if len(quarter) >= 200 {
 		if r.ZeroOne, err = ZeroOneTest(quarter); err != nil {
@@ -42,7 +44,7 @@ func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 		}
 	}
 	dim := min(max(2, r.Dimension.Dim), 5)
-	if r.Surrogates, err = SurrogateTest(ctx, thin(main, period), SurrogateOptions{
+	if r.Surrogates, err = SurrogateTest(ctx, thin(wild, period), SurrogateOptions{
 		Dim: dim, Delay: max(1, r.Delay.Samples/stride(period)), Band: max(1, int(math.Ceil(period))/stride(period)), Count: 19,
 	}); err != nil {
 		if ctx.Err() != nil {
@@ -70,6 +72,25 @@ func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 	return nil
 }
 
+// perTurn is about how many samples of a turn the tests use.
+const perTurn = 48
+
+// thinned keeps one sample of so many.
+func (e *evenly) thinned(of int) *evenly {
+	if of <= 1 {
+		return e
+	}
+	out := &evenly{from: e.from, step: e.step * float64(of), main: e.main}
+	for _, c := range e.columns {
+		var x []float64
+		for i := 0; i < len(c); i += of {
+			x = append(x, c[i])
+		}
+		out.columns, out.n = append(out.columns, x), len(x)
+	}
+	return out
+}
+
 // The 0–1 test's K below which it speaks against chaos, and from which on it speaks
 // for it.
 const (
@@ -87,11 +108,16 @@ func embedding(x []float64, step, period float64) (*Delay, *Dimension, error) {
 	return delay, dim, err
 }
 
-// states are positions and, by a short delay, their rates; of one column alone the
-// delays that its own embedding asks for.
+// states are positions and, by a short delay, their rates; of two columns, which may
+// be all that is seen of a ball joint with a spin, a third value as well; of one alone
+// the delays that its own embedding asks for.
 func (e *evenly) states(period float64, delay *Delay, dim *Dimension) (recurrence.Vectors, error) {
-	if len(e.columns) > 1 {
-		return recurrence.Embed(e.from, e.step, 2, max(1, int(math.Round(period/8))), e.columns...)
+	if n := len(e.columns); n > 1 {
+		each := 2
+		if n == 2 {
+			each = 3
+		}
+		return recurrence.Embed(e.from, e.step, each, max(1, int(math.Round(period/8))), e.columns...)
 	}
 	return recurrence.Embed(e.from, e.step, max(2, dim.Dim), delay.Samples, e.columns...)
 }
