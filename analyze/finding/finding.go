@@ -123,6 +123,16 @@ type Fit struct {
 	Converged    bool        `json:"converged"`
 	Why          string      `json:"why"` // why it stopped, plain words
 	Candidates   []Candidate `json:"candidates,omitempty"`
+	Verdicts     []Verdict   `json:"verdicts,omitempty"` // on each number that was asked for
+}
+
+// Verdict says in plain words whether the data determine a number that was asked
+// for, what limits it, and what would tell more.
+type Verdict struct {
+	Name string `json:"name"`
+	Told string `json:"told"` // "determined to ±0.6 %", "not determined"
+	Why  string `json:"why,omitempty"`
+	Help string `json:"help,omitempty"`
 }
 
 // Parameter is one parameter of a fit.

@@ -8,6 +8,7 @@ import (
 	"slices"
 	"sort"
 
+	"lodeswing/analyze/magnet"
 	"lodeswing/analyze/toy"
 	"lodeswing/track"
 	"lodeswing/track/camera"
@@ -124,6 +125,30 @@ func prepare(clips []Clip, r *rig.Rig, opt Options) (*fitter, error) {
 		f.clips = append(f.clips, *k)
 	}
 	return f, f.buildParams()
+}
+
+// temperature is the clips' mean one where the rig notes any, °C.
+func (f *fitter) temperature() (t, u float64, ok bool) {
+	n := 0.0
+	for c := range f.clips {
+		if e := f.clips[c].entry; e != nil && e.TemperatureC.Set {
+			t += e.TemperatureC.V
+			u = math.Max(u, e.TemperatureC.U)
+			n++
+		}
+	}
+	return t / n, u, n > 0
+}
+
+// warmth is what a magnet of clip c has of its strength at the clips' mean
+// temperature: 1 where the rig notes none.
+func (f *fitter) warmth(c int) float64 {
+	mean, _, ok := f.temperature()
+	e := f.clips[c].entry
+	if !ok || e == nil || !e.TemperatureC.Set {
+		return 1
+	}
+	return magnet.At20(1, mean, "") / magnet.At20(1, e.TemperatureC.V, "")
 }
 
 // variant is the rig as one clip had it.

@@ -48,7 +48,7 @@ func (r *reporter) rest() {
 		}
 		u := r.res.Estimates[i].U
 		if with := r.twin(i); with != "" {
-			r.undecided(name[0], subject, name[1], fmt.Sprintf("The clip does not tell it from %s: only what the two do together is determined (see the loss curve). A second release from a smaller angle, fitted together with this one, separates them.", with))
+			r.undecided(name[0], subject, name[1], fmt.Sprintf("The clip does not tell it from %s: only what the two do together is determined (see the loss curve). %s separate them.", with, r.sentence(i, "A second release from a smaller angle, fitted together with this one, would")))
 			continue
 		}
 		switch what {
@@ -59,7 +59,7 @@ func (r *reporter) rest() {
 			f.Cautions = []string{"Not seen for certain in this clip: the limit is what it may be at most (95 %)."}
 			r.add(f)
 		default:
-			r.undecided(name[0], subject, name[1], "The clip does not determine it: film longer, or a larger release.")
+			r.undecided(name[0], subject, name[1], "The clip does not determine it. "+r.sentence(i, "A longer clip or a larger release would")+" tell.")
 		}
 	}
 }
@@ -159,4 +159,14 @@ func (r *reporter) topRate(name string) float64 {
 		}
 	}
 	return top
+}
+
+// sentence begins a sentence with the further clip that would tell number i, else with
+// what is said otherwise.
+func (r *reporter) sentence(i int, otherwise string) string {
+	a, ok := r.help[i]
+	if !ok {
+		return otherwise
+	}
+	return strings.ToUpper(a.words[:1]) + a.words[1:] + ", fitted together with this clip, would"
 }

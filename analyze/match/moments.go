@@ -49,6 +49,17 @@ func cylinderOf(g *rig.Magnet) magnet.Cylinder {
 	return magnet.Cylinder{Radius: c.DiameterM.V / 2, Height: c.HeightM.V, Remanence: c.RemanenceT.Or(1.2), Recoil: c.Recoil.Or(magnet.DefaultRecoil)}
 }
 
+// nominalMoment is a magnet's moment by the rig; 0 where it gives none.
+func nominalMoment(g *rig.Magnet) float64 {
+	switch {
+	case g.Cylinder == nil:
+		return g.Moment.Or(0)
+	case g.Cylinder.RemanenceT.Set:
+		return cylinderOf(g).Moment()
+	}
+	return 0
+}
+
 // group is the parameter that holds a magnet's strength, −1 for none.
 func (r *reporter) group(name string) int {
 	for i := range r.params {
@@ -106,7 +117,11 @@ func (r *reporter) magnets() {
 				f.Name = "Pair product m₁m₂ (any two of these tied magnets)"
 			}
 			r.bias(f, a, b)
-			r.forceCurve(a, b, ma*mb, f.U)
+			u := f.U
+			if na, nb := nominalMoment(a), nominalMoment(b); ga != gb && na*nb != 0 {
+				r.deviation(f, ma*mb/(na*nb))
+			}
+			r.forceCurve(a, b, ma*mb, u)
 		}
 	}
 	for i := range r.params {
@@ -157,13 +172,7 @@ func (r *reporter) magnets() {
 // absent tells, for a pair whose product is not determined, whether so little of it
 // is seen that a magnet must be missing, and says so.
 func (r *reporter) absent(a, b *rig.Magnet, ma, mb float64, da, db []float64) bool {
-	na, nb := a.Moment.Or(0), b.Moment.Or(0)
-	if a.Cylinder != nil {
-		na = cylinderOf(a).Moment()
-	}
-	if b.Cylinder != nil {
-		nb = cylinderOf(b).Moment()
-	}
+	na, nb := nominalMoment(a), nominalMoment(b)
 	grad := make([]float64, r.j.np)
 	for q := range grad {
 		grad[q] = da[q]*mb + db[q]*ma
@@ -182,26 +191,23 @@ func (r *reporter) absent(a, b *rig.Magnet, ma, mb float64, da, db []float64) bo
 	return true
 }
 
-// nominal tells how far a number is from what the rig says it should be.
+// nominal tells how far a number is from what the rig says it should be, in per cent.
 func (r *reporter) nominal(f *finding.Finding, q *param) {
 	v, err := r.rig.Number(q.address)
 	if err != nil || !v.Set || v.V == 0 {
 		return
 	}
-	d := finding.Normal(f.Key+"_deviation", f.Subject, f.Name+": deviation from the rig's number", f.Value/v.V-1, f.U/math.Abs(v.V), "1", r.say)
-	r.add(d)
+	r.deviation(f, q.value/v.V)
 }
 
-func (r *reporter) temperature() (t, u float64, ok bool) {
-	n := 0.0
-	for c := range r.clips {
-		if e := r.clips[c].entry; e != nil && e.TemperatureC.Set {
-			t += e.TemperatureC.V
-			u = math.Max(u, e.TemperatureC.U)
-			n++
-		}
+// deviation adds by how much a finding is off its nominal number, given their ratio.
+func (r *reporter) deviation(f *finding.Finding, ratio float64) {
+	d := finding.Normal(f.Key+"_deviation", f.Subject, f.Name+": deviation from the rig's number", 100*(ratio-1), 100*math.Abs(ratio)*f.U/math.Abs(f.Value), "%", f.Method)
+	d.Lo, d.Hi = 100*(ratio*f.Lo/f.Value-1), 100*(ratio*f.Hi/f.Value-1)
+	if d.Lo > d.Hi {
+		d.Lo, d.Hi = d.Hi, d.Lo
 	}
-	return t / n, u, n > 0
+	r.add(d)
 }
 
 // cylinder tells remanence, grade and the flux index of a cylinder.

@@ -166,6 +166,13 @@ func (b *builder) number(n rig.Number, asked bool) {
 		address: n.Address, unit: n.Unit.SI, source: "the rig's " + n.Address, asked: asked, clip: -1,
 		targets: b.set(addresses, 0, 1), tied: addresses, nuisance: !asked,
 	}
+	if p.moment() { // weaker where it was warmer
+		for c := range p.targets {
+			for t := range p.targets[c] {
+				p.targets[c][t].coef = b.f.warmth(c)
+			}
+		}
+	}
 	p.value = v.V
 	if !v.Set {
 		p.value = b.f.clips[b.f.holder(n.Address)].model.Get(b.f.modelIndex(n.Address))

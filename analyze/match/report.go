@@ -22,7 +22,8 @@ type reporter struct {
 	// poor holds the parameters that the clips do not determine.
 	poor  map[int]bool
 	spans map[int]span // 95 % intervals of parameters by profile, where derivatives do not do
-	hard  string       // says that the part hardly got over the magnet
+	help  map[int]advice
+	hard  string // says that the part hardly got over the magnet
 }
 
 // undeterminedAt is the relative standard uncertainty from which a number is not
@@ -61,6 +62,9 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	r.capture(ctx)
 	if err := ctx.Err(); err != nil {
 		return nil, err
+	}
+	if r.converged && misfit == "" {
+		r.help = r.further(ctx)
 	}
 	r.magnets()
 	r.rest()

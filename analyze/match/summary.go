@@ -2,6 +2,8 @@ package match
 
 import (
 	"fmt"
+	"math"
+	"slices"
 	"strings"
 
 	"lodeswing/analyze/finding"
@@ -49,6 +51,9 @@ func (r *reporter) fitSummary() {
 		}
 	}
 	f.NotSeparable = r.notSeparable()
+	if r.converged {
+		f.Verdicts = r.verdicts()
+	}
 	r.res.Fits = append(r.res.Fits, f)
 	r.res.Cautions = append(r.res.Cautions, r.cautions...)
 	if !r.converged {
@@ -69,9 +74,9 @@ func (r *reporter) notSeparable() []string {
 		case q.moment():
 			moments = append(moments, strings.Join(q.tied, " = "))
 		case r.twin(i) != "":
-			out = append(out, fmt.Sprintf("%s and %s: only their sum over the speeds of the clip is determined; a second release from a smaller angle would separate them", q.address, r.twin(i)))
+			out = append(out, fmt.Sprintf("%s and %s: only what they do together over the speeds of the clip is determined; %s", q.address, r.twin(i), r.remedy(i, "a second release from a smaller angle would separate them")))
 		default:
-			out = append(out, fmt.Sprintf("%s: the clip hardly feels it; a longer clip or a larger release would", q.address))
+			out = append(out, fmt.Sprintf("%s: the clip hardly feels it; %s", q.address, r.remedy(i, "a longer clip or a larger release would")))
 		}
 	}
 	switch {
@@ -81,4 +86,97 @@ func (r *reporter) notSeparable() []string {
 		out = append(out, moments[0]+": not determined by this clip; a larger release that passes over the magnet would")
 	}
 	return out
+}
+
+// remedy is the further clip that would tell number i, else what is said otherwise.
+func (r *reporter) remedy(i int, otherwise string) string {
+	if a, ok := r.help[i]; ok {
+		return a.words + " would"
+	}
+	return otherwise
+}
+
+// verdicts say of each number asked for whether the clips determine it, what limits
+// it, and which further clip would tell more.
+func (r *reporter) verdicts() []finding.Verdict {
+	var out []finding.Verdict
+	loose := r.poorMoments()
+	for i := range r.params {
+		q := &r.params[i]
+		if !q.asked || q.role != byModel {
+			continue
+		}
+		v := finding.Verdict{Name: strings.Join(q.tied, " = ")}
+		rel := r.res.Estimates[i].U / math.Abs(q.value)
+		u, pictures, budget := r.j.of(r.fitter, r.j.unit(i))
+		switch {
+		case r.trapped() && q.moment():
+			v.Told, v.Why = "not determined", "the part stayed beside the magnet all the time"
+		case q.moment() && len(loose) > 1 && slices.Contains(loose, i):
+			v.Told, v.Why = "not by itself", "only the product of each pair is determined; a tie in [fit] equal, or one known moment, would separate them"
+		case r.poor[i] && r.twin(i) != "":
+			v.Told, v.Why = "not by itself", r.together(i)
+		case r.poor[i]:
+			v.Told, v.Why = "not determined", "the clip hardly feels it"
+		case rel < 0.1:
+			v.Told = "determined to ±" + finding.DisplayU(196*rel, "1") + " %"
+		default:
+			v.Told = "roughly, to ±" + finding.DisplayU(196*rel, "1") + " %"
+		}
+		if most := largestOfRig(budget); !r.poor[i] && most != "" && u*u > 2*pictures*pictures {
+			v.Why = fmt.Sprintf("limited by what the rig says, most by %s: the pictures alone would leave ±%s %%", most, finding.DisplayU(196*pictures/math.Abs(q.value), "1"))
+		}
+		if a, ok := r.help[i]; ok && !(r.poor[i] && q.moment() && len(loose) > 1) {
+			to := finding.DisplayU(196*a.u/math.Abs(q.value), "1") + " %"
+			if r.poor[i] { // of a number that is not known, no share can be told
+				to = finding.DisplayU(1.96*a.u, q.unit)
+			}
+			v.Help = fmt.Sprintf("%s, fitted together with this, would bring it to about ±%s", a.words, to)
+		} else if !r.poor[i] && u > wellKnown*math.Abs(q.value) && v.Why != "" {
+			v.Help = "no further clip helps much: measure that better"
+		}
+		out = append(out, v)
+	}
+	return out
+}
+
+// largestOfRig is the largest source of an uncertainty other than the pictures.
+func largestOfRig(budget []finding.Share) string {
+	for _, s := range budget { // the largest first
+		if s.Source != "the pictures" {
+			return s.Source
+		}
+	}
+	return ""
+}
+
+// poorMoments are the free moments that the clips do not determine singly.
+func (r *reporter) poorMoments() []int {
+	var out []int
+	for i := range r.params {
+		if r.params[i].asked && r.params[i].moment() && r.poor[i] {
+			out = append(out, i)
+		}
+	}
+	return out
+}
+
+// together tells the combination of friction i and its twin that is determined best: the
+// one with which it is correlated most.
+func (r *reporter) together(i int) string {
+	owner, _ := split(r.params[i].address)
+	best, k := 0.0, -1
+	for o := range r.params {
+		if w, what := split(r.params[o].address); o != i && w == owner && (what == "viscous" || what == "drag" || what == "dry") && r.params[o].asked {
+			if c := math.Abs(r.j.correlation(i, o)); c > best {
+				best, k = c, o
+			}
+		}
+	}
+	if k < 0 {
+		return "the clip hardly feels it"
+	}
+	_, a := split(r.params[i].address)
+	_, b := split(r.params[k].address)
+	return fmt.Sprintf("only %s and %s together are determined (their correlation is %.4f)", strings.ToLower(named[a][1]), strings.ToLower(named[b][1]), r.j.correlation(i, k))
 }
