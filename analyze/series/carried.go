@@ -95,7 +95,7 @@ func (b *builder) onPart(a *Angle, part *rig.Part, bob *track.Bob, usable []trac
 		return
 	}
 	if lost > 0 {
-		a.Gaps = append(a.Gaps, lostFrames(a.T, a.Gaps)...)
+		a.Gaps = append(a.Gaps, lostFrames(a.T, a.Gaps, "“"+parent.Bob+"”, which carries the pivot, not found")...)
 		a.Cautions = append(a.Cautions, fmt.Sprintf("%d frames were left out because %q, which carries the pivot, was not seen in them.", lost, parent.Bob))
 	}
 	a.Pivot.X, a.Pivot.Z, a.Pivot.R = a.Pivot.X/float64(n), a.Pivot.Z/float64(n), a.Pivot.R/float64(n)
@@ -165,7 +165,7 @@ func (b *builder) byLine(a *Angle, part *rig.Part, first, second *track.Bob) {
 		a.Problem = fmt.Sprintf("the bobs %q and %q were seen together in %d frames only", first.Name, second.Name, len(a.T))
 		return
 	}
-	a.Gaps = lostFrames(a.T, nil)
+	a.Gaps = bobGaps(first, second)
 	a.Pivot = Pivot{R: a.Pivot.R / float64(len(a.T)), From: fmt.Sprintf("the line from %s to %s; no pivot was needed", first.Name, second.Name), Moves: true}
 	a.Pivot.UR = a.Pivot.R * b.tr.Cal.UScale
 	d := make([]float64, len(a.T))

@@ -115,28 +115,31 @@ func (a *Angle) unwrap() {
 	}
 }
 
-// bobGaps lists the stretches in which a bob has no usable sample.
-func bobGaps(bob *track.Bob) []Gap {
+// bobGaps lists the stretches in which one of the bobs that a series needs has no
+// usable sample.
+func bobGaps(bobs ...*track.Bob) []Gap {
 	var gaps []Gap
-	s := bob.Samples
 	var times []float64
+	s := bobs[0].Samples
+	usable := func(i int) bool {
+		for _, b := range bobs {
+			if i >= len(b.Samples) || !b.Samples[i].State.Usable() {
+				return false
+			}
+		}
+		return true
+	}
 	for i := 0; i < len(s); {
-		if s[i].State.Usable() {
+		if usable(i) {
 			times = append(times, s[i].T)
 			i++
 			continue
 		}
-		j, edge := i, 0
-		for j < len(s) && !s[j].State.Usable() {
-			if s[j].State == track.AtEdge {
-				edge++
-			}
+		j := i
+		for j < len(s) && !usable(j) {
 			j++
 		}
-		g := Gap{Frames: j - i, FromS: s[i].T, ToS: s[j-1].T, Why: "not found"}
-		if edge > (j-i)/2 {
-			g.Why = "at the picture's edge"
-		}
+		g := Gap{Frames: j - i, FromS: s[i].T, ToS: s[j-1].T, Why: whyGap(bobs, i, j)}
 		if i > 0 {
 			g.FromS = s[i-1].T
 		}
@@ -146,7 +149,34 @@ func bobGaps(bob *track.Bob) []Gap {
 		gaps = append(gaps, g)
 		i = j
 	}
-	gaps = append(gaps, lostFrames(times, gaps)...)
+	gaps = append(gaps, lostFrames(times, gaps, noFrames)...)
 	sortGaps(gaps)
 	return gaps
+}
+
+// whyGap says why frames [from, to) are a gap: of the bob that lacks most of them.
+func whyGap(bobs []*track.Bob, from, to int) (why string) {
+	most := -1
+	for _, b := range bobs {
+		lacking, edge := 0, 0
+		for i := from; i < min(to, len(b.Samples)); i++ {
+			if st := b.Samples[i].State; !st.Usable() {
+				lacking++
+				if st == track.AtEdge {
+					edge++
+				}
+			}
+		}
+		if lacking <= most {
+			continue
+		}
+		most, why = lacking, "not found"
+		if edge > lacking/2 {
+			why = "at the picture's edge"
+		}
+		if len(bobs) > 1 {
+			why = "“" + b.Name + "” " + why
+		}
+	}
+	return why
 }

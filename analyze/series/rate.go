@@ -124,7 +124,7 @@ func scatter(t, y []float64) float64 {
 		u[i] = 1
 	}
 	a := Angle{T: t, Angle: y, UAngle: u}
-	a.Gaps = lostFrames(t, nil)
+	a.Gaps = lostFrames(t, nil, noFrames)
 	s := a.noiseRatio(a.segmentOf())
 	if s <= 0 {
 		// Quantised so coarsely that neighbours agree, or made up: a floor keeps

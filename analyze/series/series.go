@@ -160,7 +160,7 @@ func FromTable(name string, t, angle, u []float64) (Angle, error) {
 	a.Gaps = tableGaps(t, skipped)
 	a.despike()
 	tt, yy, uu = a.T, a.Angle, a.UAngle
-	a.Gaps = append(a.Gaps, lostFrames(tt, a.Gaps)...)
+	a.Gaps = append(a.Gaps, lostFrames(tt, a.Gaps, noFrames)...)
 	if !known {
 		s := scatter(tt, yy)
 		for i := range uu {
@@ -188,9 +188,12 @@ func tableGaps(t []float64, skipped []int) []Gap {
 	return gaps
 }
 
+const noFrames = "the recording lacks frames here"
+
 // lostFrames finds the places where times jump although no sample is known to
-// be missing: the recording itself lacks frames.
-func lostFrames(t []float64, known []Gap) []Gap {
+// be missing, as when the recording itself lacks frames; why is what the caller
+// knows of the cause.
+func lostFrames(t []float64, known []Gap, why string) []Gap {
 	if len(t) < 3 {
 		return nil
 	}
@@ -207,7 +210,7 @@ func lostFrames(t []float64, known []Gap) []Gap {
 			}
 		}
 		if !covered {
-			gaps = append(gaps, Gap{FromS: t[i-1], ToS: t[i], Why: "the recording lacks frames here"})
+			gaps = append(gaps, Gap{FromS: t[i-1], ToS: t[i], Why: why})
 		}
 	}
 	return gaps

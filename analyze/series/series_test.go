@@ -377,3 +377,34 @@ func TestBadTables(t *testing.T) {
 		t.Error("an empty track gave angles")
 	}
 }
+
+// A series that needs two bobs says which of them was not found, and does not call
+// it a fault of the recording.
+func TestGapsOfTwoBobs(t *testing.T) {
+	pair := [2]track.Bob{{Name: "red ball"}, {Name: "green ball"}}
+	for i := range 40 {
+		for k := range pair {
+			s := track.Sample{Frame: i, T: float64(i) / 60, State: track.Seen}
+			if k == 1 && i >= 10 && i < 14 || k == 0 && i == 12 {
+				s.State = track.Missing
+			}
+			if k == 0 && i >= 30 && i < 33 {
+				s.State = track.AtEdge
+			}
+			pair[k].Samples = append(pair[k].Samples, s)
+		}
+	}
+	got := bobGaps(&pair[0], &pair[1])
+	want := []Gap{
+		{FromS: 9.0 / 60, ToS: 14.0 / 60, Frames: 4, Why: "“green ball” not found"},
+		{FromS: 29.0 / 60, ToS: 33.0 / 60, Frames: 3, Why: "“red ball” at the picture's edge"},
+	}
+	if len(got) != len(want) {
+		t.Fatalf("gaps %+v", got)
+	}
+	for i := range want {
+		if got[i] != want[i] {
+			t.Errorf("gap %d: %+v, want %+v", i, got[i], want[i])
+		}
+	}
+}
