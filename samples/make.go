@@ -19,6 +19,11 @@ type Options struct {
 	Clean bool
 	// Undriven films with the coils off.
 	Undriven bool
+	// OffFromS, when above zero, is the time in s at which the battery is taken out.
+	OffFromS float64
+	// PushAtS, when above zero, is the time in s at which a hand adds PushRadS, rad/s,
+	// to the rate of the first part.
+	PushAtS, PushRadS float64
 	// DurationS, when above zero, replaces the rig's.
 	DurationS float64
 	// Start and Progress, when not nil, are told the number of frames, and how
@@ -88,7 +93,7 @@ func Prepare(ctx context.Context, r *rig.Rig, opt Options) (*Take, error) {
 		until = times[frames-1] + 0.2
 	}
 	var err error
-	if t.motion, err = move(ctx, r, until, opt.Undriven); err != nil {
+	if t.motion, err = move(ctx, r, until, opt); err != nil {
 		return nil, err
 	}
 	if t.Scene, err = scene(r, t.motion, until); err != nil {

@@ -29,8 +29,8 @@ type pose struct {
 }
 
 // move computes the motion that the rig's parts, magnets, coils and start give,
-// from 0 to until seconds.
-func move(ctx context.Context, r *rig.Rig, until float64, undriven bool) (*motion, error) {
+// from 0 to until seconds, with the battery taken out and a push where opt says so.
+func move(ctx context.Context, r *rig.Rig, until float64, opt Options) (*motion, error) {
 	m, err := toy.New(r)
 	if err != nil {
 		return nil, err
@@ -42,13 +42,43 @@ func move(ctx context.Context, r *rig.Rig, until float64, undriven bool) (*motio
 	parts := len(m.Parts())
 	o := &motion{model: m, n: int(math.Ceil(until/gridS)) + 4}
 	o.poses, o.angles = make([][]pose, parts), make([][][2]float64, parts)
-	path, err := m.Simulate(ctx, y, float64(o.n)*gridS, toy.Options{Tol: 1e-10, Undriven: undriven, Passes: true})
-	if err != nil {
-		return nil, fmt.Errorf("the motion of %q cannot be computed: %w", r.Name, err)
+	end := float64(o.n) * gridS
+	cuts := []float64{0}
+	for _, t := range []float64{min(opt.OffFromS, opt.PushAtS), max(opt.OffFromS, opt.PushAtS)} {
+		if t > cuts[len(cuts)-1] && t < end {
+			cuts = append(cuts, t)
+		}
 	}
-	o.events = path.Events
+	var path *toy.Motion
+	var from float64
+	next := 0
 	for i := range o.n {
-		path.At(float64(i)*gridS, y)
+		t := float64(i) * gridS
+		if next < len(cuts) && t >= cuts[next] {
+			to := end
+			if next+1 < len(cuts) {
+				to = cuts[next+1]
+			}
+			if path != nil {
+				path.At(cuts[next]-from, y)
+			}
+			from = cuts[next]
+			next++
+			if from > 0 && from == opt.PushAtS {
+				d := make([]float64, 2*m.Freedoms())
+				d[m.Freedoms()] = opt.PushRadS
+				m.Displace(y, d)
+			}
+			off := opt.Undriven || opt.OffFromS > 0 && from >= opt.OffFromS
+			if path, err = m.Simulate(ctx, y, to-from, toy.Options{Tol: 1e-10, Undriven: off, Passes: true}); err != nil {
+				return nil, fmt.Errorf("the motion of %q cannot be computed: %w", r.Name, err)
+			}
+			for _, e := range path.Events {
+				e.T += from
+				o.events = append(o.events, e)
+			}
+		}
+		path.At(t-from, y)
 		for k := range parts {
 			var p pose
 			p.at, p.turn = m.Pose(y, k)

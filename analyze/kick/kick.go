@@ -69,6 +69,12 @@ type Options struct {
 	// are the rig's.
 	Battery          func(amplitude float64) (charge float64, err error)
 	Capacity, Supply float64
+	// Current, when above zero, is the mean current from the battery in A, as it was
+	// measured, and UCurrent its relative standard uncertainty. Cell and InSeries name
+	// its cells (rig.Cells).
+	Current, UCurrent float64
+	Cell              string
+	InSeries          float64
 }
 
 // Parts names the parts that the rig's coils kick, each once.
@@ -129,6 +135,10 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 	for i := range r.Coils {
 		if k := &r.Coils[i]; k.Part == part || k.Part == "" {
 			o.Coil, o.Sensed, o.Capacity, o.Supply = k.Name, k.SensedRadS.Or(0), k.CapacityAs.Or(0), k.SupplyV.Or(0)
+			o.Cell, o.InSeries = k.Cell, k.InSeries.Or(1)
+			if k.CurrentA.Set && k.CurrentA.V > 0 {
+				o.Current, o.UCurrent = k.CurrentA.V, k.CurrentA.U/k.CurrentA.V
+			}
 			for _, m := range r.Magnets {
 				if at := rig.XYZ(m.AtM); m.Part == part && k.WidthM.Set && math.Hypot(at[0], at[2]) > 0 {
 					o.PushOver = k.WidthM.V / math.Hypot(at[0], at[2])
@@ -150,7 +160,9 @@ func OptionsFor(r *rig.Rig, part string, clip *rig.Clip) Options {
 		o.Absent = [3]bool{}
 	}
 	o.weigh(r, p)
-	o.Battery = charge(r, part)
+	if o.Ball == nil {
+		o.Battery = charge(r, part)
+	}
 	if o.Ball == nil && (p.Upright || series.Pulled(r, part) != "" && bends(r, p)) {
 		o.bend(r, p)
 	}

@@ -90,7 +90,7 @@ func open(_ context.Context, clips []Clip, opt Options) (*ledger, error) {
 		return nil, fmt.Errorf("kick: only %d turning points of %q could be seen; film at least %d passes in one go", n, clips[0].Angle.Part, leastPasses)
 	}
 	if l.pendulum {
-		l.measureOmega()
+		l.measureOmega(0)
 	}
 	if err := l.balance(); err != nil {
 		return nil, err
@@ -199,7 +199,17 @@ func vertex(a *series.Angle, r series.Turning, reach float64) (turn, bool) {
 // measureOmega finds the rate of small swings from the time between turning
 // points and the amplitudes beside them, by the complete elliptic integral of the
 // first kind (as π/2 over the arithmetic-geometric mean; Abramowitz & Stegun 17.6).
-func (l *ledger) measureOmega() {
+// While the coil pushes, the part is slower than it will be: over the push, which
+// grows smoothly, it lacks half of the kick on average, and takes
+// (kick/2)/(2·energy) of the time of that stretch longer.
+func (l *ledger) measureOmega(kick float64) {
+	kicked := map[[2]int]float64{}
+	for i := range l.rows {
+		r := &l.rows[i]
+		if e := (r.before + r.after) / 2; e > 0 && r.speed > 0 {
+			kicked[[2]int{r.clip, r.to}] = r.state.share() * kick / (4 * e) * l.opt.PushOver / r.speed
+		}
+	}
 	var w []float64
 	for c, tp := range l.turns {
 		if l.clips[c].Off != l.clips[0].Off && len(w) >= leastPasses {
@@ -208,7 +218,7 @@ func (l *ledger) measureOmega() {
 		for i := 1; i < len(tp); i++ {
 			if tp[i].angle*tp[i-1].angle < 0 {
 				k := quarter(math.Abs(tp[i].angle)) + quarter(math.Abs(tp[i-1].angle))
-				w = append(w, k/(tp[i].t-tp[i-1].t))
+				w = append(w, k/(tp[i].t-tp[i-1].t-kicked[[2]int{c, i}]))
 			}
 		}
 	}

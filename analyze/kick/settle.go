@@ -42,6 +42,9 @@ func (l *ledger) settle(ctx context.Context) error {
 	}
 	l.findOdd()
 	l.measureNoise()
+	if err := l.timeAgain(); err != nil {
+		return err
+	}
 	if err := ctx.Err(); err != nil {
 		return err
 	}
@@ -150,6 +153,26 @@ func (l *ledger) upright(s *solution) {
 	if moved {
 		l.enter()
 	}
+}
+
+// timeAgain measures the rate of small swings again, and the turning points with it,
+// now that kicked passes and kick are known.
+func (l *ledger) timeAgain() error {
+	if !l.pendulum || l.opt.PushOver == 0 {
+		return nil
+	}
+	for range 2 {
+		s, ok := l.fit(l.plain, nil, -1)
+		if !ok || s.kicks == 0 || !(s.beta[0] > 8*math.Sqrt(s.cov[0]*s.widen())) {
+			return nil
+		}
+		l.measureOmega(s.beta[0])
+		if err := l.balance(); err != nil {
+			return err
+		}
+		l.sharpen()
+	}
+	return nil
 }
 
 // unknown tells whether nobody said where the coil was off.

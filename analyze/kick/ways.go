@@ -190,24 +190,5 @@ func (l *ledger) perDay(res *Result) {
 		f.Budget = append(f.Budget, finding.Share{Source: s.Source, U: s.U * perDay})
 	}
 	res.Findings = append(res.Findings, f)
-	if l.opt.Battery == nil {
-		return
-	}
-	charge, err := l.opt.Battery(res.Amplitude)
-	if err != nil || !(charge > 0) {
-		return
-	}
-	const uCharge = 0.1 // of a reckoned pulse: winding and timing are known no better; common practice, no source
-	how := "the charge per kick reckoned from the rig's winding and supply, not measured"
-	if l.opt.Supply > 0 {
-		e := kick.Value / (charge * l.opt.Supply)
-		g := finding.Normal("kick.efficiency", l.part(), "Share of the battery's energy that reaches the swing", e, e*math.Hypot(uCharge, kick.U/kick.Value), "1", how)
-		res.Findings = append(res.Findings, g)
-	}
-	if l.opt.Capacity > 0 {
-		d := l.opt.Capacity / (charge * perDay)
-		g := finding.Normal("kick.battery_time", l.part(), "Time on one battery of the rig's capacity", d*day, d*day*math.Hypot(uCharge, 0.1), "s", how)
-		g.Cautions = append(g.Cautions, "Self-discharge, falling voltage and what the circuit draws between kicks are left out.")
-		res.Findings = append(res.Findings, g)
-	}
+	l.battery(res, kick, perDay)
 }

@@ -3,6 +3,7 @@ package main
 import (
 	"encoding/json"
 	"fmt"
+	"math"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -18,6 +19,7 @@ func filmCommand() *cobra.Command {
 		list, asJSON   bool
 		quiet          bool
 		printTheSample bool
+		pushDeg        float64
 	)
 	cmd := &cobra.Command{
 		Use:   "film RIG",
@@ -64,6 +66,10 @@ All samples are toys of the invented Saltmarsh Toyworks.`,
 			if cmd.Flags().Changed("seconds") && !(opt.DurationS > 0) {
 				return wrongUse("--seconds must be above zero, not %g", opt.DurationS)
 			}
+			if opt.OffFromS < 0 || opt.PushAtS < 0 {
+				return wrongUse("--coil-off-from and --push-at are times in the film: they must not be below zero")
+			}
+			opt.PushRadS = pushDeg * math.Pi / 180
 			r, err := samples.Open(args[0])
 			if err != nil {
 				return err
@@ -90,6 +96,9 @@ All samples are toys of the invented Saltmarsh Toyworks.`,
 	f.StringVar(&out, "out", "", "folder for the film (default: RIG-film)")
 	f.BoolVar(&opt.Clean, "clean", false, "no noise, texture, shadow, clutter or halo, and no loss in encoding")
 	f.BoolVar(&opt.Undriven, "coil-off", false, "with the battery taken out")
+	f.Float64Var(&opt.OffFromS, "coil-off-from", 0, "take the battery out after so many `seconds`")
+	f.Float64Var(&opt.PushAtS, "push-at", 0, "a hand pushes the first part after so many `seconds`")
+	f.Float64Var(&pushDeg, "push-deg-s", 60, "how much faster that makes it, degrees per second")
 	f.Float64Var(&opt.DurationS, "seconds", 0, "length of the film (default: the rig's duration_s)")
 	f.BoolVar(&list, "list", false, "list the samples")
 	f.BoolVar(&printTheSample, "print", false, "print the sample's rig and film nothing")

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"regexp"
+	"slices"
 	"strconv"
 	"strings"
 )
@@ -298,6 +299,9 @@ func (c *checker) coils() {
 		c.place(k.AtM, "at_mm", where, c.line("coil", i, "at_mm"))
 		c.axis(k.Axis, where, c.line("coil", i, "axis"))
 		c.part(k.Part, where, c.line("coil", i, "part"), false)
+		if k.Cell != "" && !slices.Contains(Cells, k.Cell) {
+			c.say(c.line("coil", i, "cell"), "key \"cell\" of %s is %q; the usual cells are %q, and of any other capacity_mAh says how much it holds", where, k.Cell, Cells)
+		}
 		if !k.KickJ.Set && !k.KickJ.Fit && !(k.Turns.Set && k.RadiusM.Set && k.SupplyV.Set && k.Ohm.Set) {
 			c.say(c.line("coil", i), "%s says nothing of its kick: give kick_mJ (a number or \"fit\"), or turns, radius_mm, resistance_ohm and supply_V", where)
 		}

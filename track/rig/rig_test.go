@@ -425,7 +425,7 @@ func TestFindNamesTheNearest(t *testing.T) {
 func TestEveryKeyHasItsUnit(t *testing.T) {
 	plain := map[string]bool{
 		"rate_factor": true, "recoil": true, "turns": true, "noise": true, "texture": true, "seed": true, "sharpening": true,
-		"shadow": true, "uneven": true,
+		"shadow": true, "uneven": true, "cells": true,
 		"viscous": true, "drag": true, "dry": true,
 	}
 	r := parse(t, whole())
