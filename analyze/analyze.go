@@ -53,6 +53,7 @@ var analyses = []analysis{
 	{"matching", "match.fit", "Model matched to the motion", matching},
 	{"model's future", "chaos.model_exponent", "Largest exponent of the model", foretelling},
 	{"kicks", "kick.ledger", "Energy ledger", kicks},
+	{"diagnosis", "diagnosis", "Diagnosis", diagnosis},
 	{"claims", "claim.answers", "Claims", claims},
 }
 

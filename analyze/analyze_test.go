@@ -17,6 +17,8 @@ import (
 	"lodeswing/track/rig"
 )
 
+var long = flag.Bool("long", false, "also the slow ones")
+
 var keep = flag.String("keep", "", "folder in which the records of the tests are left, to be looked at")
 
 // swing is the track of a bob that swings with viscous friction alone, small

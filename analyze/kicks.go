@@ -3,6 +3,7 @@ package analyze
 import (
 	"context"
 	"fmt"
+	"math"
 	"slices"
 	"strings"
 
@@ -53,10 +54,6 @@ func kicks(ctx context.Context, w *work) error {
 		}
 		w.kicks = append(w.kicks, res)
 		w.rec.Findings = append(w.rec.Findings, res.Findings...)
-		if ref, ok := kick.ReferenceOf(w.rig, part, res); ok && !clips[0].Off {
-			d := kick.Diagnose(res, ref)
-			w.rec.Findings = append(w.rec.Findings, d.Finding(part, ref.From))
-		}
 		w.rec.Fits = append(w.rec.Fits, res.Fits...)
 		w.rec.Curves = append(w.rec.Curves, res.Curves...)
 		w.caution(part, res.Cautions...)
@@ -83,6 +80,41 @@ func without(out *record.Record, part string) (series.Angle, error) {
 		}
 	}
 	return series.Angle{}, fmt.Errorf("the battery-out result holds no angle of %q", part)
+}
+
+// diagnosis says what may be the matter with the unit: by the ledger where the rig
+// says what a good unit does, and by what the free decay and the matching found.
+func diagnosis(_ context.Context, w *work) error {
+	seen := kick.Seen{Rig: w.rig, Findings: w.rec.Findings}
+	if w.track != nil {
+		seen.Drift = w.track.Cal.StandDriftRatio
+	}
+	for _, d := range w.decays {
+		z, start, end := w.rec.Find("decay.zeta", d.Part), w.rec.Find("decay.zeta_start", d.Part), w.rec.Find("decay.zeta_end", d.Part)
+		if !d.Found || z == nil || start == nil || end == nil || len(d.Laws) == 0 {
+			continue
+		}
+		seen.FreeDecay = append(seen.FreeDecay, kick.Damping{
+			Part: d.Part, Omega: math.Sqrt(d.Laws[0].Omega2), Amplitude: [3]float64{d.Amplitude, d.AmplitudeStart, d.AmplitudeEnd},
+			Zeta: [3]float64{z.Value, start.Value, end.Value}, U: [3]float64{z.U, start.U, end.U},
+		})
+	}
+	causes, judged := seen.Causes()
+	told := false
+	for _, res := range w.kicks {
+		driven := w.clip == nil || w.clip.Battery
+		if ref, ok := kick.ReferenceOf(w.rig, res.Part, res); ok && driven {
+			d := kick.Diagnose(res, ref)
+			d.Join(causes, judged)
+			w.rec.Findings = append(w.rec.Findings, d.Finding("kick.diagnosis", res.Part, "kick, loss and rate set against "+ref.From+", by Bayes's rule"))
+			told = true
+		}
+	}
+	if !told && len(judged) > 0 {
+		d := kick.Judge(causes, judged)
+		w.rec.Findings = append(w.rec.Findings, d.Finding("diagnosis", "", "what was found set against the rig's numbers, by Bayes's rule"))
+	}
+	return nil
 }
 
 // kickWords says in a sentence or two what the ledger tells of a part.

@@ -1,6 +1,7 @@
 package kick
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -179,6 +180,7 @@ func ReferenceFrom(good []*Result) (Reference, error) {
 type Cause struct {
 	Name        string // plain words
 	Fault       bool   // a reason to reject
+	Filming     bool   // no fault of the unit's, but a reason to film again
 	Probability float64
 	Evidence    string // the numbers behind it
 	Next        string // what to do; names the swap that splits a group
@@ -192,17 +194,17 @@ type Diagnosis struct {
 	Good    bool    // told, and nothing is wrong
 	// Probabilities that drive and loss are as they should be.
 	DriveGood, LossGood float64
+
+	separated bool
+	judged    []string
 }
 
 // Finding puts a diagnosis in a record: the verdict, and each cause with its
 // probability and evidence.
-func (d *Diagnosis) Finding(part, from string) finding.Finding {
-	f := finding.Finding{
-		Key: "kick.diagnosis", Subject: part, Name: "Diagnosis", Kind: finding.Statement, Unit: "1", Text: d.Verdict,
-		Method: "kick, loss and rate set against " + from + ", by Bayes's rule",
-	}
+func (d *Diagnosis) Finding(key, part, method string) finding.Finding {
+	f := finding.Finding{Key: key, Subject: part, Name: "Diagnosis", Kind: finding.Statement, Unit: "1", Text: d.Verdict, Method: method}
 	for _, c := range d.Causes {
-		if c.Probability >= 0.01 {
+		if c.Probability >= 0.01 && c.Probability < certain { // the others are in the verdict
 			f.Text += fmt.Sprintf(" [%s: %s]", c.Name, chance(c.Probability))
 		}
 	}
@@ -276,16 +278,8 @@ func Diagnose(r *Result, ref Reference) Diagnosis {
 	if ref.Omega.Value > 0 && r.Omega > 0 {
 		d.Causes = append(d.Causes, r.rate(ref)...)
 	}
-	slices.SortStableFunc(d.Causes, func(a, b Cause) int {
-		switch {
-		case a.Probability > b.Probability:
-			return -1
-		case a.Probability < b.Probability:
-			return 1
-		}
-		return 0
-	})
-	d.decide(r)
+	d.separated = r.Separated
+	d.decide()
 	return d
 }
 
@@ -295,12 +289,18 @@ func percent(ratio, u float64) string {
 }
 
 // decide puts the verdict in words.
-func (d *Diagnosis) decide(r *Result) {
+func (d *Diagnosis) decide() {
+	slices.SortStableFunc(d.Causes, func(a, b Cause) int { return cmp.Compare(b.Probability, a.Probability) })
+	d.Told, d.Good = false, false
 	fine := 1.0 // probability that none of the faults is there
 	var faults []string
 	var most *Cause
 	for i := range d.Causes {
 		c := &d.Causes[i]
+		if c.Filming && c.Probability >= certain {
+			d.Verdict = fmt.Sprintf("Film again: %s (%s; probability %s). %s", c.Name, c.Evidence, chance(c.Probability), c.Next)
+			return
+		}
 		if !c.Fault {
 			continue
 		}
@@ -315,18 +315,31 @@ func (d *Diagnosis) decide(r *Result) {
 	switch {
 	case len(faults) > 0:
 		d.Told, d.Verdict = true, "Reject: "+strings.Join(faults, " And: ")
-	case fine >= certain && r.Separated:
+	case fine >= certain && d.separated:
 		d.Told, d.Good, d.Verdict = true, true, fmt.Sprintf("Nothing is wrong that this clip can show (probability %s).", chance(fine))
+		if len(d.judged) > 0 {
+			d.Verdict += " Judged beside the drive: " + strings.Join(d.judged, ", ") + "."
+			if d.plain() {
+				d.Verdict = strings.Replace(d.Verdict, "Judged beside the drive", "Judged", 1)
+			}
+		}
 		for _, c := range d.Causes {
 			if !c.Fault && c.Probability >= certain {
 				d.Verdict += fmt.Sprintf(" But: %s (%s).", c.Name, c.Evidence)
 			}
 		}
-	case !r.Separated:
+	case most == nil:
+		d.Verdict = "Nothing in this clip can be judged against the rig."
+	case !d.separated:
 		d.Verdict = "This clip cannot tell a weak drive from friction: it shows only their balance. " + toFilm + "."
 	default:
 		d.Verdict = fmt.Sprintf("This clip cannot tell: the likeliest fault is %s (%s), with a probability of %s. Measure again, longer or from nearer.", most.Name, most.Evidence, chance(most.Probability))
 	}
+}
+
+// plain tells whether there is no ledger behind a diagnosis.
+func (d *Diagnosis) plain() bool {
+	return !slices.ContainsFunc(d.Causes, func(c Cause) bool { return strings.HasPrefix(c.Name, "drive ") })
 }
 
 func chance(p float64) string {
@@ -448,7 +461,7 @@ func (r *Result) rate(ref Reference) []Cause {
 	for _, f := range []float64{1.0 / 8, 1.0 / 4, 1.0 / 2, 2, 4, 8} {
 		if math.Abs(ratio/f-1) < 3*u+0.01 {
 			return []Cause{{
-				Name: "filming fault: slow motion", Fault: true, Probability: 0.99, Evidence: said,
+				Name: "filming fault: slow motion", Filming: true, Probability: 0.99, Evidence: said,
 				Next: fmt.Sprintf("Set camera.rate_factor in the rig; the ratio suggests a factor of %.3g from what it is now.", 1/f),
 			}}
 		}

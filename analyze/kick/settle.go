@@ -40,7 +40,11 @@ func (l *ledger) settle(ctx context.Context) error {
 	if l.unknown() {
 		l.findOff(ctx)
 	}
+	unknown := l.unknown()
 	l.findOdd()
+	if unknown {
+		l.runsOff()
+	}
 	l.measureNoise()
 	if err := l.timeAgain(); err != nil {
 		return err
@@ -301,6 +305,23 @@ func (l *ledger) findOdd() {
 	l.splitTwo()
 	l.turnOver()
 	l.takeBack()
+}
+
+// runsOff makes a stretch with the coil off of many passes in a row without a kick: a
+// coil does not miss so many one after the other and then none.
+func (l *ledger) runsOff() {
+	for i := 0; i < len(l.rows); {
+		j := i
+		for j < len(l.rows) && l.rows[j].clip == l.rows[i].clip && (l.rows[j].state == Missed || l.rows[j].state == Odd && !l.rows[j].fixed && l.rows[j].net() < 0) {
+			j++
+		}
+		if j-i >= leastOff {
+			for k := i; k < j; k++ {
+				l.rows[k].state = Off
+			}
+		}
+		i = max(j, i+1)
+	}
 }
 
 // turnOver looks for a coil that fires at so few passes that those without a kick

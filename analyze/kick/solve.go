@@ -367,7 +367,11 @@ func (s *solution) widen() float64 {
 	if s.dof < 1 {
 		return 1
 	}
-	return math.Max(1, s.chi2/float64(s.dof))
+	v := s.chi2 / float64(s.dof)
+	if v < 1+2*math.Sqrt(2/float64(s.dof)) {
+		return 1 // chance scatters it by that much
+	}
+	return v
 }
 
 // inverse of a symmetric positive matrix of size n, by Cholesky's method on the

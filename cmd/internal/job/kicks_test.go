@@ -3,6 +3,7 @@ package job
 import (
 	"errors"
 	"flag"
+	"fmt"
 	"math"
 	"math/rand/v2"
 	"os/exec"
@@ -17,7 +18,10 @@ import (
 	"lodeswing/track/rig"
 )
 
-var long = flag.Bool("long", false, "film and measure whole lots")
+var (
+	long = flag.Bool("long", false, "film and measure whole lots")
+	keep = flag.String("keep", "", "folder in which films and results of whole lots are left, to be looked at")
+)
 
 // smaller films a rig in fewer pixels, which is quicker.
 func smaller(r *rig.Rig, k float64) {
@@ -56,6 +60,9 @@ func filmAndMeasure(t *testing.T, toy, owner *rig.Rig, opt samples.Options) *rec
 		t.Skip("ffmpeg is not installed: run make test, which installs it")
 	}
 	dir := t.TempDir()
+	if *keep != "" {
+		dir = filepath.Join(*keep, strings.NewReplacer("/", "-", ",", "").Replace(t.Name()))
+	}
 	files, err := samples.Film(t.Context(), toy, filepath.Join(dir, "film"), opt)
 	if err != nil {
 		t.Fatal(err)
@@ -83,34 +90,36 @@ func TestFilmedUnits(t *testing.T) {
 		t.Skip("films twelve clips; run with -long")
 	}
 	for n, c := range []struct {
+		name       string
 		kick, loss float64
 		want       string
-	}{{1, 1, "Nothing is wrong"}, {0.85, 1, "Reject: drive weak"}, {1, 1.15, "Reject: more loss"}} {
+	}{{"good", 1, 1, "Nothing is wrong"}, {"weak", 0.85, 1, "Reject: drive weak"}, {"more loss", 1, 1.15, "Reject: more loss"}} {
 		for seed := range uint64(4) {
-			rng := rand.New(rand.NewPCG(seed, uint64(n)+501))
-			toy, owner := knownGull(t), knownGull(t)
-			smaller(toy, 0.5)
-			smaller(owner, 0.5)
-			loss := c.loss * (1 + 0.02*rng.NormFloat64())
-			f := &toy.Parts[0].Friction
-			f.Viscous.V, f.Dry.V = f.Viscous.V*loss, f.Dry.V*loss
-			toy.Coils[0].KickJ.V *= c.kick * (1 + 0.02*rng.NormFloat64())
-			toy.Start[0].AngleRad.V = 0.42 * (1 + 0.02*rng.NormFloat64())
-			toy.Film.Seed.V = float64(100*n) + float64(seed)
-			rec := filmAndMeasure(t, toy, owner, samples.Options{DurationS: 30, OffFromS: 24})
-			said := rec.Find("kick.diagnosis", "")
-			k := rec.Find("kick.energy", "")
-			if said == nil || k == nil {
-				t.Errorf("unit %d of %q: no diagnosis", seed, c.want)
-				continue
-			}
-			t.Logf("kick %.4g ± %.2g mJ, true %.4g; %s", 1e3*k.Value, 1e3*k.U, 1e3*toy.Coils[0].KickJ.V, said.Text)
-			if !strings.HasPrefix(said.Text, c.want) || strings.Contains(said.Text, "And:") {
-				t.Errorf("unit %d should be %q", seed, c.want)
-			}
-			if math.Abs(k.Value/toy.Coils[0].KickJ.V-1) > 0.04 {
-				t.Errorf("unit %d: kick %.4g mJ, true %.4g", seed, 1e3*k.Value, 1e3*toy.Coils[0].KickJ.V)
-			}
+			t.Run(fmt.Sprintf("%s %d", c.name, seed), func(t *testing.T) {
+				rng := rand.New(rand.NewPCG(seed, uint64(n)+501))
+				toy, owner := knownGull(t), knownGull(t)
+				smaller(toy, 0.5)
+				smaller(owner, 0.5)
+				loss := c.loss * (1 + 0.02*rng.NormFloat64())
+				f := &toy.Parts[0].Friction
+				f.Viscous.V, f.Dry.V = f.Viscous.V*loss, f.Dry.V*loss
+				toy.Coils[0].KickJ.V *= c.kick * (1 + 0.02*rng.NormFloat64())
+				toy.Start[0].AngleRad.V = 0.42 * (1 + 0.02*rng.NormFloat64())
+				toy.Film.Seed.V = float64(100*n) + float64(seed)
+				rec := filmAndMeasure(t, toy, owner, samples.Options{DurationS: 30, OffFromS: 24})
+				said := rec.Find("kick.diagnosis", "")
+				k := rec.Find("kick.energy", "")
+				if said == nil || k == nil {
+					t.Fatal("no diagnosis")
+				}
+				t.Logf("kick %.4g ± %.2g mJ, true %.4g; %s", 1e3*k.Value, 1e3*k.U, 1e3*toy.Coils[0].KickJ.V, said.Text)
+				if !strings.HasPrefix(said.Text, c.want) || strings.Contains(said.Text, "And:") {
+					t.Errorf("should be %q", c.want)
+				}
+				if math.Abs(k.Value/toy.Coils[0].KickJ.V-1) > 0.04 {
+					t.Errorf("kick %.4g mJ, true %.4g", 1e3*k.Value, 1e3*toy.Coils[0].KickJ.V)
+				}
+			})
 		}
 	}
 }
@@ -134,27 +143,29 @@ func TestFilmedKicks(t *testing.T) {
 		{"beacon, start-up", "beacon", 0, samples.Options{DurationS: 30}, 0.15e-3},
 		{"beacon, coil off", "beacon", 0, samples.Options{DurationS: 30, OffFromS: 24}, 0.15e-3},
 	} {
-		r, err := samples.Open(c.sample)
-		if err != nil {
-			t.Fatal(err)
-		}
-		if c.start > 0 {
-			r.Start[0].AngleRad.V = c.start
-		}
-		rec := filmAndMeasure(t, r, samples.OwnersRig(r), c.opt)
-		k := rec.Find("kick.energy", "")
-		switch {
-		case k == nil:
-			t.Errorf("%s: nothing is said of the kick; %s", c.name, rec.Find("kick.ledger", "").Text)
-		case c.truth == 0:
-			if k.Kind != finding.Undecided || !strings.Contains(k.Text, "cannot separate") {
-				t.Errorf("%s: %+v", c.name, k)
+		t.Run(c.name, func(t *testing.T) {
+			r, err := samples.Open(c.sample)
+			if err != nil {
+				t.Fatal(err)
 			}
-		default:
-			t.Logf("%s: kick %.4g ± %.2g mJ, true %.4g", c.name, 1e3*k.Value, 1e3*k.U, 1e3*c.truth)
-			if k.Kind != finding.Measured || math.Abs(k.Value/c.truth-1) > 0.04 || math.Abs(k.Value-c.truth) > 3*k.U {
-				t.Errorf("%s: %+v", c.name, k)
+			if c.start > 0 {
+				r.Start[0].AngleRad.V = c.start
 			}
-		}
+			rec := filmAndMeasure(t, r, samples.OwnersRig(r), c.opt)
+			k := rec.Find("kick.energy", "")
+			switch {
+			case k == nil:
+				t.Errorf("%s: nothing is said of the kick; %s", c.name, rec.Find("kick.ledger", "").Text)
+			case c.truth == 0:
+				if k.Kind != finding.Undecided || !strings.Contains(k.Text, "cannot separate") {
+					t.Errorf("%s: %+v", c.name, k)
+				}
+			default:
+				t.Logf("%s: kick %.4g ± %.2g mJ, true %.4g", c.name, 1e3*k.Value, 1e3*k.U, 1e3*c.truth)
+				if k.Kind != finding.Measured || math.Abs(k.Value/c.truth-1) > 0.04 || math.Abs(k.Value-c.truth) > 3*k.U {
+					t.Errorf("%s: %+v", c.name, k)
+				}
+			}
+		})
 	}
 }
