@@ -134,7 +134,7 @@ func TestSwapSplitsTheGroup(t *testing.T) {
 		after := unit{c.kick, 1, 1}.ledger(t, rng, withOff, 0.42)
 		a, b := before.At(0.4), after.At(0.4)
 		u := math.Sqrt(a.VarKick/a.Kick/a.Kick + b.VarKick/b.Kick/b.Kick)
-		if said, p := Swap(b.Kick/a.Kick-1, u, Cell); !strings.Contains(said, c.want) || p < 0 || p > 1 {
+		if said, p := Swap(b.Kick/a.Kick-1, u, Cell, "kick"); !strings.Contains(said, c.want) || p < 0 || p > 1 {
 			t.Errorf("kick %g: %s (%g)", c.kick, said, p)
 		}
 	}

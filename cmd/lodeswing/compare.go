@@ -2,11 +2,14 @@ package main
 
 import (
 	"encoding/json"
+	"errors"
 	"fmt"
 	"io"
 	"math"
 	"os"
 	"path/filepath"
+	"slices"
+	"strings"
 	"text/tabwriter"
 
 	"github.com/spf13/cobra"
@@ -15,12 +18,13 @@ import (
 	"lodeswing/analyze/finding"
 	"lodeswing/analyze/kick"
 	"lodeswing/analyze/record"
+	"lodeswing/plots"
 	"lodeswing/track/rig"
 )
 
 func compareCommand() *cobra.Command {
 	var asJSON, sameCamera, all bool
-	var swapped string
+	var swapped, figure string
 	cmd := &cobra.Command{
 		Use:   "compare A B",
 		Short: "Set two results, or two groups of results, against each other",
@@ -30,7 +34,8 @@ the same numbers in both rigs, an error of mass, inertia, ruler or clock shifts 
 alike. With --same-camera the scale and the vertical cancel too.
 
 --swapped says that between A and B a reference part took the place of the unit's
-own (cell, magnet or coil), and tells whether a weak drive's fault was in it.
+own (cell, magnet or coil), and tells whether a weak drive's fault, or a weak pair
+of magnets', was in it.
 
 A and B are result folders, or folders that hold several: then means are compared,
 with what the units of a group scatter. Where a rig notes the temperature of its
@@ -38,7 +43,8 @@ clip, magnets' moments are taken to 20 °C first.`,
 		Example: `  lodeswing compare before-result after-result
   lodeswing compare old-winding new-winding --same-camera
   lodeswing compare weak-unit with-reference-cell --swapped cell
-  lodeswing compare lot-may lot-june --json`,
+  lodeswing compare lot-may lot-june --json
+  lodeswing compare before-result after-result --figure changes.svg`,
 		Args: exactly(2, "two results, or folders of results"),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			switch kick.Swapped(swapped) {
@@ -54,10 +60,18 @@ clip, magnets' moments are taken to 20 °C first.`,
 			if err != nil {
 				return err
 			}
+			if a.Name == b.Name { // told apart by where they lie
+				a.Name, b.Name = filepath.Clean(args[0]), filepath.Clean(args[1])
+			}
 			opt := compare.Options{SameRig: sameNumbers(append(rigA, rigB...)), SameCamera: sameCamera}
 			ds, err := compare.Run(a, b, opt)
 			if err != nil {
 				return err
+			}
+			if figure != "" {
+				if err := drawDifferences(figure, a.Name, b.Name, opt, ds); err != nil {
+					return err
+				}
 			}
 			if asJSON {
 				return differencesJSON(cmd.OutOrStdout(), a.Name, b.Name, opt, ds)
@@ -71,6 +85,7 @@ clip, magnets' moments are taken to 20 °C first.`,
 	}
 	cmd.Flags().BoolVar(&sameCamera, "same-camera", false, "the camera was not moved between: scale and vertical are the same")
 	cmd.Flags().StringVar(&swapped, "swapped", "", "the `part` that a reference part took the place of between A and B: cell, magnet or coil")
+	cmd.Flags().StringVar(&figure, "figure", "", "also draw the relative differences into this `file`, .svg or .png")
 	cmd.Flags().BoolVar(&all, "all", false, "also list what does not differ by more than the measurement")
 	cmd.Flags().BoolVar(&asJSON, "json", false, "print the differences as JSON, for machines")
 	return cmd
@@ -211,16 +226,77 @@ func tellDifferences(out io.Writer, a, b compare.Side, opt compare.Options, ds [
 	}
 }
 
-// tellSwap says whether a weak drive's fault was in the part that was swapped.
+// tellSwap says whether a weak drive's fault, or a weak magnet's, was in the part that
+// was swapped.
 func tellSwap(out io.Writer, ds []compare.Difference, part kick.Swapped) error {
-	for i := range ds {
-		if d := &ds[i]; d.Key == "kick.energy" && !math.IsNaN(d.Ratio) {
-			words, _ := kick.Swap(d.Ratio, d.URatio, part)
-			fmt.Fprintln(out, words)
-			return nil
+	keys := []string{"kick.energy"}
+	if part == kick.Magnet { // of a toy without a coil it shows in what the magnets do to each other
+		keys = append(keys, "match.product", "match.moment")
+	}
+	for _, key := range keys {
+		for i := range ds {
+			if d := &ds[i]; d.Key == key && !math.IsNaN(d.Ratio) {
+				what := "kick"
+				if key != "kick.energy" {
+					what = strings.ToLower(d.Name[:1]) + d.Name[1:]
+				}
+				words, _ := kick.Swap(d.Ratio, d.URatio, part, what)
+				fmt.Fprintln(out, words)
+				return nil
+			}
 		}
 	}
 	return fmt.Errorf("the results do not both tell the energy of a kick, so that the swap of the %s cannot be judged; film both with ten seconds without the battery", part)
+}
+
+// drawDifferences draws the relative differences, those that differ first.
+func drawDifferences(path, a, b string, opt compare.Options, ds []compare.Difference) error {
+	var rows []plots.Change
+	for i := range ds {
+		d := &ds[i]
+		if math.IsNaN(d.Ratio) || math.IsNaN(d.URatio) {
+			continue
+		}
+		k := (d.Hi - d.D) / d.U // the factor of the 95 % interval
+		c := plots.Change{Name: d.Name, Value: d.Ratio, Lo: d.Ratio - k*d.URatio, Hi: d.Ratio + k*d.URatio, Differs: d.Apart}
+		if d.Subject != "" {
+			c.Name = d.Subject + ": " + d.Name
+		}
+		alone := k * math.Hypot(d.UA*d.B/d.A, d.UB) / math.Abs(d.A)
+		c.Wide = [2]float64{math.Min(c.Lo, d.Ratio-alone), math.Max(c.Hi, d.Ratio+alone)}
+		rows = append(rows, c)
+	}
+	if len(rows) == 0 {
+		return errors.New("no number of both results has a relative difference to draw")
+	}
+	slices.SortStableFunc(rows, func(x, y plots.Change) int {
+		switch {
+		case x.Differs == y.Differs:
+			return 0
+		case x.Differs:
+			return -1
+		}
+		return 1
+	})
+	const most = 16
+	caption := "Each line is the 95 % interval of how much the second result differs from the first."
+	if len(rows) > most {
+		rows, caption = rows[:most], caption+" Those that differ come first; the rest is in the list."
+	}
+	if opt.SameRig {
+		caption += " Errors of the rig's masses and lengths shift both alike and were left out."
+	}
+	svg, png, err := plots.Differences(fmt.Sprintf("How much %s differs from %s", b, a), caption, rows)
+	if err != nil {
+		return fmt.Errorf("the differences cannot be drawn: %w", err)
+	}
+	switch strings.ToLower(filepath.Ext(path)) {
+	case ".svg":
+		return writeWhole(path, svg)
+	case ".png":
+		return writeWhole(path, png)
+	}
+	return wrongUse("--figure takes a file that ends in .svg or .png, not %q", path)
 }
 
 // differencesJSON writes the differences for machines; a number that is not known
