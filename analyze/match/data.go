@@ -55,6 +55,7 @@ type clipData struct {
 	watched  []watched
 	obs      []observation
 	segments []segment
+	cutAt    [2]float64 // where the toy was taken to be when these were made
 	left     []interval // what is left out: a hand
 	slow     []slowPass // where the motion after has no bond with the motion before
 	dims     int        // rows per observation

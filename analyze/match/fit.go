@@ -64,15 +64,23 @@ func (f *fitter) fit(ctx context.Context) error {
 // approach brings free stretches together into one motion near the optimum.
 func (f *fitter) approach(ctx context.Context) error {
 	f.bind = math.Inf(1)
-	// First what is asked for, on free stretches.
-	hold := func(held bool) {
+	// On free stretches, first where each begins and where the toy is in the picture,
+	// then with what is asked for, in the end with all.
+	const nothing, asked, all = 0, 1, 2
+	descend := func(free, rounds int, enough float64) error {
 		for j := range f.params {
-			q := &f.params[j]
-			q.held = held && q.nuisance && q.role != byShiftX && q.role != byShiftZ
+			if q := &f.params[j]; q.role != byShiftX && q.role != byShiftZ {
+				known := q.nuisance || q.prior && !q.gauge && !q.asked
+				q.held = free == nothing || free == asked && known
+			}
 		}
+		return f.descend(ctx, rounds, enough, false)
 	}
 	f.tol = 1e-8
-	for range 3 { // again where a hand was found in the clip
+	for c := range f.clips {
+		f.anchor(c)
+	}
+	for range 4 { // again where a hand was found in the clip, or the toy elsewhere
 		for c := range f.clips {
 			span := math.Max(firstSpan, 12*f.clips[c].step())
 			if err := f.starts(c, span); err != nil {
@@ -80,20 +88,24 @@ func (f *fitter) approach(ctx context.Context) error {
 			}
 		}
 		f.typical()
-		hold(true)
-		if err := f.descend(ctx, 40, 1e-3, false); err != nil {
+		if err := f.seat(ctx); err != nil {
+			return err
+		}
+		if err := descend(nothing, 4, 0.1); err != nil {
+			return err
+		}
+		if err := descend(asked, 40, 1e-3); err != nil {
 			return err
 		}
 		again, err := f.findHands(ctx)
 		if err != nil {
 			return err
 		}
-		if !again {
+		if !again && !f.elsewhere() {
 			break
 		}
 	}
-	hold(false)
-	if err := f.descend(ctx, 8, 1e-2, false); err != nil {
+	if err := descend(all, 8, 1e-2); err != nil {
 		return err
 	}
 	if f.reweigh(); f.scatter < plainMisfit { // single samples that lie far out must not lead

@@ -14,7 +14,8 @@ type segment struct {
 	t0, t1   float64
 	from, to int // observations
 	y        []float64
-	broken   bool // no continuity with the stretch that follows
+	others   [][]float64 // further states in which it may begin
+	broken   bool        // no continuity with the stretch that follows
 
 	seen              // what the last computation gave
 	spare seen        // of a step that is tried

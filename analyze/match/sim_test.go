@@ -73,6 +73,14 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 	if where == nil {
 		where = func(t float64, state []float64) { path.At(t, state) }
 	}
+	// What stands in the picture's middle is the track's origin, as in a clip.
+	middle := [3]float64{}
+	if c := rig.XYZ(r.Film.CentreM); len(r.Film.CentreM) > 0 && len(r.Scale.OriginPX) == 0 {
+		middle = c
+		if r.Camera.FromAbove { // the plane is at its own height there
+			middle[2] = 0
+		}
+	}
 	rnd := rand.New(rand.NewPCG(o.seed, 1))
 	tr := &track.Track{Cal: cal, BrokeAt: math.NaN()}
 	var pos [][3]float64
@@ -91,7 +99,7 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 			for range 4 {
 				where(tt, state)
 				pos = m.Positions(state, pos)
-				u, w = cam.BobToPixel(pos[b][0], pos[b][1]-q.DepthM.Or(0), pos[b][2], radius)
+				u, w = cam.BobToPixel(pos[b][0]-middle[0], pos[b][1]-middle[1]-q.DepthM.Or(0), pos[b][2]-middle[2], radius)
 				tt = at + cam.RowTime(u, w)
 			}
 			s := track.Sample{Frame: i, T: tt, State: track.Seen}

@@ -211,6 +211,7 @@ func (f *fitter) starts(c int, span float64) error {
 	nv := m.Freedoms()
 	var times []float64
 	var states [][]float64
+	var others [][][]float64
 	before, after := m.Rest(), m.Rest()
 	d := make([]float64, 2*nv)
 	h := 1.5 * step
@@ -219,37 +220,54 @@ func (f *fitter) starts(c int, span float64) error {
 		if t < next-step/2 || busy != nil && busy[i] || t > k.obs[len(k.obs)-1].t-3*step {
 			continue
 		}
-		y := poses[i]
-		copy(before, y)
-		copy(after, y)
-		t0, t1 := t, t
-		if s.look(t - h) {
-			s.solve(before, 10)
-			t0 = t - h
-		}
-		if s.look(t + h) {
-			s.solve(after, 10)
-			t1 = t + h
-		}
-		z := append([]float64(nil), y...)
-		for v := range nv {
-			z[len(y)-f.auxOf(c)-nv+v] = 0
-		}
-		if t1 > t0 {
-			m.Deviation(before, after, d)
-			for v := range nv {
-				d[nv+v], d[v] = d[v]/(t1-t0), 0
+		// The speeds come from the pose a little before and a little after.
+		begin := func(y []float64) []float64 {
+			copy(before, y)
+			copy(after, y)
+			t0, t1 := t, t
+			if s.look(t - h) {
+				s.solve(before, 10)
+				t0 = t - h
 			}
-			m.Displace(z, d)
+			if s.look(t + h) {
+				s.solve(after, 10)
+				t1 = t + h
+			}
+			z := append([]float64(nil), y...)
+			for v := range nv {
+				z[len(y)-f.auxOf(c)-nv+v] = 0
+			}
+			if t1 > t0 {
+				m.Deviation(before, after, d)
+				for v := range nv {
+					d[nv+v], d[v] = d[v]/(t1-t0), 0
+				}
+				m.Displace(z, d)
+			}
+			m.Normalise(z)
+			return z
 		}
-		m.Normalise(z)
-		times, states = append(times, t), append(states, z)
-		next = k.resume(t, t+span)
+		times, states = append(times, t), append(states, begin(poses[i]))
+		var also [][]float64
+		for w := range k.watched {
+			if y, ok := s.mirrored(poses[i], w); ok && s.look(t) {
+				s.solve(y, 20)
+				also = append(also, begin(y))
+			}
+		}
+		others = append(others, also)
+		next = t + span
 	}
 	if len(times) == 0 {
 		return fmt.Errorf("no moment of the clip%s shows all bobs for long enough while no coil pushes", k.its(""))
 	}
 	f.cut(c, times, states)
+	if jx, jz := f.shift(c); jx >= 0 {
+		k.cutAt = [2]float64{f.params[jx].value, f.params[jz].value}
+	}
+	for i := range k.segments {
+		k.segments[i].others = others[i]
+	}
 	return nil
 }
 

@@ -126,3 +126,6 @@ func (m *Model) TurnOwn(y []float64, v int, by float64) {
 	s, c := math.Sincos(by)
 	w[0], w[1] = c*w[0]+s*w[1], c*w[1]-s*w[0]
 }
+
+// OnBase tells whether part k is on the base, not on another part.
+func (m *Model) OnBase(k int) bool { return m.bodies[k].parent < 0 }
