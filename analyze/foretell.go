@@ -77,7 +77,7 @@ func (w *work) weigh(regime *finding.Finding, l chaos.Value) {
 	irregular := w.regime.Kind == chaos.Chaotic || w.regime.Kind == chaos.Irregular
 	switch chaotic := l.V > 4*l.U && l.V*w.regime.PeriodS > 0.02; {
 	case chaotic && irregular:
-		regime.Evidence = append(regime.Evidence, fmt.Sprintf("The toy's model, run on for %.0f s, is chaotic as well: a small difference grows at a rate of %s.", modelRun, rate))
+		regime.Evidence = append(regime.Evidence, fmt.Sprintf("The toy's model, run on for %.0f s, is chaotic: a small difference grows at a rate of %s.", modelRun, rate))
 		if w.regime.Kind == chaos.Irregular {
 			regime.Text += fmt.Sprintf(" Its model is chaotic: an error of prediction grows tenfold in %.2g s.", math.Ln10/l.V)
 		}

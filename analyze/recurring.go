@@ -35,20 +35,20 @@ func recurring(ctx context.Context, w *work) error {
 	}
 	subject := w.onlyPart()
 	turn := max(1, int(math.Round(e.PeriodS/e.States.Step)))
-	// Whatever swings passes any place quickly: alike are passages that stay so for
-	// half a turn, and it lingers where it stays for an eighth of one.
-	opt := recurrence.Options{Norm: recurrence.Euclidean, Rate: likePairs, Theiler: turn, LMin: max(2, turn/2), VMin: max(2, turn/8), Map: plotSide}
+	// Whatever swings passes any place quickly: alike are passages that stay so for an
+	// eighth of a turn, and it lingers where it stays for a quarter of one.
+	opt := recurrence.Options{Norm: recurrence.Euclidean, Rate: likePairs, Theiler: turn, LMin: max(2, turn/8), VMin: max(2, turn/4), Map: plotSide}
 	p, err := recurrence.Auto(e.States, opt)
 	if err != nil {
 		return err
 	}
 	w.rec.Findings = append(w.rec.Findings, p.Findings(subject)...)
 	w.rec.Curves = append(w.rec.Curves, p.Curves(subject)...)
-	window := max(4*turn, e.States.N/8, 64)
+	window := max(min(10*turn, e.States.N/3), e.States.N/8, 64)
 	if c, err := recurrence.Sliding(e.States, window, max(1, window/6), opt); err == nil && len(c.Time) >= 4 { // a shorter clip has no course
 		w.rec.Curves = append(w.rec.Curves, c.Curve(subject))
 	}
-	if c, ok := e.Section(subject, w.whole.Names); ok {
+	if c, ok := w.section(); ok {
 		w.rec.Curves = append(w.rec.Curves, c)
 	}
 	if e.Delay != nil {

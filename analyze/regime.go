@@ -49,8 +49,7 @@ func regime(ctx context.Context, w *work) error {
 // wholeMotion is the motion of all measured parts together.
 type wholeMotion struct {
 	chaos.Motion
-	Names []string // of the columns, as people call them
-	Parts []int    // the part of each column, as an index of w.angles
+	Parts []int // the part of each column, as an index of w.angles
 }
 
 // wholeMotion gathers what is known of all parts at the moments of the one that was
@@ -66,9 +65,9 @@ func (w *work) wholeMotion() (*wholeMotion, error) {
 	}
 	m := &wholeMotion{}
 	m.T = w.angles[most].T
-	add := func(part int, name string, t, y []float64, u float64) {
+	add := func(part int, t, y []float64, u float64) {
 		m.Columns = append(m.Columns, chaos.Resample(t, y, m.T))
-		m.Names, m.Parts = append(m.Names, name), append(m.Parts, part)
+		m.Parts = append(m.Parts, part)
 		m.U = math.Max(m.U, u)
 	}
 	for i := range w.angles {
@@ -80,20 +79,29 @@ func (w *work) wholeMotion() (*wholeMotion, error) {
 			if err != nil {
 				return nil, err
 			}
-			add(i, a.Part+", sideways", a.T, x, ux)
-			add(i, a.Part+", up", a.T, z, ux)
-		case slices.Max(a.Angle)-slices.Min(a.Angle) > 2*math.Pi:
-			sin, cos := make([]float64, len(a.T)), make([]float64, len(a.T))
-			for k, q := range a.Angle {
-				sin[k], cos[k] = math.Sincos(q)
-			}
-			add(i, "sine of "+a.Part, a.T, sin, u)
-			add(i, "cosine of "+a.Part, a.T, cos, u)
+			add(i, a.T, x, ux)
+			add(i, a.T, z, ux)
+		case goesRound(a):
+			sin, cos := sinCos(a.Angle)
+			add(i, a.T, sin, u)
+			add(i, a.T, cos, u)
 		default:
-			add(i, a.Part, a.T, a.Angle, u)
+			add(i, a.T, a.Angle, u)
 		}
 	}
 	return m, nil
+}
+
+// goesRound tells whether a part goes all the way round, so that its angle grows
+// and grows.
+func goesRound(a *series.Angle) bool { return slices.Max(a.Angle)-slices.Min(a.Angle) > 2*math.Pi }
+
+func sinCos(angle []float64) (sin, cos []float64) {
+	sin, cos = make([]float64, len(angle)), make([]float64, len(angle))
+	for k, q := range angle {
+		sin[k], cos[k] = math.Sincos(q)
+	}
+	return sin, cos
 }
 
 // places are where a ball joint's bob was in the plane of motion when its angle

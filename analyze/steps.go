@@ -181,9 +181,14 @@ func spectra(ctx context.Context, w *work) error {
 	for i := range w.angles {
 		a := &w.angles[i]
 		told[a.Bob] = true
-		w.spectrum(a.Part, a.T, a.Angle, a.UAngle, spectrum.Options{
-			UClock: a.UClock, Unit: "rad", Quantity: "angle", ShowUnit: "°", ShowFactor: 1 / degree,
-		})
+		if goesRound(a) {
+			sin, _ := sinCos(a.Angle)
+			w.spectrum(a.Part, a.T, sin, a.UAngle, spectrum.Options{UClock: a.UClock, Unit: "1", Quantity: "sine of the angle"})
+		} else {
+			w.spectrum(a.Part, a.T, a.Angle, a.UAngle, spectrum.Options{
+				UClock: a.UClock, Unit: "rad", Quantity: "angle", ShowUnit: "°", ShowFactor: 1 / degree,
+			})
+		}
 		if ctx.Err() != nil {
 			return ctx.Err()
 		}

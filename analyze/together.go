@@ -17,7 +17,13 @@ func together(ctx context.Context, w *work) error {
 		opt.UClock = a.UClock
 		t, y, u, _ := averaged(a.T, a.Angle, a.UAngle)
 		b := modes.Bob{Name: a.Part, T: t, Y: y, U: u}
-		bobs = append(bobs, b)
+		opt.Unit, opt.Quantity, opt.ShowUnit, opt.ShowFactor = "rad", "angle", "°", 1/degree
+		if goesRound(a) { // no mode of small motion, but a spectrum of its sideways motion
+			b.Y, _ = sinCos(y)
+			opt.Unit, opt.Quantity, opt.ShowUnit, opt.ShowFactor = "1", "sine of the angle", "", 0
+		} else {
+			bobs = append(bobs, b)
+		}
 		if w.decaysFreely(a.Part) {
 			continue
 		}
@@ -31,6 +37,7 @@ func together(ctx context.Context, w *work) error {
 			return ctx.Err()
 		}
 	}
+	opt.Unit, opt.Quantity, opt.ShowUnit, opt.ShowFactor = "rad", "angle", "°", 1/degree
 	if len(bobs) < 2 {
 		return nil
 	}

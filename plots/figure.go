@@ -20,6 +20,7 @@ import (
 // drawing is one figure that can be drawn on any canvas of its size.
 type drawing struct {
 	name    string // of the file, without ending
+	key     string // of its first curve; empty for none
 	subject string
 	title   string
 	caption string
@@ -29,12 +30,12 @@ type drawing struct {
 
 // figureShown is a figure as the report shows it.
 type figureShown struct {
-	Name, Title, Caption string
-	SVG                  []byte
+	Name, Key, Title, Caption string
+	SVG                       []byte
 }
 
 func (d *drawing) shown(svg []byte) figureShown {
-	return figureShown{d.name, d.title, d.caption, svg}
+	return figureShown{d.name, d.key, d.title, d.caption, svg}
 }
 
 // svg draws the figure as a stand-alone SVG file.
@@ -68,7 +69,7 @@ func title(c *finding.Curve) string {
 // curveDrawing draws curves of one subject above each other, with a common
 // first axis where there are several.
 func curveDrawing(curves []*finding.Curve) drawing {
-	d := drawing{name: record.FileName(curves[0].Key, curves[0].Subject), subject: curves[0].Subject, title: title(curves[0]), w: width}
+	d := drawing{name: record.FileName(curves[0].Key, curves[0].Subject), key: curves[0].Key, subject: curves[0].Subject, title: title(curves[0]), w: width}
 	for _, c := range curves {
 		d.caption = strings.TrimSpace(d.caption + " " + c.Caption)
 	}

@@ -44,7 +44,7 @@ func newLegend(c *finding.Curve, styles []look) legend {
 		l.items = append(l.items, legendItem{line.Name, styles[i], line.Lo != nil, x, row})
 		x += w
 	}
-	if len(l.items) < 2 {
+	if len(l.items) < 2 && c.Grid == nil || len(l.items) == 0 {
 		l.items = nil // the title says what a single line is
 		return l
 	}

@@ -31,6 +31,7 @@ type page struct {
 	Cautions []string
 	Groups   []group
 	HasU     bool
+	Behaves  *behaviour // nil where no regime was told
 	Figures  []figureOnPage
 	Laws     []laws
 	Budgets  []budget
@@ -60,6 +61,12 @@ type figureOnPage struct {
 	Number         int
 	Title, Caption string
 	SVG            template.HTML
+}
+
+// onPage gives a figure its number.
+func (f *figureShown) onPage(number int) figureOnPage {
+	// The SVG is our own drawing; every text in it was escaped there.
+	return figureOnPage{number, f.Title, whole(f.Caption), template.HTML(f.SVG)}
 }
 
 type laws struct {
@@ -123,10 +130,11 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 			}
 		}
 	}
-	p.Groups, p.HasU = groups(r.Findings)
-	for i, f := range figures {
-		// The SVG is our own drawing; every text in it was escaped there.
-		p.Figures = append(p.Figures, figureOnPage{i + 1, f.Title, whole(f.Caption), template.HTML(f.SVG)})
+	behaves, others, rest := apart(r.Findings, figures)
+	p.Behaves = behaves
+	p.Groups, p.HasU = groups(others)
+	for i, f := range rest {
+		p.Figures = append(p.Figures, f.onPage(len(figures)-len(rest)+i+1))
 	}
 	for _, f := range r.Fits {
 		if len(f.Candidates) > 0 {

@@ -83,6 +83,10 @@ func looks(c *finding.Curve) []look {
 		case finding.Residual:
 			out[i] = look{ink: dataInks[n%len(dataInks)], width: 0.8, dots: true, size: dotSize}
 		default:
+			if c.Grid != nil { // seen on light and on dark cells
+				out[i] = look{ink: modelInks[n%len(modelInks)], dash: dashes[n%len(dashes)], width: 1.3}
+				break
+			}
 			out[i] = look{ink: dataInks[n%len(dataInks)], dash: dashes[n%len(dashes)], width: 0.9, dots: hasModel, size: 2.2} // seen on both sides of the model
 		}
 	}

@@ -37,7 +37,7 @@ func (d *Divergence) Curve(subject string) finding.Curve {
 		return out
 	}
 	c := finding.Curve{
-		Key: "divergence", Subject: subject, Title: "How near states part: " + subject,
+		Key: "divergence", Subject: subject, Title: "How nearly equal moments part",
 		Caption: "Distance of states that were near at first, over the size of the motion, against time. A straight rise on this scale is exponential growth, the mark of chaos: " + d.Why + ".",
 		X:       finding.Axis{Label: "time", Unit: "s"},
 		Y:       finding.Axis{Label: "distance over size of the motion", Unit: "1", Log: true},
@@ -75,7 +75,7 @@ func (z *ZeroOne) Finding(subject string) finding.Finding {
 // chaos.
 func (z *ZeroOne) Curve(subject string) finding.Curve {
 	return finding.Curve{
-		Key: "zero_one", Subject: subject, Title: "0–1 test: " + subject,
+		Key: "zero_one", Subject: subject, Title: "0–1 test",
 		Caption: fmt.Sprintf("The path that the 0–1 test draws from the motion. A bounded figure: regular; a random walk: chaotic. K = %.2f.", z.K.V),
 		X:       finding.Axis{Label: "p", Unit: "1"}, Y: finding.Axis{Label: "q", Unit: "1"},
 		Lines: []finding.Line{{Name: "path", Role: finding.Data, X: z.P, Y: z.Q}},
@@ -98,7 +98,7 @@ func (c *Correlation) Finding(subject string) finding.Finding {
 // unit is that of the series.
 func (c *Correlation) Curve(subject, unit string) finding.Curve {
 	out := finding.Curve{
-		Key: "dimension", Subject: subject, Title: "Correlation dimension: " + subject,
+		Key: "dimension", Subject: subject, Title: "Correlation dimension",
 		Caption: "Local slope of the number of near states against their distance, one line per embedding dimension. Where lines of several dimensions lie level on each other, their height is the dimension: " + c.Why + ".",
 		X:       finding.Axis{Label: "distance", Unit: unit, Log: true},
 		Y:       finding.Axis{Label: "slope", Unit: "1"},
@@ -131,7 +131,7 @@ func (d *Delay) Curve(subject string, step float64) finding.Curve {
 		x[i] = float64(i) * step
 	}
 	return finding.Curve{
-		Key: "delay", Subject: subject, Title: "Choice of the delay: " + subject,
+		Key: "delay", Subject: subject, Title: "Choice of the delay",
 		Caption: fmt.Sprintf("How much a sample tells of one that comes later. The delay taken is %.3g s: %s.", d.S, d.Why),
 		X:       finding.Axis{Label: "delay", Unit: "s"}, Y: finding.Axis{Label: "mutual information", Unit: "1"},
 		Lines: []finding.Line{
@@ -148,7 +148,7 @@ func (d *Dimension) Curve(subject string) finding.Curve {
 		x[i] = float64(i + 1)
 	}
 	return finding.Curve{
-		Key: "false_neighbours", Subject: subject, Title: "Choice of the dimension: " + subject,
+		Key: "false_neighbours", Subject: subject, Title: "Choice of the dimension",
 		Caption: fmt.Sprintf("Share of neighbours that are near only because too few values were taken together. %d are taken: %s.", d.Dim, d.Why),
 		X:       finding.Axis{Label: "values taken together", Unit: "1"}, Y: finding.Axis{Label: "share of false neighbours", Unit: "1"},
 		Lines: []finding.Line{{Name: "false neighbours", Role: finding.Data, X: x, Y: d.False}},

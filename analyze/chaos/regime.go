@@ -72,8 +72,9 @@ type Regime struct {
 	Divergence *Divergence
 	ZeroOne    *ZeroOne
 	Surrogates *Surrogates
-	slows      bool // its speed falls, whatever its amplitude does
+	slows      bool // its speed falls more than its amplitude
 	dies       bool // it beats, and dies down
+	dying      bool // its speed falls
 	wild       int  // the column that lines explain least
 	spectrum   *spectrum.Spectrum
 }
@@ -106,6 +107,9 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		return nil, err
 	}
 	r := &Regime{Kind: Unknown}
+	if from, to := m.T[0], m.T[len(m.T)-1]; e.step*float64(e.n) < 0.8*(to-from) {
+		r.Cautions = append(r.Cautions, fmt.Sprintf("There are gaps: this was judged from the longest stretch without one, from %.1f s to %.1f s.", e.from, e.from+e.step*float64(e.n-1)))
+	}
 	size := e.size()
 	if size < 5*m.U || size == 0 {
 		r.Kind, r.Confidence = AtRest, 0.95
@@ -173,8 +177,9 @@ func (r *Regime) describe(e *evenly, u float64) {
 		}
 	}
 	if pace, uPace := e.pace(r.PeriodS); pace < -2*decayed && pace < -4*uPace {
+		r.slows = pace < r.Change-decayed // a part that goes round keeps its amplitude
+		r.dying = true
 		r.Change = min(r.Change, pace)
-		r.slows = true
 	}
 	r.RepeatS, r.Mismatch = e.repeats(r.PeriodS, u)
 	if math.Abs(r.Change) > decayed && r.RestsS == 0 {
@@ -201,9 +206,9 @@ func settled(at, amp []float64, end float64) float64 {
 
 // decide sets the kind, with the tests for chaos where they are called for.
 func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
-	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple || r.RestsS > 0 || r.slows
+	decays := r.Change < -decayed && -r.Change > 1.5*r.Ripple || r.RestsS > 0 || r.dying
 	grows := r.Change > decayed && r.Change > 1.5*r.Ripple
-	smooth := r.Jump < regularJump && (r.Explained > regularLines || r.slows && r.Jump < regularJump/2)
+	smooth := r.Jump < regularJump && (r.Explained > regularLines || r.dying && r.Jump < regularJump/2)
 	lines := r.lines()
 	regular := smooth || r.Explained > explained
 	switch {
@@ -245,7 +250,10 @@ func (r *Regime) margin() float64 {
 		}
 		return min(1, math.Abs(math.Log(x/limit))/math.Ln2)
 	}
-	c := away(math.Abs(r.Change), decayed)
+	c := 1.0
+	if r.Kind != Beating && r.Kind != QuasiPeriodic {
+		c = away(math.Abs(r.Change), decayed)
+	}
 	switch r.Kind {
 	case Steady:
 		c = min(c, away(r.Ripple, steadyRipple))

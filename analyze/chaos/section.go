@@ -3,8 +3,6 @@ package chaos
 import (
 	"fmt"
 	"math"
-
-	"lodeswing/analyze/finding"
 )
 
 // Crossing says which way an event goes.
@@ -116,53 +114,4 @@ func (s *Section) Column(k int) []float64 {
 		out[i] = r[k]
 	}
 	return out
-}
-
-// Section is what the motion is each time its main column passes its middle
-// upwards: a figure of the others against its rate, or, of one column alone, of its
-// rate against that at the pass before. names are those of the motion's columns; ok
-// is false for fewer than eight passes.
-func (e *Embedded) Section(subject string, names []string) (c finding.Curve, ok bool) {
-	v := e.even
-	x := v.columns[v.main]
-	mean, _ := meanSD(x)
-	// The rate over a tenth of a turn, which noise hardly touches.
-	h := max(1, int(e.PeriodS/20/v.step))
-	rate := make([]float64, v.n)
-	for i := range rate {
-		a, b := max(0, i-h), min(v.n-1, i+h)
-		rate[i] = (x[b] - x[a]) / (float64(b-a) * v.step)
-	}
-	other := -1
-	widest := 0.0
-	for k, col := range v.columns {
-		if _, sd := meanSD(col); k != v.main && sd > widest {
-			other, widest = k, sd
-		}
-	}
-	columns := [][]float64{x, rate}
-	if other >= 0 {
-		columns = append(columns, v.columns[other])
-	}
-	s, err := Cut(v.times(), columns, 0, mean, Up)
-	if err != nil || len(s.T) < 8 {
-		return c, false
-	}
-	speed := s.Column(1)
-	c = finding.Curve{
-		Key: "section", Subject: subject, Title: "At each pass through the middle",
-		Y: finding.Axis{Label: "rate at a pass", Unit: "rad/s", ShowUnit: "°/s", ShowFactor: 180 / math.Pi},
-	}
-	const reading = " (a Poincaré section). One spot: the same swing over and over; a closed line: several steady swings at once; a row of dots that moves: it dies down or gathers; dots scattered over a shape: irregular motion."
-	if other < 0 {
-		c.X = finding.Axis{Label: "rate at the pass before", Unit: "rad/s", ShowUnit: "°/s", ShowFactor: 180 / math.Pi}
-		c.Caption = "One dot for each time that it passes its middle to the right: how fast, against how fast the time before" + reading
-		c.Lines = []finding.Line{{Name: "passes", Role: finding.Mark, X: speed[:len(speed)-1], Y: speed[1:]}}
-		return c, true
-	}
-	c.X = finding.Axis{Label: names[other] + " at a pass", Unit: "rad", ShowUnit: "°", ShowFactor: 180 / math.Pi}
-	c.Y.Label = "rate of " + names[v.main]
-	c.Caption = fmt.Sprintf("One dot for each time that %s passes its middle upwards: its rate, and where %s is then", names[v.main], names[other]) + reading
-	c.Lines = []finding.Line{{Name: "passes", Role: finding.Mark, X: s.Column(2), Y: speed}}
-	return c, true
 }

@@ -16,10 +16,9 @@ type Embedded struct {
 	// it is too short or too regular for them.
 	Delay     *Delay
 	Dimension *Dimension
-	Thinned   int     // of so many samples one was kept
-	even      *evenly // not thinned
-	kept      []int   // the motion's columns that move at all, in order
-	each      int     // values of a column in a state
+	Thinned   int   // of so many samples one was kept
+	kept      []int // the motion's columns that move at all, in order
+	each      int   // values of a column in a state
 }
 
 // Of are the states of some of the motion's columns alone; ok is false when none of
@@ -81,7 +80,6 @@ func States(ctx context.Context, m Motion, most int) (*Embedded, error) {
 		thinned.n = len(x)
 		thinned.columns = append(thinned.columns, x)
 	}
-	out.even = e
 	period := out.PeriodS / thinned.step
 	if delay, dim, err := embedding(thinned.columns[thinned.main], thinned.step, period); err == nil {
 		out.Delay, out.Dimension = delay, dim

@@ -76,7 +76,7 @@ func (r *Regime) evidence() {
 	say := func(format string, a ...any) { r.Evidence = append(r.Evidence, fmt.Sprintf(format, a...)) }
 	say("It passed its middle %d times; one swing takes about %.3g s", r.Passes, r.PeriodS)
 	switch change := math.Exp(r.Change); {
-	case change < 0.97 && r.slows:
+	case r.slows:
 		say("From start to end its speed falls to %.0f %%", 100*change)
 	case change < 0.97:
 		say("From start to end its amplitude falls to %.0f %%", 100*change)
@@ -92,7 +92,7 @@ func (r *Regime) evidence() {
 	case r.Jump < regularJump:
 		say("Each swing follows from those before it: turning points come where and when their neighbours let expect, within %s of a swing", share(r.Jump))
 	case r.Explained < explained: // several oscillations at once make turning points uneven, too
-		say("A swing does not follow from those before it: turning points come off by %s of a swing or more from where and when their neighbours let expect", share(min(r.Jump, 1)))
+		say("Swings do not follow from those before them: one turning point in four lies %s or more from where and when its neighbours let expect", ofASwing(r.Jump))
 	}
 	if r.RepeatS > 0 {
 		switch {
@@ -127,6 +127,14 @@ func (r *Regime) evidence() {
 			say("It cannot be told from noise: its past foretells its future no better than that of noises with the same spectrum")
 		}
 	}
+}
+
+// ofASwing writes a share of a swing in words.
+func ofASwing(x float64) string {
+	if x >= 0.95 {
+		return "a whole swing"
+	}
+	return share(x) + " of a swing"
 }
 
 // share writes a share of one in per cent; what is under a tenth of one so.

@@ -113,7 +113,7 @@ func (res *Result) exchangeText() string {
 		if i > 0 {
 			b.WriteByte(' ')
 		}
-		fmt.Fprintf(&b, "From %.1f s to %.1f s “%s” gives %.0f %% of the energy", e.FromS, e.ToS, res.Bobs[e.Giver], 100*e.Lost)
+		fmt.Fprintf(&b, "From %.1f s to %.1f s “%s” gives %.0f %% of the energy", math.Max(0, e.FromS), e.ToS, res.Bobs[e.Giver], 100*e.Lost)
 		if e.Won > 0.8*e.Lost {
 			fmt.Fprintf(&b, " to “%s”.", res.Bobs[e.Taker])
 		} else {
@@ -226,7 +226,11 @@ func Spectrogram(b Bob, opt Options) (finding.Curve, error) {
 			}
 		}
 	}
-	grid := &finding.Grid{X: g.Time, Label: "power", Unit: opt.Unit + "²/Hz", Log: true}
+	unit := opt.Unit + "²/Hz"
+	if opt.Unit == "1" {
+		unit = "1/Hz"
+	}
+	grid := &finding.Grid{X: g.Time, Label: "power", Unit: unit, Log: true}
 	for k, f := range g.Freq {
 		if f > 3*strongest {
 			break

@@ -24,9 +24,9 @@ func (p *Plot) Findings(subject string) []finding.Finding {
 		what            string
 	}{
 		{"rate", "Recurrence rate RR", "1", m.RR, true, "share of all pairs of moments that are alike; " + chosen},
-		{"determinism", "Determinism DET", "1", m.DET, true, "share of the like pairs that stay alike for " + diagonal + " or longer: near 1 for regular motion, low for noise"},
+		{"determinism", "Determinism DET", "1", m.DET, true, "share of the like pairs that stay alike for " + diagonal + " or longer: near 1 for any motion that follows from itself, low for noise"},
 		{"mean_line", "Mean diagonal L", "s", m.L, false, "for how long two passages that are alike stay alike, on average"},
-		{"longest_line", "Longest diagonal L_max", "s", m.LMax, false, "for how long the two most alike passages stay alike"},
+		{"longest_line", "Longest diagonal L_max", "s", m.LMax, false, "for how long the two most alike passages stay alike: nearly the whole clip where the motion repeats"},
 		{"divergence", "Divergence DIV", "1/s", m.DIV, false, "one over the longest diagonal: the faster like passages part, the larger"},
 		{"entropy", "Entropy of the diagonals ENTR", "1", m.ENTR, false, "how mixed the diagonals' lengths are, in nats; 0 where all are of one length"},
 		{"laminarity", "Laminarity LAM", "1", m.LAM, true, "share of the like pairs in which the motion lingers for " + vertical + " or longer"},
@@ -63,13 +63,13 @@ func (p *Plot) Findings(subject string) []finding.Finding {
 func (p *Plot) Curves(subject string) []finding.Curve {
 	var out []finding.Curve
 	if p.Map != nil {
-		title := map[string]string{"auto": "Recurrence plot of ", "cross": "Cross recurrence plot of ", "joint": "Joint recurrence plot of "}[p.Kind] + subject
+		title := map[string]string{"auto": "Recurrence plot", "cross": "Cross recurrence plot", "joint": "Joint recurrence plot"}[p.Kind]
 		z := make([]float64, len(p.Map.Density))
 		for i, d := range p.Map.Density {
 			z[i] = math.Round(1000*float64(d)) / 1000
 		}
 		what := map[string]string{
-			"auto":  "Each dot compares two moments of the clip, one along each axis: dark where the toy does the same at both. Long unbroken diagonals: it runs through the same course again, as a regular swing does; short pieces: it repeats itself for a while and then goes another way; blocks: it lingers; dark only near the main diagonal: it changes for good, as a dying swing does.",
+			"auto":  "Each cell compares two moments of the clip, one along each axis: dark where the toy does the same at both. Long unbroken diagonals: regular; short pieces: irregular; dark blocks: it lingers.",
 			"cross": "Dark where the second, at the time below, does what the first does at the time on the left. A dark main diagonal: they move alike at the same time; diagonals beside it: one does later what the other did.",
 			"joint": "Dark where both are, at one time, where each was at the other.",
 		}[p.Kind]
@@ -91,7 +91,7 @@ func (p *Plot) Curves(subject string) []finding.Curve {
 			x, y = append(x, float64(d)*p.Step), append(y, p.Lag[d])
 		}
 		out = append(out, finding.Curve{
-			Key: "recurrence_lag", Subject: subject, Title: "Chance to be back after a time: " + subject,
+			Key: "recurrence_lag", Subject: subject, Title: "Chance to be back after a time",
 			Caption: "Share of states that are met again after each time. Peaks of full height: periodic motion; peaks that sink: it drifts or is irregular.",
 			X:       finding.Axis{Label: "time between", Unit: "s"},
 			Y:       finding.Axis{Label: "recurrence rate", Unit: "1"},
@@ -114,7 +114,7 @@ func (c *Course) Curve(subject string) finding.Curve {
 		return l
 	}
 	return finding.Curve{
-		Key: "recurrence_course", Subject: subject, Title: "Course of determinism and laminarity: " + subject,
+		Key: "recurrence_course", Subject: subject, Title: "Course of determinism and laminarity",
 		Caption: fmt.Sprintf("In windows of %.3g s, with 95 %% bands. Determinism near 1: ordered motion; falling: it becomes irregular. Laminarity: share of standstill.", c.WindowS),
 		X:       finding.Axis{Label: "time", Unit: "s"},
 		Y:       finding.Axis{Label: "share", Unit: "1"},
