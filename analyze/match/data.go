@@ -57,6 +57,7 @@ type clipData struct {
 	segments []segment
 	cutAt    [2]float64 // where the toy was taken to be when these were made
 	left     []interval // what is left out: a hand
+	battery  *switched  // nil: the same all through the clip
 	slow     []slowPass // where the motion after has no bond with the motion before
 	dims     int        // rows per observation
 }

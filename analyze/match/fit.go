@@ -101,6 +101,9 @@ func (f *fitter) approach(ctx context.Context) error {
 		if err != nil {
 			return err
 		}
+		for c := range f.clips {
+			again = f.findSwitch(c) || again
+		}
 		if !again && !f.elsewhere() {
 			break
 		}

@@ -14,6 +14,7 @@ type interval struct {
 	from, to float64
 	why      string
 	gone     []observation // what was measured there
+	worst    float64       // residual of a stretch in it
 }
 
 const (
@@ -130,6 +131,9 @@ func (k *clipData) resume(t, end float64) float64 {
 			end = h.to
 		}
 	}
+	if b := k.battery; b != nil && b.at > t && b.at < end {
+		end = b.at
+	}
 	return end
 }
 
@@ -189,6 +193,7 @@ func (f *fitter) findHands(ctx context.Context) (found bool, err error) {
 	for c := range f.clips {
 		k := &f.clips[c]
 		for _, h := range f.runs(c, limit) {
+			f.opt.log("from %.2f s to %.2f s: residuals of up to %.1f, elsewhere up to %.1f", h.from, h.to, h.worst, limit)
 			k.leaveOut(h.from, h.to, h.why)
 			found = true
 		}
@@ -238,14 +243,14 @@ func (f *fitter) runs(c int, limit float64) []interval {
 			e++
 		}
 		bad += e - s + 1
-		h := interval{from: k.segments[max(s-1, 0)].t0, to: k.segments[min(e+1, n-1)].t1}
+		h := interval{from: k.segments[max(s-1, 0)].t0, to: k.segments[min(e+1, n-1)].t1, worst: slices.Max(rms[s : e+1])}
 		switch {
 		case s <= 1:
-			h.from, h.why = k.segments[0].t0, "not the toy's own motion yet: a hand, mostly"
+			h.from, h.why = k.segments[0].t0, "not yet as the model moves: a hand, or a bob that was not seen well"
 		case e >= n-2:
-			h.to, h.why = k.obs[len(k.obs)-1].t+1, "not the toy's own motion any more: a hand, mostly"
+			h.to, h.why = k.obs[len(k.obs)-1].t+1, "no longer as the model moves: a hand, or a bob that was not seen well"
 		default:
-			h.why = "not the toy's own motion: a push by hand, mostly"
+			h.why = "not as the model moves there at other times: a push by hand, mostly"
 			if !f.passedElsewhere(c, s, e, rms, limit) {
 				return nil
 			}

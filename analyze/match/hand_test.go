@@ -114,3 +114,23 @@ func TestHandIsLeftOut(t *testing.T) {
 		})
 	}
 }
+
+// A clip in which the battery is taken out: kicks up to there, a free decay after.
+func TestBatteryTakenOutIsSeen(t *testing.T) {
+	r := sample(t, "gull")
+	tr := simulate(t, r, take{seconds: 14, noise: 0.05, seed: 22, path: handled{undrivenFrom: 8}.path(t, r, 14)})
+	res := run(t, wrong(r, 1.3), Clip{Track: tr})
+	check(t, r, res)
+	f := find(res, "match.coil_off")
+	if f == nil || !strings.Contains(f.Text, "after") {
+		t.Fatalf("the coil's going off is not told: %+v", f)
+	}
+	t.Log(f.Text)
+	if res.Scatter > clearMisfit {
+		t.Errorf("residuals %.2f times the noise", res.Scatter)
+	}
+	// Nothing of the kind in a clip that is kicked all through.
+	if f := find(run(t, r, Clip{Track: simulate(t, r, take{seconds: 8, noise: 0.05, seed: 23})}), "match.coil_off"); f != nil {
+		t.Errorf("kicked all through, and told: %s", f.Text)
+	}
+}

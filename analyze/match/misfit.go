@@ -54,7 +54,7 @@ func (f *fitter) fine(c int) (times []float64, states [][]float64) {
 		y := append([]float64(nil), g.y...)
 		for p := range parts {
 			times, states = append(times, g.t0+(g.t1-g.t0)*float64(p)/parts), append(states, append([]float64(nil), y...))
-			if err := k.model.Move(y, (g.t1-g.t0)/parts, k.undriven); err != nil {
+			if err := k.model.Move(y, (g.t1-g.t0)/parts, k.off((g.t0+g.t1)/2)); err != nil {
 				break
 			}
 		}

@@ -58,6 +58,7 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 		f.apply(c, f.clips[c].model, r.p)
 	}
 	r.leftOut()
+	r.tellSwitches()
 	r.separability()
 	r.capture(ctx)
 	if err := ctx.Err(); err != nil {

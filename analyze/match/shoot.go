@@ -116,7 +116,7 @@ func (s *shot) run(ctx context.Context, g *segment, y0 []float64, pos [][3]float
 		}
 		i++
 	}
-	err := s.m.Run(ctx, 0, s.y, (g.t1-g.t0)*stretch, toy.Options{Tol: s.f.tol, Undriven: k.undriven}, func(o *ode.Solver) error {
+	err := s.m.Run(ctx, 0, s.y, (g.t1-g.t0)*stretch, toy.Options{Tol: s.f.tol, Undriven: k.off((g.t0 + g.t1) / 2)}, func(o *ode.Solver) error {
 		for ; i < n && tau(i) <= o.Time(); i++ {
 			o.At(tau(i), s.z)
 			put(i, s.z)

@@ -188,7 +188,7 @@ func (f *fitter) merge() {
 				times, states = append(times, slow[0].t), append(states, slow[0].y)
 				slow = slow[1:]
 			}
-			afterBreak := i > 0 && k.segments[i-1].broken
+			afterBreak := i > 0 && (k.segments[i-1].broken || k.off((g.t0+g.t1)/2) != k.off((k.segments[i-1].t0+k.segments[i-1].t1)/2))
 			if len(times) == 0 || afterBreak || g.broken || g.t0-times[len(times)-1] > span-1e-9 {
 				times, states = append(times, g.t0), append(states, g.y)
 			}
