@@ -256,7 +256,7 @@ func (f *fitter) starts(c int, span float64) error {
 			}
 		}
 		others = append(others, also)
-		next = t + span
+		next = k.resume(t, t+span)
 	}
 	if len(times) == 0 {
 		return fmt.Errorf("no moment of the clip%s shows all bobs for long enough while no coil pushes", k.its(""))
