@@ -63,9 +63,9 @@ func tellsBehaviour(key string) bool {
 	return false
 }
 
-// apart takes what tells of the behaviour out of findings and figures. The section is
-// nil where no regime was told.
-func apart(all []finding.Finding, figures []figureShown) (b *behaviour, others []finding.Finding, rest []figureShown) {
+// apart takes what tells of the behaviour out of findings and figures; its figures are
+// numbered from first on. The section is nil where no regime was told.
+func apart(all []finding.Finding, figures []figureShown, first int) (b *behaviour, others []finding.Finding, rest []figureShown) {
 	var own []finding.Finding
 	for _, f := range all {
 		if tellsBehaviour(f.Key) {
@@ -92,7 +92,7 @@ func apart(all []finding.Finding, figures []figureShown) (b *behaviour, others [
 	}
 	b.Groups, _ = groups(tests)
 	b.Measures, _ = groups(measures)
-	number := 1
+	number := first
 	detail := false
 	for _, key := range ofBehaviour {
 		detail = detail || key == firstDetail

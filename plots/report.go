@@ -31,6 +31,7 @@ type page struct {
 	Cautions []string
 	Groups   []group
 	HasU     bool
+	Matched  *matched   // nil where no model was matched
 	Behaves  *behaviour // nil where no regime was told
 	Figures  []figureOnPage
 	Laws     []laws
@@ -130,8 +131,9 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 			}
 		}
 	}
-	behaves, others, rest := apart(r.Findings, figures)
-	p.Behaves = behaves
+	fits, others, rest := matching(r.Findings, r.Fits, figures, 1)
+	p.Matched = fits
+	p.Behaves, others, rest = apart(others, rest, len(figures)-len(rest)+1)
 	p.Groups, p.HasU = groups(others)
 	for i, f := range rest {
 		p.Figures = append(p.Figures, f.onPage(len(figures)-len(rest)+i+1))
@@ -143,6 +145,9 @@ func report(r *record.Record, figures []figureShown) ([]byte, error) {
 		p.Fits = append(p.Fits, fitView(f))
 	}
 	p.Budgets = budgets(r.Findings)
+	if p.Matched != nil { // its own stand in its section
+		p.Budgets = budgets(slices.DeleteFunc(slices.Clone(r.Findings), func(f finding.Finding) bool { return strings.HasPrefix(f.Key, "match.") }))
+	}
 	var b bytes.Buffer
 	if err := reportPage.Execute(&b, p); err != nil {
 		return nil, err

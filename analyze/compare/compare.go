@@ -62,7 +62,7 @@ type Difference struct {
 
 // sources of an uncertainty that both sides have in common, as budgets name them.
 var (
-	ofRig    = []string{"the rig's", "gravity", "clock", "inertia of", "weight moment of", "the bobs' places", "the scale's length"}
+	ofRig    = []string{"the rig's", "gravity", "clock", "inertia of", "weight moment of", "the weight of ", "the bobs' places", "the scale's length"}
 	ofCamera = []string{"scale", "camera", "lens", "distance", "depth", "tilt", "pan", "vertical", "focal", "read-out", "shutter"}
 )
 

@@ -94,7 +94,7 @@ func TestAdvisedClipIsWorthIt(t *testing.T) {
 	advised, promised := "", 0.0
 	for _, v := range res.Fits[0].Verdicts {
 		t.Logf("%+v", v)
-		if v.Name == "arm.friction.dry" {
+		if v.Name == "Dry friction, arm" {
 			m := regexp.MustCompile(`a second release from about (\d+)°.* about ±([0-9.]+) µN·m`).FindStringSubmatch(v.Help)
 			if m == nil {
 				t.Fatalf("no second release is advised: %+v", v)
@@ -115,7 +115,7 @@ func TestAdvisedClipIsWorthIt(t *testing.T) {
 	}
 	// The gap is known by a ruler, and after so short a clip that is the limit.
 	for _, v := range res.Fits[0].Verdicts {
-		if strings.Contains(v.Name, ".moment") && !strings.Contains(v.Why, "most by the gap to base magnet") {
+		if strings.Contains(v.Name, "moment") && !strings.Contains(v.Why, "most by the gap to base magnet") {
 			t.Errorf("that the ruler is the limit is not said: %+v", v)
 		}
 	}

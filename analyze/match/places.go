@@ -45,7 +45,7 @@ func (b *builder) part(q *rig.Part, first bool) {
 			}
 			u := math.Sqrt(g.U*g.U/(g.V*g.V) + uc*uc/(c*c) + ug*ug)
 			b.add(param{
-				address: q.Name + ".weight moment", unit: "1", source: "the weight moment of " + q.Name, clip: -1, nuisance: true,
+				address: q.Name + ".weight moment", unit: "1", source: "the weight of " + q.Name + " and its lever", clip: -1, nuisance: true,
 				targets: b.set([]string{q.Name + ".mass"}, 0, g.V), prior: true, mean: 1, u: u, value: 1,
 			})
 			// Across the lever: which way it hangs. A ball joint's part has no such way.

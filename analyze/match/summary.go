@@ -106,7 +106,7 @@ func (r *reporter) verdicts() []finding.Verdict {
 		if !q.asked || q.role != byModel {
 			continue
 		}
-		v := finding.Verdict{Name: strings.Join(q.tied, " = ")}
+		v := finding.Verdict{Name: called(q)}
 		rel := r.res.Estimates[i].U / math.Abs(q.value)
 		u, pictures, budget := r.j.of(r.fitter, r.j.unit(i))
 		switch {
@@ -179,4 +179,26 @@ func (r *reporter) together(i int) string {
 	_, a := split(r.params[i].address)
 	_, b := split(r.params[k].address)
 	return fmt.Sprintf("only %s and %s together are determined (their correlation is %.4f)", strings.ToLower(named[a][1]), strings.ToLower(named[b][1]), r.j.correlation(i, k))
+}
+
+// called is what a number is called, and of what.
+func called(q *param) string {
+	owner, what := split(q.address)
+	name := what
+	if n, ok := named[what]; ok {
+		name = n[1]
+	} else if q.moment() {
+		name = map[string]string{"moment": "Dipole moment", "remanence": "Remanence"}[what]
+	}
+	owners := []string{owner}
+	for _, a := range q.tied {
+		if o, _ := split(a); !slices.Contains(owners, o) {
+			owners = append(owners, o)
+		}
+	}
+	name += ", " + strings.Join(owners, ", ")
+	if len(owners) > 1 {
+		name += " (tied)"
+	}
+	return name
 }
