@@ -97,13 +97,17 @@ func (s *Seen) Causes() (causes []Cause, judged []string) {
 
 // magnet weighs a moment that was matched against the rig's number.
 func (s *Seen) magnet(f *finding.Finding) []Cause {
-	u := math.Hypot(f.U, usualMoment)
-	said := fmt.Sprintf("its moment comes out at %s of the rig's number", percent(1+f.Value, f.U))
-	own := strings.TrimSuffix(f.Subject, " (tied)")
-	who := "“" + own + "”"
+	off, own := f.Value, f.U
+	if f.Unit == "%" {
+		off, own = off/100, own/100
+	}
+	u := math.Hypot(own, usualMoment)
+	said := fmt.Sprintf("its moment comes out at %s of the rig's number", percent(1+off, own))
+	subject := strings.TrimSuffix(f.Subject, " (tied)")
+	who := "“" + subject + "”"
 	next := "Put in a reference magnet and film again; lodeswing compare OLD NEW --swapped magnet then says whether it was this one."
 	// What acts on it sits elsewhere; a wrong number of that one would look the same.
-	names := strings.Split(own, ", ")
+	names := strings.Split(subject, ", ")
 	var others []string
 	var part string
 	for i := range s.Rig.Magnets {
@@ -125,8 +129,8 @@ func (s *Seen) magnet(f *finding.Finding) []Cause {
 		next = "Put a reference magnet in the place of one and film again; lodeswing compare OLD NEW --swapped magnet says whether it was that one, else it is the other."
 	}
 	return []Cause{
-		{Name: "magnet weak: " + who, Fault: true, Probability: likelier(-f.Value, u, tolerated, wide), Evidence: said, Next: next},
-		{Name: "magnet strong: " + who, Probability: likelier(f.Value, u, tolerated, wide), Evidence: said},
+		{Name: "magnet weak: " + who, Fault: true, Probability: likelier(-off, u, tolerated, wide), Evidence: said, Next: next},
+		{Name: "magnet strong: " + who, Probability: likelier(off, u, tolerated, wide), Evidence: said},
 	}
 }
 
