@@ -49,7 +49,7 @@ func meaning(line string) string {
 
 // ofBehaviour are the figures of the section, in its order; those from lag on are
 // details.
-var ofBehaviour = []string{"recurrence", "modes-energy", "section", "divergence", "recurrence_course", "spectrogram", "recurrence_cross", "zero_one", "recurrence_lag", "delay", "false_neighbours"}
+var ofBehaviour = []string{"recurrence", "modes-energy", "section", "divergence", "recurrence_course", "spectrogram", "recurrence_cross", "zero_one", "recurrence_lag", "dimension", "delay", "false_neighbours"}
 
 const firstDetail = "recurrence_lag"
 

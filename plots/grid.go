@@ -208,7 +208,12 @@ func newKey(g *cells) *key {
 		digits = max(3, min(8, int(math.Ceil(math.Log10(math.Max(math.Abs(lo), math.Abs(hi))/(hi-lo))))+2))
 	}
 	number := func(x float64) string {
-		return strings.Replace(strconv.FormatFloat(x*factor, 'g', digits, 64), "-", "−", 1)
+		s, power, ok := strings.Cut(strconv.FormatFloat(x*factor, 'g', digits, 64), "e")
+		if ok {
+			n, _ := strconv.Atoi(power) // what FormatFloat writes
+			s += " × 10" + finding.Superscript(n)
+		}
+		return strings.Replace(s, "-", "−", 1)
 	}
 	k.from, k.to = number(lo), number(hi)
 	return k

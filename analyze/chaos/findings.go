@@ -151,6 +151,10 @@ func (d *Dimension) Curve(subject string) finding.Curve {
 		Key: "false_neighbours", Subject: subject, Title: "Choice of the dimension",
 		Caption: fmt.Sprintf("Share of neighbours that are near only because too few values were taken together. %d are taken: %s.", d.Dim, d.Why),
 		X:       finding.Axis{Label: "values taken together", Unit: "1"}, Y: finding.Axis{Label: "share of false neighbours", Unit: "1"},
-		Lines: []finding.Line{{Name: "false neighbours", Role: finding.Data, X: x, Y: d.False}},
+		Lines: []finding.Line{
+			{Name: "false neighbours", Role: finding.Data, X: x, Y: d.False},
+			{Name: "1 %", Role: finding.Guide, X: []float64{1, max(5, float64(len(x)))}, Y: []float64{0.01, 0.01}},
+			{Name: "taken", Role: finding.Mark, X: []float64{float64(d.Dim)}, Y: []float64{d.False[d.Dim-1]}},
+		},
 	}
 }

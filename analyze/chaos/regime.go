@@ -72,11 +72,13 @@ type Regime struct {
 	Divergence *Divergence
 	ZeroOne    *ZeroOne
 	Surrogates *Surrogates
-	slows      bool // its speed falls more than its amplitude
-	dies       bool // it beats, and dies down
-	dying      bool // its speed falls
-	wild       int  // the column that lines explain least
-	spectrum   *spectrum.Spectrum
+	// Correlation is the correlation dimension of the column that lines explain least.
+	Correlation *Correlation
+	slows       bool // its speed falls more than its amplitude
+	dies        bool // it beats, and dies down
+	dying       bool // its speed falls
+	wild        int  // the column that lines explain least
+	spectrum    *spectrum.Spectrum
 }
 
 const (

@@ -52,6 +52,11 @@ func (r *Regime) chaos(ctx context.Context, e *evenly, m Motion) error {
 		}
 		r.Cautions = append(r.Cautions, err.Error())
 	}
+	// As a figure for the reader; noise and short clips give none, and it has no vote.
+	series := thin(wild, period)
+	if r.Correlation, err = CorrelationDimension(series, max(1, r.Delay.Samples/stride(period)), 7, max(1, int(math.Ceil(period))/stride(period))); err != nil {
+		r.Cautions = append(r.Cautions, err.Error())
+	}
 	d := r.Divergence
 	parts := d.Found && d.Exponent.V > 3*d.Exponent.U
 	notNoise := r.Surrogates != nil && r.Surrogates.Rejected

@@ -173,6 +173,9 @@ func (r *Regime) Findings(subject string) []finding.Finding {
 	if r.Surrogates != nil {
 		out = append(out, r.Surrogates.Finding(subject))
 	}
+	if r.Correlation != nil {
+		out = append(out, r.Correlation.Finding(subject))
+	}
 	return out
 }
 
@@ -185,6 +188,9 @@ func (r *Regime) Curves(subject string) []finding.Curve {
 	}
 	if r.ZeroOne != nil {
 		out = append(out, r.ZeroOne.Curve(subject))
+	}
+	if r.Correlation != nil {
+		out = append(out, r.Correlation.Curve(subject, "rad"))
 	}
 	return out
 }

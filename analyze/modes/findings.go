@@ -197,11 +197,12 @@ func (res *Result) spectrumCurve() finding.Curve {
 }
 
 // shownPower is the least power of a spectrogram's shades over the greatest.
-const shownPower = 1e-5
+const shownPower = 1e-4
 
-// Spectrogram is the figure of one bob's spectrum as it changes over the clip, up
-// to 3 times the strongest frequency, in stretches of ten swings or a fifth of the
-// clip, whichever is shorter.
+// Spectrogram is the figure of one bob's spectrum as it changes over the clip, in
+// stretches of ten swings or a fifth of the clip, whichever is shorter, up to 3 times
+// the strongest frequency, or of motion so slow that this would be little, to the
+// twelfth of what such a stretch can part.
 func Spectrogram(b Bob, opt Options) (finding.Curve, error) {
 	d, err := prepare([]Bob{b})
 	if err != nil {
@@ -210,19 +211,21 @@ func Spectrogram(b Bob, opt Options) (finding.Curve, error) {
 	hz := d.band()
 	p := d.periodogram(nil, hz)
 	strongest := hz[slices.Index(p, slices.Max(p))]
-	g, err := spectrum.Moving(b.T, b.Y, b.U, math.Min(10/strongest, d.span/5), spectrum.Options{
-		MaxFreq: math.Min(3*strongest, 0.5/d.step), UClock: opt.UClock, Unit: opt.Unit, Quantity: opt.Quantity, ShowUnit: opt.ShowUnit, ShowFactor: opt.ShowFactor,
+	stretch := math.Min(10/strongest, d.span/5)
+	top := math.Min(math.Max(3*strongest, 12/stretch), 0.5/d.step)
+	g, err := spectrum.Moving(b.T, b.Y, b.U, stretch, spectrum.Options{
+		MaxFreq: top, UClock: opt.UClock, Unit: opt.Unit, Quantity: opt.Quantity, ShowUnit: opt.ShowUnit, ShowFactor: opt.ShowFactor,
 	})
 	if err != nil {
 		return finding.Curve{}, err
 	}
 	c := g.Curve(b.Name)
 	c.Key, c.Title = "spectrogram", "Spectrum over time"
-	top := 0.0
+	most := 0.0
 	for _, row := range g.PSD {
-		for _, v := range row {
-			if v > top {
-				top = v
+		for _, v := range row[min(1, len(row)):] {
+			if v > most {
+				most = v
 			}
 		}
 	}
@@ -232,15 +235,18 @@ func Spectrogram(b Bob, opt Options) (finding.Curve, error) {
 	}
 	grid := &finding.Grid{X: g.Time, Label: "power", Unit: unit, Log: true}
 	for k, f := range g.Freq {
-		if f > 3*strongest {
+		if k == 0 { // the mean was taken out
+			continue
+		}
+		if f > top {
 			break
 		}
 		grid.Y = append(grid.Y, f)
 		for i := range g.Time {
-			grid.Z = append(grid.Z, math.Max(g.PSD[i][k], shownPower*top))
+			grid.Z = append(grid.Z, math.Max(g.PSD[i][k], shownPower*most))
 		}
 	}
 	c.Grid = grid
-	c.Caption += " Dark: much motion at that frequency and time; what is below a hundred-thousandth of the greatest is shown as that."
+	c.Caption += " Dark: much motion at that frequency and time; what is below a ten-thousandth of the greatest is shown as that."
 	return c, nil
 }
