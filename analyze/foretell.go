@@ -85,6 +85,8 @@ func (w *work) weigh(regime *finding.Finding, l chaos.Value) {
 		regime.Cautions = append(regime.Cautions, fmt.Sprintf("Later it may become chaotic: the toy's model, run on for %.0f s, does (a small difference grows at a rate of %s). A longer clip would show it.", modelRun, rate))
 	case irregular:
 		regime.Evidence = append(regime.Evidence, fmt.Sprintf("The toy's model, run on for %.0f s, shows no lasting chaos: a small difference changes at a rate of %s.", modelRun, rate))
+	case w.regime.Kind == chaos.IrregularDecaying || w.regime.Kind == chaos.IntoStep:
+		regime.Evidence = append(regime.Evidence, fmt.Sprintf("The toy's model, run on for %.0f s, is regular in the long run.", modelRun))
 	default:
 		regime.Evidence = append(regime.Evidence, fmt.Sprintf("The toy's model, run on for %.0f s, is regular as well.", modelRun))
 	}

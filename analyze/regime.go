@@ -25,7 +25,7 @@ func regime(ctx context.Context, w *work) error {
 	if err != nil {
 		return err
 	}
-	m.Never = chaos.Never(filmed)
+	m.Never, m.Undriven = chaos.Never(filmed), len(filmed.Parts) > 0 && len(filmed.Coils) == 0
 	beat := w.rec.Find("modes.beat.period", "")
 	if beat != nil {
 		m.BeatS = chaos.Value{V: beat.Value, U: beat.U}

@@ -31,6 +31,7 @@ var meanings = []struct{ begins, means string }{
 	{"Beating", "The swing of each part waxes and wanes at an even pace, because two or more regular swings of nearly the same pace run at once; where parts are coupled, energy goes from one to another and back. It looks lively, and is as regular as a clock."},
 	{"Quasi-periodic", "Several regular swings of different pace run at once. Together they never repeat exactly, yet each can be foretold for as long as one likes."},
 	{"Irregular and decaying", "The toy does not go through the same motion twice, and it runs down. What dies cannot go on being chaotic, so it is not called that, however wildly it darts about at first."},
+	{"Irregular at first", "It darts about, and then falls into step: what drives it and how it moves come to match, and from then on one course comes again and again. A push can set it free again. A toy that may fall into step at any time is chaotic only for a while."},
 	{"Irregular, but not chaotic", "The motion is uneven, but this toy is so simple that it cannot be chaotic."},
 	{"Irregular", "Swings do not follow from those before them in any simple way. That may be chaos, many swings at once, or something that pushes from outside: this clip alone does not tell which."},
 	{"Chaotic", "The toy goes by fixed rules, and nothing is left to chance, yet it cannot be foretold for long: two moments that look the same go different ways soon after, because the smallest difference between them grows and grows."},

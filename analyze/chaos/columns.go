@@ -116,6 +116,46 @@ func (e *evenly) turn(column int) float64 {
 	return 2 * median(gaps)
 }
 
+// intoStep looks for the moment from which on a motion that darted about is regular
+// and does not die, for three tenths of the time and twelve periods or more: all
+// columns then come again (every is after how long) or are explained by their lines.
+func (e *evenly) intoStep(periodS, u float64) (from, every float64, ok bool) {
+	for _, part := range []int{3, 5, 6, 7} {
+		cut := e.n * part / 10
+		rest := &evenly{from: e.from + e.step*float64(cut), step: e.step, n: e.n - cut, main: e.main}
+		if rest.step*float64(rest.n) < 12*periodS {
+			return 0, 0, false
+		}
+		for _, c := range e.columns {
+			rest.columns = append(rest.columns, c[cut:])
+		}
+		busy := rest.busy()
+		if len(busy) == 0 {
+			return 0, 0, false
+		}
+		rest.main = busy[0]
+		if rest.size() < e.size()/20 {
+			return 0, 0, false // it rests
+		}
+		if pace, _ := rest.pace(periodS); math.Abs(pace) > 2*decayed {
+			continue
+		}
+		// A little less is asked than of a steady motion: it may still be settling.
+		if after, mismatch := rest.repeats(periodS, u); mismatch < 2*repeated {
+			return rest.from, after, true
+		}
+		regular := true
+		for _, k := range busy {
+			_, explains, err := rest.lines(k, few)
+			regular = regular && err == nil && (explains > explained-0.01 || explains > regularLines && rest.unruly(k, u) < regularJump)
+		}
+		if regular {
+			return rest.from, 0, true
+		}
+	}
+	return 0, 0, false
+}
+
 // unruly is how far a column's turning points and passes lie from the course of
 // their neighbours, over its amplitude: three quarters of them lie nearer. In
 // height, and in time as the angle of a turn, since a part that goes round shows its

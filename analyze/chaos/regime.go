@@ -20,6 +20,8 @@ type Motion struct {
 	// Never says, in plain words, why this toy cannot be chaotic whatever it does
 	// as Never has it ("… cannot be"); empty: it may be.
 	Never string
+	// Undriven: by its rig nothing drives the toy, so that in the end it rests.
+	Undriven bool
 	// BeatS is the beat period in s as the modes of all parts tell it; it is told in
 	// place of that of two spectral lines of one column. 0: not known.
 	BeatS Value
@@ -39,6 +41,7 @@ const (
 	IrregularDecaying Kind = "irregular and decaying"
 	Irregular         Kind = "irregular"
 	Chaotic           Kind = "chaotic"
+	IntoStep          Kind = "irregular, then steady"
 	Unknown           Kind = "not known"
 )
 
@@ -61,7 +64,7 @@ type Regime struct {
 	RepeatS   float64 // s, after which the motion comes again most nearly (up to 20 periods)
 	Mismatch  float64 // the difference then, over that of unrelated moments
 	RestsS    float64 // s, when it comes to rest within the clip; 0 when it does not
-	SteadyS   float64 // s, from when on a swing that gathered or died at first stays the same; 0: from the start, or never
+	SteadyS   float64 // s, from when on a swing that gathered, died or darted about at first stays the same; 0: from the start, or never
 	BeatS     Value   // s, beat period; 0 when it does not beat
 	NeedS     float64 // s, how long to film to know more; 0 when it is enough
 	States    recurrence.Vectors
@@ -238,6 +241,12 @@ func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 		r.Kind = Irregular
 	}
 	r.Confidence = r.margin()
+	if !m.Undriven && (r.Kind == Irregular || r.Kind == IrregularDecaying && r.RestsS == 0) {
+		if from, every, ok := e.intoStep(r.PeriodS, m.U); ok {
+			r.Kind, r.SteadyS, r.RepeatS, r.Confidence = IntoStep, from, every, 0.85
+			return nil
+		}
+	}
 	if r.Kind == Irregular {
 		return r.chaos(ctx, e, m)
 	}

@@ -55,6 +55,12 @@ func TestRegimesByConstruction(t *testing.T) {
 		{QuasiPeriodic, 60, "", func(t float64) []float64 {
 			return []float64{0.3*math.Sin(w*t) + 0.2*math.Sin(1.618*w*t+1)}
 		}},
+		{IntoStep, 60, "", func(t float64) []float64 {
+			if t < 25 {
+				return []float64{0.4 * math.Sin(w*t+2*math.Sin(1.3*t*t/10)+3*math.Sin(0.71*w*t)), 0.2 * math.Sin(2.3*w*t+t*t/20)}
+			}
+			return []float64{0.4*math.Sin(w*t) + 0.1*math.Sin(w*t/2), 0.2 * math.Sin(w*t/2)}
+		}},
 		{Unknown, 3, "", func(t float64) []float64 { return []float64{0.4 * math.Sin(w*t)} }},
 	}
 	for _, c := range cases {
@@ -134,7 +140,7 @@ func TestRegimesOfToys(t *testing.T) {
 		never := Never(openRig(t, path))
 		rng := rand.New(rand.NewPCG(5, 6))
 		seen := watch(t, m, start, c.from, 1./60, int(60*c.seconds))
-		see := Motion{U: 1e-4, Never: never}
+		see := Motion{U: 1e-4, Never: never, Undriven: len(openRig(t, path).Coils) == 0}
 		for i, p := range seen {
 			see.T = append(see.T, float64(i)/60)
 			k := 0

@@ -79,7 +79,7 @@ func draw(t *testing.T, rng *rand.Rand, name string) (simulated, error) {
 	}
 	columns := seen(m, r, path.At, lead, s.seconds, rate)
 	n := len(columns[0])
-	s.motion = Motion{U: 3e-4, Never: Never(r)}
+	s.motion = Motion{U: 3e-4, Never: Never(r), Undriven: !s.driven}
 	if name == "buoys" { // in a measurement the modes tell it
 		if rest, ok := m.SettlesAt(m.Rest()); ok {
 			modes := m.Modes(rest.State)
@@ -162,7 +162,7 @@ func TestTableOfSimulatedClips(t *testing.T) {
 	if *long {
 		clips = 1000
 	}
-	kinds := []Kind{AtRest, Decaying, Steady, Growing, Beating, QuasiPeriodic, IrregularDecaying, Irregular, Chaotic, Unknown}
+	kinds := []Kind{AtRest, Decaying, Steady, Growing, Beating, QuasiPeriodic, IrregularDecaying, IntoStep, Irregular, Chaotic, Unknown}
 	table := map[string]map[Kind]int{}
 	type count struct{ right, all int }
 	sure := map[int]*count{} // by confidence in tenths: chaotic or regular, as it is
@@ -220,7 +220,7 @@ func TestTableOfSimulatedClips(t *testing.T) {
 		}
 		if truth == "chaotic" {
 			switch r.Kind {
-			case Decaying, Steady, Growing, Beating, QuasiPeriodic, AtRest:
+			case Decaying, Steady, Growing, Beating, QuasiPeriodic, IntoStep, AtRest:
 				missed++
 			}
 			if r.Passes >= 300 && !s.noisy {
@@ -238,7 +238,7 @@ func TestTableOfSimulatedClips(t *testing.T) {
 				sure[int(10*r.Confidence)] = c
 			}
 			c.all++
-			irregular := r.Kind == Chaotic || r.Kind == Irregular || r.Kind == IrregularDecaying
+			irregular := r.Kind == Chaotic || r.Kind == Irregular || r.Kind == IrregularDecaying || r.Kind == IntoStep
 			if truth == "chaotic" == irregular || truth == "dies" && r.Kind == IrregularDecaying {
 				c.right++
 			}

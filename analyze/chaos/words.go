@@ -46,6 +46,11 @@ func (r *Regime) words(m Motion) {
 		if r.RestsS > 0 {
 			r.Text = fmt.Sprintf("Irregular and decaying: it darts about and rests from %.3g s on.", r.RestsS)
 		}
+	case IntoStep:
+		r.Text = fmt.Sprintf("Irregular at first; from about %.2g s on it is regular and goes on.", r.SteadyS)
+		if r.RepeatS > 0 {
+			r.Text = fmt.Sprintf("Irregular at first; from about %.2g s on it is steady, the same course over and over, every %.3g s.", r.SteadyS, r.RepeatS)
+		}
 	case Chaotic:
 		d := r.Divergence
 		r.Text = fmt.Sprintf("Chaotic: an error of prediction grows tenfold in %.2g s.", math.Ln10/d.Exponent.V)
@@ -96,6 +101,8 @@ func (r *Regime) evidence() {
 	}
 	if r.RepeatS > 0 {
 		switch {
+		case r.Kind == IntoStep:
+			say("From about %.2g s to the end it runs through the same course again every %.3g s; before that it does not", r.SteadyS, r.RepeatS)
 		case r.Mismatch < repeated:
 			say("After %.3g s it runs through the same course again, to within %s", r.RepeatS, share(r.Mismatch))
 		default:
