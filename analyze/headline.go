@@ -6,6 +6,7 @@ import (
 	"strings"
 
 	"lodeswing/analyze/finding"
+	"lodeswing/analyze/record"
 	"lodeswing/track/rig"
 )
 
@@ -25,7 +26,7 @@ func headline(w *work) string {
 	if f := w.rec.Find("regime", ""); f != nil && f.Kind == finding.Statement && len(out) == 0 {
 		out = append(out, f.Text)
 	}
-	out = append(out, magnetWords(w)...)
+	out = append(out, magnetWords(w.rec)...)
 	out = append(out, frequencies(w)...)
 	if len(out) == 0 {
 		if w.track != nil {
@@ -42,11 +43,11 @@ func headline(w *work) string {
 
 // magnetWords says how strong the magnets are: each moment that is known, or
 // else the product of a pair.
-func magnetWords(w *work) []string {
+func magnetWords(rec *record.Record) []string {
 	var out []string
 	for _, key := range []string{"match.moment", "match.product"} {
-		for i := range w.rec.Findings {
-			f := &w.rec.Findings[i]
+		for i := range rec.Findings {
+			f := &rec.Findings[i]
 			if f.Key != key || f.Kind != finding.Measured {
 				continue
 			}

@@ -4,8 +4,10 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"strings"
 	"time"
 
+	"lodeswing/analyze/finding"
 	"lodeswing/analyze/match"
 	"lodeswing/analyze/record"
 	"lodeswing/analyze/series"
@@ -132,21 +134,33 @@ func FitClips(ctx context.Context, inputs []Input, r *rig.Rig, opt Options, say 
 	return rec, nil
 }
 
-// fitHeadline sums the matching up.
+// fitHeadline sums the matching up: whether the model fits, and the numbers that it is
+// mostly made for.
 func fitHeadline(rec *record.Record) string {
-	for _, key := range []string{"match.moment", "match.product"} {
-		for i := range rec.Findings {
-			f := &rec.Findings[i]
-			if f.Key == key && f.Kind == "" {
-				return fmt.Sprintf("%s of %s: %s.", f.Name, f.Subject, inWords(f))
-			}
+	if len(rec.Fits) > 0 && !rec.Fits[0].Converged {
+		return "The model was matched to the motion, but the search did not settle, so no number is told."
+	}
+	if f := rec.Find("match.cause", ""); f != nil {
+		return f.Text
+	}
+	out := magnetWords(rec)
+	for i := range rec.Findings {
+		f := &rec.Findings[i]
+		if words, ok := map[string]string{"match.kick": "Each pass over “%s” is kicked with %s.", "match.spring_rate": "The spring rate of %s is %s."}[f.Key]; ok && f.Kind == finding.Measured {
+			out = append(out, fmt.Sprintf(words, f.Subject, inWords(f)))
 		}
+	}
+	if len(out) > 0 {
+		return strings.Join(out, " ")
 	}
 	n := 0
 	for i := range rec.Findings {
-		if rec.Findings[i].Kind == "" {
+		if rec.Findings[i].Kind == finding.Measured {
 			n++
 		}
 	}
-	return fmt.Sprintf("The model was matched; %d numbers were found.", n)
+	if n == 0 {
+		return "The model was matched to the motion, but the clip determines none of the numbers asked for; the findings say why, and what would."
+	}
+	return fmt.Sprintf("The model was matched to the motion; the findings hold the %d numbers that came out of it.", n)
 }
