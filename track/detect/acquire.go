@@ -36,15 +36,32 @@ func Acquire(p *clip.Patch, c Candidate, active image.Rectangle, subsampled, bal
 			f.ball = -1
 		}
 	}
+	even := r
 	f.unlit = false
 	f.forget()
 	f.slow[2].mean = 10 * f.ball // from the camera's side, to begin with
-	if r, ok = f.closeIn(p, r); !ok {
-		return nil, r
+	r, ok = f.closeIn(p, even)
+	if !ok || wild(&r, &even) {
+		// What is not lit as a ball is, and has a pattern of its own, can lead the
+		// shading astray: it is taken as evenly bright.
+		f.unlit = true
+		f.forget()
+		f.Shape.R, f.Shape.UR = even.R, 0.06*even.R+0.3
+		f.Shape.Blur, f.Shape.UBlur = coarse, coarse
+		f.Shape.E1, f.Shape.E2, f.Shape.UE = 0, 0, 0.1
+		if r, ok = f.closeIn(p, even); !ok {
+			return nil, r
+		}
 	}
 	f.agree, f.agreeN = 1, 0
 	f.loosen()
 	return f, r
+}
+
+// wild tells whether a fit describes hardly anything that is there: its noise is
+// half of the contrast, or its level is far from what a fit without shading found.
+func wild(r, plain *Fit) bool {
+	return r.Noise > 0.5*math.Abs(r.Contrast) || math.Abs(r.Level-plain.Level) > 0.5*math.Abs(plain.Contrast)
 }
 
 // Relearn drops what was learnt of the bob's light and shape but its size, and
@@ -166,9 +183,10 @@ func projection(p *clip.Patch, c Candidate, subsampled bool) (w [3]float64, bloc
 			}
 			return math.Abs(d) / math.Sqrt(q+quantum(w)+0.25*(w[0]*w[0]+w[1]*w[1]+w[2]*w[2]))
 		}
-		// Chroma's edges are twice as soft and its samples a quarter as many: it must
-		// stand out three times as far to tell more.
-		if chroma = unit(chroma); clear(chroma) > 3*clear(luma) {
+		// Chroma's edges are twice as soft, its samples a quarter as many, and a codec
+		// spends little on them: its centres are off by a tenth of a pixel and more,
+		// the same in many frames. It is for bobs that luma hardly shows.
+		if chroma = unit(chroma); clear(luma) < 4 && clear(chroma) > 3*clear(luma) {
 			return chroma, true, true
 		}
 		return luma, false, true

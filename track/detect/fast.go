@@ -5,7 +5,7 @@ import "math"
 // The everyday pass. An outline that is little smeared is, seen from any one
 // sector, a straight edge that can only move along its normal; so each pixel
 // adds to a small set of local sums (the edge, its smear, the bob's level, its
-// shading sideways, towards the camera and beyond the lamp's horizon, the wall's level and slope), and the sums of a sector are
+// shading sideways, towards the camera and beyond the lamp's horizon, the wall's level and slope, the blur), and the sums of a sector are
 // turned into those of the whole fit with the sector's direction. Residuals are
 // those of the full model; only their derivatives are taken at the sector's
 // middle, which costs under 1 % in efficiency and no bias.
@@ -20,6 +20,7 @@ const (
 	lLit
 	lWall
 	lSlope
+	lBlur
 	lCount
 )
 
@@ -29,10 +30,10 @@ type sectorSums struct {
 	kept, all float64
 }
 
-// add adds one pixel of weight w and residual res. e, l, b, d, f, i, k, p are how
+// add adds one pixel of weight w and residual res. e, l, b, d, f, i, k, p, c are how
 // its value changes with the local parameters, in their order. Written out,
 // because this is where most of the time goes.
-func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p float64) {
+func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p, c float64) {
 	r := &s.a[lEdge]
 	q := w * e
 	r[lEdge] += q * e
@@ -43,6 +44,7 @@ func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p float64) {
 	r[lLit] += q * i
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lEdge] += q * res
 	r = &s.a[lSmear]
 	q = w * l
@@ -53,6 +55,7 @@ func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p float64) {
 	r[lLit] += q * i
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lSmear] += q * res
 	r = &s.a[lBob]
 	q = w * b
@@ -62,6 +65,7 @@ func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p float64) {
 	r[lLit] += q * i
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lBob] += q * res
 	r = &s.a[lSide]
 	q = w * d
@@ -70,6 +74,7 @@ func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p float64) {
 	r[lLit] += q * i
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lSide] += q * res
 	r = &s.a[lFront]
 	q = w * f
@@ -77,22 +82,30 @@ func (s *sectorSums) add(w, res, e, l, b, d, f, i, k, p float64) {
 	r[lLit] += q * i
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lFront] += q * res
 	r = &s.a[lLit]
 	q = w * i
 	r[lLit] += q * i
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lLit] += q * res
 	r = &s.a[lWall]
 	q = w * k
 	r[lWall] += q * k
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lWall] += q * res
 	r = &s.a[lSlope]
 	q = w * p
 	r[lSlope] += q * p
+	r[lBlur] += q * c
 	s.g[lSlope] += q * res
+	r = &s.a[lBlur]
+	q = w * c
+	r[lBlur] += q * c
+	s.g[lBlur] += q * res
 }
 
 // directions of the sectors' middles.
@@ -107,10 +120,8 @@ var directions = func() (d [sectors][2]float64) {
 const flat = 3.3 // blurs from the outline beyond which a pixel shows bob or wall alone
 
 // quick tells whether the everyday pass is good for this model: a smear that is
-// short against the radius, and the blur held.
-func (m *model) quick(on *[pCount]bool) bool {
-	return !on[pBlur] && m.l <= 2*longestPiece*m.r
-}
+// short against the radius.
+func (m *model) quick() bool { return m.l <= 2*longestPiece*m.r }
 
 // passQuick does what pass does, for models that are quick.
 func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, from [2]float64) {
@@ -151,7 +162,11 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			res := float64(q.v) - f0 - h
 			r2 := res * res
 			if !q.near {
-				cost += min(r2, most)
+				if r2 < most {
+					cost += r2
+				} else {
+					cost += most
+				}
 			}
 			t := r2 * ibob
 			if t > 16 && r2 > least {
@@ -193,7 +208,11 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			f.around[q.sec].n++
 			r2 := res * res
 			if !q.near {
-				cost += min(r2, most)
+				if r2 < most {
+					cost += r2
+				} else {
+					cost += most
+				}
 			}
 			t := r2 * iwall
 			if t > 16 && r2 > least {
@@ -215,12 +234,16 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 			s.g[lSlope] += wf * res
 			continue
 		}
-		if o.smear > 0 {
-			o.cover(x, y, &c)
-		} else {
+		switch {
+		case o.smear == 0:
 			c.alpha, c.r = edge(d * o.is)
 			c.r *= o.is
-			c.x, c.y, c.z = x, y, o.facing(x, y)
+			c.l, c.x, c.y, c.z = 0, x, y, o.facing(x, y)
+			c.s = -c.r * d * o.is
+		case o.pieces == 1:
+			c.alpha, c.r, c.l, c.s, c.x, c.y, c.z = o.coverOnce(x, y, xp, yp, rho, d)
+		default:
+			o.cover(x, y, &c)
 		}
 		nz := c.z
 		h, lit := m.lamp.light(fx*c.x + fy*c.y + fz*nz + fl)
@@ -232,7 +255,11 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		steep := edgeJ * loose
 		q2 := res * res
 		if !q.near {
-			cost += min(q2, most)
+			if q2 < most {
+				cost += q2
+			} else {
+				cost += most
+			}
 		}
 		t := q2 / (variance + steep*steep)
 		if t > 16 && q2 > misfit*step*step {
@@ -255,7 +282,7 @@ func (f *Fitter) passQuick(m *model, acc *sums, noise *scatter, loose float64, f
 		w *= iv
 		chi += w * q2
 		lit *= c.alpha
-		s.add(w, res, edgeJ, step*c.l, c.alpha, lit*far, lit*nz, lit, beta, beta*far)
+		s.add(w, res, edgeJ, step*c.l, c.alpha, lit*far, lit*nz, lit, beta, beta*far, step*c.s)
 	}
 	acc.inSum, acc.inN, acc.outSum, acc.outN = inSum, inN, outSum, outN
 	acc.cost, acc.edgeOver, acc.edgeSteep = cost, edgeOver, edgeSteep
@@ -270,9 +297,6 @@ func (f *Fitter) spreadSectors(m *model, acc *sums) {
 		acc.all[k], acc.kept[k] = s.all, s.kept
 		mult := m.multipliers(k)
 		for i := range pCount {
-			if i == pBlur {
-				continue
-			}
 			li := local[i]
 			gi := mult[i] * s.g[li]
 			acc.g[i] += gi
@@ -295,7 +319,7 @@ func (m *model) multipliers(k int) vector {
 	c, d := directions[k][0], directions[k][1]
 	return vector{
 		pU: c, pV: d, pR: 1, pSmear: 1, pF0: 1, pFx: c, pFy: d, pFz: 1, pLit: 1, pB0: 1, pBx: c, pBy: d,
-		pE1: m.r * (c*c - d*d), pE2: m.r * 2 * c * d,
+		pBlur: 1, pE1: m.r * (c*c - d*d), pE2: m.r * 2 * c * d,
 	}
 }
 
@@ -307,9 +331,7 @@ func (f *Fitter) afterStep(m *model, acc *sums, d *vector) {
 		mult := m.multipliers(k)
 		var move, g [lCount]float64
 		for i := range pCount {
-			if i != pBlur {
-				move[local[i]] += mult[i] * d[i]
-			}
+			move[local[i]] += mult[i] * d[i]
 		}
 		for a := range lCount {
 			g[a] = s.g[a]
@@ -322,18 +344,15 @@ func (f *Fitter) afterStep(m *model, acc *sums, d *vector) {
 			}
 		}
 		for i := range pCount {
-			if i != pBlur {
-				acc.score[k][i] = mult[i] * g[local[i]]
-			}
+			acc.score[k][i] = mult[i] * g[local[i]]
 		}
 	}
 }
 
-// local tells which of a sector's sums each parameter of the fit moves; the blur
-// is held.
+// local tells which of a sector's sums each parameter of the fit moves.
 var local = [pCount]int{
 	pU: lEdge, pV: lEdge, pR: lEdge, pSmear: lSmear, pF0: lBob, pFx: lSide, pFy: lSide, pFz: lFront, pLit: lLit,
-	pB0: lWall, pBx: lSlope, pBy: lSlope, pE1: lEdge, pE2: lEdge,
+	pB0: lWall, pBx: lSlope, pBy: lSlope, pBlur: lBlur, pE1: lEdge, pE2: lEdge,
 }
 
 // weigh is the weight of a residual whose square over its variance is t: full

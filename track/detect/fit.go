@@ -13,10 +13,10 @@ const (
 	mostSteps  = 20   // of Gauss–Newton; from a good prediction it takes one or two
 	mostEdge   = 5000 // pixels at the edge; of more, every second, third … is taken
 	enoughFlat = 400  // pixels that show bob or wall alone
-	// A step from this near ends so close to the minimum that a second one would
-	// not move the centre by a fiftieth of its uncertainty; see TestOneStep.
-	closeEnough = 0.1 // px
-	leastBlur   = 0.3 // px; a pixel's own width is √(1/12) = 0.29
+	// A step from this near ends closer to the minimum than half the centre's
+	// uncertainty (TestOneStepIsEnough), which a second one would not better by much.
+	closeEnough = 0.12 // px
+	leastBlur   = 0.3  // px; a pixel's own width is √(1/12) = 0.29
 )
 
 // Fitter fits one bob in one projection of the colours, frame after frame. It
@@ -41,7 +41,7 @@ type Fitter struct {
 	agree         float64 // mean factor by which sectors' residuals exceed white noise's
 	agreeN        float64
 	frames        int
-	unlit         bool    // no shading is fitted (coarsely, while closing in)
+	unlit         bool    // no shading is fitted (while closing in, and of what no lit ball explains)
 	rough         float64 // residuals that the model's known faults leave, over the contrast
 
 	px                  []pixel
@@ -145,6 +145,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	}
 	prior := f.priors(g, smear)
 	f.recallOdd(&m)
+	f.oddAt = f.oddAt[:0] // a fit that fails leaves nothing that the next should trust
 	noise := f.startLevels(&m)
 	third := (m.at(pF0) - m.at(pB0) - f.back) / 3
 	f.most = 36*math.Max(noise.bob, noise.wall) + third*third
@@ -165,7 +166,7 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 			next = &f.sums[1]
 		}
 		*next = sums{}
-		if m.quick(&on) {
+		if m.quick() {
 			f.passQuick(&m, next, &noise, loose, from)
 		} else {
 			f.pass(&m, next, &noise, loose, from, &on)
@@ -221,13 +222,12 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 			break
 		}
 	}
-	f.keepOdd(&m, from)
 	f.dimBefore = f.dimNow
 	out.fill(&m, &inv, acc, &noise, &on, f.back)
 	out.Cut = f.cut(&m)
 	out.WallWrong = f.wallWrong
 	switch {
-	case back.quick(&on):
+	case back.quick():
 		f.afterStep(&back, acc, &d)
 		f.assess(&m, &inv, acc, &on)
 	case shift < 0.02:
@@ -235,13 +235,19 @@ func (f *Fitter) Fit(p *clip.Patch, wall *Wall, g Guess, covers []Disc, free boo
 	}
 	f.frames++
 	// What the model cannot follow of a lit outline is no noise, and the same in
-	// all frames: rendered balls are off by half of this (TestFilmScenes in
+	// all frames: rendered balls are off by half of this (TestFollowedFilm in
 	// track/follow).
-	faulty := m.s * (0.004 + 0.025*f.shading()/math.Max(math.Abs(out.Contrast), 1))
-	out.Cov.AA = out.Cov.AA*f.agree + faulty*faulty
-	out.Cov.AB *= f.agree
-	out.Cov.BB = out.Cov.BB*f.agree + faulty*faulty
+	// Part of an outline has nothing to check it on the other side.
+	less := 1 + 2*(1-out.Visible)
+	faulty := m.s * (0.006 + 0.03*f.shading()/math.Max(math.Abs(out.Contrast), 1))
+	grow := f.agree * less * less
+	out.Cov.AA = out.Cov.AA*grow + faulty*faulty
+	out.Cov.AB *= grow
+	out.Cov.BB = out.Cov.BB*grow + faulty*faulty
 	out.judge(f, &m)
+	if out.OK {
+		f.keepOdd(&m, from)
+	}
 	f.remember(&m, &inv, &on, &noise, acc, &out)
 	return out
 }
@@ -435,11 +441,11 @@ func (out *Fit) fill(m *model, inv *matrix, acc *sums, n *scatter, on *[pCount]b
 // judge decides whether the fit is to be believed.
 func (out *Fit) judge(f *Fitter, m *model) {
 	switch {
-	case math.IsNaN(out.U + out.V + out.Cov.AA + out.Cov.BB):
+	case math.IsNaN(out.U + out.V + out.Cov.AA + out.Cov.BB + out.Level + out.Noise + out.UR):
 		out.Why = "the fit broke down"
 	case math.Abs(out.Contrast) < 3*out.Noise*math.Sqrt(1/math.Max(m.r, 1)) || math.Abs(out.Contrast) < 4:
 		out.Why = "no contrast between bob and wall"
-	case out.Visible < 0.3:
+	case out.Visible < 0.15 || out.Visible < 0.3 && !out.Cut:
 		out.Why = "too little of the outline is seen"
 	case out.sigma() > 0.25*m.r+0.5:
 		out.Why = "the centre is not determined"

@@ -29,8 +29,11 @@ func (f *Fitter) Learn(r *Fit) {
 	s.UBlur = math.Min(math.Hypot(s.UBlur, walkBlur), 0.5)
 }
 
-// Widen makes room in what is known of the radius for one that was seen
-// coarsely.
+// Widen makes room in what is known of the outline for one that was seen
+// coarsely and may have turned meanwhile.
 func (f *Fitter) Widen(r float64) {
-	f.Shape.UR = math.Max(f.Shape.UR, math.Abs(r-f.Shape.R)+0.02*f.Shape.R)
+	s := &f.Shape
+	s.UR = math.Max(s.UR, math.Abs(r-s.R)+0.02*s.R)
+	s.UE = math.Max(s.UE, 0.02)
+	f.uneven = math.Max(f.uneven, 0.005*s.R)
 }

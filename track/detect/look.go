@@ -67,6 +67,8 @@ type taster struct {
 	y, cr  float64 // of the colour: luma, and red and blue differences over luma
 	cb     float64
 	chroma float64
+	far    float64 // farther than this in cr and cb is another colour
+	room   float64 // of ln(luma), to either side
 	lo, hi float64 // by lightness: luma at which the score is 1 and 0 (dark: hi < lo is swapped)
 }
 
@@ -92,6 +94,8 @@ func newTaster(l Look, dark, middle, light float64) taster {
 	case ByColour:
 		t.y, t.cr, t.cb = opponent(float64(l.B), float64(l.G), float64(l.R))
 		t.chroma = math.Hypot(t.cr, t.cb)
+		t.far = 0.55*t.chroma + 0.08
+		t.room = 0.45 + math.Min(t.chroma/0.4, 1)
 	case ByDark:
 		t.lo, t.hi = dark+0.25*(middle-dark), dark+0.6*(middle-dark)
 	case ByLight:
@@ -109,13 +113,17 @@ func (t *taster) score(b, g, r float64) float64 {
 	case ByLight:
 		return clamp01((y - t.hi) / (t.lo - t.hi + 1e-9))
 	}
-	d := math.Hypot(cr-t.cr, cb-t.cb)
 	// A colour that is hardly a colour must also be about as light; a strong one
 	// may lie in shadow or in glare.
-	s := 1 - d/(0.55*t.chroma+0.08)
-	ratio := math.Abs(math.Log((y + veil) / (t.y + veil)))
-	room := 0.45 + 1.0*math.Min(t.chroma/0.4, 1)
-	return clamp01(2 * math.Min(s, 1-ratio/room))
+	dr, db := cr-t.cr, cb-t.cb
+	d2 := dr*dr + db*db
+	if d2 >= t.far*t.far {
+		return 0
+	}
+	// 2(q−1)/(q+1) is ln q to a few per cent for what is not refused anyway.
+	a, b2 := y+veil, t.y+veil
+	ratio := 2 * math.Abs(a-b2) / (a + b2)
+	return clamp01(2 * math.Min(1-math.Sqrt(d2)/t.far, 1-ratio/t.room))
 }
 
 // distance tells how far a colour is from the look's, for advice: 0 is equal.

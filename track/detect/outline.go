@@ -10,7 +10,7 @@ type outline struct {
 	m11, m12, m22      float64 // ellipse to circle
 	k11, k12, k21, k22 float64 // rolling shutter taken out
 	mu, mv             float64 // direction of the smear
-	smear              float64 // its length, px
+	smear, ismear      float64 // its length, px, and one over it
 	pieces             int     // it is averaged in so many pieces ...
 	piece              float64 // ... of this length, px ...
 	share              float64 // ... which is this part of it
@@ -32,6 +32,9 @@ func (m *model) outline() (o outline) {
 	o.mu, o.mv, o.smear = m.mu, m.mv, m.l
 	if o.smear < 0.02*m.s {
 		o.smear = 0
+	}
+	if o.smear > 0 {
+		o.ismear = 1 / o.smear
 	}
 	o.pieces = max(int(math.Ceil(o.smear/(longestPiece*m.r))), 1)
 	o.share = 1 / float64(o.pieces)
@@ -83,7 +86,7 @@ func (o *outline) cover(x, y float64, c *coverage) {
 			across := (1 - nm*nm) * ir
 			var da float64
 			alpha, dz, da = edgeSmeared(z-o.sagitta*across, a)
-			c.l += dz*(t*nm*o.is-2*o.sagitta*across/o.smear) + da*a/o.smear
+			c.l += dz*(t*nm*o.is-2*o.sagitta*across*o.ismear) + da*a*o.ismear
 			c.s -= da * a * o.is
 			// The later (or earlier) part of the piece is what covers the pixel.
 			lean := min(max(a*(1.0/3), -1), 1)
@@ -125,6 +128,37 @@ func (o *outline) cover(x, y float64, c *coverage) {
 		c.e1 *= k
 		c.e2 *= k
 	}
+}
+
+// coverOnce is cover for a smear of one piece, as far as the everyday pass needs
+// it: rho is the place's distance from the centre after the ellipse is taken out
+// (xp, yp), d its depth inside the outline.
+func (o *outline) coverOnce(x, y, xp, yp, rho, d float64) (alpha, dr, dl, ds, xm, ym, nz float64) {
+	ir := 1 / (rho + 1e-9)
+	nm := ((o.m11*xp+o.m12*yp)*o.mu + (o.m12*xp+o.m22*yp)*o.mv) * ir
+	a := o.smear * nm * o.is
+	bend := o.sagitta * (1 - nm*nm) * ir
+	z := d*o.is - bend
+	alpha, dz, da := edgeSmeared(z, a)
+	dl = (da*a - 2*dz*bend) * o.ismear
+	ds = -(dz*z + da*a) * o.is
+	lean := a * (1.0 / 3)
+	if lean > 1 {
+		lean = 1
+	} else if lean < -1 {
+		lean = -1
+	}
+	k := -0.5 * o.smear * (1 - alpha) * lean
+	xm, ym = x+k*o.mu, y+k*o.mv
+	// The part that it sees of the bob is short enough for one point to stand for
+	// it, or it is not.
+	if span := o.smear * (1 - (1-alpha)*math.Abs(lean)); span < 0.12*rho {
+		nz = o.facing(xm, ym)
+	} else {
+		su, sv := 0.28867513459481287*span*o.mu, 0.28867513459481287*span*o.mv
+		nz = 0.5 * (o.facing(xm+su, ym+sv) + o.facing(xm-su, ym-sv))
+	}
+	return alpha, dz * o.is, dl, ds, xm, ym, nz
 }
 
 // facing is the camera's share of a ball's outward normal at a place within its

@@ -88,8 +88,8 @@ func (f *Fitter) gather(p *clip.Patch, wall *Wall, m *model, covers []Disc, reac
 				if e < 0 {
 					e = -e
 				}
-				r2, lo, hi := x*x+y2, max(edgeIn-e, 0), edgeOut+e
-				if r2 < lo*lo || r2 > hi*hi {
+				r2, lo, hi := x*x+y2, edgeIn-e, edgeOut+e
+				if lo > 0 && r2 < lo*lo || r2 > hi*hi {
 					continue
 				}
 			}

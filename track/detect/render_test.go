@@ -141,12 +141,13 @@ func (s *scene) spans(cover []float64, fw, fh int, ax, ay float64) {
 	if l := math.Hypot(s.smear[0], s.smear[1]); l > 0 {
 		n = int(10*l) + 21
 	}
-	k := 1 / float64(n)
-	for i := range n {
-		t := (float64(i)+0.5)*k - 0.5
+	const lines = 4 // sampled per row
+	k := 1 / float64(n*lines)
+	for i := range n * lines {
+		t := (float64(i/lines)+0.5)/float64(n) - 0.5
 		cu, cv := s.u+t*s.smear[0], s.v+t*s.smear[1]
 		for y := range fh {
-			dy := ((float64(y)+0.5)/fine - 0.5 - cv) / ay / s.r
+			dy := ((float64(y)+(float64(i%lines)+0.5)/lines)/fine - 0.5 - cv) / ay / s.r
 			if dy*dy >= 1 {
 				continue
 			}

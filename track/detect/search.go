@@ -107,11 +107,11 @@ func (s *Search) spread(k int, want bool) {
 }
 
 // ChooseStep returns the step that leaves a bob of the least expected radius at
-// least four cells of radius.
+// least three cells of radius.
 func (s *Search) ChooseStep(area image.Rectangle) int {
 	step := 1
 	if s.RMin > 0 {
-		step = int(s.RMin / 4)
+		step = min(int(s.RMin/3), 6)
 	} else {
 		step = min(area.Dx(), area.Dy()) / 300
 	}
@@ -144,6 +144,10 @@ func (s *Search) paint(p *clip.Patch, area image.Rectangle, wall *Wall, before [
 			score := 1.0
 			if !moving {
 				score = taste.score(b, g, r)
+			}
+			if score == 0 {
+				s.mask[y*s.w+x] = 0
+				continue
 			}
 			if score > 0 && wall != nil {
 				if wb, wg, wr, ok := wall.at(u, v); ok {

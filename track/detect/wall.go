@@ -16,6 +16,7 @@ type Wall struct {
 	n     []uint8  // how many frames the mean stands on; 0: not seen yet
 	seen  int
 	strip int
+	near  []Disc // of those that Learn is given
 }
 
 const (
@@ -67,6 +68,14 @@ func (w *Wall) Learn(p *clip.Patch, bobs []Disc, every int) {
 	w.seen++
 	w.strip++
 	box := p.Rect.Intersect(w.rect)
+	w.near = w.near[:0]
+	for _, d := range bobs {
+		m := int(d.R) + 2
+		if image.Rect(int(d.U)-m, int(d.V)-m, int(d.U)+m, int(d.V)+m).Overlaps(box) {
+			w.near = append(w.near, d)
+		}
+	}
+	bobs = w.near
 	width := w.rect.Dx()
 	for v := box.Min.Y; v < box.Max.Y; v++ {
 		if every > 1 && (v+w.strip)%every != 0 {

@@ -23,19 +23,20 @@ type bob struct {
 	startU     float64
 	startV     float64
 
-	fitter   *detect.Fitter
-	filter   *link.Filter
-	search   detect.Search
-	samples  []track.Sample
-	good     int     // frames in which it was seen whole
-	fits     int     // frames in which its outline was fitted
-	lost     int     // frames since it was last seen
-	stall    bool    // the last frame looked like a repeated one
-	radius   float64 // usual, px
-	level    float64 // usual level of the bob, in the fitter's projection
-	contrast float64 // usual size of its difference from the wall
-	rough    float64 // usual noise of its fits over the contrast: print, holes and shine are noise too
-	visible  float64 // usual share of its outline that is seen
+	fitter       *detect.Fitter
+	filter       *link.Filter
+	search       detect.Search
+	samples      []track.Sample
+	lastU, lastV float64 // where it was last seen, px
+	good         int     // frames in which it was seen whole
+	fits         int     // frames in which its outline was fitted
+	lost         int     // frames since it was last seen
+	stall        bool    // the last frame looked like a repeated one
+	radius       float64 // usual, px
+	level        float64 // usual level of the bob, in the fitter's projection
+	contrast     float64 // usual size of its difference from the wall
+	rough        float64 // usual noise of its fits over the contrast: print, holes and shine are noise too
+	visible      float64 // usual share of its outline that is seen
 
 	// of the present frame
 	patch  clip.Patch
@@ -193,7 +194,7 @@ func (b *bob) free() bool {
 		return false
 	}
 	slow := math.Hypot(b.guess.SmearU, b.guess.SmearV) < 0.6*b.fitter.Shape.Blur
-	return b.good < 12 || slow && b.good%16 == 0
+	return b.good < 8 || slow && b.good%16 == 0
 }
 
 // plausible tells whether a fit can be this bob: as large, as bright and about as
@@ -263,7 +264,15 @@ func (f *follower) seekLost(frame *clip.Frame) {
 		}
 		frame.Patch(&f.whole, area)
 		b.search.Look, b.search.RMin, b.search.RMax = b.look, 0.75*b.radius, 1.3*b.radius
-		for _, c := range b.search.Find(&f.whole, area, 0, f.wall, nil) {
+		found := b.search.Find(&f.whole, area, 0, f.wall, nil)
+		// One that rests may meanwhile pass for wall: where it was last it is looked
+		// for all the same.
+		m := int(2 * b.radius)
+		rest := image.Rect(int(b.lastU)-m, int(b.lastV)-m, int(b.lastU)+m, int(b.lastV)+m).Intersect(area)
+		if !rest.Empty() && b.look.Kind != detect.ByMotion {
+			found = append(found, b.search.Find(&f.whole, rest, 0, nil, nil)...)
+		}
+		for _, c := range found {
 			if c.Score() < 0.4 || f.claimed(c.U, c.V) {
 				continue
 			}
@@ -321,11 +330,22 @@ func (b *bob) regain(frame *clip.Frame, c detect.Candidate) {
 	b.covers = b.covers[:0]
 	b.fitter.Widen(c.R)
 	r := b.fitter.Fit(&b.patch, b.f.wall, g, nil, false)
-	if !r.OK || !b.plausible(&r) || r.Visible < math.Min(0.6, 0.8*b.visible) || r.Noise > math.Max(0.2, 1.5*b.rough)*math.Abs(r.Contrast) {
+	if !r.OK || !b.plausible(&r) || !b.convincing(&r, c) {
 		return // clutter
 	}
 	b.result, b.have = r, true
 	b.fitter.Learn(&r)
+}
+
+// convincing tells whether a fit of something found afar is the bob: most of its
+// outline is seen, as much as usual, or what is seen of it agrees with the place and
+// the size at which it was found.
+func (b *bob) convincing(r *detect.Fit, c detect.Candidate) bool {
+	least := math.Min(0.6, 0.8*b.visible)
+	if math.Hypot(r.U-c.U, r.V-c.V) < 0.05*b.radius+0.3 && math.Abs(r.R-b.radius) < 0.1*b.radius {
+		least = 0.35
+	}
+	return r.Visible >= least && r.Noise <= math.Max(0.2, 1.5*b.rough)*math.Abs(r.Contrast)
 }
 
 // settle writes the frame's sample and updates what is known.
@@ -370,6 +390,7 @@ func (b *bob) settle(frame *clip.Frame) {
 		b.visible += k * (r.Visible - b.visible)
 		b.rough += k * (r.Noise/math.Max(math.Abs(r.Contrast), 1) - b.rough)
 	}
+	b.lastU, b.lastV = r.U, r.V
 	if b.filter.Sightings() == 3 {
 		b.fitter.Relearn() // from now on the smear is known
 	}

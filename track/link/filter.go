@@ -17,6 +17,10 @@ type Filter struct {
 	axis [2]axis
 	jerk float64 // spectral density, px²/s⁵
 	n    int     // sightings so far
+	step float64 // the last time between sightings, s
+	// late is by how much sightings have lately run ahead of the model over one step,
+	// px: a turning force is always followed a little late, and evenly so.
+	late [2]float64
 }
 
 // axis is the state of one axis: position, speed, acceleration.
@@ -67,8 +71,13 @@ func (f *Filter) Predict(t float64) Prediction {
 	a, b := f.axis[0], f.axis[1]
 	a.advance(t-f.T, f.jerk)
 	b.advance(t-f.T, f.jerk)
+	u, v := a.x[0], b.x[0]
+	if d := t - f.T; d > 0 && d < 1.5*f.step {
+		u += f.late[0]
+		v += f.late[1]
+	}
 	return Prediction{
-		U: a.x[0], V: b.x[0], DU: a.x[1], DV: b.x[1],
+		U: u, V: v, DU: a.x[1], DV: b.x[1],
 		Cov:    track.Cov{AA: a.p[0][0], BB: b.p[0][0]},
 		USpeed: math.Sqrt(math.Max(a.p[1][1], b.p[1][1])),
 	}
@@ -108,10 +117,16 @@ func (f *Filter) Update(t, u, v float64, c track.Cov) {
 			before[i].p[2][2] += 0.5 * e * e / (dt * dt * dt * dt)
 		}
 		nis = predict()
+		f.late = [2]float64{}
+	} else {
+		for i := range f.axis {
+			f.late[i] += 0.35 * (z[i] - f.axis[i].x[0] - f.late[i])
+		}
 	}
 	for i := range f.axis {
 		f.axis[i].update(z[i], r[i])
 	}
+	f.step = dt
 	f.n++
 	if f.n > 3 && dt > 0 {
 		// A normalised innovation of 1 per axis is what a right jerk gives.
