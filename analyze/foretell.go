@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"time"
 
 	"lodeswing/analyze/chaos"
@@ -60,14 +61,44 @@ func foretelling(ctx context.Context, w *work) error {
 		w.undecided("chaos.model_exponent", w.onlyPart(), name, err.Error(), method)
 		return nil
 	}
-	l := e.L[0]
+	l, until := chaoticPart(e)
 	f := finding.Normal("chaos.model_exponent", w.onlyPart(), name, l.V, l.U, "1/s", method)
 	f.Cautions = []string{"Of the model with just these numbers: its uncertainty is that of the average, not of the numbers."}
+	if until > 0 {
+		f.Cautions = append(f.Cautions, fmt.Sprintf("Over the first %.0f s, in which the model is chaotic; then it falls into step. When it does is a matter of chance.", until))
+	}
 	w.rec.Findings = append(w.rec.Findings, f)
 	if regime := w.rec.Find("regime", w.onlyPart()); regime != nil && regime.Kind == finding.Statement {
 		w.weigh(regime, l)
 	}
 	return nil
+}
+
+// chaoticPart is the largest exponent, and, where growth ends before the run does (the
+// motion falls into step), the time until then and the exponent up to it; until is 0
+// where it does not.
+func chaoticPart(e *chaos.Exponents) (l chaos.Value, until float64) {
+	const parts = 16
+	end := e.At[len(e.At)-1]
+	var rate, at []float64
+	last, lastGrowth := 0.0, 0.0
+	for i, t := range e.At {
+		if t < end*float64(len(rate)+1)/parts {
+			continue
+		}
+		growth := e.Course[i] * t
+		rate, at = append(rate, (growth-lastGrowth)/(t-last)), append(at, t)
+		last, lastGrowth = t, growth
+	}
+	n := len(rate)
+	for n > 0 && rate[n-1] < 0.25*slices.Max(rate) {
+		n--
+	}
+	if len(rate) < parts/2 || n < 3 || n > len(rate)-3 { // always the same, or the end of it not sure
+		return e.L[0], 0
+	}
+	_, sd := meanAndScatter(rate[:n])
+	return chaos.Value{V: mean(rate[:n]), U: sd / math.Sqrt(float64(n-1))}, at[n-1]
 }
 
 // weigh sets what the model foretells beside what the clip shows.

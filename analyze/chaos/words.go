@@ -196,7 +196,7 @@ func (r *Regime) Curves(subject string) []finding.Curve {
 	if r.ZeroOne != nil {
 		out = append(out, r.ZeroOne.Curve(subject))
 	}
-	if r.Correlation != nil {
+	if r.Correlation != nil && r.Correlation.Found {
 		out = append(out, r.Correlation.Curve(subject, "rad"))
 	}
 	return out

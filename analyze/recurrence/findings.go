@@ -35,7 +35,7 @@ func (p *Plot) Findings(subject string) []finding.Finding {
 		{"return_1", "Recurrence time, first type", "s", m.T1, false, "from one moment to the next like it, moments close by included"},
 		{"return_2", "Recurrence time, second type", "s", m.T2, false, "from coming near a state to coming near it again"},
 	}
-	const method = "; from all pairs (Marwan et al. 2007), uncertainty by leaving out stretches of time"
+	list[0].what += ". All measures: from all pairs (Marwan et al. 2007), uncertainty by leaving out stretches of time"
 	prefix := "recurrence."
 	if p.Kind != "auto" {
 		prefix += p.Kind + "_"
@@ -45,7 +45,7 @@ func (p *Plot) Findings(subject string) []finding.Finding {
 		if math.IsNaN(l.v.V) || math.IsInf(l.v.V, 0) {
 			continue
 		}
-		f := finding.Normal(prefix+l.key, subject, l.name, l.v.V, l.v.U, l.unit, l.what+method)
+		f := finding.Normal(prefix+l.key, subject, l.name, l.v.V, l.v.U, l.unit, l.what)
 		f.Lo = max(f.Lo, 0) // NaN where the uncertainty is not known
 		if l.share {
 			f.Hi = min(f.Hi, 1)
@@ -64,18 +64,19 @@ func (p *Plot) Curves(subject string) []finding.Curve {
 	var out []finding.Curve
 	if p.Map != nil {
 		title := map[string]string{"auto": "Recurrence plot", "cross": "Cross recurrence plot", "joint": "Joint recurrence plot"}[p.Kind]
+		top := p.Map.darkest()
 		z := make([]float64, len(p.Map.Density))
 		for i, d := range p.Map.Density {
-			z[i] = math.Round(1000*float64(d)) / 1000
+			z[i] = math.Round(1000*min(float64(d), top)) / 1000
 		}
 		what := map[string]string{
 			"auto":  "Each cell compares two moments of the clip, one along each axis: dark where the toy does the same at both. Long unbroken diagonals: regular; short pieces: irregular; dark blocks: it lingers.",
 			"cross": "Dark where the second, at the time below, does what the first does at the time on the left. A dark main diagonal: they move alike at the same time; diagonals beside it: one does later what the other did.",
 			"joint": "Dark where both are, at one time, where each was at the other.",
 		}[p.Kind]
-		caption := fmt.Sprintf("%s %.3g %% of all pairs are dark.", what, 100*p.Measures.RR.V)
+		caption := fmt.Sprintf("%s %.2g %% of all pairs are alike.", what, 100*p.Measures.RR.V)
 		if p.Map.Rows < p.N || p.Map.Cols < p.M {
-			caption += fmt.Sprintf(" Each cell holds %.0f × %.0f pairs.", math.Ceil(float64(p.N)/float64(p.Map.Rows)), math.Ceil(float64(p.M)/float64(p.Map.Cols)))
+			caption += fmt.Sprintf(" Each cell holds %.0f × %.0f pairs; it is darkest where %.2g %% of them or more are alike.", math.Ceil(float64(p.N)/float64(p.Map.Rows)), math.Ceil(float64(p.M)/float64(p.Map.Cols)), 100*top)
 		}
 		out = append(out, finding.Curve{
 			Key: "recurrence", Subject: subject, Title: title, Caption: caption,

@@ -1,6 +1,9 @@
 package recurrence
 
-import "math/bits"
+import (
+	"math/bits"
+	"slices"
+)
 
 // Map is the picture of a recurrence plot: Density[a·Cols + b] is the share of
 // recurrences among the pairs of cell (a, b), rows first. A cell holds one pair
@@ -10,6 +13,26 @@ type Map struct {
 	Rows, Cols int
 	Row, Col   []float64
 	Density    []float32
+}
+
+// darkest is the share from which on a picture shows cells as dark as can be: so that
+// the plot of a long series, whose cells hold a few recurrences among many pairs, is
+// not pale. One cell in a hundred of those with any, the middle diagonal not counted,
+// has more.
+func (m *Map) darkest() float64 {
+	var some []float64
+	for a := range m.Rows {
+		for b := range m.Cols {
+			if d := m.Density[a*m.Cols+b]; d > 0 && (a != b || m.Rows != m.Cols) {
+				some = append(some, float64(d))
+			}
+		}
+	}
+	if len(some) == 0 {
+		return 1
+	}
+	slices.Sort(some)
+	return max(0.01, some[len(some)*99/100])
 }
 
 // grid counts points by cell.
