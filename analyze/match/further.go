@@ -152,7 +152,11 @@ func (r *reporter) further(ctx context.Context) map[int]advice {
 	if len(open) == 0 || r.opt.Quick || len(r.clips[0].segments) == 0 {
 		return out
 	}
-	limited, stop := context.WithTimeout(ctx, furtherTime)
+	within := furtherTime
+	if end, ok := ctx.Deadline(); ok { // the numbers themselves must not be late for it
+		within = min(within, time.Until(end)/3)
+	}
+	limited, stop := context.WithTimeout(ctx, within)
 	defer stop()
 	all := r.proposals()
 	found := make([]map[string]float64, len(all))

@@ -51,8 +51,8 @@ func (r *reporter) rest() {
 			r.undecided(name[0], subject, name[1], fmt.Sprintf("The clip does not tell it from %s: only what the two do together is determined (see the loss curve). %s separate them.", with, r.sentence(i, "A second release from a smaller angle, fitted together with this one, would")))
 			continue
 		}
-		switch what {
-		case "viscous", "drag", "dry", "kick", "eddy":
+		switch {
+		case q.limited():
 			f := finding.Normal(name[0], subject, name[1], q.value, u, q.unit, r.say)
 			f.Kind, f.Lo = finding.UpperLimit, 0
 			f.Hi = math.Max(q.value, 0) + 1.645*u
@@ -155,6 +155,10 @@ func (r *reporter) topRate(name string) float64 {
 		_, states := r.fine(c)
 		for _, y := range states {
 			_, w := k.model.Angle(y, part)
+			if !k.model.OneAxis(part) {
+				a, _, fall, round, _ := k.model.Ball(y, part)
+				w = math.Hypot(fall, round*math.Sin(a))
+			}
 			top = math.Max(top, math.Abs(w))
 		}
 	}

@@ -187,6 +187,15 @@ func TestWrongMagnetIsNamed(t *testing.T) {
 			if f == nil || !strings.Contains(f.Text, c.want) || !strings.Contains(f.Text, "base magnet") {
 				t.Errorf("the cause is not named: %+v", f)
 			}
+			causes := 0
+			for _, f := range res.Findings {
+				if f.Key == "match.cause" {
+					causes++
+				}
+			}
+			if causes != 1 {
+				t.Errorf("%d causes are named", causes)
+			}
 			if p := find(res, "match.product"); p != nil && p.Kind == finding.Measured {
 				t.Errorf("a product is told although the model does not fit: %+v", p)
 			}

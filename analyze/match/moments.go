@@ -106,7 +106,7 @@ func (r *reporter) magnets() {
 				continue
 			}
 			if u, _, _ := r.j.of(r.fitter, grad); !(u < undeterminedAt*math.Abs(ma*mb)) {
-				if r.absent(a, b, ma, mb, da, db) {
+				if !r.wrong && r.absent(a, b, ma, mb, da, db) {
 					continue
 				}
 				r.undecided("match.product", subject, "Pair product m₁m₂", "The clip does not determine how strongly these two act on each other: they came too little near each other. Film a larger release, or set them nearer.")

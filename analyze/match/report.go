@@ -23,6 +23,7 @@ type reporter struct {
 	poor  map[int]bool
 	spans map[int]span // 95 % intervals of parameters by profile, where derivatives do not do
 	help  map[int]advice
+	wrong bool   // the model plainly does not fit
 	hard  string // says that the part hardly got over the magnet
 }
 
@@ -51,6 +52,7 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 		})
 	}
 	misfit := r.misfit(ctx)
+	r.wrong = misfit != ""
 	if err := ctx.Err(); err != nil {
 		return nil, err
 	}

@@ -116,6 +116,8 @@ func (r *reporter) verdicts() []finding.Verdict {
 			v.Told, v.Why = "not by itself", "only the product of each pair is determined; a tie in [fit] equal, or one known moment, would separate them"
 		case r.poor[i] && r.twin(i) != "":
 			v.Told, v.Why = "not by itself", r.together(i)
+		case r.poor[i] && q.limited():
+			v.Told, v.Why = "only what it may be at most", "the clip hardly feels it"
 		case r.poor[i]:
 			v.Told, v.Why = "not determined", "the clip hardly feels it"
 		case rel < 0.1:
@@ -201,4 +203,10 @@ func called(q *param) string {
 		name += " (tied)"
 	}
 	return name
+}
+
+// limited tells whether of a number that is not determined an upper limit is told.
+func (q *param) limited() bool {
+	_, what := split(q.address)
+	return slices.Contains([]string{"viscous", "drag", "dry", "kick", "eddy"}, what)
 }
