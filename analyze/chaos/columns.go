@@ -122,12 +122,9 @@ func (e *evenly) turn(column int) float64 {
 func (e *evenly) intoStep(periodS, u float64) (from, every float64, ok bool) {
 	for _, part := range []int{3, 5, 6, 7} {
 		cut := e.n * part / 10
-		rest := &evenly{from: e.from + e.step*float64(cut), step: e.step, n: e.n - cut, main: e.main}
+		rest := e.after(cut)
 		if rest.step*float64(rest.n) < 12*periodS {
 			return 0, 0, false
-		}
-		for _, c := range e.columns {
-			rest.columns = append(rest.columns, c[cut:])
 		}
 		busy := rest.busy()
 		if len(busy) == 0 {
@@ -154,6 +151,15 @@ func (e *evenly) intoStep(periodS, u float64) (from, every float64, ok bool) {
 		}
 	}
 	return 0, 0, false
+}
+
+// after is the motion without its first samples.
+func (e *evenly) after(cut int) *evenly {
+	rest := &evenly{from: e.from + e.step*float64(cut), step: e.step, n: e.n - cut, main: e.main}
+	for _, c := range e.columns {
+		rest.columns = append(rest.columns, c[cut:])
+	}
+	return rest
 }
 
 // unruly is how far a column's turning points and passes lie from the course of

@@ -150,7 +150,7 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		r.Text = "No frequency stands out of the scatter; nothing can be said of how it behaves."
 		return r, ctx.Err()
 	}
-	r.describe(e, m.U)
+	r.describe(e, m)
 	if err := r.decide(ctx, e, m); err != nil {
 		return nil, err
 	}
@@ -159,7 +159,7 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 }
 
 // describe sets the numbers that the decision rests on.
-func (r *Regime) describe(e *evenly, u float64) {
+func (r *Regime) describe(e *evenly, m Motion) {
 	if r.PeriodS = 1 / r.spectrum.Lines[0].Frequency; r.PeriodS > e.longest() {
 		r.PeriodS = e.turn(e.main) * e.step
 	}
@@ -169,11 +169,11 @@ func (r *Regime) describe(e *evenly, u float64) {
 	r.wild = e.main
 	if typical := median(slices.Clone(amp)); typical > 0 {
 		// What the measurement's scatter alone makes of it.
-		noise := 2 * u / typical
+		noise := 2 * m.U / typical
 		r.Ripple = math.Sqrt(max(0, r.Ripple*r.Ripple-noise*noise))
 	}
 	for _, k := range e.busy() {
-		r.Jump = max(r.Jump, e.unruly(k, u))
+		r.Jump = max(r.Jump, e.unruly(k, m.U))
 		if k == e.main {
 			continue
 		}
@@ -186,15 +186,16 @@ func (r *Regime) describe(e *evenly, u float64) {
 		r.dying = true
 		r.Change = min(r.Change, pace)
 	}
-	r.RepeatS, r.Mismatch = e.repeats(r.PeriodS, u)
-	if math.Abs(r.Change) > decayed && r.RestsS == 0 {
-		r.SteadyS = settled(at, amp, e.from+e.step*float64(e.n))
+	r.RepeatS, r.Mismatch = e.repeats(r.PeriodS, m.U)
+	if math.Abs(r.Change) > decayed && r.RestsS == 0 && !m.Undriven {
+		r.SteadyS = e.settled(at, amp, r.PeriodS, m.U)
 	}
 }
 
-// settled is when an amplitude that changed at first stays the same, if that is so
-// for two fifths of the time or more; else 0.
-func settled(at, amp []float64, end float64) float64 {
+// settled is when an amplitude that changed at first stays the same, and all columns
+// repeat without losing speed, if that is so for two fifths of the time or more; else
+// 0. (The swing of a ball joint turns, which one column alone may show as steady.)
+func (e *evenly) settled(at, amp []float64, periodS, u float64) float64 {
 	for part := 2; part <= 6; part++ {
 		from := len(at) * part / 10
 		if len(at)-from < 16 {
@@ -202,7 +203,14 @@ func settled(at, amp []float64, end float64) float64 {
 		}
 		change, ripple := course(at[from:], amp[from:])
 		// That it is the same, and not merely changing ever more slowly.
-		if math.Abs(change) < decayed/3 && ripple < steadyRipple && end > at[from] {
+		if math.Abs(change) > decayed/3 || ripple > steadyRipple {
+			continue
+		}
+		rest := e.after(int((at[from] - e.from) / e.step))
+		if pace, _ := rest.pace(periodS); math.Abs(pace) > decayed/2 {
+			continue
+		}
+		if _, mismatch := rest.repeats(periodS, u); mismatch < repeated {
 			return at[from]
 		}
 	}
