@@ -95,7 +95,6 @@ func beaconSeen(t testing.TB, r *rig.Rig, rng *rand.Rand, noise float64, phases 
 		t.Fatal(err)
 	}
 	a.Joint = "ball"
-	a.Pivot = series.Pivot{X: 0.003, Z: -0.004}
 	return Clip{Angle: a, Track: &track.Track{Bobs: []track.Bob{bob}, Cal: cal}}, events
 }
 

@@ -183,22 +183,62 @@ func (f *freeFit) look(clips []Clip) {
 	for e := range most {
 		f.shared = append(f.shared, shared{name: "camera", seen: true, prior: 1, step: 0.02, apply: func(x float64) { f.by[e] = x }})
 	}
-	at := clips[0].Angle.Pivot
-	start := [2]float64{at.X - f.pivot[0], at.Z - f.pivot[2]}
-	if f.ball.Rig.Camera.FromAbove {
-		start[1] = at.Z - f.pivot[1]
-	}
+	start := f.hung()
 	n := 0
 	for i := range f.shared {
 		if s := &f.shared[i]; s.name == "pivot in the picture" {
 			s.x = start[n]
-			// The prior holds about where the track puts it.
+			// The prior holds about where the path puts it.
 			from, inner := start[n], s.apply
 			s.x, s.apply = 0, func(x float64) { inner(from + x) }
 			n++
 		}
 	}
 	f.set(nil)
+}
+
+// hung guesses how far the pivot lies from where the rig and the track's origin put
+// it: so that the bob, hanging, would be seen in the middle of its path.
+func (f *freeFit) hung() (start [2]float64) {
+	v := f.views[0]
+	var u, w []float64
+	for _, at := range v.at {
+		u, w = append(u, at[0]), append(w, at[1])
+	}
+	slices.Sort(u)
+	slices.Sort(w)
+	lo, hi := len(u)/50, len(u)-1-len(u)/50
+	middle := [2]float64{(u[lo] + u[hi]) / 2, (w[lo] + w[hi]) / 2}
+	axis := 2
+	if f.ball.Rig.Camera.FromAbove {
+		axis = 1
+	}
+	see := func() (float64, float64) {
+		f.shift = [3]float64{}
+		f.shift[0], f.shift[axis] = start[0], start[1]
+		return f.sphere(v, [2]float64{})
+	}
+	f.by = make([]float64, len(f.by))
+	v.moved = v.cam
+	for range 10 {
+		const h = 1e-4
+		x, y := see()
+		start[0] += h
+		xa, ya := see()
+		start[0] -= h
+		start[1] += h
+		xb, yb := see()
+		start[1] -= h
+		a, b, c, d := (xa-x)/h, (xb-x)/h, (ya-y)/h, (yb-y)/h
+		det := a*d - b*c
+		ex, ey := middle[0]-x, middle[1]-y
+		dx, dy := (d*ex-b*ey)/det, (a*ey-c*ex)/det
+		if math.IsNaN(dx+dy) || math.Abs(dx)+math.Abs(dy) > 2 {
+			return [2]float64{}
+		}
+		start[0], start[1] = start[0]+dx, start[1]+dy
+	}
+	return start
 }
 
 // set applies the common numbers; at is their changes, nil for those that stand.
