@@ -24,7 +24,7 @@ import (
 
 func compareCommand() *cobra.Command {
 	var asJSON, sameCamera, all bool
-	var swapped, figure string
+	var swapped, figure, motion string
 	cmd := &cobra.Command{
 		Use:   "compare A B",
 		Short: "Set two results, or two groups of results, against each other",
@@ -38,7 +38,8 @@ own (cell, magnet or coil), and tells whether a weak drive's fault, or a weak pa
 of magnets', was in it.
 
 A and B are result folders, or folders that hold several: then means are compared,
-with what the units of a group scatter. Where a rig notes the temperature of its
+with what the units of a group scatter. --motion sets the motions themselves beside each
+other: how alike they are, and a plot of when one does what the other did. Where a rig notes the temperature of its
 clip, magnets' moments are taken to 20 °C first.`,
 		Example: `  lodeswing compare before-result after-result
   lodeswing compare old-winding new-winding --same-camera
@@ -77,6 +78,11 @@ clip, magnets' moments are taken to 20 °C first.`,
 				return differencesJSON(cmd.OutOrStdout(), a.Name, b.Name, opt, ds)
 			}
 			tellDifferences(cmd.OutOrStdout(), a, b, opt, ds, all)
+			if motion != "" {
+				if err := tellMotions(cmd.Context(), cmd.OutOrStdout(), args[0], args[1], motion); err != nil {
+					return err
+				}
+			}
 			if swapped != "" {
 				return tellSwap(cmd.OutOrStdout(), ds, kick.Swapped(swapped))
 			}
@@ -86,6 +92,7 @@ clip, magnets' moments are taken to 20 °C first.`,
 	cmd.Flags().BoolVar(&sameCamera, "same-camera", false, "the camera was not moved between: scale and vertical are the same")
 	cmd.Flags().StringVar(&swapped, "swapped", "", "the `part` that a reference part took the place of between A and B: cell, magnet or coil")
 	cmd.Flags().StringVar(&figure, "figure", "", "also draw the relative differences into this `file`, .svg or .png")
+	cmd.Flags().StringVar(&motion, "motion", "", "also compare how two units move, and draw it into this `file`, .svg or .png")
 	cmd.Flags().BoolVar(&all, "all", false, "also list what does not differ by more than the measurement")
 	cmd.Flags().BoolVar(&asJSON, "json", false, "print the differences as JSON, for machines")
 	return cmd
