@@ -23,6 +23,8 @@ const (
 	pushedFor  = 0.3  // s about a marked push that are left out on either side
 	handFrom   = 2.5  // times the usual residual, from which a stretch is not the toy's own motion
 	handSpread = 8.0  // times the usual residuals' own scatter about that
+	tapFrom    = 6.0  // times the usual jump from one stretch to the next
+	tapFor     = 0.1  // s about a tap that are left out on either side
 	mostHands  = 3    // more of such in a clip are the model's fault and not a hand's
 )
 
@@ -167,7 +169,7 @@ func (f *fitter) findHands(ctx context.Context) (found bool, err error) {
 		worst = math.Max(worst, slices.Max(f.misfits(c)))
 	}
 	if worst < f.outstanding() {
-		return false, nil
+		return f.findTaps(), nil
 	}
 	// Those that stand out lead less and less.
 	before := f.values()
@@ -213,6 +215,51 @@ func (f *fitter) findHands(ctx context.Context) (found bool, err error) {
 	return found, nil
 }
 
+// findTaps looks for a tap between two stretches, which shows only in that the state
+// jumps from the one to the next, as it does nowhere else.
+func (f *fitter) findTaps() (found bool) {
+	for c := range f.clips {
+		k := &f.clips[c]
+		var all []float64
+		jumps := f.jumps(c)
+		for _, x := range jumps {
+			if !math.IsNaN(x) {
+				all = append(all, x)
+			}
+		}
+		if len(all) < 10 {
+			continue
+		}
+		usual := math.Max(median(all), 1)
+		limit := math.Max(tapFrom*usual, usual+2*handSpread*1.4826*spread(all, usual))
+		var at []int
+		for s, x := range jumps {
+			if x > limit {
+				at = append(at, s)
+			}
+		}
+		if len(at) == 0 || len(at) > mostHands {
+			continue
+		}
+		for i := len(at) - 1; i >= 0; i-- {
+			t := k.segments[at[i]].t1
+			f.opt.log("at %.2f s the state jumps by %.1f times its uncertainty, elsewhere by up to %.1f", t, jumps[at[i]], limit)
+			k.leaveOut(t-tapFor, t+tapFor, "a jump of the speed: a tap by hand, mostly")
+			found = true
+		}
+	}
+	return found
+}
+
+// spread is the median distance from the usual value.
+func spread(all []float64, usual float64) float64 {
+	d := make([]float64, len(all))
+	for i, x := range all {
+		d[i] = math.Abs(x - usual)
+	}
+	return median(d)
+}
+
 // outstanding is the r.m.s. residual from which a stretch stands out of the others.
 func (f *fitter) outstanding() float64 {
 	var all []float64
@@ -220,10 +267,7 @@ func (f *fitter) outstanding() float64 {
 		all = append(all, f.misfits(c)...)
 	}
 	usual := math.Max(median(all), 1)
-	for i := range all {
-		all[i] = math.Abs(all[i] - usual)
-	}
-	return math.Max(handFrom*usual, usual+handSpread*1.4826*median(all))
+	return math.Max(handFrom*usual, usual+handSpread*1.4826*spread(all, usual))
 }
 
 // runs are the times of a clip in which stretches leave more than limit, with what

@@ -14,6 +14,7 @@ import (
 // first pose until free, and pushes part 0 with an acceleration from push on for 0.25 s.
 type handled struct {
 	free, push, by float64
+	tap            float64 // rad/s, by which part 0 is made faster at once at push
 	undrivenFrom   float64 // the battery is taken out here; 0: never
 }
 
@@ -64,6 +65,12 @@ func (h handled) path(t testing.TB, r *rig.Rig, seconds float64) func(at float64
 			on(h.push + lasts*float64(i+1)/steps)
 		}
 	}
+	if h.tap != 0 {
+		on(h.push)
+		d := make([]float64, 2*m.Freedoms())
+		d[m.Freedoms()] = h.tap
+		m.Displace(y, d)
+	}
 	on(seconds + 1)
 	return func(at float64, state []float64) {
 		if at < h.free {
@@ -92,6 +99,8 @@ func TestHandIsLeftOut(t *testing.T) {
 	}{
 		{"held", handled{free: 1.5}, 1},
 		{"pushed", handled{push: 6, by: 4}, 1},
+		{"tapped between two stretches", handled{push: 6.0045, tap: 0.2}, 1},
+		{"tapped", handled{push: 6.1, tap: 0.2}, 1},
 		{"held and touched", handled{free: 2, push: 7.3, by: -0.6}, 2},
 	} {
 		t.Run(c.name, func(t *testing.T) {
