@@ -28,18 +28,27 @@ var quiet = sync.OnceValue(func() error {
 	return os.Setenv("OPENCV_FFMPEG_LOGLEVEL", "-8")
 })
 
-// videoSource reads a video file through OpenCV. The Mat is used here alone and
-// never after it is closed.
+// videoSource reads a video file through OpenCV. It decodes one picture ahead, so
+// that decoding and colour conversion go on while the caller works on the last one.
+// The Mats are used here alone and never after they are closed.
 type videoSource struct {
 	facts  *Facts
 	video  *gocv.VideoCapture
-	mat    gocv.Mat
+	mats   [2]gocv.Mat
+	shown  int          // which of mats the last delivered frame lies in
+	ahead  chan decoded // the picture that is being decoded into the other one; nil: none
 	frame  Frame
 	placed int   // index of the last frame decoded, −1 before the first
 	last   int   // index of the last frame delivered, −1 before the first
 	holes  []gap // stretches of listed frames that could not be delivered
 	ended  bool
 	closed bool
+}
+
+// decoded is what came of asking for a picture.
+type decoded struct {
+	ok, failed bool
+	played     float64 // its time as OpenCV tells it, s
 }
 
 // gap is a stretch of frames, from index first to before index end.
@@ -58,7 +67,7 @@ func openVideo(f *Facts) (Source, error) {
 	}
 	video.Set(orientationAuto, 0)
 	return &videoSource{
-		facts: f, video: video, mat: gocv.NewMat(), placed: -1, last: -1,
+		facts: f, video: video, mats: [2]gocv.Mat{gocv.NewMat(), gocv.NewMat()}, placed: -1, last: -1,
 	}, nil
 }
 
@@ -76,45 +85,71 @@ func (s *videoSource) Next(ctx context.Context) (*Frame, error) {
 	// up to the next frame that needs no other: those are not delivered.
 	broken := false
 	for {
-		ok, failed := s.read()
-		if !ok {
+		if s.ahead == nil {
+			s.ask()
+		}
+		var got decoded
+		select {
+		case got = <-s.ahead:
+		case <-ctx.Done():
+			return nil, ctx.Err()
+		}
+		s.ahead = nil
+		if !got.ok {
 			return nil, s.end()
 		}
-		at := s.place(s.video.Get(gocv.VideoCapturePosMsec) / 1000)
+		s.shown = 1 - s.shown
+		at := s.place(got.played)
 		if at >= len(s.facts.Times) { // the decoder invents frames that the container does not list
 			return nil, s.end()
 		}
-		broken = broken || failed || at > s.placed+1
+		broken = broken || got.failed || at > s.placed+1
 		s.placed = at
 		if !broken || s.isKey(at) {
-			return s.deliver(at)
-		}
-		if err := ctx.Err(); err != nil {
-			return nil, err
+			frame, err := s.deliver(at)
+			if err == nil {
+				s.ask()
+			}
+			return frame, err
 		}
 	}
+}
+
+// ask has the next picture decoded into the Mat that is not shown. Until its answer
+// has come through s.ahead nothing else may use the video.
+func (s *videoSource) ask() {
+	due := len(s.facts.Times) - 1 - s.placed
+	answer, into := make(chan decoded, 1), &s.mats[1-s.shown]
+	s.ahead = answer
+	go func() {
+		got := read(s.video, into, due)
+		if got.ok {
+			got.played = s.video.Get(gocv.VideoCapturePosMsec) / 1000
+		}
+		answer <- got
+	}()
 }
 
 // read decodes the next picture into the Mat. OpenCV says no at a damaged
 // packet just as at the end of the file, so while frames are due it is asked
 // again, a limited number of times; failed tells that it had said no.
-func (s *videoSource) read() (ok, failed bool) {
-	due := len(s.facts.Times) - 1 - s.placed
+func read(video *gocv.VideoCapture, into *gocv.Mat, due int) decoded {
 	for try := 0; try <= min(due, 1000); try++ {
-		if s.video.Read(&s.mat) && !s.mat.Empty() {
-			return true, try > 0
+		if video.Read(into) && !into.Empty() {
+			return decoded{ok: true, failed: try > 0}
 		}
 	}
-	return false, true
+	return decoded{failed: true}
 }
 
 // deliver hands out the decoded picture as frame at.
 func (s *videoSource) deliver(at int) (*Frame, error) {
-	w, h := s.mat.Cols(), s.mat.Rows()
-	if w != s.facts.StoredW || h != s.facts.StoredH || s.mat.Type() != gocv.MatTypeCV8UC3 {
+	mat := &s.mats[s.shown]
+	w, h := mat.Cols(), mat.Rows()
+	if w != s.facts.StoredW || h != s.facts.StoredH || mat.Type() != gocv.MatTypeCV8UC3 {
 		return nil, fmt.Errorf("clip %s: frame %d is %d × %d pixels where the container says %d × %d; export it again with one size", s.facts.Path, at, w, h, s.facts.StoredW, s.facts.StoredH)
 	}
-	pix, err := s.mat.DataPtrUint8()
+	pix, err := mat.DataPtrUint8()
 	if err != nil {
 		return nil, fmt.Errorf("clip %s: frame %d: %v", s.facts.Path, at, err)
 	}
@@ -208,5 +243,8 @@ func (s *videoSource) Close() error {
 		return nil
 	}
 	s.closed, s.frame.Pix = true, nil
-	return errors.Join(s.mat.Close(), s.video.Close())
+	if s.ahead != nil {
+		<-s.ahead
+	}
+	return errors.Join(s.mats[0].Close(), s.mats[1].Close(), s.video.Close())
 }
