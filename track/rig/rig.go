@@ -173,7 +173,7 @@ type Coil struct {
 	TriggerV   Value     `rig:"trigger_V,rel_u=0.1,nonneg"`       // induced voltage that fires it
 	CapacityAs Value     `rig:"capacity_mAh,rel_u=0.1,pos"`       // of the battery; A·s
 	Cell       string    `rig:"cell"`                             // its cells, by one of the usual names in Cells, where capacity_mAh is not known
-	InSeries   Value     `rig:"cells,u=0,pos"`          // default 1
+	InSeries   Value     `rig:"cells,u=0,pos"`                    // default 1
 	CurrentA   Value     `rig:"current_mA,rel_u=0.05,pos"`        // mean current from the battery while the toy runs, if it was measured
 	Eddy       Value     `rig:"eddy_uN_m_s,rel_u=0.1,fit,nonneg"` // local eddy-current drag right over it, N·m·s
 }
