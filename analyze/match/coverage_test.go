@@ -54,9 +54,7 @@ func coverage(t *testing.T, name string, units int, seconds float64) (inside, al
 	r := sample(t, name)
 	for seed := range uint64(units) {
 		unit := drawn(t, r, seed)
-		tr := simulate(t, unit, take{seconds: seconds, noise: 0.05, seed: seed + 100})
-		// The film's camera is the rig's: its numbers are not drawn here, and their
-		// priors are kept.
+		tr := simulate(t, unit, take{seconds: seconds, noise: 0.05, seed: seed + 100, lens: rand.New(rand.NewPCG(seed, 78))})
 		res, err := Run(context.Background(), []Clip{{Track: tr}}, r, Options{Quick: true})
 		if err != nil {
 			t.Errorf("%s, unit %d: %v", name, seed, err)
@@ -102,8 +100,10 @@ func TestCoverage(t *testing.T) {
 		names = append(names, "buoys", "gull")
 	}
 	for _, name := range names {
-		i, n := coverage(t, name, units, 10)
-		inside, all = inside+i, all+n
+		t.Run(name, func(t *testing.T) {
+			i, n := coverage(t, name, units, 10)
+			inside, all = inside+i, all+n
+		})
 	}
 	share := float64(inside) / float64(all)
 	lo, hi := 0.80, 1.0

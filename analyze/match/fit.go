@@ -29,7 +29,7 @@ func (f *fitter) fit(ctx context.Context) error {
 		return err
 	}
 	f.reweigh()
-	if s := f.rms(); s > plainMisfit && s > wrongShare*f.size() { // not worth the last, exact steps
+	if s := f.widened * f.rms(); s > plainMisfit && f.rms() > wrongShare*f.size() { // not worth the last, exact steps
 		if err := f.shootAll(ctx, f.values(), true, true); err != nil {
 			return err
 		}
@@ -40,17 +40,7 @@ func (f *fitter) fit(ctx context.Context) error {
 	if err := f.polish(ctx); err != nil {
 		return err
 	}
-	if s := f.rms(); s > clearMisfit {
-		// A model that is only nearly right must not force clock, weight and camera
-		// to make up for it: its residuals count as noise of their own size.
-		f.widened = s
-		for c := range f.clips {
-			k := &f.clips[c]
-			for i := range k.obs {
-				o := &k.obs[i]
-				o.w0, o.w1, o.w2 = o.w0/s, o.w1/s, o.w2/s
-			}
-		}
+	if f.widen() {
 		f.reweigh()
 		f.cautions = nil
 		if err := f.polish(ctx); err != nil {
@@ -80,7 +70,7 @@ func (f *fitter) approach(ctx context.Context) error {
 	for c := range f.clips {
 		f.anchor(c)
 	}
-	for range 4 { // again where a hand was found in the clip, or the toy elsewhere
+	for round := 0; ; round++ { // again where a hand was found in the clip, or the toy elsewhere
 		for c := range f.clips {
 			span := math.Max(firstSpan, 12*f.clips[c].step())
 			if err := f.starts(c, span); err != nil {
@@ -97,12 +87,15 @@ func (f *fitter) approach(ctx context.Context) error {
 		if err := descend(asked, 40, 1e-3); err != nil {
 			return err
 		}
+		if round == 4 {
+			break
+		}
 		again, err := f.findHands(ctx)
 		if err != nil {
 			return err
 		}
-		for c := range f.clips {
-			again = f.findSwitch(c) || again
+		for c := 0; c < len(f.clips) && !again; c++ { // what was left out is no longer in the stretches
+			again = f.findSwitch(c)
 		}
 		if !again && !f.elsewhere() {
 			break
@@ -138,10 +131,15 @@ func (f *fitter) approach(ctx context.Context) error {
 		if f.bind < 10*finalBind {
 			f.bind = finalBind
 		}
-		if err := f.descend(ctx, 20, 2e-2, false); err != nil {
-			return err
+		for {
+			if err := f.descend(ctx, 20, 2e-2, false); err != nil {
+				return err
+			}
+			f.opt.log("bound to %.1g rad: r.m.s. residual %.4g", f.bind, f.rms())
+			if f.rms() > mostWidened || !f.widen() {
+				break
+			}
 		}
-		f.opt.log("bound to %.1g rad: r.m.s. residual %.4g", f.bind, f.rms())
 		if by = 10; f.rms() < 1.5*free {
 			by = 100
 		}

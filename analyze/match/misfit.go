@@ -21,6 +21,7 @@ const (
 	causesFrom  = 2.2 // and from here on causes are looked for, for so long at most
 	causesTime  = 30 * time.Second
 	wrongShare  = 0.03
+	filmedShare = 0.005 // of a film: half a pixel in a swing of a hundred
 )
 
 // size is the motion's own r.m.s. size, in units of the noise.
@@ -75,11 +76,13 @@ func (r *reporter) misfit(ctx context.Context) string {
 		cause = r.causes(limited)
 		stop()
 	}
-	filmed := false
+	limit := wrongShare
 	for c := range r.clips {
-		filmed = filmed || r.clips[c].tables == nil
+		if r.clips[c].tables == nil {
+			limit = filmedShare
+		}
 	}
-	wrong := cause != "" || s > plainMisfit && (filmed || share > wrongShare)
+	wrong := cause != "" || s > plainMisfit && share > limit
 	switch {
 	case s < clearMisfit:
 		text += " The model fits."
@@ -150,7 +153,7 @@ func (r *reporter) causes(ctx context.Context) string {
 			if err := f.quick(ctx); err != nil {
 				continue // what is out of time is not told
 			}
-			all = append(all, trial{[]string{name}, what, f.rms()})
+			all = append(all, trial{[]string{name}, what, f.widened * f.rms()})
 		}
 	}
 	if len(all) == 0 {

@@ -213,3 +213,52 @@ func (f *fitter) reweigh() {
 		}
 	}
 }
+
+// mostWidened is how large residuals may be, in units of the noise, to be taken for
+// noise while the stretches are still being bound together.
+const mostWidened = 8.0
+
+// widen takes the noise of each bob's each coordinate as large as its residuals are
+// where they are clearly larger, and tells whether there are such. A model that is only
+// nearly right, or a bob that is not found as well as the tracker says, must not force
+// clock, weight and camera to make up for it.
+func (f *fitter) widen() bool {
+	before := f.rms()
+	p := f.values()
+	found := false
+	for c := range f.clips {
+		k := &f.clips[c]
+		w := &rower{f: f, c: c, k: k, see: f.viewer(c, p)}
+		sum := make([][3]float64, len(k.watched))
+		for i := range k.segments {
+			g := &k.segments[i]
+			for o := range g.to - g.from {
+				r0, r1 := w.residual(g, o)
+				x := &k.obs[g.from+o]
+				s := &sum[x.who]
+				s[0], s[1], s[2] = s[0]+x.weight*r0*r0, s[1]+x.weight*r1*r1, s[2]+1
+			}
+		}
+		by := func(sum, n float64) float64 {
+			if s := math.Sqrt(sum / math.Max(n, 1)); s > clearMisfit {
+				found = true
+				return s
+			}
+			return 1
+		}
+		scale := make([][2]float64, len(k.watched))
+		for i, s := range sum {
+			scale[i] = [2]float64{by(s[0], s[2]), by(s[1], s[2])}
+		}
+		for i := range k.obs {
+			o := &k.obs[i]
+			s := scale[o.who]
+			o.w0, o.w1, o.w2 = o.w0/s[0], o.w1/s[1], o.w2/s[1]
+		}
+	}
+	if found {
+		f.widened *= before / f.rms()
+		f.opt.log("noise taken %.2f times as large", f.widened)
+	}
+	return found
+}

@@ -26,7 +26,9 @@ type take struct {
 	plane   bool // a track without its camera
 	clip    *rig.Clip
 	start   []rig.Start
-	path    func(t float64, state []float64) // the motion; nil: as the model moves
+	// lens draws the camera, its shutter and its clock from their uncertainties.
+	lens *rand.Rand
+	path func(t float64, state []float64) // the motion; nil: as the model moves
 }
 
 // simulate makes the track of a rig's toy: its own motion, the camera of the rig
@@ -63,6 +65,18 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 	if o.plane {
 		cal.Lens = track.Pinhole{}
 	}
+	film, clock, row := cam, 1.0, 1.0
+	if o.lens != nil {
+		by := make([]float64, len(cal.Lens.Unsure))
+		for i := range by {
+			by[i] = o.lens.NormFloat64()
+		}
+		film = cam.Moved(by)
+		clock = 1 + cal.UClock*o.lens.NormFloat64()
+		if cal.ReadoutS > 0 {
+			row = 1 + cal.UReadoutS/cal.ReadoutS*o.lens.NormFloat64()
+		}
+	}
 	rate := r.Film.FramesPerS.Or(60)
 	n := int(o.seconds * rate)
 	path, err := m.Simulate(context.Background(), y, o.seconds+1, toy.Options{Tol: 1e-11, Undriven: o.clip != nil && !o.clip.Battery})
@@ -97,9 +111,9 @@ func simulate(t testing.TB, r *rig.Rig, o take) *track.Track {
 			var u, w float64
 			tt := at
 			for range 4 {
-				where(tt, state)
+				where(clock*(at+row*(tt-at)), state)
 				pos = m.Positions(state, pos)
-				u, w = cam.BobToPixel(pos[b][0]-middle[0], pos[b][1]-middle[1]-q.DepthM.Or(0), pos[b][2]-middle[2], radius)
+				u, w = film.BobToPixel(pos[b][0]-middle[0], pos[b][1]-middle[1]-q.DepthM.Or(0), pos[b][2]-middle[2], radius)
 				tt = at + cam.RowTime(u, w)
 			}
 			s := track.Sample{Frame: i, T: tt, State: track.Seen}

@@ -15,7 +15,7 @@ func (m *Model) Pushing() bool {
 }
 
 // MayPush tells for a motion as it was seen, states at rising times t in s, at
-// which of them a coil may be pushing: it follows the coils' rules from one seen
+// which of them a coil may be pushing, however strongly: it follows the coils' rules from one seen
 // place to the next, and takes a push to begin and end up to margin (s) sooner and
 // later than it finds. The speeds in the states take no part. Between any other two
 // moments the motion may be cut and started anew. Where places are missing for
@@ -32,9 +32,7 @@ func (m *Model) MayPush(t []float64, states [][]float64, margin, hole float64) [
 		}
 	}
 	for i := range m.coils {
-		if c := &m.coils[i]; c.wound || c.kick != 0 {
-			m.mayPush(c, t, states, hole, mark)
-		}
+		m.mayPush(&m.coils[i], t, states, hole, mark)
 	}
 	return out
 }
