@@ -146,9 +146,9 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 		r.NeedS = 10 / float64(max(r.Passes, 1)) * e.step * float64(e.n)
 		return r, nil
 	}
-	if r.spectrum, r.Explained, err = e.lines(e.main, few); err != nil || len(r.spectrum.Lines) == 0 {
-		r.Text = "No frequency stands out of the scatter; nothing can be said of how it behaves."
-		return r, ctx.Err()
+	// Where no line stands out the motion is broad noise or chaos, for the tests to tell.
+	if r.spectrum, r.Explained, err = e.lines(e.main, few); err != nil {
+		return nil, err
 	}
 	r.describe(e, m)
 	if err := r.decide(ctx, e, m); err != nil {
@@ -160,8 +160,9 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 
 // describe sets the numbers that the decision rests on.
 func (r *Regime) describe(e *evenly, m Motion) {
-	if r.PeriodS = 1 / r.spectrum.Lines[0].Frequency; r.PeriodS > e.longest() {
-		r.PeriodS = e.turn(e.main) * e.step
+	r.PeriodS = e.turn(e.main) * e.step
+	if l := r.spectrum.Lines; len(l) > 0 && 1/l[0].Frequency < e.longest() {
+		r.PeriodS = 1 / l[0].Frequency
 	}
 	mean, _ := meanSD(e.columns[e.main])
 	amp, at := e.turning(e.main, mean)

@@ -78,6 +78,15 @@ func TestRegimesByConstruction(t *testing.T) {
 	}
 }
 
+// evenTimes are n times at 60 a second.
+func evenTimes(n int) []float64 {
+	t := make([]float64, n)
+	for i := range t {
+		t[i] = float64(i) / 60
+	}
+	return t
+}
+
 // Lorenz's system as a toy: chaotic from enough passes, irregular with the time
 // to film from fewer, never chaotic when the rig says it cannot be.
 func TestRegimeOfChaos(t *testing.T) {
@@ -94,6 +103,14 @@ func TestRegimeOfChaos(t *testing.T) {
 	}
 	if len(r.Findings("lamp")) < 4 || len(r.Curves("lamp")) < 2 {
 		t.Error("findings or curves are missing")
+	}
+	// White noise is irregular, and nothing more.
+	white := make([]float64, 6000)
+	for i := range white {
+		white[i] = rng.NormFloat64()
+	}
+	if r, err = Assess(context.Background(), Motion{T: evenTimes(6000), Columns: [][]float64{white}, U: 0.01}); err != nil || r.Kind != Irregular {
+		t.Errorf("white noise: %v, %v", r, err)
 	}
 	r, err = Assess(context.Background(), motion(rng, 12, 0.05, at))
 	if err != nil {

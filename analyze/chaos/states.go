@@ -56,9 +56,9 @@ func States(ctx context.Context, m Motion, most int) (*Embedded, error) {
 	if err := e.choose(ctx); err != nil {
 		return nil, err
 	}
-	out := &Embedded{PeriodS: e.step * float64(e.n) / 8, Thinned: max(1, int(math.Ceil(float64(e.n)/float64(max(most, 100)))))}
+	out := &Embedded{PeriodS: min(e.step*float64(e.n)/8, e.step*e.turn(e.main)), Thinned: max(1, int(math.Ceil(float64(e.n)/float64(max(most, 100)))))}
 	if s, _, err := e.lines(e.main, 1); err == nil && len(s.Lines) > 0 {
-		out.PeriodS = min(out.PeriodS, 1/s.Lines[0].Frequency)
+		out.PeriodS = min(e.step*float64(e.n)/8, 1/s.Lines[0].Frequency)
 	}
 	// Never so thin that a turn has fewer than eight states.
 	out.Thinned = max(1, min(out.Thinned, int(out.PeriodS/8/e.step)))
