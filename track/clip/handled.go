@@ -2,7 +2,6 @@ package clip
 
 import (
 	"fmt"
-	"math"
 	"strings"
 )
 
@@ -110,31 +109,4 @@ func (f *Facts) dynamicRange() string {
 		return "PQ"
 	}
 	return ""
-}
-
-// AsDecoded returns the colour that frames hold where a true picture would show
-// (r, g, b). OpenCV turns every clip's colours with the matrix of standard
-// definition (ITU-R BT.601), whereas clips of 720 lines and more are mostly made
-// with that of high definition (BT.709), so strong colours come out up to 15
-// grey levels off. Rigs name true colours; what is looked for is this.
-func (f *Facts) AsDecoded(r, g, b float64) (dr, dg, db float64) {
-	kr, kb := 0.299, 0.114 // BT.601
-	switch f.ColourSpace {
-	case "bt709":
-		kr, kb = 0.2126, 0.0722
-	case "bt2020nc", "bt2020c":
-		kr, kb = 0.2627, 0.0593
-	default:
-		return r, g, b
-	}
-	if f.Numbered {
-		return r, g, b
-	}
-	y := kr*r + (1-kr-kb)*g + kb*b
-	cb, cr := (b-y)/(2*(1-kb)), (r-y)/(2*(1-kr))
-	in := func(x float64) float64 { return math.Max(0, math.Min(255, x)) }
-	dr = y + 2*(1-0.299)*cr
-	db = y + 2*(1-0.114)*cb
-	dg = (y - 0.299*dr - 0.114*db) / 0.587
-	return in(dr), in(dg), in(db)
 }
