@@ -163,7 +163,7 @@ func (b *builder) number(n rig.Number, asked bool) {
 		}
 	}
 	p := param{
-		address: n.Address, unit: n.Unit.SI, source: "the rig's " + n.Address, asked: asked, clip: -1,
+		address: n.Address, unit: n.Unit.SI, source: "the rig's number for " + n.Address, asked: asked, clip: -1,
 		targets: b.set(addresses, 0, 1), tied: addresses, nuisance: !asked,
 	}
 	if p.moment() { // weaker where it was warmer
