@@ -90,12 +90,15 @@ func (f *fitter) approach(ctx context.Context) error {
 		if round == 4 {
 			break
 		}
-		again, err := f.findHands(ctx)
-		if err != nil {
-			return err
+		again := false
+		for c := range f.clips {
+			again = f.findSwitch(c) || again
 		}
-		for c := 0; c < len(f.clips) && !again; c++ { // what was left out is no longer in the stretches
-			again = f.findSwitch(c)
+		if !again { // a missing kick must not pass for a hand
+			var err error
+			if again, err = f.findHands(ctx); err != nil {
+				return err
+			}
 		}
 		if !again && !f.elsewhere() {
 			break

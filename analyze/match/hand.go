@@ -18,14 +18,15 @@ type interval struct {
 }
 
 const (
-	stillFor   = 0.3  // s that a toy must be still at first to be called held
-	stillShare = 0.02 // of the motion's size, that a hand trembles by
-	pushedFor  = 0.3  // s about a marked push that are left out on either side
-	handFrom   = 2.5  // times the usual residual, from which a stretch is not the toy's own motion
-	handSpread = 8.0  // times the usual residuals' own scatter about that
-	tapFrom    = 6.0  // times the usual jump from one stretch to the next
-	tapFor     = 0.1  // s about a tap that are left out on either side
-	mostHands  = 3    // more of such in a clip are the model's fault and not a hand's
+	stillFor    = 0.3  // s that a toy must be still at first to be called held
+	stillShare  = 0.02 // of the motion's size, that a hand trembles by
+	pushedFor   = 0.3  // s about a marked push that are left out on either side
+	handFrom    = 2.5  // times the usual residual, from which a stretch is not the toy's own motion
+	handSpread  = 8.0  // times the usual residuals' own scatter about that
+	tapFrom     = 6.0  // times the usual jump from one stretch to the next
+	tapFor      = 0.1  // s about a tap that are left out on either side
+	aboutSwitch = 0.5  // s
+	mostHands   = 3    // more of such in a clip are the model's fault and not a hand's
 )
 
 // leaveHeld leaves out what comes before the first motion: a toy that is held, or
@@ -298,6 +299,9 @@ func (f *fitter) runs(c int, limit float64) []interval {
 			if !f.passedElsewhere(c, s, e, rms, limit) {
 				return nil
 			}
+		}
+		if b := k.battery; b != nil && h.from < b.at+aboutSwitch && h.to > b.at-aboutSwitch {
+			h.why = "about the time at which the coil went on or off"
 		}
 		out = append(out, h)
 		s = e

@@ -124,10 +124,11 @@ func TestHandIsLeftOut(t *testing.T) {
 	}
 }
 
-// A clip in which the battery is taken out: kicks up to there, a free decay after.
+// A clip in which a hand makes the toy faster, and later the battery is taken out:
+// kicks up to there, a free decay after.
 func TestBatteryTakenOutIsSeen(t *testing.T) {
 	r := sample(t, "gull")
-	tr := simulate(t, r, take{seconds: 14, noise: 0.05, seed: 22, path: handled{undrivenFrom: 8}.path(t, r, 14)})
+	tr := simulate(t, r, take{seconds: 14, noise: 0.05, seed: 22, path: handled{push: 3.03, tap: 0.7, undrivenFrom: 8}.path(t, r, 14)})
 	res := run(t, wrong(r, 1.3), Clip{Track: tr})
 	check(t, r, res)
 	f := find(res, "match.coil_off")
@@ -135,6 +136,9 @@ func TestBatteryTakenOutIsSeen(t *testing.T) {
 		t.Fatalf("the coil's going off is not told: %+v", f)
 	}
 	t.Log(f.Text)
+	if f := find(res, "match.left_out"); f == nil || !strings.Contains(f.Text, "From 2.") && !strings.Contains(f.Text, "From 3.") {
+		t.Errorf("the hand at 3 s is not told: %+v", f)
+	}
 	if res.Scatter > clearMisfit {
 		t.Errorf("residuals %.2f times the noise", res.Scatter)
 	}
