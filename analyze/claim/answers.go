@@ -78,11 +78,19 @@ func stops(d *decay.Result) (lo, hi float64) {
 			continue
 		}
 		w := math.Sqrt(l.Omega2)
-		run := func(k float64) float64 {
-			c1, c2, dry := math.Max(0, l.Viscous+k*l.UViscous), math.Max(0, l.Drag+k*l.UDrag), math.Max(0, l.Dry+k*l.UDry)
+		c := [3]float64{l.Viscous, l.Drag, l.Dry}
+		u := [3]float64{l.UViscous, l.UDrag, l.UDry}
+		// What each friction of unit size takes from the amplitude, 1/s times rad.
+		per := func(amp float64) [3]float64 {
+			return [3]float64{amp / 2, 4 * w * amp * amp / (3 * math.Pi), 2 / (math.Pi * w)}
+		}
+		run := func(c [3]float64) float64 {
 			amp, t := d.AmplitudeStart, 0.0
 			for amp > still {
-				fall := c1*amp/2 + 4*c2*w*amp*amp/(3*math.Pi) + 2*dry/(math.Pi*w)
+				fall := 0.0
+				for j, p := range per(amp) {
+					fall += math.Max(0, c[j]) * p
+				}
 				if !(fall > 0) || t > 1e8 {
 					return math.Inf(1)
 				}
@@ -91,9 +99,40 @@ func stops(d *decay.Result) (lo, hi float64) {
 			}
 			return t
 		}
-		// The frictions of one law are strongly bound to each other: moved together they
-		// span more than their own interval.
-		lo, hi = math.Min(lo, run(+2)), math.Max(hi, run(-2))
+		try := func(c [3]float64) {
+			t := run(c)
+			lo, hi = math.Min(lo, t), math.Max(hi, t)
+		}
+		var has []int
+		for j := range c {
+			if c[j] != 0 || u[j] != 0 {
+				has = append(has, j)
+			}
+		}
+		middle := per(d.Amplitude)
+		for _, j := range has {
+			for _, k := range [2]float64{-2, 2} {
+				moved := c
+				moved[j] = math.Max(0, c[j]+k*u[j])
+				if len(has) == 1 {
+					try(moved)
+				}
+				// The frictions of one law are strongly bound to each other: where one
+				// is more, another is less, so that the loss that was seen stays.
+				for _, m := range has {
+					if m == j {
+						continue
+					}
+					bound := moved
+					bound[m] = c[m] - (moved[j]-c[j])*middle[j]/middle[m]
+					if bound[m] < 0 {
+						bound[j] += bound[m] * middle[m] / middle[j]
+						bound[m] = 0
+					}
+					try(bound)
+				}
+			}
+		}
 	}
 	// The averaged envelope is that of small losses and small swings: within 2 % up to
 	// 40° and Q of 10.
