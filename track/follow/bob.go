@@ -138,16 +138,21 @@ func (b *bob) look1(frame *clip.Frame) {
 }
 
 // roughly takes a candidate for the bob, as it was found, where its outline cannot
-// be fitted: a camera that is jolted or a hand's shadow spoils a frame or two, and
-// a rough place keeps hold of the bob. Only what is plainly as large and as round as
-// the bob, and stands clear of the others, will do.
+// be fitted: a camera that is jolted, or a thing as bright as the bob behind half of
+// it, spoils some frames, and a rough place keeps hold of the bob. Only what is
+// plainly as large and as round as the bob, and stands clear of the others, will do.
+// A fit that agrees with the candidate but sees too little of the outline is still
+// the better place of the two.
 func (b *bob) roughly(c detect.Candidate) {
 	if b.fits < 5 || len(b.covers) > 0 || c.Score() < 0.5 || math.Abs(c.R-b.radius) > 0.15*b.radius {
 		return
 	}
-	u := 0.7 + 0.05*b.radius
+	at, u := detect.Disc{U: c.U, V: c.V}, 0.7+0.05*b.radius
+	if r := &b.result; math.Abs(r.R-b.radius) < 0.1*b.radius && math.Hypot(r.U-c.U, r.V-c.V) < 0.1*b.radius {
+		at, u = detect.Disc{U: r.U, V: r.V}, 0.3+0.01*b.radius
+	}
 	b.result = detect.Fit{
-		U: c.U, V: c.V, Cov: track.Cov{AA: u * u, BB: u * u}, R: b.radius,
+		U: at.U, V: at.V, Cov: track.Cov{AA: u * u, BB: u * u}, R: b.radius,
 		Level: b.level, Contrast: b.contrast, Visible: 0.5,
 	}
 	b.have = true
@@ -166,6 +171,7 @@ func covered(u, v float64, covers []detect.Disc) bool {
 func (b *bob) try(g detect.Guess) bool {
 	free := b.free()
 	r := b.fitter.Fit(&b.patch, b.f.wall, g, b.covers, free)
+	b.result = r
 	if !r.OK || !b.plausible(&r) {
 		return false
 	}
