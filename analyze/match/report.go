@@ -39,6 +39,13 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 	if err != nil {
 		return nil, err
 	}
+	if f.nearly(j) {
+		f.converged, f.unsettled = true, true
+		f.cautions = append(f.cautions, "The last steps of the matching did not settle in every place and angle that was free, but would move none of the numbers asked for by half a standard uncertainty; that is in their uncertainties.")
+		if j, err = f.judge(); err != nil {
+			return nil, err
+		}
+	}
 	r := &reporter{fitter: f, j: j, p: f.values(), res: &Result{Scatter: f.widened * math.Sqrt(j.chi2/float64(j.dof)), Converged: f.converged}, poor: map[int]bool{}, spans: map[int]span{}}
 	r.say = byMatching
 	if n := len(f.clips); n > 1 {
@@ -94,6 +101,21 @@ func (f *fitter) report(ctx context.Context) (*Result, error) {
 		r.res.Fitted = nil
 	}
 	return r.res, nil
+}
+
+// nearly tells of a fit that did not settle whether the step that is left would move
+// none of the numbers asked for by half of its standard uncertainty: it is what is free
+// beside them that was not brought to rest, as where parts stick and slip.
+func (f *fitter) nearly(j *judgement) bool {
+	if f.converged || f.rms() > clearMisfit || f.hardly() != "" {
+		return false
+	}
+	for i := range f.params {
+		if q := &f.params[i]; q.asked && !(math.Abs(f.final.step[i]) < 0.5*math.Sqrt(j.cov[i*j.np+i])) {
+			return false
+		}
+	}
+	return true
 }
 
 func (r *reporter) add(f finding.Finding) { r.res.Findings = append(r.res.Findings, f) }
