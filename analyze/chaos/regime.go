@@ -141,7 +141,12 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 	if err != nil {
 		return nil, err
 	}
-	if r.Passes = len(cut.T); r.Passes < 8 {
+	if r.Passes = len(cut.T); r.Passes < 8 && r.RestsS > 0 {
+		r.Kind, r.Confidence = Decaying, 0.7
+		r.Text = fmt.Sprintf("Decaying: it rests from %.3g s on, after it passed its middle %d times.", r.RestsS, r.Passes)
+		return r, nil
+	}
+	if r.Passes < 8 {
 		r.Text = fmt.Sprintf("Too short to say how it behaves: it passes its middle only %d times.", r.Passes)
 		r.NeedS = 10 / float64(max(r.Passes, 1)) * e.step * float64(e.n)
 		return r, nil
@@ -182,7 +187,12 @@ func (r *Regime) describe(e *evenly, m Motion) {
 			r.Explained, r.wild = explains, k
 		}
 	}
-	if pace, uPace := e.pace(r.PeriodS); pace < -2*decayed && pace < -4*uPace {
+	least := 2 * decayed
+	if m.Undriven {
+		least = decayed / 3 // it can but lose speed; a swing that turns may seem to grow
+		r.Change = min(r.Change, 0)
+	}
+	if pace, uPace := e.pace(r.PeriodS); pace < -least && pace < -4*uPace {
 		r.slows = pace < r.Change-decayed // a part that goes round keeps its amplitude
 		r.dying = true
 		r.Change = min(r.Change, pace)
@@ -226,7 +236,7 @@ func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 	lines := r.lines()
 	regular := smooth || r.Explained > explained
 	switch {
-	case regular && r.Ripple > 5*steadyRipple && len(lines) >= 2 && (m.BeatS.V > 0 || len(e.columns) == 1) && r.beats(lines, false):
+	case regular && r.Ripple > 5*steadyRipple && m.Never == "" && len(lines) >= 2 && (m.BeatS.V > 0 || len(e.columns) == 1 || r.Ripple > 10*steadyRipple) && r.beats(lines, false):
 		r.Kind, r.dies = Beating, decays
 	case decays && r.SteadyS > 0 && smooth, grows && r.SteadyS > 0 && smooth:
 		r.Kind = Steady
@@ -238,7 +248,7 @@ func (r *Regime) decide(ctx context.Context, e *evenly, m Motion) error {
 		r.Kind = Growing
 	case smooth && r.Ripple < steadyRipple:
 		r.Kind = Steady
-	case regular && len(lines) >= 2 && r.beats(lines, smooth):
+	case regular && m.Never == "" && len(lines) >= 2 && r.beats(lines, smooth):
 		r.Kind = Beating
 	case smooth || r.Mismatch < repeated/2:
 		r.Kind = Steady // its amplitude may wander, but not from swing to swing

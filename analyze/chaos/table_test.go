@@ -2,6 +2,7 @@ package chaos
 
 import (
 	"context"
+	"flag"
 	"fmt"
 	"math"
 	"math/rand/v2"
@@ -154,13 +155,15 @@ func (s *simulated) truth(turn float64) string {
 	return "between"
 }
 
+var drawings = flag.Int("clips", 1000, "with -long: how many clips the table of simulated clips holds")
+
 // Simulated clips of the workshop over its toys' ranges: what they are told to be
 // against what their model's own exponent on the same path says they are.
 func TestTableOfSimulatedClips(t *testing.T) {
 	names := []string{"gull", "buoys", "lantern", "lantern-ball", "vanes", "ferry", "beacon"}
 	clips := 7
 	if *long {
-		clips = 1000
+		clips = *drawings
 	}
 	kinds := []Kind{AtRest, Decaying, Steady, Growing, Beating, QuasiPeriodic, IrregularDecaying, IntoStep, Irregular, Chaotic, Unknown}
 	table := map[string]map[Kind]int{}
