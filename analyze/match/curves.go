@@ -48,6 +48,7 @@ func (r *reporter) curves() {
 					put(x.t, measured, at, x.a-a, b-x.b)
 				}
 			}
+			out := k.leftLine(who, &see)
 			subject := k.its(o.name)
 			y := finding.Axis{Label: "sideways place", Unit: "m", ShowUnit: "mm", ShowFactor: 1e3}
 			res := finding.Axis{Label: "measured − model", Unit: "px"}
@@ -67,7 +68,7 @@ func (r *reporter) curves() {
 			r.res.Curves = append(r.res.Curves, finding.Curve{
 				Key: "match-fit", Subject: subject, Title: "Measured and matched: " + subject,
 				Caption: "Where it was, and where the matched model puts it, over the whole clip.",
-				X:       finding.Axis{Label: "time", Unit: "s"}, Y: y, Lines: []finding.Line{data, model},
+				X:       finding.Axis{Label: "time", Unit: "s"}, Y: y, Lines: append([]finding.Line{data, model}, out...),
 			}, finding.Curve{
 				Key: "match-residuals", Subject: subject, Title: "What the model leaves: " + subject,
 				Caption: fmt.Sprintf("Measured less model. All residuals together are %.2f times what the picture's noise lets expect.", r.res.Scatter),
@@ -76,6 +77,28 @@ func (r *reporter) curves() {
 		}
 	}
 	r.torqueCurve()
+}
+
+// leftLine is where a watched thing was while the clip was left out of the matching; none
+// where all took part.
+func (k *clipData) leftLine(who int, see *viewer) []finding.Line {
+	l := finding.Line{Name: "left out", Role: finding.Data}
+	for i := range k.left {
+		for _, x := range k.left[i].gone {
+			if x.who != who {
+				continue
+			}
+			at := x.a
+			if o := &k.watched[who]; o.bob >= 0 && see.camera != nil {
+				at, _, _ = see.camera.BobToPlane(x.a, x.b, o.radius, o.depth)
+			}
+			l.X, l.Y = append(l.X, x.t), append(l.Y, at)
+		}
+	}
+	if len(l.X) == 0 {
+		return nil
+	}
+	return []finding.Line{l}
 }
 
 // forceCurve draws the force of a pair on one axis against distance.

@@ -295,7 +295,7 @@ func (f *fitter) runs(c int, limit float64) []interval {
 		case e >= n-2:
 			h.to, h.why = k.obs[len(k.obs)-1].t+1, "no longer as the model moves: a hand, or a bob that was not seen well"
 		default:
-			h.why = "not as the model moves there at other times: a push by hand, mostly"
+			h.why = "not as the model moves there at other times: a push by hand, or a bob that was not seen well"
 			if !f.passedElsewhere(c, s, e, rms, limit) {
 				return nil
 			}
