@@ -105,13 +105,14 @@ type view struct {
 
 // meeting is one pass of the magnet by the coil.
 type meeting struct {
-	t, until float64 // s; the push, if there is one, ends at until
-	aside    float64 // m, from the coil's axis
-	gain     float64 // share of a kick right over the coil that it had
-	speed    float64 // rad/s
-	slow     bool    // surely too slow to be sensed
-	doubtful bool    // perhaps too slow
-	back     bool    // it turned back before the push was over
+	t, until float64    // s; the push, if there is one, ends at until
+	aside    float64    // m, from the coil's axis
+	over     [3]float64 // m, the same as a vector
+	gain     float64    // share of a kick right over the coil that it had
+	speed    float64    // rad/s
+	slow     bool       // surely too slow to be sensed
+	doubtful bool       // perhaps too slow
+	back     bool       // it turned back before the push was over
 }
 
 func newView(clip int, c *Clip, b *Ball) (*view, error) {
@@ -274,7 +275,7 @@ func (v *view) meet(f *freeFit) {
 		g := place[i]
 		d := minus(g, coil)
 		over := minus(d, times(axis, dot(d, axis)))
-		m.aside = math.Sqrt(square(over))
+		m.aside, m.over = math.Sqrt(square(over)), over
 		if reach := c.RadiusM.Or(c.WidthM.Or(0)); reach > 0 && (c.KickJ.Set || c.KickJ.Fit) {
 			m.gain = math.Exp(-m.aside * m.aside / reach / reach)
 		}
@@ -449,6 +450,7 @@ func (l *ledger) enterBall() {
 					meet = m
 				}
 				r.gain += m.gain
+				r.meets = append(r.meets, m)
 				doubtful = doubtful || m.doubtful && m.gain > 0.05
 				if !m.slow {
 					r.state, r.fixed = Kicked, false
@@ -520,6 +522,42 @@ func (l *ledger) blunt(ctx context.Context) error {
 		l.measureNoise()
 	}
 	return nil
+}
+
+// coilBudget is what the kick right over the coil owes to how well the rig knows where
+// the coil stands and how far it is felt: the share of a kick that a pass had hangs
+// on both. Errors of the directions act like an error of the coil's place, which is
+// taken as 0.5 mm each way, as of the rig's magnets.
+func (l *ledger) coilBudget(kick float64) []finding.Share {
+	const uPlace = 0.5e-3
+	k := l.opt.Ball.Coil
+	reach := k.RadiusM.Or(k.WidthM.Or(0))
+	if !(reach > 0) || !(k.KickJ.Set || k.KickJ.Fit) || l.best.kicks == 0 {
+		return nil
+	}
+	effect := func(gain func(over [3]float64) float64) float64 {
+		dy := make([]float64, len(l.rows))
+		for i := range l.rows {
+			r := &l.rows[i]
+			for _, m := range r.meets {
+				if m.gain > 0 {
+					dy[i] -= r.state.share() * kick * (gain(m.over) - m.gain)
+				}
+			}
+		}
+		return l.best.response(dy)[0]
+	}
+	place := 0.0
+	for e := range 2 {
+		d := effect(func(over [3]float64) float64 {
+			over[e] -= uPlace
+			return math.Exp(-square(over) / reach / reach)
+		})
+		place = math.Hypot(place, d)
+	}
+	u := math.Max(k.RadiusM.U, 0.01*reach)
+	size := effect(func(over [3]float64) float64 { return math.Exp(-square(over) / (reach + u) / (reach + u)) })
+	return []finding.Share{{Source: "the coil's place, by the rig's", U: place}, {Source: "the rig's radius of the coil", U: math.Abs(size)}}
 }
 
 // pictures says what the energies hang on beside what turns angles into them.

@@ -100,6 +100,8 @@ func beaconSeen(t testing.TB, r *rig.Rig, rng *rand.Rand, noise float64, phases 
 
 // On a ball joint: the kick of the beacon is within 4 % of the model's (95 %) and
 // its interval holds it, from a start-up, with a push, and with the coil off for 6 s.
+// Two thirds of the kick's uncertainty are the coil's place and radius, by the rig's,
+// which are exact here: so much more than 95 % of the intervals hold it.
 func TestBeaconAgainstTheModel(t *testing.T) {
 	r := beacon(t)
 	runs := 1

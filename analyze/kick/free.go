@@ -813,13 +813,6 @@ func (f *freeFit) conclude(ctx context.Context, cov []float64) error {
 	}
 	f.root = root
 	for _, v := range f.views {
-		v.rate, v.polar = make([]float64, len(v.t)), make([]float64, len(v.t))
-		for i := range v.t {
-			v.rate[i], v.polar[i] = v.turning(i), math.Asin(math.Min(1, math.Hypot(v.local[i][0], v.local[i][1])))
-			if math.IsNaN(v.rate[i]) && i > 0 {
-				v.rate[i], v.polar[i] = v.rate[i-1], v.polar[i-1]
-			}
-		}
 		for _, s := range v.free {
 			s.variance *= sq(f.noise)
 			common := make([]float64, p)
@@ -829,6 +822,26 @@ func (f *freeFit) conclude(ctx context.Context, cov []float64) error {
 				}
 			}
 			s.common = common
+		}
+	}
+	return f.again(ctx)
+}
+
+// again takes directions, passes and rates once more, by the solution.
+func (f *freeFit) again(ctx context.Context) error {
+	for _, v := range f.views {
+		if err := v.directions(f); err != nil {
+			return fmt.Errorf("kick: %w", err)
+		}
+		v.meet(f)
+		v.rate, v.polar = make([]float64, len(v.t)), make([]float64, len(v.t))
+		for i := range v.t {
+			v.rate[i], v.polar[i] = v.turning(i), math.Asin(math.Min(1, math.Hypot(v.local[i][0], v.local[i][1])))
+			if math.IsNaN(v.rate[i]) && i > 0 {
+				v.rate[i], v.polar[i] = v.rate[i-1], v.polar[i-1]
+			}
+		}
+		for _, s := range v.free {
 			err := f.model.Sample(ctx, s.y, v.t[s.lo:s.hi+1], toy.Options{Undriven: true, Tol: 1e-9}, func(i int, y []float64) {
 				polar, _, polarRate, azimuthRate, _ := f.model.Ball(y, f.part)
 				v.rate[s.lo+i], v.polar[s.lo+i] = math.Hypot(polarRate, azimuthRate*math.Sin(polar)), polar

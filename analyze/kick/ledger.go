@@ -56,6 +56,7 @@ type row struct {
 	span           float64 // s
 	aside          float64 // m, from the coil's axis; a ball joint's only
 	last           *stretch
+	meets          []*meeting // of a ball joint
 	state          State
 	fixed          bool // the state is known beforehand
 }

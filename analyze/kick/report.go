@@ -178,6 +178,15 @@ func (l *ledger) report(res *Result) {
 	var fKick finding.Finding
 	if l.best.kicks == 1 {
 		fKick = l.measured("kick.energy", "Energy of one kick", kick)
+		if l.free != nil {
+			fKick.Name = "Energy of one kick, right over the coil"
+			u, budget := fKick.U, fKick.Budget
+			for _, sh := range l.coilBudget(fKick.Value) {
+				u, budget = math.Hypot(u, sh.U), append(budget, sh)
+			}
+			fKick = finding.Normal(fKick.Key, fKick.Subject, fKick.Name, fKick.Value, u, fKick.Unit, fKick.Method)
+			fKick.Budget = budget
+		}
 		v, variance := l.mean(kick)
 		switch u := math.Sqrt(variance); {
 		case v > 0 && u < enough*v:

@@ -42,6 +42,7 @@ type solution struct {
 	kicks  int // 1 when there is a kick to fit
 	beta   []float64
 	cov    []float64
+	by     []float64 // inverse of the normal equations
 	chi2   float64
 	dof    int
 	sigma  float64 // J, scatter of the kicks from pass to pass
@@ -248,7 +249,7 @@ func (l *ledger) fitAt(w law, extras []extra, sigma float64) (*solution, bool) {
 	if !ok {
 		return nil, false
 	}
-	s.cov, s.beta = cov, make([]float64, p)
+	s.cov, s.by, s.beta = cov, append([]float64(nil), cov...), make([]float64, p)
 	for j := range p {
 		for k := range p {
 			s.beta[j] += cov[j*p+k] * b[k]
@@ -345,7 +346,7 @@ func (s *solution) response(dy []float64) []float64 {
 	out := make([]float64, s.size)
 	for j := range out {
 		for k := range b {
-			out[j] += s.cov[j*s.size+k] * b[k]
+			out[j] += s.by[j*s.size+k] * b[k]
 		}
 	}
 	return out

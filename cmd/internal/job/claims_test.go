@@ -47,8 +47,13 @@ func TestFilmedClaims(t *testing.T) {
 	}{
 		// Steady at 24.2°, where kick and loss are equal; 0.7574 s by its own model.
 		{"gull", "gull", 0.42265, samples.Options{DurationS: 12}, []ask{
-			{amplitude(20), still}, {amplitude(30), no}, {amplitude(24.216), cannot},
-			{period(0.75, 0.015), still}, {period(0.8, 0.015), no}, {never, still}, {runs(14 * 86400), cannot},
+			{amplitude(20), still},
+			{amplitude(30), no},
+			{amplitude(24.216), cannot},
+			{period(0.75, 0.015), still},
+			{period(0.8, 0.015), no},
+			{never, still},
+			{runs(14 * 86400), cannot},
 		}},
 		{"gull, coil off", "gull", 0.42265, samples.Options{DurationS: 12, Undriven: true}, []ask{{never, cannot}}},
 		// Let go at 40°, it falls towards the steady amplitude.
