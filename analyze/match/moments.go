@@ -237,7 +237,7 @@ func (r *reporter) cylinder(g *rig.Magnet, i int, subject string) {
 	r.add(finding.Finding{Key: "match.grade", Subject: subject, Name: "Magnet grade", Kind: finding.Statement, Unit: "1", Text: words, Method: "remanence from the moment and the cylinder's dimensions, corrected for self-demagnetisation"})
 	x := c.FluxIndex()
 	h := finding.Normal("match.flux_index", subject, "Flux index (screening)", x, 2*x*f.U/c.Remanence, "T²·m²", "from the fitted remanence and the dimensions, 0.38 mm above a face")
-	h.Cautions = []string{fmt.Sprintf("A screening figure, never a certificate: the limit is 50 kG²mm², this is %.3g kG²mm². Conformity is for an accredited laboratory under local law.", x*1e8)}
+	h.Cautions = []string{fmt.Sprintf("A screening figure, never a certificate: the limit for a magnet that can be swallowed is 50 kG²mm² (0.5 T²mm²), this is about %.0f kG²mm². Conformity is for an accredited laboratory under local law.", x*1e8)}
 	r.add(h)
 }
 
