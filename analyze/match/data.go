@@ -101,6 +101,7 @@ type fitter struct {
 	oneMotion bool
 	scatter   float64
 	widened   float64 // by which the noise was taken larger than the track says
+	giveUp    float64 // a trial ends where its residuals must stay larger than this; 0: never
 	chi2      float64
 	unsettled bool // the last step foreseen counts as an uncertainty of its own
 	converged bool

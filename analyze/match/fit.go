@@ -2,6 +2,7 @@ package match
 
 import (
 	"context"
+	"errors"
 	"math"
 )
 
@@ -114,6 +115,9 @@ func (f *fitter) approach(ctx context.Context) error {
 		f.reweigh()
 	}
 	f.opt.log("free stretches: r.m.s. residual %.4g", f.rms())
+	if f.noBetter() {
+		return errNoBetter
+	}
 	f.saddles()
 	f.merge()
 	f.tol = 1e-9
@@ -139,6 +143,9 @@ func (f *fitter) approach(ctx context.Context) error {
 				return err
 			}
 			f.opt.log("bound to %.1g rad: r.m.s. residual %.4g", f.bind, f.rms())
+			if f.noBetter() {
+				return errNoBetter
+			}
 			if f.rms() > mostWidened || !f.widen() {
 				break
 			}
@@ -157,6 +164,12 @@ func (f *fitter) approach(ctx context.Context) error {
 	}
 	return f.descend(ctx, 6, 1e-4, false)
 }
+
+var errNoBetter = errors.New("it fits no better")
+
+// noBetter tells whether a trial cannot fit better than giveUp any more: residuals only
+// grow as the stretches are bound together.
+func (f *fitter) noBetter() bool { return f.giveUp > 0 && f.widened*f.rms() > f.giveUp }
 
 // finalBind is how far the ends of stretches may be apart in the end, rad: far
 // below what a picture shows.

@@ -150,8 +150,12 @@ func (r *reporter) causes(ctx context.Context) string {
 			if err != nil {
 				continue
 			}
+			f.giveUp = 0.5 * now
+			for _, t := range all {
+				f.giveUp = math.Min(f.giveUp, 2*t.rms+1)
+			}
 			if err := f.quick(ctx); err != nil {
-				continue // what is out of time is not told
+				continue // what is out of time, or fits no better, is not told
 			}
 			all = append(all, trial{[]string{name}, what, f.widened * f.rms()})
 		}

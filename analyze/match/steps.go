@@ -101,7 +101,8 @@ func (f *fitter) descend(ctx context.Context, rounds int, enough float64, fresh 
 // the sum of squares by next to nothing. It does not ask whether each step lowers
 // it: near the optimum the integration's own error hides that.
 func (f *fitter) polish(ctx context.Context) error {
-	const rounds, enough, nearly = 20, 1e-3, 0.35
+	// closing is by how much more the sum of squares may be once the gaps are closed.
+	const rounds, enough, nearly, closing = 20, 1e-3, 0.35, 0.02
 	p := f.values()
 	f.converged, f.exact = false, true
 	tol := f.tol
@@ -129,7 +130,14 @@ func (f *fitter) polish(ctx context.Context) error {
 		}
 		f.final = f.solveChain(p, 0, true)
 		fall = f.final.foreseen()
-		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g, damped by %.1g", f.rms(), f.gaps(), fall, lambda)
+		_, data, _ := f.merit(p)
+		f.opt.log("polish: r.m.s. residual %.6g, gaps %.2g rad, foreseen %.2g, damped by %.1g", math.Sqrt(data/float64(rows)), f.gaps(), fall, lambda)
+		if ahead > 0 && fall < enough*unit && now < best.merit+closing*best.merit {
+			// Nothing is foreseen from here: best was only lower for its gaps.
+			f.setValues(p)
+			best, ahead, done = f.mark(p, now), 0, true
+			break
+		}
 		if ahead == 0 && (fall < enough*unit || (failed > 0 || round > 6) && fall < nearly*unit || failed > 6) {
 			done = true
 			break
