@@ -76,7 +76,11 @@ func (p *Plot) Curves(subject string) []finding.Curve {
 		}[p.Kind]
 		caption := fmt.Sprintf("%s %.2g %% of all pairs are alike.", what, 100*p.Measures.RR.V)
 		if p.Map.Rows < p.N || p.Map.Cols < p.M {
-			caption += fmt.Sprintf(" Each cell holds %.0f × %.0f pairs; it is darkest where %.2g %% of them or more are alike.", math.Ceil(float64(p.N)/float64(p.Map.Rows)), math.Ceil(float64(p.M)/float64(p.Map.Cols)), 100*top)
+			alike := "all of them"
+			if top < 0.995 {
+				alike = fmt.Sprintf("%.2g %% of them or more", 100*top)
+			}
+			caption += fmt.Sprintf(" Each cell holds %.0f × %.0f pairs; it is darkest where %s are alike.", math.Ceil(float64(p.N)/float64(p.Map.Rows)), math.Ceil(float64(p.M)/float64(p.Map.Cols)), alike)
 		}
 		out = append(out, finding.Curve{
 			Key: "recurrence", Subject: subject, Title: title, Caption: caption,
