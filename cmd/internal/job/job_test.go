@@ -82,6 +82,10 @@ func TestTheDemoComesBackTrue(t *testing.T) {
 	within(t, rec, "decay.viscous", number["arm.friction.viscous"]/inertia, 0)
 	within(t, rec, "decay.drag", number["arm.friction.drag"]/inertia, 0)
 	within(t, rec, "decay.rest_angle", 0, 0)
+	within(t, rec, "match.moment", number["lamp magnet.moment"], 0)
+	within(t, rec, "match.product", number["lamp magnet.moment"]*number["base magnet.moment"], 0)
+	within(t, rec, "match.viscous", number["arm.friction.viscous"], 0)
+	within(t, rec, "match.drag", number["arm.friction.drag"], 0)
 
 	// Period and damping at the stated amplitude from the film's own turning
 	// points, each pair on one side; a ζ by first order in the loss agrees with
