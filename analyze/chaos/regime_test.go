@@ -8,6 +8,8 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
+
+	"lodeswing/analyze/finding"
 )
 
 var long = flag.Bool("long", false, "run the full Monte Carlo counts")
@@ -71,6 +73,11 @@ func TestRegimesByConstruction(t *testing.T) {
 		t.Logf("%-16s %.2f %s %v", r.Kind, r.Confidence, r.Text, r.Evidence)
 		if r.Kind != c.want || r.Text == "" {
 			t.Errorf("told %q (%s), want %q: %v", r.Kind, r.Text, c.want, r.Evidence)
+		}
+		if c.want == Unknown {
+			if f := r.Findings("lamp")[0]; f.Kind != finding.Undecided || !strings.Contains(f.Text, "Film for about") || strings.Contains(f.Text, "Confidence") {
+				t.Errorf("too short a clip is told %q", f.Text)
+			}
 		}
 		if c.want == Beating {
 			near(t, "beat period", r.BeatS.V, 2*math.Pi/(0.08*w), 0.01*2*math.Pi/(0.08*w))

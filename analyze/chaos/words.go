@@ -164,6 +164,12 @@ func (r *Regime) Findings(subject string) []finding.Finding {
 		Method:   "Course and scatter of the turning points, spectral lines; for irregular motion exponent, 0–1 test and surrogates together",
 		Cautions: slices.Clone(r.Cautions),
 	}
+	if r.Kind == Unknown {
+		f.Kind, f.Text = finding.Undecided, r.Text
+		if r.NeedS > 0 {
+			f.Text += fmt.Sprintf(" Film for about %s.", filmFor(r.NeedS))
+		}
+	}
 	for _, e := range r.Evidence {
 		f.Evidence = append(f.Evidence, e+".")
 	}
