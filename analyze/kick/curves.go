@@ -126,4 +126,31 @@ func (l *ledger) overTime(res *Result) {
 		Lo: []float64{mean - u, mean - u}, Hi: []float64{mean + u, mean + u},
 	})
 	res.Curves = append(res.Curves, kicks)
+	if res.How == CoilOff {
+		l.againstSpeed(res)
+	}
+}
+
+// againstSpeed draws each kick against the speed at the coil: a winding's pulse
+// weakens as the magnet comes faster.
+func (l *ledger) againstSpeed(res *Result) {
+	c := finding.Curve{
+		Key: "kick-speed", Subject: l.part(), Title: "Kick against the speed at the coil",
+		X: finding.Axis{Label: "speed at the coil", Unit: "rad/s", ShowUnit: "°/s", ShowFactor: 1 / degree}, Y: finding.Axis{Label: "kick", Unit: l.unit},
+		Caption: "Each point is one pass with a kick, and one standard uncertainty of the pictures. A coil whose pulse weakens with speed falls to the right.",
+	}
+	line := finding.Line{Name: "kicked", Role: finding.Mark}
+	for i := range res.Passes {
+		p := &res.Passes[i]
+		if p.State != Kicked || p.Clip != 0 || math.IsNaN(p.Kick) {
+			continue
+		}
+		u := math.Sqrt(l.rows[i].vFrom + l.rows[i].vTo)
+		line.X, line.Y = append(line.X, p.Speed), append(line.Y, p.Kick)
+		line.Lo, line.Hi = append(line.Lo, p.Kick-u), append(line.Hi, p.Kick+u)
+	}
+	if len(line.X) > 0 {
+		c.Lines = []finding.Line{line}
+		res.Curves = append(res.Curves, c)
+	}
 }

@@ -4,8 +4,10 @@ import (
 	"context"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 
+	"lodeswing/analyze/finding"
 	"lodeswing/analyze/toy"
 	"lodeswing/track/rig"
 )
@@ -59,6 +61,10 @@ func TestWindingAgainstItsPulses(t *testing.T) {
 	t.Logf("%d pulses from %.4g to %.4g mJ; mean %.4g, ledger %.4g mJ; farthest %.2g mJ", len(kicks), 1e3*kicks[1].Energy, 1e3*kicks[len(kicks)-1].Energy, 1e3*energy, 1e3*got, 1e3*worst)
 	if math.Abs(got/energy-1) > 0.02 || worst > 0.15*energy {
 		t.Errorf("mean kick %.4g mJ, the pulses' %.4g mJ; farthest %.2g mJ", 1e3*got, 1e3*energy, 1e3*worst)
+	}
+	drawn := slices.IndexFunc(res.Curves, func(c finding.Curve) bool { return c.Key == "kick-speed" })
+	if drawn < 0 || len(res.Curves[drawn].Lines[0].X) != k {
+		t.Errorf("the kicks against speed are not drawn, or not all %d of them", k)
 	}
 	f := find(res, "kick.efficiency")
 	if want := energy / (9 * charge); f == nil || math.Abs(f.Value/want-1) > 0.1 {
