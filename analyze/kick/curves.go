@@ -3,6 +3,7 @@ package kick
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"lodeswing/analyze/finding"
 )
@@ -149,7 +150,8 @@ func (l *ledger) againstSpeed(res *Result) {
 		line.X, line.Y = append(line.X, p.Speed), append(line.Y, p.Kick)
 		line.Lo, line.Hi = append(line.Lo, p.Kick-u), append(line.Hi, p.Kick+u)
 	}
-	if len(line.X) > 0 {
+	// At one speed there is nothing to see.
+	if len(line.X) > 0 && slices.Max(line.X) > 1.02*slices.Min(line.X) {
 		c.Lines = []finding.Line{line}
 		res.Curves = append(res.Curves, c)
 	}
