@@ -77,10 +77,11 @@ type Regime struct {
 	Surrogates *Surrogates
 	// Correlation is the correlation dimension of the column that lines explain least.
 	Correlation *Correlation
-	slows       bool // its speed falls more than its amplitude
-	dies        bool // it beats, and dies down
-	dying       bool // its speed falls
-	wild        int  // the column that lines explain least
+	slows       bool    // its speed falls more than its amplitude
+	dies        bool    // it beats, and dies down
+	dying       bool    // its speed falls
+	spanS       float64 // s, of the motion
+	wild        int     // the column that lines explain least
 	spectrum    *spectrum.Spectrum
 }
 
@@ -143,7 +144,7 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 	}
 	if r.Passes = len(cut.T); r.Passes < 8 && r.RestsS > 0 {
 		r.Kind, r.Confidence = Decaying, 0.7
-		r.Text = fmt.Sprintf("Decaying: it rests from %.3g s on, after it passed its middle %d times.", r.RestsS, r.Passes)
+		r.Text = fmt.Sprintf("Decaying: it rests from %.3g s on, after few swings.", r.RestsS)
 		return r, nil
 	}
 	if r.Passes < 8 {
@@ -165,6 +166,7 @@ func Assess(ctx context.Context, m Motion) (*Regime, error) {
 
 // describe sets the numbers that the decision rests on.
 func (r *Regime) describe(e *evenly, m Motion) {
+	r.spanS = e.step * float64(e.n)
 	r.PeriodS = e.turn(e.main) * e.step
 	if l := r.spectrum.Lines; len(l) > 0 && 1/l[0].Frequency < e.longest() {
 		r.PeriodS = 1 / l[0].Frequency
@@ -311,7 +313,7 @@ func (r *Regime) lines() []spectrum.Line {
 func (r *Regime) beats(lines []spectrum.Line, smooth bool) bool {
 	a, b := lines[0], lines[1]
 	d := math.Abs(a.Frequency - b.Frequency)
-	if d > 0.35*a.Frequency && !smooth {
+	if d > 0.35*a.Frequency && !smooth || d*r.spanS < 1.4 { // nor is a beat that the clip does not show once and a half
 		return false
 	}
 	u := math.Hypot(a.UFrequency, b.UFrequency)
