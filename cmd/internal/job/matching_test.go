@@ -16,7 +16,11 @@ import (
 // Every toy of the harbour set, rendered for 25 s with noise, H.264 and rolling
 // shutter, followed and matched: each number that the rig leaves free lies within three
 // standard uncertainties of the truth, and the pictures' share of a moment is within
-// 2 % (95 %), of a product of two equal ones within 4 %.
+// 2 % (95 %), of a product of two equal ones within 4 %. Measured on clips of 30 s so
+// made, errors in standard uncertainties: lantern moment −1.6, frictions −0.0 and 0.1;
+// gull kick 0.1, frictions −0.2 and 0.8; buoys moment 0.5, spring 0.5, friction 1.9; vanes
+// moment 0.1, frictions 0.0; ball-joint lantern moment 1.0, friction 0.2; beacon moment
+// 0.1, kick 0.2, friction −0.1; ferry moment 0.1, kick −0.1, frictions −0.2 and 0.1.
 func TestRenderedToysAreMatched(t *testing.T) {
 	if !*long {
 		t.Skip("films and matches seven toys for a quarter of an hour; run with -long")
