@@ -198,12 +198,23 @@ func (f *fitter) polish(ctx context.Context) error {
 	f.converged = fall < unit
 	f.why = fmt.Sprintf("one more step is foreseen to lower the sum of squares by %.1g", fall)
 	f.unsettled = fall > 0.1*unit
+	if failed >= givenUp && fall < trifle*best.merit && f.rms() < clearMisfit {
+		// The foreseen is the derivatives' error in a direction that hardly anything
+		// determines; the step is counted as an uncertainty.
+		f.converged = true
+		f.why = fmt.Sprintf("no step lowers the sum of squares any more, though one is foreseen to by %.1g", fall)
+	}
 	if f.converged && f.unsettled {
 		f.cautions = append(f.cautions, "The matching settled only to within about one standard uncertainty of its numbers; what is left is in their uncertainties.")
 	}
 	f.chi2 = now
 	return nil
 }
+
+const (
+	givenUp = 4    // failures at ever stronger damping, after which no step lowers anything
+	trifle  = 0.05 // share of the sum of squares that may yet be foreseen then
+)
 
 // place is a point of the search.
 type place struct {
