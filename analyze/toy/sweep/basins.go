@@ -64,7 +64,7 @@ func FallInto(ctx context.Context, r *rig.Rig, side int, opt Options) (*Basins, 
 	if most <= 0 {
 		most = 600
 	}
-	b.Done = each(ctx, side*side, opt, func(i int) {
+	b.Done = each(ctx, side*side, opt, func(i int) bool {
 		c := m.Clone()
 		z := append([]float64(nil), y...)
 		release(c, z, i%side, i/side)
@@ -75,14 +75,15 @@ func FallInto(ctx context.Context, r *rig.Rig, side int, opt Options) (*Basins, 
 				rests := Answers{Rests: b.Rests}
 				if at := rests.creeps(c, z); at >= 0 {
 					b.Into[i], b.Steps[i] = at, t
-					return
+					return true
 				}
 			}
 			if c.Run(ctx, t, z, t+chunk, toy.Options{Tol: math.Max(opt.tol(), 1e-9), Undriven: true}, nil, nil) != nil {
-				return
+				return ctx.Err() == nil
 			}
 			c.Normalise(z)
 		}
+		return true
 	})
 	return b, ctx.Err()
 }

@@ -62,29 +62,37 @@ func Motion(ctx context.Context, r *rig.Rig, opt Options) (*Result, error) {
 	}
 	members := make([]*member, opt.Ensemble+1)
 	var motion *toy.Motion
-	each(ctx, opt.Ensemble+1, opt, func(i int) {
+	var failed error // of the rig's own toy
+	each(ctx, opt.Ensemble+1, opt, func(i int) bool {
 		model, start := m, y
 		if i > 0 {
 			drawn := draws.draw(opt.Seed, i)
 			var err error
 			if model, start, err = build(drawn); err != nil {
-				return // an impossible draw; counted below
+				return true // an impossible draw; counted below
 			}
 		}
 		a, o, err := ask(ctx, model, start, seconds, opt)
+		if err != nil && i == 0 {
+			failed = err
+		}
 		if err != nil || a.Problem != "" && i > 0 {
-			return
+			return true
 		}
 		members[i] = newMember(model, o, a, times)
 		if i == 0 {
 			motion = o
 		}
+		return true
 	})
 	if err := ctx.Err(); err != nil {
 		return nil, err
 	}
+	if failed != nil {
+		return nil, failed
+	}
 	first := members[0]
-	if first == nil || first.a.Problem != "" {
+	if first.a.Problem != "" {
 		return nil, fmt.Errorf("%s", first.a.Problem)
 	}
 	var others []*member

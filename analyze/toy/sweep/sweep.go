@@ -58,8 +58,9 @@ func (o Options) tol() float64 {
 }
 
 // each runs do(0) to do(n−1) on all processors and tells progress. It stops
-// handing out work when ctx ends and returns how many were done.
-func each(ctx context.Context, n int, opt Options, do func(i int)) int {
+// handing out work when ctx ends and returns how many were done: do says whether
+// it came to its end.
+func each(ctx context.Context, n int, opt Options, do func(i int) bool) int {
 	if opt.Start != nil {
 		opt.Start(n)
 	}
@@ -79,9 +80,8 @@ func each(ctx context.Context, n int, opt Options, do func(i int)) int {
 				if i >= n || ctx.Err() != nil {
 					return
 				}
-				do(i)
-				if ctx.Err() != nil {
-					return // cut short, so not done
+				if !do(i) {
+					continue
 				}
 				mu.Lock()
 				done++

@@ -37,20 +37,22 @@ func Vary(ctx context.Context, r *rig.Rig, ranges []Range, opt Options) (*Table,
 		}
 	}
 	t := &Table{Ranges: ranges, Parts: m.Parts(), Answers: make([]*Answers, n)}
-	t.Done = each(ctx, n, opt, func(i int) {
+	t.Done = each(ctx, n, opt, func(i int) bool {
 		c, left := r, i
 		for _, g := range ranges {
 			var err error
 			if c, err = g.With(c, left%len(g.Values)); err != nil {
 				t.Answers[i] = &Answers{Problem: err.Error(), EndsAt: -1}
-				return
+				return true
 			}
 			left /= len(g.Values)
 		}
 		a, err := Ask(ctx, c, opt)
-		if err == nil {
-			t.Answers[i] = a
+		if err != nil {
+			return false // cut short
 		}
+		t.Answers[i] = a
+		return true
 	})
 	return t, ctx.Err()
 }
