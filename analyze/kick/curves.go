@@ -8,6 +8,16 @@ import (
 	"lodeswing/analyze/finding"
 )
 
+// drawnKinds are the kinds of passes that figures tell apart.
+var drawnKinds = []struct {
+	name string
+	has  func(s State) bool
+}{
+	{"kicked", func(s State) bool { return s == Kicked }},
+	{"without a kick", func(s State) bool { return s == Off || s == Slow || s == Missed }},
+	{"double or odd", func(s State) bool { return s == Double || s == Odd }},
+}
+
 // curves draws the ledger: gain per pass against amplitude, and over time.
 func (l *ledger) curves(res *Result) {
 	if l.free != nil {
@@ -22,14 +32,7 @@ func (l *ledger) curves(res *Result) {
 		Caption: "Each point is one pass: what its energy grew by, kick minus loss, with one standard uncertainty of the pictures. Above zero the swing grows, below it dies; where the line crosses zero it is steady.",
 	}
 	lo, hi := math.Inf(1), 0.0
-	for _, kind := range []struct {
-		name string
-		has  func(s State) bool
-	}{
-		{"kicked", func(s State) bool { return s == Kicked }},
-		{"without a kick", func(s State) bool { return s == Off || s == Slow || s == Missed }},
-		{"double or odd", func(s State) bool { return s == Double || s == Odd }},
-	} {
+	for _, kind := range drawnKinds {
 		line := finding.Line{Name: kind.name, Role: finding.Data}
 		for i := range res.Passes {
 			p := &res.Passes[i]
