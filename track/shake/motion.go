@@ -159,7 +159,14 @@ func leastSquares(shifts []shift, in []bool) (f fitted, ok bool) {
 			sq += ((u-s.du)*(u-s.du) + (v-s.dv)*(v-s.dv)) / (s.u * s.u)
 		}
 	}
-	f.spread = math.Sqrt(sq / sw * float64(f.used) / float64(max(2*f.used-4, 1)))
+	free := float64(max(2*f.used-4, 1))
+	f.spread = math.Sqrt(sq / sw * float64(f.used) / free)
+	// Patches scatter by more than the noise: a codec redraws each block of a faint
+	// wall on its own (Birge, Physical Review 40, 1932, 207–227).
+	if birge := math.Sqrt(sq / free); birge > 1 {
+		f.u *= birge
+		f.uz *= birge
+	}
 	f.in = in
 	return f, true
 }
