@@ -45,13 +45,17 @@ func (p *Plot) Findings(subject string) []finding.Finding {
 		if math.IsNaN(l.v.V) || math.IsInf(l.v.V, 0) {
 			continue
 		}
+		if !(l.v.U > 0) {
+			out = append(out, finding.Finding{
+				Key: prefix + l.key, Subject: subject, Name: l.name, Unit: l.unit, Method: l.what,
+				Kind: finding.Undecided, Text: "Too few states come back to tell how sure it is; film for longer.",
+			})
+			continue
+		}
 		f := finding.Normal(prefix+l.key, subject, l.name, l.v.V, l.v.U, l.unit, l.what)
-		f.Lo = max(f.Lo, 0) // NaN where the uncertainty is not known
+		f.Lo = max(f.Lo, 0)
 		if l.share {
 			f.Hi = min(f.Hi, 1)
-		}
-		if math.IsNaN(l.v.U) {
-			f.Cautions = []string{"Too few states to tell an uncertainty."}
 		}
 		out = append(out, f)
 	}
