@@ -214,8 +214,9 @@ func (s *Scene) arguments(e Encoding, path string) []string {
 		a = append(a, bits...)
 	default:
 		// A phone's encoder is a small circuit, about as thrifty as this preset
-		// (common practice, no source).
-		a = append(a, "-c:v", "libx264", "-preset", "veryfast", "-profile:v", "high")
+		// (common practice, no source). On one thread, since with several its rate
+		// control depends on which is first: the same seed gives the same bytes.
+		a = append(a, "-c:v", "libx264", "-preset", "veryfast", "-profile:v", "high", "-threads", "1")
 		a = append(a, bits...)
 	}
 	if !e.Lossless {
