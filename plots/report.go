@@ -398,7 +398,8 @@ func filmed(r *record.Record) []string {
 		out = append(out, "Vertical: nothing in the picture shows it, so the picture's own upright was taken.")
 	}
 	if !math.IsNaN(t.BrokeAt) && t.BrokeBy != "" {
-		out = append(out, fmt.Sprintf("The clip is damaged from %s on: %s. It was measured up to there.", seconds(t.BrokeAt), t.BrokeBy))
+		// The clip says itself that it was measured as far as it goes.
+		out = append(out, fmt.Sprintf("The clip can be followed up to %s. %s", seconds(t.BrokeAt), t.BrokeBy))
 	}
 	return out
 }
